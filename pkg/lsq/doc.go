@@ -1,0 +1,2 @@
+// Package lsq estimates parameters from readings by least squares.
+package lsq
