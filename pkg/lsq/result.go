@@ -66,4 +66,14 @@ type Result struct {
 	Weights       []float64 // 1/Σ_ii, the final weights, unit of Y to the power −2
 
 	Warnings []error // shown with the result, never hidden
+
+	// kept for SolveCovariance, Sensitivity, refits and diagnostics
+	white    *whitener
+	factor   [][]float64 // columns of B, A⁻¹ = BBᵀ, before scaling by s²
+	inv      []float64   // A⁻¹ by rows, free parameters
+	jac      [][]float64 // free columns at the estimates
+	priorW   []float64   // 1/u of the prior of each parameter, 0 without
+	scale    float64     // s² when the covariance was scaled, else 1
+	problem  *Problem
+	settings Settings
 }

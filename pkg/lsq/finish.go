@@ -1,0 +1,453 @@
+package lsq
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"math"
+	"sort"
+	"strings"
+
+	"gonum.org/v1/gonum/mat"
+)
+
+// spectrum is the singular value decomposition of the whitened Jacobian with
+// columns scaled to unit length, for the parameters that are not held at a
+// bound.
+type spectrum struct {
+	idx    []int     // positions among the free parameters
+	norm   []float64 // lengths of their columns
+	s, v   []float64 // singular values, right vectors by columns
+	null   []int     // singular values that count as zero
+	cond   float64
+	factor [][]float64 // columns of B with (JᵀΣ⁻¹J)⁻¹ = BBᵀ, over all free parameters
+}
+
+// analyse decomposes the triangle at the end of the search.
+func (f *fitter) analyse() *spectrum {
+	s := &f.search
+	q, ld := s.q, s.q+1
+	sp := &spectrum{}
+	a := make([]float64, q*q)
+	for k := 0; k < q; k++ {
+		if s.held != nil && s.held[k] {
+			continue
+		}
+		l := len(sp.idx)
+		sp.idx = append(sp.idx, k)
+		c := columnNorm(k, ld, s.now.r)
+		if s.collapsed && c < 1e-7*s.d[k] {
+			c = 0 // this parameter ran to where the readings no longer respond
+		}
+		sp.norm = append(sp.norm, c)
+		if c > 0 {
+			for i, v := range s.now.r[k*ld : k*ld+k+1] {
+				a[l*q+i] = v / c
+			}
+		} else {
+			sp.norm[l] = 1
+		}
+	}
+	m := len(sp.idx)
+	if m < q { // a q×m matrix: triangulate it first
+		b := make([]float64, q)
+		triangulate(q, m, q, a, b)
+		c := make([]float64, m*m)
+		for l := 0; l < m; l++ {
+			copy(c[l*m:l*m+l+1], a[l*q:l*q+l+1])
+		}
+		a = c
+	}
+	sp.s, sp.v = make([]float64, m), make([]float64, m*m)
+	jacobiSVD(m, a, sp.s, sp.v)
+	top, low := 0.0, math.Inf(1)
+	for _, x := range sp.s {
+		top, low = math.Max(top, x), math.Min(low, x)
+	}
+	sp.cond = top / low
+	limit := 1e-13
+	if f.p.Numeric {
+		limit = 1e-9
+	}
+	for k, x := range sp.s {
+		if !(x > limit*top) {
+			sp.null = append(sp.null, k)
+		}
+	}
+	for k, x := range sp.s {
+		if !(x > limit*top) {
+			continue
+		}
+		col := make([]float64, q)
+		for l, at := range sp.idx {
+			col[at] = sp.v[k*m+l] / (x * sp.norm[l])
+		}
+		sp.factor = append(sp.factor, col)
+	}
+	if f.exact != nil && len(sp.null) == 0 && m == q {
+		sp.factor = f.exact.inverse()
+	}
+	return sp
+}
+
+// inverse returns the columns of R⁻¹, found in wide arithmetic and rounded.
+func (e *extended) inverse() [][]float64 {
+	out := make([][]float64, e.q)
+	for k := range out {
+		x := make([]wide, k+1)
+		x[k] = wide{1, 0}
+		for j := k; j >= 0; j-- {
+			x[j] = x[j].div(e.r[j][j])
+			for i := 0; i < j; i++ {
+				x[i] = x[i].sub(e.r[j][i].mul(x[j]))
+			}
+		}
+		out[k] = make([]float64, e.q)
+		for i, v := range x {
+			out[k][i] = v.float()
+		}
+	}
+	return out
+}
+
+// confounded names the parameters of each null vector, after reducing the null
+// vectors to echelon form so that each names as few as it can.
+func (f *fitter) confounded(sp *spectrum) (sentences []string, involved []bool) {
+	q, m := f.search.q, len(sp.idx)
+	involved = make([]bool, q)
+	rows := make([][]float64, 0, len(sp.null))
+	for _, k := range sp.null {
+		rows = append(rows, append([]float64(nil), sp.v[k*m:k*m+m]...))
+	}
+	used := make([]bool, m)
+	for i := range rows {
+		pivot, big := -1, 0.0
+		for l, v := range rows[i] {
+			if !used[l] && math.Abs(v) > big {
+				pivot, big = l, math.Abs(v)
+			}
+		}
+		if pivot < 0 {
+			continue
+		}
+		used[pivot] = true
+		d := rows[i][pivot]
+		for l := range rows[i] {
+			rows[i][l] /= d
+		}
+		for h := range rows {
+			if h == i {
+				continue
+			}
+			c := rows[h][pivot]
+			for l := range rows[h] {
+				rows[h][l] -= c * rows[i][l]
+			}
+		}
+	}
+	for _, row := range rows {
+		big := 0.0
+		for _, v := range row {
+			big = math.Max(big, math.Abs(v))
+		}
+		var names, moves []string
+		for l, v := range row {
+			if math.Abs(v) < 1e-5*big {
+				continue
+			}
+			k := sp.idx[l]
+			involved[k] = true
+			name := f.p.name(f.free[k])
+			names = append(names, name)
+			moves = append(moves, fmt.Sprintf("%s by %.4g", name, v/sp.norm[l]))
+		}
+		switch len(names) {
+		case 0:
+		case 1:
+			sentences = append(sentences, fmt.Sprintf("the readings do not determine %s: changing it leaves the fit as it is", names[0]))
+		default:
+			list := strings.Join(names[:len(names)-1], ", ") + " and " + names[len(names)-1]
+			sentences = append(sentences, fmt.Sprintf("%s can't be told apart: changing %s together leaves the fit as it is", list, strings.Join(moves, ", ")))
+		}
+	}
+	sort.Strings(sentences)
+	return sentences, involved
+}
+
+// result gathers everything about the end of the fit.
+func (f *fitter) result(ctx context.Context) (*Result, error) {
+	s, p := &f.search, f.p
+	n, np, q := len(s.y), len(p.Parameters), s.q
+	sp := f.analyse()
+	r := &Result{
+		Status: s.status, Reason: s.reason, Free: f.free,
+		Values: append([]float64(nil), s.theta...), U: make([]float64, np),
+		Iterations: s.iterations, Evaluations: s.evaluations, Reweighting: f.reweighting, Restarts: f.restarts,
+		Condition: sp.cond, Warnings: f.warnings, Covariance: mat.NewSymDense(np, nil),
+	}
+	r.ChiSquared = s.chi2
+	r.DOF = n + f.priors - (len(sp.idx) - len(sp.null))
+
+	slab := make([]float64, 7*n)
+	take := func() []float64 {
+		v := slab[:n:n]
+		slab = slab[n:]
+		return v
+	}
+	r.Fitted, r.Residuals, r.Standardised, r.Weights = take(), take(), take(), take()
+	copy(r.Fitted, s.f)
+	if f.exact != nil && s.white.diagonal() {
+		for i, v := range f.exact.residuals[:n] {
+			r.Residuals[i] = v / s.white.w[i]
+			r.Fitted[i] = s.y[i] - r.Residuals[i]
+		}
+	} else {
+		for i, y := range s.y {
+			r.Residuals[i] = y - s.f[i]
+		}
+	}
+	for _, v := range r.Residuals {
+		r.RSS += v * v
+	}
+	r.ResidualSD, r.BirgeRatio, r.PValue = math.NaN(), math.NaN(), math.NaN()
+	if r.DOF > 0 {
+		r.ResidualSD = math.Sqrt(r.RSS / float64(r.DOF))
+	}
+	scale := 1.0 // variance of unit weight
+	known := p.U != nil || p.Covariance != nil || p.Reweight != nil
+	switch {
+	case known && r.DOF > 0:
+		r.BirgeRatio = math.Sqrt(r.ChiSquared / float64(r.DOF))
+		r.PValue = chiSquaredTail(r.ChiSquared, r.DOF)
+	case known:
+		r.warn("there are no degrees of freedom: the readings can't test the model, and chi-squared has no probability")
+	case r.DOF <= 0:
+		r.ScaledByResiduals = true
+		scale = math.NaN()
+		r.warn("the uncertainties are unknown: the readings' uncertainty was not stated and no degrees of freedom are left to find it from the residuals")
+	case f.estimated():
+		r.ScaledByResiduals = true
+		r.warn("the readings' uncertainty was not stated: it was found from the residuals as %.4g, so that chi-squared equals its degrees of freedom and has no probability", f.noise)
+	default:
+		r.ScaledByResiduals = true
+		scale = r.ChiSquared / float64(r.DOF)
+		r.warn("the readings' uncertainty was not stated: it was taken from the residual standard deviation, so that chi-squared has no probability")
+	}
+	r.scale = scale
+
+	// covariance
+	var involved []bool
+	if len(sp.null) > 0 {
+		r.Confounded, involved = f.confounded(sp)
+		r.Status = Singular
+		r.Reason = "some parameters can't be told apart by these readings"
+		for _, c := range r.Confounded {
+			r.warn("%s; their uncertainties are unknown", c)
+		}
+	}
+	r.inv = make([]float64, q*q)
+	for _, b := range sp.factor {
+		for i, x := range b {
+			for j, y := range b {
+				r.inv[i*q+j] += x * y
+			}
+		}
+	}
+	for k, j := range f.free {
+		held := s.held != nil && s.held[k]
+		if held {
+			r.AtBound = append(r.AtBound, j)
+			r.warn("%s is held at its bound %.6g: its uncertainty is unknown, and those of the others hold for that value", p.name(j), s.theta[j])
+		}
+		for l := 0; l <= k; l++ {
+			c := r.inv[k*q+l] * scale
+			if held || (s.held != nil && s.held[l]) || (involved != nil && (involved[k] || involved[l])) {
+				c = math.NaN()
+			}
+			r.Covariance.SetSym(j, f.free[l], c)
+		}
+		r.U[j] = math.Sqrt(r.Covariance.At(j, j))
+	}
+	if len(sp.null) == 0 && sp.cond > 1e8 {
+		r.warn("the problem is badly conditioned (%.2g): small changes of the readings change the parameters much", sp.cond)
+	}
+	if r.Status != Converged && r.Status != Singular {
+		r.warn("the fit did not converge: %s", r.Reason)
+	}
+
+	// what later questions need
+	r.white, r.factor = &f.white, sp.factor
+	r.jac = s.cols
+	r.problem, r.settings = p, f.set
+	r.priorW = s.priorW
+
+	// rows
+	root := math.Sqrt(scale)
+	if s.white.diagonal() {
+		for i, w := range s.white.w {
+			w /= root
+			r.Weights[i] = w * w
+			r.Standardised[i] = r.Residuals[i] * w
+		}
+	} else {
+		for i := range r.Weights {
+			v := s.white.variance(i) * scale
+			r.Weights[i] = 1 / v
+			r.Standardised[i] = r.Residuals[i] / math.Sqrt(v)
+		}
+	}
+	if f.set.SkipDiagnostics {
+		return r, nil
+	}
+	r.Leverage, r.Studentised, r.CooksDistance = take(), take(), take()
+	if err := ctx.Err(); err != nil {
+		return nil, fmt.Errorf("lsq: fit cancelled: %w", err)
+	}
+	r.influence()
+	return r, nil
+}
+
+// influence computes leverage, studentised residuals and Cook's distances from
+// cov(r) = Σ − J C Jᵀ (derived; for independent readings these are the usual
+// ones: Cook, Technometrics 19 (1977) 15).
+func (r *Result) influence() {
+	h := r.Leverage
+	if r.scale == 0 || math.IsNaN(r.scale) {
+		fill(h, math.NaN())
+		fill(r.Studentised, math.NaN())
+		fill(r.CooksDistance, math.NaN())
+		return
+	}
+	for _, b := range r.factor {
+		switch len(b) {
+		case 2:
+			j0, j1 := r.jac[0], r.jac[1]
+			for i := range h {
+				z := j0[i]*b[0] + j1[i]*b[1]
+				h[i] += z * z
+			}
+		case 3:
+			j0, j1, j2 := r.jac[0][:len(h)], r.jac[1][:len(h)], r.jac[2][:len(h)]
+			b0, b1, b2 := b[0], b[1], b[2]
+			for i := range h {
+				z := j0[i]*b0 + j1[i]*b1 + j2[i]*b2
+				h[i] += z * z
+			}
+		default:
+			z := r.Studentised // free until below
+			clear(z)
+			for k, x := range b {
+				if x != 0 {
+					for i, v := range r.jac[k] {
+						z[i] += v * x
+					}
+				}
+			}
+			for i, v := range z {
+				h[i] += v * v
+			}
+		}
+	}
+	q := float64(len(r.factor))
+	for i := range h {
+		h[i] *= r.Weights[i] * r.scale
+		if h[i] >= 1-1e-12 {
+			// the fit follows this reading whatever it is
+			h[i] = math.Min(h[i], 1)
+			r.Studentised[i], r.CooksDistance[i] = math.NaN(), math.NaN()
+			continue
+		}
+		t := r.Standardised[i] / math.Sqrt(1-h[i])
+		r.Studentised[i] = t
+		r.CooksDistance[i] = t * t * h[i] / (q * (1 - h[i]))
+	}
+}
+
+func fill(v []float64, x float64) {
+	for i := range v {
+		v[i] = x
+	}
+}
+
+func (r *Result) warn(format string, a ...any) {
+	if len(a) == 0 {
+		r.Warnings = append(r.Warnings, errors.New(format))
+		return
+	}
+	r.Warnings = append(r.Warnings, fmt.Errorf(format, a...))
+}
+
+// Jacobian returns ∂f_i/∂θ_j at the estimates: one column per free parameter
+// (in the order of Free), each with one entry per reading. The caller owns it.
+func (r *Result) Jacobian() [][]float64 {
+	out := make([][]float64, len(r.jac))
+	for k, c := range r.jac {
+		out[k] = append([]float64(nil), c...)
+	}
+	return out
+}
+
+// SolveCovariance sets dst = Σ⁻¹v, with Σ the covariance of the readings at
+// the final weights (scaled by s² when ScaledByResiduals). v and dst have one
+// entry per reading and may be the same slice.
+func (r *Result) SolveCovariance(v, dst []float64) {
+	copy(dst, v)
+	r.white.apply(dst)
+	r.white.applyT(dst)
+	if r.scale != 1 {
+		for i := range dst {
+			dst[i] /= r.scale
+		}
+	}
+}
+
+// Sensitivity returns ∂θ/∂y = A⁻¹JᵀΣ⁻¹ with A = JᵀΣ⁻¹J + diag(1/u²) of the
+// priors, at frozen weights and to first order (Gauss–Newton): one row per free
+// parameter, each with one entry per reading. Rows of parameters held at a
+// bound are zero; where parameters can't be told apart the least change is
+// taken.
+func (r *Result) Sensitivity() [][]float64 {
+	q, n := len(r.jac), len(r.Fitted)
+	cols := make([][]float64, q)
+	for k, c := range r.jac {
+		cols[k] = append([]float64(nil), c...)
+		r.white.apply(cols[k])
+		r.white.applyT(cols[k])
+	}
+	out := make([][]float64, q)
+	for k := range out {
+		out[k] = make([]float64, n)
+		for l, c := range cols {
+			x := r.inv[k*q+l]
+			for i, v := range c {
+				out[k][i] += x * v
+			}
+		}
+	}
+	return out
+}
+
+// PriorSensitivity returns ∂θ/∂(prior value) = A⁻¹ diag(1/u²): one row per free
+// parameter, one column per parameter of the problem, zero where it has no
+// prior or is fixed.
+func (r *Result) PriorSensitivity() [][]float64 {
+	q := len(r.Free)
+	out := make([][]float64, q)
+	for k := range out {
+		out[k] = make([]float64, len(r.Values))
+		for l, j := range r.Free {
+			w := r.priorW[j]
+			out[k][j] = r.inv[k*q+l] * w * w
+		}
+	}
+	return out
+}
+
+// Correlation returns the correlation of the estimates of parameters i and j;
+// NaN when either is fixed or its uncertainty unknown.
+func (r *Result) Correlation(i, j int) float64 {
+	if r.U[i] == 0 || r.U[j] == 0 {
+		return math.NaN()
+	}
+	return r.Covariance.At(i, j) / (r.U[i] * r.U[j])
+}

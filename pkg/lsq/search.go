@@ -1,0 +1,564 @@
+package lsq
+
+import (
+	"context"
+	"fmt"
+	"math"
+)
+
+// search is one run of the trust-region Levenberg–Marquardt method (Moré,
+// Lecture Notes in Mathematics 630 (1978) 105) on whitened residuals with
+// frozen weights. Parameters are scaled by the largest length so far of their
+// columns of the Jacobian, so that no unit of a parameter or of the readings
+// matters.
+type search struct {
+	p        *Problem
+	y        []float64
+	white    *whitener
+	free     []int
+	q        int
+	lo, hi   []float64 // bounds of the free parameters; nil: none anywhere
+	tol      float64
+	maxIter  int
+	numeric  bool
+	priorV   []float64 // prior value, one per parameter; NaN: none
+	priorW   []float64 // 1/u of the prior
+	hasPrior bool
+
+	eval func(theta, f []float64, jac [][]float64) error
+
+	theta, trial  []float64
+	f, ftrial     []float64
+	jac, jtrial   [][]float64 // of all parameters, nil for fixed ones
+	cols, ctrial  [][]float64 // the free columns of the same
+	now, next     fold
+	chi2          float64
+	d, x, rx      []float64
+	wcols         [][]float64 // whitened copies when the covariance is not diagonal
+	wres          []float64
+	trust         trust
+	sub           *subspace
+	diff          *difference
+	iterations    int
+	evaluations   int
+	linear        bool // the derivatives did not change with the parameters
+	lastEvalErr   error
+	size          float64 // length of the whitened readings
+	status        Status
+	reason        string
+	held          []bool // free parameters at a bound and pushed outwards
+	collapsed     bool   // a column of the Jacobian has become negligible
+	checkedLinear bool
+}
+
+// init allocates for n readings and the parameters of p.
+func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
+	n, np, q := len(y), len(p.Parameters), len(free)
+	s.p, s.y, s.free, s.q, s.white, s.eval = p, y, free, q, white, p.Eval
+	slab := make([]float64, 2*n+2*n*q+4*np+4*q)
+	take := func(k int) []float64 {
+		v := slab[:k:k]
+		slab = slab[k:]
+		return v
+	}
+	s.f, s.ftrial = take(n), take(n)
+	heads := make([][]float64, 2*np+2*q)
+	s.jac, s.jtrial, s.cols, s.ctrial = heads[:np:np], heads[np:2*np:2*np], heads[2*np:2*np+q:2*np+q], heads[2*np+q:]
+	for k, j := range free {
+		s.cols[k], s.ctrial[k] = take(n), take(n)
+		s.jac[j], s.jtrial[j] = s.cols[k], s.ctrial[k]
+	}
+	s.theta, s.trial = take(np), take(np)
+	s.priorV, s.priorW = take(np), take(np)
+	s.d, s.x, s.rx = take(q), take(q), take(q)
+	s.now.init(q)
+	s.next.init(0)
+	s.next.q, s.next.r, s.next.buf = q, make([]float64, (q+1)*(q+1)), s.now.buf
+	s.trust.init(q)
+	for j := range p.Parameters {
+		s.priorV[j] = math.NaN()
+	}
+	for k, j := range free {
+		q := &p.Parameters[j]
+		if q.Prior != nil {
+			s.priorV[j], s.priorW[j] = q.Prior.Value, 1/q.Prior.U
+			s.hasPrior = true
+		}
+		if (q.Lower != nil || q.Upper != nil) && s.lo == nil {
+			s.lo, s.hi = make([]float64, s.q), make([]float64, s.q)
+			s.held = make([]bool, s.q)
+			for l := range s.lo {
+				s.lo[l], s.hi[l] = math.Inf(-1), math.Inf(1)
+			}
+			s.sub = newSubspace(s.q)
+		}
+		if q.Lower != nil {
+			s.lo[k] = *q.Lower
+		}
+		if q.Upper != nil {
+			s.hi[k] = *q.Upper
+		}
+	}
+	if p.Numeric {
+		s.numeric = true
+		s.diff = newDifference(s)
+	}
+	s.prepareWhite()
+}
+
+// prepareWhite allocates what correlated readings need.
+func (s *search) prepareWhite() {
+	if s.white.diagonal() || s.wres != nil {
+		return
+	}
+	n := len(s.y)
+	s.wres = make([]float64, n)
+	s.wcols = make([][]float64, s.q)
+	slab := make([]float64, n*s.q)
+	for k := range s.wcols {
+		s.wcols[k] = slab[k*n : k*n+n]
+	}
+}
+
+// call evaluates the model and, when jac is not nil, its derivatives.
+func (s *search) call(theta, f []float64, jac, cols [][]float64) error {
+	s.evaluations++
+	if s.numeric {
+		if err := s.eval(theta, f, nil); err != nil {
+			return err
+		}
+		if jac == nil {
+			return nil
+		}
+		return s.diff.columns(theta, f, cols)
+	}
+	return s.eval(theta, f, jac)
+}
+
+// reduce folds whitened derivatives and residuals at theta into t.
+func (s *search) reduce(t *fold, theta, f []float64, cols [][]float64) {
+	t.reset()
+	if s.hasPrior {
+		for k, j := range s.free {
+			if w := s.priorW[j]; w > 0 {
+				t.diagonal(k, w, w*(s.priorV[j]-theta[j]))
+			}
+		}
+	}
+	if s.white.diagonal() {
+		t.weighted(s.white.w, s.y, f, cols)
+		return
+	}
+	s.residual(f)
+	for k, c := range cols {
+		copy(s.wcols[k], c)
+		s.white.apply(s.wcols[k])
+	}
+	t.columns(s.wcols, s.wres)
+}
+
+func (s *search) residual(f []float64) {
+	for i, y := range s.y {
+		s.wres[i] = y - f[i]
+	}
+	s.white.apply(s.wres)
+}
+
+// chiSquared is the objective at theta with model values f.
+func (s *search) chiSquared(theta, f []float64) float64 {
+	sum := 0.0
+	if s.white.diagonal() {
+		w, y := s.white.w, s.y
+		var a, b float64
+		i := 0
+		for ; i+1 < len(w); i += 2 {
+			r := w[i] * (y[i] - f[i])
+			q := w[i+1] * (y[i+1] - f[i+1])
+			a += r * r
+			b += q * q
+		}
+		if i < len(w) {
+			r := w[i] * (y[i] - f[i])
+			a += r * r
+		}
+		sum = a + b
+	} else {
+		s.residual(f)
+		for _, r := range s.wres {
+			sum += r * r
+		}
+	}
+	if s.hasPrior {
+		for _, j := range s.free {
+			if w := s.priorW[j]; w > 0 {
+				r := w * (s.priorV[j] - theta[j])
+				sum += r * r
+			}
+		}
+	}
+	return sum
+}
+
+// begin evaluates the model at the start.
+func (s *search) begin(start []float64) error {
+	copy(s.theta, start)
+	copy(s.trial, start)
+	s.status, s.reason, s.collapsed = Stalled, "", false
+	if err := s.call(s.theta, s.f, s.jac, s.cols); err != nil {
+		return fmt.Errorf("lsq: the model can't be evaluated at the start: %w", err)
+	}
+	if i := notFinite(s.f); i >= 0 {
+		return fmt.Errorf("lsq: the model is %v for reading %d at the start; choose another start", s.f[i], i+1)
+	}
+	for k, c := range s.cols {
+		if i := notFinite(c); i >= 0 {
+			return fmt.Errorf("lsq: the derivative with respect to %s is %v for reading %d at the start; choose another start", s.p.name(s.free[k]), c[i], i+1)
+		}
+	}
+	s.reduce(&s.now, s.theta, s.f, s.cols)
+	s.chi2 = s.now.chi2()
+	if !finite(s.chi2) {
+		return fmt.Errorf("lsq: chi-squared overflows at the start; choose a start nearer to the readings")
+	}
+	s.size = s.length()
+	for k := range s.d {
+		s.d[k] = columnNorm(k, s.q+1, s.now.r)
+		if !finite(s.d[k]) {
+			return fmt.Errorf("lsq: the derivatives with respect to %s overflow at the start; choose another start", s.p.name(s.free[k]))
+		}
+		if s.d[k] == 0 {
+			s.d[k] = 1
+		}
+	}
+	return nil
+}
+
+func notFinite(v []float64) int {
+	s := 0.0
+	for _, x := range v {
+		s += x * 0
+	}
+	if s == 0 {
+		return -1
+	}
+	for i, x := range v {
+		if !finite(x) {
+			return i
+		}
+	}
+	return -1
+}
+
+// length is the length of the weighted readings, which sets how small a
+// chi-squared can be resolved.
+func (s *search) length() float64 {
+	sum := 0.0
+	for i, y := range s.y {
+		sum += y * y / s.white.variance(i)
+	}
+	return math.Sqrt(sum)
+}
+
+// noise is the relative rounding error of chi2.
+func (s *search) noise() float64 {
+	if s.chi2 == 0 {
+		return math.Inf(1)
+	}
+	return 1e-14 + 4e-16*s.size/math.Sqrt(s.chi2)
+}
+
+// run searches from the start that begin was given.
+func (s *search) run(ctx context.Context) error {
+	const small = 1e-4 // least accepted ratio of actual to predicted reduction, Moré 1978
+	ld := s.q + 1
+	r := func() []float64 { return s.now.r }
+	b := func() []float64 { return s.now.r[s.q*ld : s.q*ld+s.q] }
+	delta := 0.0
+	for k, j := range s.free {
+		delta = math.Hypot(delta, s.d[k]*s.theta[j])
+	}
+	if delta = 100 * delta; delta == 0 {
+		delta = 100
+	}
+	s.trust.lambda = 0
+	first, rejected, stuck := true, 0, 0
+	jointly := true
+	for {
+		if err := ctx.Err(); err != nil {
+			return fmt.Errorf("lsq: fit cancelled: %w", err)
+		}
+		if s.iterations >= s.maxIter {
+			s.status, s.reason = IterationLimit, fmt.Sprintf("no convergence in %d iterations", s.maxIter)
+			return nil
+		}
+		if s.chi2 == 0 {
+			s.status, s.reason = Converged, "the model meets every reading exactly"
+			return nil
+		}
+		s.iterations++
+		gauss := s.step(r(), ld, b(), delta)
+		norm := scaledNorm(s.d, s.x)
+		mulUpper(s.q, ld, r(), s.x, s.rx)
+		pred, lin := 0.0, 0.0
+		for k, v := range s.rx {
+			pred += v * (2*b()[k] - v)
+			lin += v * v
+		}
+		pred /= s.chi2
+		noise := s.noise()
+		for k, j := range s.free {
+			s.trial[j] = s.theta[j] + s.x[k]
+		}
+		if norm == 0 {
+			s.finish("no step lowers chi-squared")
+			return nil
+		}
+		if gauss && pred <= 1e4*noise {
+			// Differences of chi-squared no longer resolve the minimum: go on
+			// by Gauss–Newton steps alone while they shrink.
+			return s.polish(ctx, norm)
+		}
+		withJac := jointly
+		var jac, cols [][]float64
+		if withJac {
+			jac, cols = s.jtrial, s.ctrial
+		}
+		chi2 := math.Inf(1)
+		err := s.call(s.trial, s.ftrial, jac, cols)
+		s.lastEvalErr = err
+		if err == nil {
+			if withJac {
+				s.reduce(&s.next, s.trial, s.ftrial, s.ctrial)
+				chi2 = s.next.chi2()
+			} else {
+				chi2 = s.chiSquared(s.trial, s.ftrial)
+			}
+			if math.IsNaN(chi2) {
+				chi2 = math.Inf(1)
+			}
+		}
+		act := -1.0
+		if chi2 < 100*s.chi2 {
+			act = 1 - chi2/s.chi2
+		}
+		ratio := 0.0
+		if pred > 0 {
+			ratio = act / pred
+		}
+		// the slope of chi-squared along the step, relative to chi-squared, halved
+		slope := -(lin/s.chi2 + s.trust.lambda*norm*norm/s.chi2)
+		switch {
+		case ratio <= 0.25:
+			shrink := 0.5
+			if act < 0 {
+				shrink = 0.5 * slope / (slope + 0.5*act)
+			}
+			if 0.1*math.Sqrt(chi2) >= math.Sqrt(s.chi2) || shrink < 0.1 || math.IsNaN(shrink) {
+				shrink = 0.1
+			}
+			delta = shrink * math.Min(delta, norm/0.1)
+			s.trust.lambda /= shrink
+		case s.trust.lambda == 0 || ratio >= 0.75:
+			delta = norm / 0.5
+			s.trust.lambda *= 0.5
+		}
+		if first {
+			delta = math.Min(delta, math.Max(norm, delta*0.1))
+			first = false
+		}
+		if ratio < small {
+			rejected++
+			jointly = false
+			if delta <= 1e-16*s.scaledSize() || rejected > 60 {
+				s.finish("no step lowers chi-squared")
+				return nil
+			}
+			continue
+		}
+		if !withJac {
+			if err := s.call(s.trial, s.ftrial, s.jtrial, s.ctrial); err != nil {
+				s.lastEvalErr = err
+				s.finish("the derivatives can't be evaluated: " + err.Error())
+				return nil
+			}
+			s.reduce(&s.next, s.trial, s.ftrial, s.ctrial)
+		}
+		if !s.goodTriangle() {
+			// values are finite but derivatives are not: treat as out of the domain
+			rejected++
+			delta = 0.1 * math.Min(delta, norm)
+			jointly = false
+			if rejected > 60 {
+				s.finish("the derivatives are not finite near the best point")
+				return nil
+			}
+			continue
+		}
+		rejected = 0
+		jointly = ratio > 0.5
+		if !s.checkedLinear {
+			s.checkedLinear = true
+			s.linear = !s.numeric && s.sameColumns()
+		}
+		s.accept()
+		if act <= 1e3*noise && pred <= 1e3*noise {
+			stuck++
+			if stuck >= 20 {
+				s.finish("chi-squared no longer changes")
+				return nil
+			}
+		} else {
+			stuck = 0
+		}
+	}
+}
+
+// polish takes Gauss–Newton steps until the error left in the parameters,
+// judged from how fast the steps shrink, meets the tolerance, or rounding stops
+// them from shrinking.
+func (s *search) polish(ctx context.Context, norm float64) error {
+	ld := s.q + 1
+	grown := 0
+	for i := 0; ; i++ {
+		if err := ctx.Err(); err != nil {
+			return fmt.Errorf("lsq: fit cancelled: %w", err)
+		}
+		// s.x holds the step and s.trial the point it leads to
+		err := s.call(s.trial, s.ftrial, s.jtrial, s.ctrial)
+		if err != nil {
+			s.lastEvalErr = err
+			s.finish("the model can't be evaluated beside the best point: " + err.Error())
+			return nil
+		}
+		s.reduce(&s.next, s.trial, s.ftrial, s.ctrial)
+		chi2 := s.next.chi2()
+		if !s.goodTriangle() || !(chi2 <= s.chi2*(1+1e5*s.noise())) {
+			s.finish("Gauss–Newton steps no longer lower chi-squared")
+			return nil
+		}
+		small := true
+		sd := math.Sqrt(s.chi2 / float64(len(s.y)))
+		before := norm
+		s.accept()
+		s.step(s.now.r, ld, s.now.r[s.q*ld:s.q*ld+s.q], math.Inf(1))
+		norm = scaledNorm(s.d, s.x)
+		rate := norm / before
+		left := 1.0
+		if rate < 1 {
+			left = 1 / (1 - rate)
+		}
+		for k, j := range s.free {
+			scale := math.Abs(s.theta[j]) + sd/s.d[k]
+			if math.Abs(s.x[k])*left > s.tol*scale {
+				small = false
+			}
+		}
+		if small || norm == 0 {
+			// the remaining step is below the tolerance and costs nothing
+			s.status, s.reason = Converged, "the remaining step is below the tolerance"
+			return nil
+		}
+		s.iterations++
+		if rate >= 0.95 {
+			grown++
+		}
+		if grown >= 3 || i >= 200 {
+			s.finish("rounding stops the steps from shrinking")
+			return nil
+		}
+		for k, j := range s.free {
+			s.trial[j] = s.theta[j] + s.x[k]
+		}
+	}
+}
+
+// accept makes the trial point the current one.
+func (s *search) accept() {
+	s.theta, s.trial = s.trial, s.theta
+	copy(s.trial, s.theta)
+	s.f, s.ftrial = s.ftrial, s.f
+	s.jac, s.jtrial = s.jtrial, s.jac
+	s.cols, s.ctrial = s.ctrial, s.cols
+	s.now.r, s.next.r = s.next.r, s.now.r
+	s.now.rest = s.next.rest
+	s.chi2 = s.now.chi2()
+	s.collapsed = false
+	for k := range s.d {
+		c := columnNorm(k, s.q+1, s.now.r)
+		if c < 1e-7*s.d[k] {
+			s.collapsed = true
+		}
+		s.d[k] = math.Max(s.d[k], c)
+	}
+}
+
+func (s *search) goodTriangle() bool {
+	for _, v := range s.next.r {
+		if !finite(v) {
+			return false
+		}
+	}
+	return finite(s.next.rest)
+}
+
+func (s *search) scaledSize() float64 {
+	t := 0.0
+	for k, j := range s.free {
+		t = math.Hypot(t, s.d[k]*s.theta[j])
+	}
+	return t + math.Sqrt(s.chi2)*1e-3
+}
+
+// sameColumns reports whether the derivatives at the trial point are those at
+// the current one to rounding.
+func (s *search) sameColumns() bool {
+	for k, c := range s.cols {
+		d := s.ctrial[k]
+		for i, v := range c {
+			if math.Abs(v-d[i]) > 4e-16*math.Abs(v) {
+				return false
+			}
+		}
+	}
+	return true
+}
+
+// finish ends a search that can go no further: it is converged when the
+// residuals are orthogonal to the columns of the Jacobian as far as rounding
+// lets one tell.
+func (s *search) finish(why string) {
+	ld := s.q + 1
+	b := s.now.r[s.q*ld : s.q*ld+s.q]
+	total := math.Sqrt(s.chi2)
+	worst := 0.0
+	for k := 0; k < s.q; k++ {
+		if s.held != nil && s.held[k] {
+			continue
+		}
+		g := 0.0
+		for i, c := range s.now.r[k*ld : k*ld+k+1] {
+			g += c * b[i]
+		}
+		if c := columnNorm(k, ld, s.now.r); c > 0 && total > 0 {
+			worst = math.Max(worst, math.Abs(g)/c/total)
+		}
+	}
+	if worst <= math.Max(1e-7, 1e3*4e-16*s.size/total) && !s.collapsed {
+		s.status = Converged
+		s.reason = why + ", and the residuals are orthogonal to the derivatives"
+		return
+	}
+	s.status = Stalled
+	s.reason = why
+	if s.lastEvalErr != nil {
+		s.reason += ": " + s.lastEvalErr.Error()
+	}
+}
+
+// step sets s.x to the step within delta that respects the bounds.
+func (s *search) step(r []float64, ld int, b []float64, delta float64) (gauss bool) {
+	if s.sub == nil {
+		return s.trust.step(s.q, ld, r, b, s.d, delta, s.x)
+	}
+	return s.bounded(r, ld, b, delta)
+}
