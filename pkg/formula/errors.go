@@ -1,0 +1,38 @@
+package formula
+
+import (
+	"fmt"
+	"strings"
+	"unicode/utf8"
+)
+
+// Error says what is wrong with a formula, and where.
+type Error struct {
+	Source string // the formula
+	Column int    // character, counted from 1; 0: the formula as a whole
+	Reason string // what is wrong
+	Hint   string // what would be right; "" when nothing is known
+}
+
+func (e *Error) Error() string {
+	var b strings.Builder
+	b.WriteString("formula ")
+	src := e.Source
+	if len(src) > 80 {
+		cut := 80
+		for cut > 0 && !utf8.RuneStart(src[cut]) {
+			cut--
+		}
+		src = src[:cut] + "…"
+	}
+	fmt.Fprintf(&b, "%q: ", src)
+	if e.Column > 0 {
+		fmt.Fprintf(&b, "column %d: ", e.Column)
+	}
+	b.WriteString(e.Reason)
+	if e.Hint != "" {
+		b.WriteString("; ")
+		b.WriteString(e.Hint)
+	}
+	return b.String()
+}
