@@ -152,6 +152,13 @@ func readNIST(t testing.TB, path string) *nistSet {
 			s.y[i] = math.Log(s.y[i])
 		}
 	}
+	if s.name == "Roszman1" {
+		// This copy prints b1 as 1.20196866396E-0, one character too early and
+		// one exponent digit short: the model at 0.20196866396 gives the
+		// certified RSS and standard deviations of the same file, as the test
+		// checks (the value also from memory of the NIST page).
+		s.params[0] = 0.20196866396
+	}
 	if len(s.y) == 0 || len(s.params) == 0 {
 		t.Fatalf("%s: %d rows, %d parameters read", path, len(s.y), len(s.params))
 	}
@@ -215,7 +222,7 @@ func worst(got, want []float64) float64 {
 // which are printed to 11 digits (NIST StRD, nonlinear regression).
 func TestNISTNonlinear(t *testing.T) {
 	files, err := filepath.Glob("../../testdata/refs/nist/*.dat")
-	if err != nil || len(files) < 18 {
+	if err != nil || len(files) != 27 {
 		t.Fatalf("found %d sets: %v", len(files), err)
 	}
 	t.Logf("%-10s %5s %7s %7s %7s %5s %8s %s", "set", "start", "params", "sd", "RSS", "iter", "restarts", "status")

@@ -306,6 +306,9 @@ func (s *search) run(ctx context.Context) error {
 		}
 		pred /= s.chi2
 		noise := s.noise()
+		if first {
+			delta, first = math.Min(delta, norm), false
+		}
 		for k, j := range s.free {
 			s.trial[j] = s.theta[j] + s.x[k]
 		}
@@ -361,10 +364,6 @@ func (s *search) run(ctx context.Context) error {
 		case s.trust.lambda == 0 || ratio >= 0.75:
 			delta = norm / 0.5
 			s.trust.lambda *= 0.5
-		}
-		if first {
-			delta = math.Min(delta, math.Max(norm, delta*0.1))
-			first = false
 		}
 		if ratio < small {
 			rejected++
