@@ -1,0 +1,329 @@
+package figure
+
+import (
+	"fmt"
+	"math"
+	"sort"
+	"strconv"
+	"strings"
+
+	"example.org/guardring/pkg/model"
+	"example.org/guardring/pkg/reduce"
+	"example.org/guardring/pkg/si"
+)
+
+// Data is what the figures of a reduction are drawn from. Of and FromRecord make
+// one.
+type Data struct {
+	Record *reduce.Record
+	Rows   *reduce.Rows // nil when the record came without its rows
+	// Trials are the Monte Carlo values of each measurand in trial order, SI; nil
+	// for the law alone.
+	Trials [][]float64
+	// Groups names the setting of each entry of Rows; nil when the bench has
+	// none.
+	Groups []string
+	// Number is the data record of each entry of Rows, counted from 1 over all
+	// files.
+	Number []int
+	// Units of the channels by name; channels without one are shown in SI base
+	// units of the record's model.
+	Units map[string]si.Unit
+}
+
+// FromRecord takes apart a record that was written with its rows, as
+// `reduce --json --rows` and notebooks write it. Figures that need trials say
+// that the record has none.
+func FromRecord(rec *reduce.Record) *Data {
+	d := &Data{Record: rec, Units: unitsOf(rec.Model)}
+	if len(rec.Rows) == 0 {
+		return d
+	}
+	names := map[string]bool{}
+	for i := range rec.Rows {
+		for n := range rec.Rows[i].Channels {
+			names[n] = true
+		}
+	}
+	r := &reduce.Rows{N: len(rec.Rows)}
+	r.PredictorNames = predictorsOf(rec.Model, names)
+	r.Predictors = make([][]float64, len(r.PredictorNames))
+	for i := range rec.Rows {
+		row := &rec.Rows[i]
+		for c, n := range r.PredictorNames {
+			v, ok := row.Channels[n]
+			if !ok {
+				v = reduce.Number(math.NaN())
+			}
+			r.Predictors[c] = append(r.Predictors[c], float64(v))
+		}
+		d.Number = append(d.Number, row.Row)
+		r.Record = append(r.Record, row.Row-1)
+		r.Excluded = append(r.Excluded, row.Excluded)
+		r.Response = append(r.Response, float64(row.Response))
+		r.Fitted = append(r.Fitted, float64(row.Fitted))
+		r.U = append(r.U, float64(row.U))
+		r.Residual = append(r.Residual, float64(row.Residual))
+		r.Standardised = append(r.Standardised, float64(row.Standardised))
+		r.Leverage = append(r.Leverage, float64(row.Leverage))
+		r.Studentised = append(r.Studentised, float64(row.Studentised))
+	}
+	d.Rows = r
+	return d
+}
+
+// predictorsOf puts the channels of a record into the order of their kind; the
+// alphabetical one when this version doesn't know the kind.
+func predictorsOf(kind string, names map[string]bool) []string {
+	var out []string
+	if k, err := model.Lookup(kind); err == nil {
+		for _, c := range k.Channels {
+			if names[c.Name] && c.Role == model.Predictor {
+				out = append(out, c.Name)
+			}
+		}
+		if len(out) > 0 {
+			return out
+		}
+	}
+	for n := range names {
+		out = append(out, n)
+	}
+	sort.Strings(out)
+	return out
+}
+
+// unitsOf lists the units of a kind's channels.
+func unitsOf(kind string) map[string]si.Unit {
+	units := map[string]si.Unit{}
+	if k, err := model.Lookup(kind); err == nil {
+		for _, c := range k.Channels {
+			units[c.Name] = c.Unit
+		}
+	}
+	return units
+}
+
+// rows returns the rows after checking that they are there and whole.
+func (d *Data) rows() (*reduce.Rows, error) {
+	if d == nil || d.Record == nil {
+		return nil, fmt.Errorf("figure: no reduction to draw")
+	}
+	r := d.Rows
+	if r == nil || r.N == 0 {
+		return nil, fmt.Errorf("figure: this record holds no rows; make it with --rows, or draw from the reduction itself")
+	}
+	for _, s := range [][]float64{r.Response, r.Fitted, r.U, r.Residual, r.Standardised, r.Leverage, r.Studentised} {
+		if len(s) != r.N {
+			return nil, fmt.Errorf("figure: the rows are not whole: %d of %d values", len(s), r.N)
+		}
+	}
+	if len(r.Excluded) != r.N {
+		return nil, fmt.Errorf("figure: the rows are not whole: %d of %d marks of exclusion", len(r.Excluded), r.N)
+	}
+	if d.Groups != nil && len(d.Groups) != r.N || d.Number != nil && len(d.Number) != r.N {
+		return nil, fmt.Errorf("figure: the rows are not whole: %d names of settings and %d numbers for %d rows", len(d.Groups), len(d.Number), r.N)
+	}
+	for c := range r.Predictors {
+		if len(r.Predictors[c]) != r.N {
+			return nil, fmt.Errorf("figure: the rows are not whole: %d of %d values of %s", len(r.Predictors[c]), r.N, r.PredictorNames[c])
+		}
+	}
+	return r, nil
+}
+
+// number is the data record of row i, counted from 1.
+func (d *Data) number(i int) int {
+	if d.Number != nil {
+		return d.Number[i]
+	}
+	if i < len(d.Rows.Record) {
+		return d.Rows.Record[i] + 1
+	}
+	return i + 1
+}
+
+// unit returns the unit of a channel.
+func (d *Data) unit(channel string) si.Unit {
+	if u, ok := d.Units[channel]; ok {
+		return u
+	}
+	return si.One
+}
+
+// responseUnit returns the unit of the response and the name it has.
+func (d *Data) response() (string, si.Unit) {
+	name := d.Rows.ResponseName
+	if name == "" {
+		name = "response"
+		if k, err := model.Lookup(d.Record.Model); err == nil {
+			if u, err := si.ParseUnit(d.Record.Fit.ResponseUnit); err == nil {
+				for _, c := range k.Channels {
+					if c.Role == model.Response && c.Unit.Dim == u.Dim {
+						name = c.Name
+						break
+					}
+				}
+			}
+		}
+	}
+	if u, err := si.ParseUnit(d.Record.Fit.ResponseUnit); err == nil {
+		return words(name), u
+	}
+	return words(name), d.unit(name)
+}
+
+// reasons numbers the reasons of the excluded rows drawn: index by row, and the
+// lines for the foot of the figure.
+func (d *Data) reasons() (mark map[int]int, lines []string) {
+	mark = map[int]int{}
+	number := map[string]int{}
+	rowsOf := map[int][]string{}
+	var order []string
+	why := map[int]string{}
+	for _, e := range d.Record.Exclusions {
+		why[e.Row] = e.Reason
+	}
+	for i, x := range d.Rows.Excluded {
+		if !x {
+			continue
+		}
+		r := tidy(why[d.number(i)])
+		if r == "" {
+			r = "no reason stated"
+		}
+		n, ok := number[r]
+		if !ok {
+			n = len(number) + 1
+			number[r] = n
+			order = append(order, r)
+		}
+		mark[i] = n
+		rowsOf[n] = append(rowsOf[n], strconv.Itoa(d.number(i)))
+	}
+	for n, r := range order {
+		rows := rowsOf[n+1]
+		more := ""
+		if len(rows) > 8 {
+			more = fmt.Sprintf(" and %d more", len(rows)-8)
+			rows = rows[:8]
+		}
+		word := "reading"
+		if len(rowsOf[n+1]) > 1 {
+			word = "readings"
+		}
+		lines = append(lines, fmt.Sprintf("%d: %s %s%s left out: %s", n+1, word, strings.Join(rows, ", "), more, r))
+	}
+	return mark, lines
+}
+
+// series is the rows that share a look.
+type series struct {
+	name string
+	rows []int
+}
+
+// mostSeries is the number of looks that stay apart from each other.
+const mostSeries = 7
+
+// split sorts the rows into series for a figure against predictor x: the
+// settings where there are few, else the values of another predictor where they
+// fall into a few clusters, else one series.
+func (d *Data) split(x int) []series {
+	r := d.Rows
+	for c := range r.Predictors {
+		if c == x {
+			continue
+		}
+		if s := clusters(r.Predictors[c]); len(s) > 1 {
+			u := d.unit(r.PredictorNames[c])
+			for i := range s {
+				mean := 0.0
+				for _, k := range s[i].rows {
+					mean += r.Predictors[c][k] / float64(len(s[i].rows))
+				}
+				v, pu := si.Prefixed(mean, u)
+				s[i].name = words(r.PredictorNames[c]) + " " + signed(strconv.FormatFloat(v, 'g', 4, 64))
+				if t := pu.Unicode(); t != "1" && t != "" {
+					s[i].name += " " + t
+				}
+			}
+			return s
+		}
+	}
+	if d.Groups != nil {
+		index := map[string]int{}
+		var s []series
+		for i, g := range d.Groups {
+			k, ok := index[g]
+			if !ok {
+				k = len(s)
+				index[g] = k
+				s = append(s, series{name: "setting " + tidy(g)})
+			}
+			s[k].rows = append(s[k].rows, i)
+		}
+		if len(s) > 1 && len(s) <= mostSeries {
+			return s
+		}
+	}
+	all := series{rows: make([]int, r.N)}
+	for i := range all.rows {
+		all.rows[i] = i
+	}
+	return []series{all}
+}
+
+// clusters parts values that fall into two to seven heaps, each at least eight
+// times narrower than its distance to the next; nil when they don't.
+func clusters(v []float64) []series {
+	idx := make([]int, 0, len(v))
+	for i, x := range v {
+		if !finite(x) {
+			return nil
+		}
+		idx = append(idx, i)
+	}
+	sort.SliceStable(idx, func(a, b int) bool { return v[idx[a]] < v[idx[b]] })
+	if len(idx) < 4 {
+		return nil
+	}
+	span := v[idx[len(idx)-1]] - v[idx[0]]
+	if span <= 0 {
+		return nil
+	}
+	// A step between heaps is one of at least 1/60 of the whole range.
+	var out []series
+	from := 0
+	least, widest := math.Inf(1), 0.0
+	for k := 1; k <= len(idx); k++ {
+		if k < len(idx) {
+			if gap := v[idx[k]] - v[idx[k-1]]; gap <= span/60 {
+				continue
+			} else {
+				least = math.Min(least, gap)
+			}
+		}
+		widest = math.Max(widest, v[idx[k-1]]-v[idx[from]])
+		rows := append([]int(nil), idx[from:k]...)
+		sort.Ints(rows)
+		out = append(out, series{rows: rows})
+		from = k
+		if len(out) > mostSeries {
+			return nil
+		}
+	}
+	if len(out) < 2 || widest > least/8 {
+		return nil
+	}
+	return out
+}
+
+// pick returns the values at the rows.
+func pick(v []float64, rows []int) []float64 {
+	out := make([]float64, len(rows))
+	for i, k := range rows {
+		out[i] = v[k]
+	}
+	return out
+}

@@ -1,0 +1,70 @@
+package figure
+
+import (
+	"bytes"
+	"fmt"
+	"io"
+)
+
+// Figure is a finished drawing. It holds no data and can be written in any of
+// its forms any number of times, from several goroutines.
+type Figure struct {
+	Name    string // base of a file name: "residuals", "fit"
+	Title   string // one line
+	Caption string // a sentence or two for the reader: what is drawn and how
+	Summary string // what the figure shows in words and numbers, for readers without it
+
+	c *canvas
+}
+
+// screenDPI is the resolution of the PNG form in notebooks.
+const screenDPI = 120
+
+// Size returns the width and height in points (1/72 inch).
+func (f *Figure) Size() (w, h float64) { return f.c.w, f.c.h }
+
+// SVG returns the figure as an SVG 1.1 document, without an XML declaration, so
+// that it can stand inline in HTML too. Text is text; the bytes depend on the
+// data alone.
+func (f *Figure) SVG() string { return f.c.svg(f.alt()) }
+
+// WriteSVG writes the figure as a stand-alone SVG file.
+func (f *Figure) WriteSVG(w io.Writer) error {
+	if _, err := io.WriteString(w, `<?xml version="1.0" encoding="UTF-8"?>`+"\n"); err != nil {
+		return err
+	}
+	return f.c.writeSVG(w, f.alt())
+}
+
+// WritePNG writes the figure as a PNG on white paper at dpi dots per inch (36 to
+// 1200; 300 for print).
+func (f *Figure) WritePNG(w io.Writer, dpi int) error { return f.c.writePNG(w, dpi) }
+
+// WritePDF writes the figure as a PDF page of its own size, fonts embedded.
+func (f *Figure) WritePDF(w io.Writer) error { return f.c.writePDF(w, tidy(f.Title)) }
+
+// String returns the title and the summary.
+func (f *Figure) String() string {
+	if f.Summary == "" {
+		return f.Title
+	}
+	return f.Title + ". " + f.Summary
+}
+
+func (f *Figure) alt() string { return f.String() }
+
+// SimpleRender gives the forms that a notebook can show: text, SVG and PNG.
+func (f *Figure) SimpleRender() map[string]any {
+	forms := map[string]any{
+		"text/plain":    f.String(),
+		"image/svg+xml": f.SVG(),
+	}
+	var b bytes.Buffer
+	if err := f.WritePNG(&b, screenDPI); err != nil {
+		// The page still has the drawing; the reason stands beside it.
+		forms["text/plain"] = fmt.Sprintf("%s (no PNG: %v)", f.String(), err)
+		return forms
+	}
+	forms["image/png"] = b.Bytes()
+	return forms
+}

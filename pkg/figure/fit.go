@@ -1,0 +1,174 @@
+package figure
+
+import (
+	"fmt"
+	"math"
+)
+
+// Fit draws the response against the first predictor, one series for each value
+// of the others, with error bars of one standard uncertainty and the fitted
+// values joined, over an aligned panel of standardised residuals.
+func (d *Data) Fit() (*Figure, error) {
+	r, err := d.rows()
+	if err != nil {
+		return nil, err
+	}
+	x, xName := d.order(), "reading, in order of acquisition"
+	xUnit := d.unit("")
+	first := -1
+	if c := d.leading(); c >= 0 {
+		first = c
+		x, xName, xUnit = r.Predictors[c], words(r.PredictorNames[c]), d.unit(r.PredictorNames[c])
+	}
+	var xsp, ysp spanner
+	for i := range x {
+		xsp.add(x[i])
+		ysp.add(r.Response[i])
+		if !r.Excluded[i] {
+			ysp.add(r.Fitted[i])
+			ysp.add(r.Response[i] + r.U[i])
+			ysp.add(r.Response[i] - r.U[i])
+		}
+	}
+	xa := Axis{Name: xName, Unit: xUnit, Log: first >= 0 && xsp.lo > 0 && xsp.hi/xsp.lo > longAxis}
+	xs, err := newScale(xa, xsp, 9)
+	if err != nil {
+		return nil, err
+	}
+	name, unit := d.response()
+	ya := Axis{Name: name, Unit: unit}
+	var plain spanner
+	for _, v := range r.Response {
+		plain.add(v)
+	}
+	if plain.lo > 0 && plain.hi/plain.lo > longAxis {
+		ya.Log = true
+		ysp = plain
+		for i, v := range r.Fitted {
+			if !r.Excluded[i] && v > 0 {
+				ysp.add(v)
+			}
+		}
+	}
+	ys, err := newScale(ya, ysp, 6)
+	if err != nil {
+		return nil, err
+	}
+	ra, rsp := d.residualAxis()
+	rs, err := newScale(ra, rsp, 5)
+	if err != nil {
+		return nil, err
+	}
+
+	title := "Fit and residuals"
+	s := newSheet(wide, title, d.Record.Title)
+	groups := d.split(first)
+	left := marginX + math.Max(leftMargin(ys), leftMargin(rs))
+	var keys []key
+	for k, g := range groups {
+		n := g.name
+		if n == "" {
+			n = "readings"
+		}
+		keys = append(keys, key{look: lookOf(k), name: n, point: true, line: true})
+	}
+	s.keys(keys, left)
+	top := &panel{c: s.c, xs: xs, ys: ys}
+	top.at(left, s.y+8+labelSize+6, wide-marginX-left, 210)
+	foot := &panel{c: s.c, xs: again(xs), ys: rs}
+	foot.at(left, top.y+top.h+14+labelSize+6, top.w, 92)
+	foot.ground()
+	size := 2.6
+	if r.N > 400 {
+		size = 1.5
+	}
+	joined := true
+	var skip []bool
+	for k, g := range groups {
+		lk := lookOf(k)
+		gx, gy, gu, gf, gr := pick(x, g.rows), pick(r.Response, g.rows), pick(r.U, g.rows), pick(r.Fitted, g.rows), pick(r.Standardised, g.rows)
+		skip = skip[:0]
+		for _, i := range g.rows {
+			skip = append(skip, r.Excluded[i])
+		}
+		if cx, cy, ok := guide(gx, gf, skip, xs); ok && first >= 0 {
+			top.curve(cx, cy, pen{stroke: lk.color, width: 1, dash: dashText(lk.dash)})
+		} else {
+			joined = false
+		}
+		keep := thin(gx, gy, xs, ys, skip, thinAbove/len(groups))
+		var in, out []int
+		for _, i := range keep {
+			if skip[i] {
+				out = append(out, i)
+			} else {
+				in = append(in, i)
+			}
+		}
+		s.count(len(keep), len(g.rows))
+		if len(in) <= 1000 {
+			top.bars(gx, gy, nil, gu, in, lk.color)
+		}
+		top.dots(gx, gy, in, lk.marker, size, lk.marker.pen(lk.color, false))
+		top.dots(gx, gy, out, lk.marker, size, lk.marker.pen(lk.color, true))
+		rk := thin(gx, gr, xs, rs, skip, thinAbove/len(groups))
+		in, out = in[:0], out[:0]
+		for _, i := range rk {
+			if skip[i] {
+				out = append(out, i)
+			} else {
+				in = append(in, i)
+			}
+		}
+		s.count(len(rk), len(g.rows))
+		foot.dots(gx, gr, in, lk.marker, size, lk.marker.pen(lk.color, false))
+		foot.edgeDots(gx, gr, out, lk.marker, size, lk.color)
+	}
+	top.axes(frame{tag: "a", noX: true})
+	foot.axes(frame{tag: "b"})
+	s.y = foot.y + foot.h + below
+	_, lines := d.reasons()
+	if len(lines) > 0 {
+		s.note("Open markers: readings left out of the fit, see the residuals in order of acquisition.")
+	}
+	caption := fmt.Sprintf("a, %s against %s with error bars of one standard uncertainty (often smaller than the marker)", name, xName)
+	if joined {
+		caption += "; the lines join the fitted values"
+	}
+	caption += ". b, standardised residuals; the grey band is ±2."
+	return s.finish("fit", title, caption, d.residualSummary(r.N)), nil
+}
+
+// edgeDots draws hollow markers, those beyond the axis at its edge.
+func (p *panel) edgeDots(x, y []float64, rows []int, m marker, r float64, color string) {
+	for _, i := range rows {
+		cx, cy := p.xs.pos(x[i]), p.ys.pos(y[i])
+		shape := m
+		switch {
+		case !finite(cx, cy):
+			continue
+		case cy < p.y:
+			cy, shape = p.y+8, triangle
+		case cy > p.y+p.h:
+			cy, shape = p.y+p.h-9, inverted
+		}
+		var q path
+		shape.mark(&q, cx, cy, r)
+		p.c.draw(q, shape.pen(color, true))
+	}
+}
+
+// leading is the predictor that spans the widest range of values relative to
+// its clusters: the first with more than one value, −1 when there is none.
+func (d *Data) leading() int {
+	for c, v := range d.Rows.Predictors {
+		var s spanner
+		for _, x := range v {
+			s.add(x)
+		}
+		if s.n == d.Rows.N && s.hi > s.lo && s.hi-s.lo > 1e-3*math.Max(math.Abs(s.lo), math.Abs(s.hi)) {
+			return c
+		}
+	}
+	return -1
+}
