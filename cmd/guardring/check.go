@@ -1,0 +1,72 @@
+package main
+
+import (
+	"fmt"
+	"sort"
+
+	"github.com/spf13/cobra"
+
+	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/reduce"
+	"example.org/guardring/pkg/si"
+)
+
+func checkCommand() *cobra.Command {
+	return &cobra.Command{
+		Use:   "check DIR",
+		Short: "Read and validate a bench without reducing it",
+		Long: `Check reads DIR/bench.toml and the readings it names, checks every key, unit and
+number and whether the model applies, and prints what it found.`,
+		Example: "  guardring check datasets/attracted-disc",
+		Args:    cobra.ExactArgs(1),
+		RunE: func(cmd *cobra.Command, args []string) error {
+			b, err := bench.Open(args[0])
+			if err != nil {
+				return err
+			}
+			s, err := reduce.Check(b)
+			if err != nil {
+				return err
+			}
+			w := cmd.OutOrStdout()
+			fmt.Fprintf(w, "%s\n", b.Title)
+			fmt.Fprintf(w, "model        %s (%s)\n", b.Kind.Name, b.Kind.Title)
+			for _, in := range b.Inputs {
+				fmt.Fprintf(w, "input        %s  sha256 %s", in.File, in.SHA256)
+				if in.Rows > 0 {
+					fmt.Fprintf(w, "  %d rows, %d excluded", in.Rows, in.Excluded)
+				}
+				fmt.Fprintln(w)
+			}
+			fmt.Fprintf(w, "rows in fit  %d\n", s.Rows)
+			for _, c := range b.Channels {
+				fmt.Fprintf(w, "channel      %s: column %q in %s\n", c.Name, c.Column, c.Unit.Symbol)
+			}
+			for _, p := range s.Estimated {
+				fmt.Fprintf(w, "estimate     %s\n", p)
+			}
+			for _, q := range b.Scalars {
+				if q.Given {
+					fmt.Fprintf(w, "given        %s = %s\n", q.Name, si.Short(q.Unit.FromSI(q.Dist.Value), q.Unit.DeltaFromSI(q.Dist.U), q.Unit))
+				}
+			}
+			names := make([]string, 0, len(b.Corrections))
+			for n := range b.Corrections {
+				names = append(names, n)
+			}
+			sort.Strings(names)
+			for _, n := range names {
+				state := "off"
+				if b.Corrections[n] {
+					state = "on"
+				}
+				fmt.Fprintf(w, "correction   %s: %s\n", n, state)
+			}
+			for _, warning := range s.Warnings {
+				fmt.Fprintf(cmd.ErrOrStderr(), "guardring: warning: %v\n", warning)
+			}
+			fmt.Fprintln(w, "the bench is in order")
+			return nil
+		},
+	}
+}

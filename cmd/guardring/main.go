@@ -1,0 +1,28 @@
+// Guardring reduces readings of electrostatic benches: from a folder with a
+// bench description (bench.toml) and readings (CSV) to fitted parameters,
+// measurands with an uncertainty budget, residuals and a record that another
+// laboratory can check.
+//
+// Usage:
+//
+//	guardring reduce DIR...           the main job: readings to a result
+//	guardring check DIR...            read and validate a bench, reduce nothing
+//	guardring new DIR --model NAME    write a commented bench to start from
+//	guardring kernel install          install the notebook kernel
+//	guardring version                 version and modules
+//
+// Run "guardring help COMMAND" for the options of a command, with an example.
+//
+// Exit codes: 0 the work is done; 1 it shows a difference; 2 wrong use, bad
+// input, a fit that is singular or has not converged (its result is printed), or
+// a failed write; 130 interrupted.
+package main
+
+import (
+	"context"
+	"os"
+)
+
+func main() {
+	os.Exit(run(context.Background(), os.Args[1:], os.Stdin, os.Stdout, os.Stderr))
+}

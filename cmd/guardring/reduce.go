@@ -1,0 +1,164 @@
+package main
+
+import (
+	"bytes"
+	"context"
+	"encoding/json"
+	"fmt"
+	"io"
+	"os"
+	"path/filepath"
+
+	"github.com/spf13/cobra"
+
+	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/figure"
+	"example.org/guardring/pkg/reduce"
+	"example.org/guardring/pkg/report"
+	"example.org/guardring/pkg/safefile"
+)
+
+// reduceOptions are the flags of reduce.
+type reduceOptions struct {
+	html, figures string
+	json, lawOnly bool
+	settings      reduce.Settings
+}
+
+func reduceCommand() *cobra.Command {
+	var o reduceOptions
+	cmd := &cobra.Command{
+		Use:   "reduce DIR...",
+		Short: "Turn the readings of a bench into a result with its uncertainty",
+		Long: `Reduce reads DIR/bench.toml and the readings it names, applies the corrections,
+fits the model, builds the uncertainty budget by the law of propagation, checks
+it by Monte Carlo trials of the whole chain, and prints the result.
+
+With several folders each is reduced by itself and a summary table is printed; a
+bad one does not stop the others.`,
+		Example: `  guardring reduce datasets/attracted-disc
+  guardring reduce datasets/attracted-disc --html result.html --figures figures
+  guardring reduce datasets/attracted-disc --json --rows > result.json`,
+		Args: cobra.MinimumNArgs(1),
+		RunE: func(cmd *cobra.Command, dirs []string) error {
+			o.settings.LawOnly = o.lawOnly
+			if o.settings.Trials < 1 {
+				return fmt.Errorf("--trials %d: at least 1 is needed; use --law-only for none", o.settings.Trials)
+			}
+			if len(dirs) == 1 {
+				return o.one(cmd.Context(), dirs[0], cmd.OutOrStdout(), cmd.ErrOrStderr())
+			}
+			return o.many(cmd.Context(), dirs, cmd.OutOrStdout(), cmd.ErrOrStderr())
+		},
+	}
+	f := cmd.Flags()
+	f.StringVar(&o.html, "html", "", "write the report as one HTML `FILE`")
+	f.StringVar(&o.figures, "figures", "", "write the figures as SVG into folder `DIR`")
+	f.BoolVar(&o.json, "json", false, "print the record as JSON and nothing else")
+	f.BoolVar(&o.settings.Rows, "rows", false, "put every row with its residual into the record")
+	f.Uint64Var(&o.settings.Seed, "seed", 0, "seed `N` of the Monte Carlo trials")
+	f.IntVar(&o.settings.Trials, "trials", reduce.DefaultTrials, "number `N` of Monte Carlo trials")
+	f.BoolVar(&o.lawOnly, "law-only", false, "no Monte Carlo check")
+	return cmd
+}
+
+// one reduces one bench and prints its result.
+func (o *reduceOptions) one(ctx context.Context, dir string, stdout, stderr io.Writer) error {
+	b, err := bench.Open(dir)
+	if err != nil {
+		return err
+	}
+	r, err := reduce.Run(ctx, b, o.settings)
+	if err != nil {
+		return err
+	}
+	// Everything is made before anything is written, so that a failure leaves no
+	// partial output.
+	files, err := o.render(r)
+	if err != nil {
+		return err
+	}
+	var out bytes.Buffer
+	if o.json {
+		err = writeJSON(&out, &r.Record)
+	} else {
+		err = report.Text(&out, r)
+	}
+	if err != nil {
+		return err
+	}
+	if err := writeFiles(files); err != nil {
+		return err
+	}
+	if _, err := stdout.Write(out.Bytes()); err != nil {
+		return err
+	}
+	if o.json {
+		for _, w := range r.Record.Warnings {
+			fmt.Fprintf(stderr, "guardring: warning: %s\n", w)
+		}
+	}
+	if s := r.Record.Fit.Status; s != "converged" {
+		return fmt.Errorf("%s: the fit is %s: %s", dir, s, r.Record.Fit.Reason)
+	}
+	return nil
+}
+
+// outFile is a file to be written.
+type outFile struct {
+	path string
+	data []byte
+}
+
+// render makes the files that the options ask for.
+func (o *reduceOptions) render(r *reduce.Result) ([]outFile, error) {
+	var files []outFile
+	if o.html != "" {
+		var b bytes.Buffer
+		if err := report.HTML(&b, r); err != nil {
+			return nil, err
+		}
+		files = append(files, outFile{o.html, b.Bytes()})
+	}
+	if o.figures != "" {
+		all, err := figure.All(r)
+		if err != nil {
+			return nil, err
+		}
+		for _, f := range all {
+			var b bytes.Buffer
+			if err := f.WriteSVG(&b); err != nil {
+				return nil, err
+			}
+			files = append(files, outFile{filepath.Join(o.figures, f.Name()+".svg"), b.Bytes()})
+		}
+	}
+	return files, nil
+}
+
+// writeFiles writes each file whole or not at all, making folders as needed.
+func writeFiles(files []outFile) error {
+	for _, f := range files {
+		if dir := filepath.Dir(f.path); dir != "." {
+			if err := os.MkdirAll(dir, 0o777); err != nil {
+				return err
+			}
+		}
+		if err := safefile.Write(f.path, func(w io.Writer) error {
+			_, err := w.Write(f.data)
+			return err
+		}); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// writeJSON prints a document with indentation and a final newline.
+func writeJSON(w io.Writer, v any) error {
+	e := json.NewEncoder(w)
+	e.SetIndent("", "  ")
+	e.SetEscapeHTML(false)
+	return e.Encode(v)
+}
+

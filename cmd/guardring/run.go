@@ -1,0 +1,91 @@
+package main
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io"
+	"os"
+	"os/signal"
+	"syscall"
+
+	"github.com/spf13/cobra"
+	"golang.org/x/term"
+
+	"example.org/guardring/pkg/cell"
+)
+
+// The exit codes.
+const (
+	exitDone        = 0
+	exitDifference  = 1
+	exitBad         = 2
+	exitInterrupted = 130
+)
+
+// differs is the error of work that is done and shows a difference.
+type differs struct{ error }
+
+// said is an error whose message has been printed already.
+type said struct{ error }
+
+// run is the command: arguments and streams in, exit code out.
+func run(ctx context.Context, args []string, stdin io.Reader, stdout, stderr io.Writer) int {
+	ctx, stop := signal.NotifyContext(ctx, os.Interrupt, syscall.SIGTERM)
+	defer stop()
+	// After the first interrupt the next one ends the program the usual way.
+	context.AfterFunc(ctx, stop)
+	ctx, finish := withProgress(ctx, stderr)
+	root := newRoot()
+	root.SetArgs(args)
+	root.SetIn(stdin)
+	root.SetOut(stdout)
+	root.SetErr(stderr)
+	err := root.ExecuteContext(ctx)
+	finish()
+	if err == nil {
+		return exitDone
+	}
+	var silent said
+	if !errors.As(err, &silent) {
+		fmt.Fprintf(stderr, "guardring: %v\n", err)
+	}
+	var d differs
+	switch {
+	case errors.Is(err, context.Canceled) && ctx.Err() != nil:
+		return exitInterrupted
+	case errors.As(err, &d):
+		return exitDifference
+	}
+	return exitBad
+}
+
+// withProgress draws progress on stderr when that is a terminal.
+func withProgress(ctx context.Context, stderr io.Writer) (context.Context, func()) {
+	f, ok := stderr.(*os.File)
+	if !ok || !term.IsTerminal(int(f.Fd())) {
+		return ctx, func() {}
+	}
+	b := &bars{w: f}
+	return cell.WithProgress(ctx, b.show), b.finish
+}
+
+func newRoot() *cobra.Command {
+	root := &cobra.Command{
+		Use:   "guardring",
+		Short: "Reduce readings of electrostatic benches to results with uncertainty",
+		Long: `Guardring turns readings of electrostatic benches (CSV) and a description of the
+bench (bench.toml) into results with an uncertainty budget, residuals and a
+record that another laboratory can check.
+
+Exit codes: 0 done; 1 the work shows a difference; 2 wrong use, bad input, a fit
+that is singular or has not converged, or a failed write; 130 interrupted.`,
+		SilenceErrors: true,
+		SilenceUsage:  true,
+		Args:          cobra.NoArgs,
+		RunE:          func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
+	}
+	root.CompletionOptions.HiddenDefaultCmd = true
+	root.AddCommand(reduceCommand(), checkCommand(), newCommand(), kernelCommand(), versionCommand())
+	return root
+}

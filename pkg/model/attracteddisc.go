@@ -1,0 +1,302 @@
+package model
+
+import (
+	"fmt"
+	"math"
+
+	"example.org/guardring/pkg/field"
+	"example.org/guardring/pkg/gum"
+	"example.org/guardring/pkg/jet"
+	"example.org/guardring/pkg/si"
+)
+
+// AttractedDisc is the guarded attracted disc: the force on a disc that lies
+// in the plane of its guard ring, opposite a plate at a known voltage and
+// spacing, weighed on a balance (Maxwell, Treatise, arts. 216–218). The fit
+// gives the permittivity of the gap.
+var AttractedDisc = register(&Kind{
+	Name:  "attracted-disc",
+	Title: "Guarded attracted-disc balance",
+	Doc: "A disc within a guard ring is attracted by a parallel plate at a known voltage and spacing; " +
+		"the force, read in newtons or as the indication of a balance, gives the permittivity of the gap.",
+	Channels: []Channel{
+		{Name: "voltage", Doc: "voltage of the plate against disc and guard", Unit: si.MustUnit("kV"), Role: Predictor},
+		{Name: "gap", Doc: "spacing of plate and disc as read on the micrometer", Unit: si.MustUnit("mm"), Role: Predictor, Positive: true},
+		{Name: "force", Doc: "force of attraction on the disc", Unit: si.MustUnit("mN"), Role: Response},
+		{Name: "mass", Doc: "indication of the balance, conventional mass", Unit: si.MustUnit("g"), Role: Response},
+	},
+	Scalars: []Scalar{
+		{Table: "quantities", Name: "permittivity", Doc: "permittivity of the gap", Unit: si.MustUnit("pF/m"), Sought: true, Positive: true, Part: "result"},
+		{Table: "quantities", Name: "contact_potential", Doc: "contact potential, subtracted from the voltage", Unit: si.MustUnit("V"), Adjustable: true, Part: "electrodes"},
+		{Table: "quantities", Name: "gap_offset", Doc: "zero error of the spacing scale, added to the reading", Unit: si.MustUnit("um"), Adjustable: true, Part: "electrodes"},
+		{Table: "quantities", Name: "disc_radius", Doc: "radius of the disc", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "electrodes"},
+		{Table: "quantities", Name: "guard_gap", Doc: "width of the gap between disc and guard ring", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "electrodes"},
+		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy (default: the disc alone)", Unit: si.MustUnit("pF"), Part: "safety"},
+		electricConstant,
+		{Table: "corrections.guard_gap", Name: "model", Doc: "relative error of the deep-slot formula of the guard gap", Unit: si.MustUnit("1"), Default: gum.Normal(0, 5e-5), Part: "electrodes"},
+		{Table: "corrections.wedge", Name: "half_difference", Doc: "plates not parallel: half the difference of spacing across the disc", Unit: si.MustUnit("um"), Required: true, Squared: true, Part: "electrodes"},
+		{Table: "corrections.coplanarity", Name: "step", Doc: "height of the disc above the plane of the guard", Unit: si.MustUnit("um"), Required: true, Part: "electrodes"},
+		{Table: "corrections.coplanarity", Name: "edge", Doc: "coefficient of the edge term, in step/radius", Unit: si.MustUnit("1"), Default: gum.Rectangular(0, 2), Part: "electrodes"},
+		temperature, pressure, humidity,
+		{Table: "environment", Name: "gravity", Doc: "acceleration of free fall at the balance (surveyed)", Unit: si.MustUnit("m/s2"), Positive: true, Part: "balance"},
+		{Table: "environment", Name: "latitude", Doc: "geographic latitude, for normal gravity when none is surveyed", Unit: si.MustUnit("deg"), Part: "balance"},
+		{Table: "environment", Name: "height", Doc: "height above the ellipsoid, for normal gravity", Unit: si.MustUnit("m"), Part: "balance"},
+		{Table: "environment", Name: "gravity_anomaly", Doc: "local departure from normal gravity", Unit: si.MustUnit("m/s2"), Default: gum.Normal(0, 3e-4), Part: "balance"},
+		{Table: "corrections.balance", Name: "air_density", Doc: "density of air when the balance was adjusted", Unit: si.MustUnit("kg/m3"), Default: gum.Exactly(1.2), Part: "balance"},
+	},
+	Corrections: []Correction{
+		{Name: "guard_gap", Doc: "effective area of the disc with its guard gap", Default: true},
+		{Name: "wedge", Doc: "plates not parallel"},
+		{Name: "coplanarity", Doc: "disc proud of the guard plane"},
+		{Name: "air", Doc: "moist air of the gap, for the permittivity of vacuum"},
+		{Name: "balance", Doc: "conventional mass to force: air density at adjustment", Default: true},
+	},
+	Prepare: prepareAttractedDisc,
+})
+
+// Scalars that several kinds share.
+var (
+	electricConstant = Scalar{Table: "quantities", Name: "electric_constant", Doc: "vacuum permittivity (CODATA 2022)",
+		Unit: si.MustUnit("F/m"), Default: gum.Normal(si.Eps0, si.UEps0), Positive: true, Part: "constants"}
+	temperature = Scalar{Table: "environment", Name: "temperature", Doc: "temperature of the air", Unit: si.MustUnit("degC"),
+		Default: gum.Exactly(293.15), Positive: true, Part: "air"}
+	pressure = Scalar{Table: "environment", Name: "pressure", Doc: "pressure of the air", Unit: si.MustUnit("hPa"),
+		Default: gum.Exactly(101325), Positive: true, Part: "air"}
+	humidity = Scalar{Table: "environment", Name: "humidity", Doc: "relative humidity of the air", Unit: si.MustUnit("%"),
+		Default: gum.Exactly(0.5), Part: "air"}
+)
+
+func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
+	at := func(key string) int { return k.Scalar(key) }
+	iEps, iVc, iOff, iR, iG := at("permittivity"), at("contact_potential"), at("gap_offset"), at("disc_radius"), at("guard_gap")
+	iCap, iE0 := at("bench_capacitance"), at("electric_constant")
+	iModel, iWedge := at("corrections.guard_gap.model"), at("corrections.wedge.half_difference")
+	iStep, iEdge := at("corrections.coplanarity.step"), at("corrections.coplanarity.edge")
+	iT, iP, iH := at("environment.temperature"), at("environment.pressure"), at("environment.humidity")
+	iGrav, iLat, iHeight, iAnomaly := at("environment.gravity"), at("environment.latitude"), at("environment.height"), at("environment.gravity_anomaly")
+	iRho := at("corrections.balance.air_density")
+
+	response := "force"
+	if s.Channels["mass"] {
+		response = "mass"
+		if !s.Given["environment.gravity"] && !s.Given["environment.latitude"] {
+			return nil, fmt.Errorf("environment.gravity: a balance indication needs the local acceleration of free fall; state gravity, or latitude and height")
+		}
+	}
+	guard, wedge, coplanar := s.On["guard_gap"], s.On["wedge"], s.On["coplanarity"]
+	surveyed := s.Given["environment.gravity"]
+	wedgeC, err := field.WedgeCoefficient(field.Disc, field.OnForce)
+	if err != nil {
+		return nil, err
+	}
+
+	// newton per kilogram of conventional mass indicated
+	perMass := func(q []jet.Jet) jet.Jet {
+		g := q[iGrav]
+		if !surveyed {
+			g = field.GravityJet(q[iLat], q[iHeight]).Add(q[iAnomaly])
+		}
+		if s.On["balance"] {
+			return field.BalanceForceJet(jet.Const(1), g, q[iRho])
+		}
+		return g
+	}
+	m := &Model{Response: response, Predictors: []string{"voltage", "gap"}}
+	m.Row = func(q, x []jet.Jet) jet.Jet {
+		d := x[1].Add(q[iOff])
+		v := x[0].Sub(q[iVc])
+		r := q[iR]
+		var area jet.Jet
+		if guard {
+			area = field.GuardedForceAreaJet(r, r.Add(q[iG]), d).Mul(q[iModel].Plus(1))
+		} else {
+			area = r.Sqr().Scale(math.Pi)
+		}
+		f := q[iEps].Mul(area).Mul(v.Div(d).Sqr()).Scale(0.5)
+		if wedge {
+			f = f.Mul(q[iWedge].Div(d.Sqr()).Scale(wedgeC).Plus(1))
+		}
+		if coplanar {
+			f = f.Mul(field.CoplanarityForceJet(q[iStep], d)).Mul(q[iEdge].Mul(q[iStep]).Div(r).Plus(1))
+		}
+		if response == "mass" {
+			f = f.Div(perMass(q))
+		}
+		return f
+	}
+	m.Block = func(q []float64, x [][]float64, lo, hi int, wrt []int, f []float64, jac [][]float64) bool {
+		for _, j := range wrt {
+			if j != iEps && j != iVc && j != iOff {
+				return false
+			}
+		}
+		// A_F = a + b D²/(D+α)²: GuardedForceArea rearranged so that its
+		// derivative by D stays one line.
+		r := q[iR]
+		a, b, alpha := math.Pi*r*r, 0.0, 0.0
+		scale := 0.5 * q[iEps]
+		if guard {
+			rg := r + q[iG]
+			b = 0.5 * math.Pi * (rg*rg - r*r)
+			alpha = field.SlotLength(r, rg)
+			scale *= 1 + q[iModel]
+		}
+		tilt, step, edge := 0.0, 0.0, 1.0
+		if wedge {
+			tilt = wedgeC * q[iWedge]
+		}
+		if coplanar {
+			step = q[iStep]
+			edge = 1 + q[iEdge]*step/r
+		}
+		if response == "mass" {
+			scale /= perMassValue(perMass, q)
+		}
+		vc, off := q[iVc], q[iOff]
+		xv, xd := x[0], x[1]
+		for i := lo; i < hi; i++ {
+			d := xd[i] + off
+			v := xv[i] - vc
+			inv := 1 / d
+			s := 1 / (d + alpha)
+			e := v * inv
+			u := d * s
+			area := a + b*u*u
+			t := 1 + tilt*inv*inv
+			p := d / (d - step)
+			c := p * p * edge
+			g := scale * e * e
+			h := g * area * t * c
+			f[i] = h
+			if jac == nil {
+				continue
+			}
+			for k, j := range wrt {
+				switch j {
+				case iEps:
+					jac[k][i] = h / q[iEps]
+				case iVc:
+					jac[k][i] = -2 * scale * e * inv * area * t * c
+				case iOff:
+					dArea := 2 * b * d * alpha * s * s * s
+					jac[k][i] = g * c * (dArea*t - 2*area*(t*inv+tilt*inv*inv*inv+t*(p-1)*inv))
+				}
+			}
+		}
+		return true
+	}
+	m.Start = func(q []float64, free []int, x [][]float64, y []float64) ([]float64, error) {
+		// With everything else at its stated value the response is proportional
+		// to the permittivity: a regression through the origin.
+		w := append([]float64(nil), q...)
+		w[iEps] = 1
+		f := make([]float64, len(y))
+		m.Block(w, x, 0, len(y), nil, f, nil)
+		var sfy, sff float64
+		for i, v := range f {
+			sfy += v * y[i]
+			sff += v * v
+		}
+		start := make([]float64, len(free))
+		for k, j := range free {
+			start[k] = q[j]
+			if j == iEps {
+				start[k] = sfy / sff
+				if !(start[k] > 0) {
+					return nil, fmt.Errorf("readings of %s: no attraction at any voltage (rough permittivity %.3g F/m); check the sign and the zero of the channel", response, start[k])
+				}
+			}
+		}
+		return start, nil
+	}
+	m.Check = func(q []float64, x [][]float64, y []float64) ([]error, error) {
+		var warn []error
+		minGap := math.Inf(1)
+		for i, d := range x[1] {
+			if d+q[iOff] <= 0 {
+				return nil, &RowError{Row: i, Err: fmt.Errorf("gap %.6g mm: must be above zero", 1e3*(d+q[iOff]))}
+			}
+			minGap = math.Min(minGap, d+q[iOff])
+		}
+		if guard && minGap < 5*q[iG] {
+			return nil, fmt.Errorf("corrections.guard_gap: the deep-slot formula holds for gaps of at least 5 × guard_gap (%.4g mm); the smallest gap is %.4g mm; exclude those rows or switch the correction off and state its uncertainty",
+				5e3*q[iG], 1e3*minGap)
+		}
+		if wedge && math.Sqrt(q[iWedge]) > 0.1*minGap {
+			return nil, fmt.Errorf("corrections.wedge.half_difference: %.3g mm is more than a tenth of the smallest gap (%.3g mm); the expansion holds for small tilts", 1e3*math.Sqrt(q[iWedge]), 1e3*minGap)
+		}
+		if coplanar && math.Abs(q[iStep]) > 0.01*minGap {
+			warn = append(warn, fmt.Errorf("corrections.coplanarity.step: %.3g mm is more than 1 %% of the smallest gap (%.3g mm); the first-order correction may not suffice", 1e3*q[iStep], 1e3*minGap))
+		}
+		if s.On["air"] && q[iH] > 0.7 {
+			warn = append(warn, fmt.Errorf("environment.humidity: %.0f %% is above 70 %%, where surface leakage spoils such readings (common practice)", 100*q[iH]))
+		}
+		return append(warn, breakdownWarning(m.Hazard(q, x))...), nil
+	}
+	m.Hazard = func(q []float64, x [][]float64) Hazard {
+		h := Hazard{}
+		delta, err := field.RelativeAirDensity(q[iT], q[iP])
+		if err != nil {
+			delta = 1 // the cautions stand even where the air is not known
+		}
+		worst := -1.0
+		for i, v := range x[0] {
+			d := x[1][i] + q[iOff]
+			if d <= 0 {
+				continue
+			}
+			c := math.Max(q[iCap], si.Eps0*math.Pi*q[iR]*q[iR]/d)
+			v = math.Abs(v)
+			h.Voltage = math.Max(h.Voltage, v)
+			h.Energy = math.Max(h.Energy, field.StoredEnergy(c, v))
+			h.Charge = math.Max(h.Charge, c*v)
+			e := v / d
+			b, err := field.BreakdownField(d, delta)
+			if err == nil && e/b > worst {
+				worst = e / b
+				h.Field, h.Breakdown, h.Row, h.HasBreakdown = e, b, i, true
+			}
+		}
+		return h
+	}
+	m.Measurands = []Measurand{
+		{Name: "permittivity", Doc: "permittivity of the gap", Unit: si.MustUnit("pF/m"),
+			Value: func(q []jet.Jet) jet.Jet { return q[iEps] }},
+		{Name: "relative_permittivity", Doc: "permittivity of the gap over the electric constant", Unit: si.MustUnit("1"),
+			Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(q[iE0]) }},
+	}
+	if s.On["air"] {
+		m.Measurands = append(m.Measurands, Measurand{
+			Name: "vacuum_permittivity", Doc: "permittivity of the gap over that of its moist air relative to vacuum", Unit: si.MustUnit("pF/m"),
+			Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(field.AirPermittivityJet(q[iT], q[iP], q[iH])) }})
+	}
+	m.Causes = []Cause{
+		{Name: "wedge", Doc: "grows as 1/gap² relative to the force: plates not parallel",
+			Signature: func(q, x []float64, f, t float64) float64 { d := x[1] + q[iOff]; return f / (d * d) }},
+		{Name: "contact_potential", Doc: "changes sign with the polarity and falls as 1/voltage relative to the force",
+			Signature: func(q, x []float64, f, t float64) float64 {
+				if v := x[0] - q[iVc]; v != 0 {
+					return f / v
+				}
+				return 0
+			}},
+		{Name: "gap_offset", Doc: "grows as 1/gap relative to the force: zero of the spacing scale",
+			Signature: func(q, x []float64, f, t float64) float64 { return f / (x[1] + q[iOff]) }},
+		{Name: "zero", Doc: "the same at every voltage: zero of the balance",
+			Signature: func(q, x []float64, f, t float64) float64 { return 1 }},
+		{Name: "drift", Doc: "proportional to time, whatever the voltage",
+			Signature: func(q, x []float64, f, t float64) float64 { return t }},
+		{Name: "edge", Doc: "grows with the gap relative to the force: field beyond the guard",
+			Signature: func(q, x []float64, f, t float64) float64 { return f * (x[1] + q[iOff]) }},
+	}
+	return m, nil
+}
+
+// perMassValue evaluates a jet function of the scalars at plain numbers.
+func perMassValue(f func(q []jet.Jet) jet.Jet, q []float64) float64 {
+	c := make([]jet.Jet, len(q))
+	for i, v := range q {
+		c[i] = jet.Const(v)
+	}
+	return f(c).V
+}

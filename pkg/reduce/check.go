@@ -1,0 +1,26 @@
+package reduce
+
+import (
+	"example.org/guardring/pkg/bench"
+)
+
+// Summary is what Check found.
+type Summary struct {
+	Rows      int      // in the fit
+	Estimated []string // the scalars that the fit will estimate
+	Warnings  []error
+}
+
+// Check prepares a bench for reduction without fitting it: whether the model
+// applies, the rows suffice, and the corrections are within their validity.
+func Check(b *bench.Bench) (*Summary, error) {
+	c, err := newChain(b)
+	if err != nil {
+		return nil, err
+	}
+	s := &Summary{Rows: len(c.record), Warnings: append(append([]error(nil), b.Warnings...), c.warnings...)}
+	for _, f := range c.free {
+		s.Estimated = append(s.Estimated, b.Scalars[f].Name)
+	}
+	return s, nil
+}

@@ -1,0 +1,246 @@
+package reduce
+
+import (
+	"fmt"
+	"math"
+
+	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/lsq"
+	"example.org/guardring/pkg/si"
+)
+
+// component is one source of differences between rows: independent from row to
+// row, or shared by the rows of a group. It acts on the response reading, or on
+// the true value of a predictor and through ∂f/∂x on the response.
+type component struct {
+	name    string
+	channel string
+	unit    si.Unit
+	on      int // −1 the response, else the predictor
+	dof     float64
+	flat    bool      // rectangular (resolution), else normal
+	u       []float64 // standard uncertainty of each row, SI, on the scale it acts on
+	group   []int     // group of each row; nil: independent
+	count   int       // number of groups
+	column  int       // first column in the effects
+	unknown bool      // noise of the response, from the residuals
+}
+
+// zeroComponent marks the component of the zero correction.
+const zeroComponent = "zero"
+
+// listComponents gathers noise, resolution and grouped effects.
+func (c *chain) listComponents() error {
+	n := len(c.record)
+	rows := append([]int{c.resp}, c.pred...)
+	for k, ci := range rows {
+		ch := &c.b.Channels[ci]
+		on := k - 1
+		readings, gain := c.yr, 1.0
+		if on >= 0 {
+			readings = c.xr[on]
+			gain, _ = gainOffset(ch)
+			gain = math.Abs(gain)
+		}
+		if on < 0 && ch.FromResiduals {
+			c.comps = append(c.comps, component{name: ch.Name + " noise", channel: ch.Name, unit: ch.Unit, on: on,
+				u: make([]float64, n), unknown: true, dof: math.NaN()})
+		} else if ch.FromResiduals {
+			return fmt.Errorf("%s/bench.toml: channels.%s.noise: \"from-residuals\" is for the response (%s); state the noise of a predictor, or leave it out when it is part of the scatter",
+				c.b.Dir, ch.Name, c.m.Response)
+		} else if ch.Noise > 0 || ch.RelativeNoise > 0 {
+			u := make([]float64, n)
+			for i, r := range readings {
+				u[i] = gain * math.Hypot(ch.Noise, ch.RelativeNoise*r)
+			}
+			c.comps = append(c.comps, component{name: ch.Name + " noise", channel: ch.Name, unit: ch.Unit, on: on, u: u, dof: ch.NoiseDOF})
+		}
+		if ch.Resolution > 0 {
+			u := make([]float64, n)
+			for i := range u {
+				u[i] = gain * ch.Resolution / math.Sqrt(12)
+			}
+			comp := component{name: ch.Name + " resolution", channel: ch.Name, unit: ch.Unit, on: on, u: u, flat: true, dof: math.Inf(1)}
+			if ch.ResolutionPer == "setting" {
+				g := groupOf(c.b, "setting")
+				if g == nil {
+					return fmt.Errorf("%s/bench.toml: channels.%s.resolution_kind: \"setting\" needs a column in [rows] setting", c.b.Dir, ch.Name)
+				}
+				comp.group, comp.count = compact(g, c.record)
+			}
+			c.comps = append(c.comps, comp)
+		}
+		for _, g := range ch.Grouped {
+			u := make([]float64, n)
+			for i, r := range readings {
+				u[i] = gain * math.Hypot(g.U, g.Relative*r)
+			}
+			comp := component{name: ch.Name + " per " + g.By, channel: ch.Name, unit: ch.Unit, on: on, u: u, dof: g.DOF}
+			comp.group, comp.count = compact(g.Group, c.record)
+			c.comps = append(c.comps, comp)
+		}
+	}
+	if c.zero != nil {
+		ch := &c.b.Channels[c.resp]
+		c.comps = append(c.comps, component{name: ch.Name + " zero", channel: zeroComponent, unit: ch.Unit, on: -1,
+			dof: ch.NoiseDOF, count: len(c.zero.coef), unknown: ch.FromResiduals})
+	}
+	// Every row needs an independent part, or the weights are infinite.
+	total := make([]float64, n)
+	unknown := false
+	for _, k := range c.comps {
+		unknown = unknown || k.unknown
+		for i := range k.u {
+			if k.group == nil {
+				total[i] += k.u[i]
+			}
+		}
+	}
+	if !unknown {
+		for i, t := range total {
+			if !(t > 0) {
+				return fmt.Errorf("%s: the reading has no stated noise: give channels.%s.noise (a value with unit, or \"from-residuals\") in bench.toml",
+					c.place(c.record[i]), c.m.Response)
+			}
+		}
+	}
+	return nil
+}
+
+// groupOf returns the group numbers of a row column, from whatever channel
+// already holds them, or from the labels.
+func groupOf(b *bench.Bench, by string) []int {
+	labels := b.Rows.Labels[by]
+	if labels == nil {
+		return nil
+	}
+	seen := map[string]int{}
+	g := make([]int, len(labels))
+	for i, l := range labels {
+		k, ok := seen[l]
+		if !ok {
+			k = len(seen)
+			seen[l] = k
+		}
+		g[i] = k
+	}
+	return g
+}
+
+// compact renumbers the groups of the rows in use from 0.
+func compact(all []int, record []int) (group []int, count int) {
+	seen := map[int]int{}
+	group = make([]int, len(record))
+	for i, r := range record {
+		k, ok := seen[all[r]]
+		if !ok {
+			k = len(seen)
+			seen[all[r]] = k
+		}
+		group[i] = k
+	}
+	return group, len(seen)
+}
+
+// effects lays out the columns of the low-rank covariance; loads are filled by
+// reweight.
+func (c *chain) effects() *lsq.Effects {
+	e := &lsq.Effects{}
+	for k := range c.comps {
+		if c.comps[k].group != nil || c.comps[k].channel == zeroComponent {
+			c.comps[k].column = e.Columns
+			e.Columns += c.comps[k].count
+		}
+	}
+	if e.Columns == 0 {
+		return nil
+	}
+	for i := range c.record {
+		e.Start = append(e.Start, len(e.Column))
+		for k := range c.comps {
+			comp := &c.comps[k]
+			switch {
+			case comp.channel == zeroComponent:
+				for j := c.zero.start[i]; j < c.zero.start[i+1]; j++ {
+					e.Column = append(e.Column, comp.column+c.zero.column[j])
+				}
+			case comp.group != nil:
+				e.Column = append(e.Column, comp.column+comp.group[i])
+			}
+		}
+	}
+	e.Start = append(e.Start, len(e.Column))
+	e.Load = make([]float64, len(e.Column))
+	return e
+}
+
+// zeroNoise is the standard uncertainty of one zero reading.
+func (c *chain) zeroNoise() float64 {
+	ch := &c.b.Channels[c.resp]
+	if ch.FromResiduals {
+		return c.scale
+	}
+	return math.Hypot(ch.Noise, ch.Resolution/math.Sqrt(12))
+}
+
+// wanted says through which predictors errors of readings come in.
+func (c *chain) wanted() []bool {
+	w := make([]bool, len(c.pred))
+	for _, k := range c.comps {
+		if k.on >= 0 {
+			w[k.on] = true
+		}
+	}
+	return w
+}
+
+// reweight fills the independent standard uncertainties u and the loads of e at
+// scalars q: the covariance of the readings there.
+func (c *chain) reweight(q []float64, u []float64, e *lsq.Effects) {
+	slope := c.slopes(q, c.wanted())
+	clear(u)
+	for k := range c.comps {
+		comp := &c.comps[k]
+		if comp.group != nil || comp.channel == zeroComponent {
+			continue
+		}
+		if comp.unknown {
+			for i := range comp.u {
+				comp.u[i] = c.scale
+			}
+		}
+		for i, v := range comp.u {
+			if comp.on >= 0 {
+				v *= slope[comp.on][i]
+			}
+			u[i] += v * v
+		}
+	}
+	for i := range u {
+		u[i] = math.Sqrt(u[i])
+	}
+	if e == nil {
+		return
+	}
+	at := 0
+	for i := range c.record {
+		for k := range c.comps {
+			comp := &c.comps[k]
+			switch {
+			case comp.channel == zeroComponent:
+				s := c.zeroNoise()
+				for j := c.zero.start[i]; j < c.zero.start[i+1]; j++ {
+					e.Load[at] = -c.zero.weight[j] * c.zero.unit[c.zero.column[j]] * s
+					at++
+				}
+			case comp.group != nil:
+				v := comp.u[i]
+				if comp.on >= 0 {
+					v *= slope[comp.on][i]
+				}
+				e.Load[at] = v
+				at++
+			}
+		}
+	}
+}

@@ -1,0 +1,180 @@
+package reduce
+
+import (
+	"fmt"
+	"math"
+
+	"example.org/guardring/pkg/jet"
+)
+
+// corrections lists every correction of the kind with its mean size over the
+// rows in use and what remains uncertain of it. A correction of the model is
+// given relative to the response, found by predicting with and without it; the
+// zero correction as the root mean square of what was subtracted.
+func (c *chain) corrections(k *carried) ([]Correction, error) {
+	var out []Correction
+	for _, corr := range c.b.Kind.Corrections {
+		r := Correction{Name: corr.Name, Doc: corr.Doc, Unit: "1", Used: c.b.Corrections[corr.Name]}
+		switch {
+		case corr.Name == "zero":
+			r.Unit = siSymbol(c.b.Channels[c.resp].Unit)
+			if c.zero != nil {
+				r.Size, r.U = c.zeroSize()
+			}
+		case r.Used:
+			size, u, err := c.correctionSize(corr.Name, k)
+			if err != nil {
+				return nil, err
+			}
+			r.Size, r.U = Number(size), Number(u)
+		}
+		out = append(out, r)
+	}
+	return out, nil
+}
+
+// zeroSize is the root mean square zero and its standard uncertainty.
+func (c *chain) zeroSize() (size, u Number) {
+	var s, v float64
+	z := c.zero
+	for i := range c.record {
+		s += z.at(i) * z.at(i)
+		var one float64
+		for j := z.start[i]; j < z.start[i+1]; j++ {
+			w := z.weight[j] * z.unit[z.column[j]] * c.zeroNoise()
+			one += w * w
+		}
+		v += one
+	}
+	n := float64(len(c.record))
+	return Number(math.Sqrt(s / n)), Number(math.Sqrt(v / n))
+}
+
+// correctionSize is the mean of prediction with over prediction without a
+// correction, less one, and its standard uncertainty from the correction's own
+// inputs.
+func (c *chain) correctionSize(name string, k *carried) (size, u float64, err error) {
+	off := *c.setup
+	off.On = map[string]bool{}
+	for n, on := range c.setup.On {
+		off.On[n] = on && n != name
+	}
+	without, err := c.b.Kind.Prepare(c.b.Kind, &off)
+	if err != nil {
+		return 0, 0, fmt.Errorf("%s/bench.toml: without corrections.%s: %w", c.b.Dir, name, err)
+	}
+	if without.Response != c.m.Response {
+		return 0, 0, fmt.Errorf("corrections.%s changes the response of the model", name)
+	}
+	table := "corrections." + name
+	var own []int
+	for s, in := range c.inputs {
+		if in.kind == scalarInput && c.b.Kind.Scalars[in.index].Table == table {
+			own = append(own, s)
+		}
+	}
+	// A bench with very many rows is sampled evenly: the size is for people.
+	step := 1 + len(c.record)/10000
+	space := jet.NewSpace(len(own), 0)
+	grad := make([]float64, len(own))
+	rows := 0.0
+	for i := 0; i < len(c.record); i += step {
+		space.Reset()
+		qj := constants(k.q)
+		xj := make([]jet.Jet, len(c.x))
+		for p := range c.x {
+			xj[p] = jet.Const(c.x[p][i])
+		}
+		f0 := without.Row(qj, xj).V
+		for n, s := range own {
+			qj[c.inputs[s].index] = space.Var(n, k.q[c.inputs[s].index])
+		}
+		f := c.m.Row(qj, xj)
+		if f0 == 0 {
+			continue
+		}
+		rows++
+		size += f.V/f0 - 1
+		for n := range own {
+			grad[n] += f.Grad(n) / f0
+		}
+	}
+	if rows == 0 {
+		return 0, 0, nil
+	}
+	var v float64
+	for n, s := range own {
+		d := grad[n] / rows * c.inputs[s].u
+		v += d * d
+	}
+	return size / rows, math.Sqrt(v), nil
+}
+
+// causeLevel is the significance below which a cause is listed.
+const causeLevel = 0.01
+
+// rankCauses returns the causes whose signature the residuals carry: each is a
+// score test of one more parameter a·g_i in the prediction,
+//
+//	Δχ² = (gᵀΣ⁻¹r)² / (gᵀΣ⁻¹g − gᵀΣ⁻¹J A⁻¹ JᵀΣ⁻¹g),
+//
+// with one degree of freedom (Rao's score test; derived for this fit).
+func (c *chain) rankCauses(k *carried, residual []float64, solve func(v, dst []float64), ainv [][]float64, jac [][]float64) []Cause {
+	n, np := len(c.record), len(c.free)
+	free := map[string]bool{}
+	for _, f := range c.free {
+		free[c.b.Scalars[f].Name] = true
+	}
+	fitted := make([]float64, n)
+	c.indication(k.q, fitted, nil)
+	var out []Cause
+	g, sg := make([]float64, n), make([]float64, n)
+	x := make([]float64, len(c.x))
+	for _, cause := range c.m.Causes {
+		if free[cause.Name] {
+			continue
+		}
+		known := true
+		for i := range g {
+			for p := range c.x {
+				x[p] = c.x[p][i]
+			}
+			g[i] = cause.Signature(k.q, x, fitted[i], c.t[i])
+			known = known && !math.IsNaN(g[i]) && !math.IsInf(g[i], 0)
+		}
+		if !known {
+			continue
+		}
+		solve(g, sg)
+		num, den := dot(sg, residual), dot(sg, g)
+		whole := den
+		jg := make([]float64, np)
+		for j := range jg {
+			jg[j] = dot(sg, jac[j])
+		}
+		shift := make([]float64, np)
+		for a := range np {
+			for b := range np {
+				shift[a] += ainv[a][b] * jg[b]
+			}
+			den -= jg[a] * shift[a]
+		}
+		if !(den > 1e-9*whole) {
+			continue // the parameters already take up this signature
+		}
+		improvement := num * num / den
+		p := math.Erfc(math.Sqrt(improvement / 2))
+		if p >= causeLevel {
+			continue
+		}
+		_, byTheta, _ := c.sensitivities(&c.m.Measurands[0], k.q)
+		out = append(out, Cause{Name: cause.Name, Doc: cause.Doc, Improvement: Number(improvement), PValue: Number(p),
+			Shift: Number(-num / den * dot(byTheta, shift))})
+	}
+	for i := 1; i < len(out); i++ {
+		for j := i; j > 0 && out[j].Improvement > out[j-1].Improvement; j-- {
+			out[j], out[j-1] = out[j-1], out[j]
+		}
+	}
+	return out
+}
