@@ -1,9 +1,6 @@
 package gum
 
-import (
-	"context"
-	"errors"
-)
+import "errors"
 
 // A Model is a set of inputs and the outputs made from them.
 type Model struct {
@@ -143,11 +140,4 @@ type OutputResult struct {
 	LawError   error       // why Law is nil; repeated in the result's Warnings
 	MonteCarlo *Sample     // nil with LawOnly
 	Comparison *Comparison // nil without Law or MonteCarlo
-}
-
-// Propagate states the uncertainty of every output by the law and by Monte
-// Carlo. It reports progress to the context's cell and ends soon after the
-// context does, with the context's error.
-func Propagate(ctx context.Context, m *Model, s Settings) (*Result, error) {
-	return propagate(ctx, m, s)
 }
