@@ -148,7 +148,7 @@ func (c *chain) findChannels() error {
 func (c *chain) takeRows() error {
 	r := &c.b.Rows
 	for i := range r.N {
-		if r.Excluded[i] || (r.Kind != nil && r.Kind[i] != "" && r.Kind[i] != "reading") {
+		if r.Excluded[i] || r.Kind[i] != bench.Reading {
 			continue
 		}
 		for _, p := range append([]int{c.resp}, c.pred...) {
@@ -180,7 +180,7 @@ func (c *chain) takeRows() error {
 		c.xr = append(c.xr, pick(c.b.Channels[p].Readings))
 	}
 	c.yr = pick(c.b.Channels[c.resp].Readings)
-	if r.Time != nil {
+	if r.HasTime {
 		c.t = pick(r.Time)
 	} else {
 		c.t = make([]float64, n)
@@ -200,8 +200,8 @@ func (c *chain) takeRows() error {
 
 // place names a data record by file and line.
 func (c *chain) place(record int) string {
-	r := &c.b.Rows
-	return fmt.Sprintf("%s:%d", c.b.Inputs[1+r.File[record]].File, r.Line[record])
+	file, line := c.b.Rows.Place(record)
+	return fmt.Sprintf("%s:%d", file, line)
 }
 
 // locate gives an error about a row in use its file and line.

@@ -107,22 +107,16 @@ func (c *chain) listComponents() error {
 	return nil
 }
 
-// groupOf returns the group numbers of a row column, from whatever channel
-// already holds them, or from the labels.
+// groupOf returns the group of each data record by a row column, or nil when the
+// bench names no such column.
 func groupOf(b *bench.Bench, by string) []int {
 	labels := b.Rows.Labels[by]
 	if labels == nil {
 		return nil
 	}
-	seen := map[string]int{}
-	g := make([]int, len(labels))
-	for i, l := range labels {
-		k, ok := seen[l]
-		if !ok {
-			k = len(seen)
-			seen[l] = k
-		}
-		g[i] = k
+	g := make([]int, len(labels.Index))
+	for i, k := range labels.Index {
+		g[i] = int(k)
 	}
 	return g
 }

@@ -4,6 +4,7 @@ import (
 	"math"
 	"sort"
 
+	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/lsq"
 )
 
@@ -85,7 +86,7 @@ func (c *chain) rows(r *lsq.Result, out *Rows) {
 // complete reports whether an excluded record is a reading with all its values.
 func (c *chain) complete(rec int) bool {
 	b := c.b
-	if k := b.Rows.Kind; k != nil && k[rec] != "" && k[rec] != "reading" && k[rec] != "overrange" {
+	if k := b.Rows.Kind[rec]; k != bench.Reading && k != bench.Overrange {
 		return false
 	}
 	for _, p := range append([]int{c.resp}, c.pred...) {
@@ -126,11 +127,8 @@ func (r *Result) recordRows() []RecordRow {
 	out := make([]RecordRow, r.Rows.N)
 	for n := range out {
 		rec := r.Rows.Record[n]
-		kind := "reading"
-		if b.Rows.Kind != nil && b.Rows.Kind[rec] != "" {
-			kind = b.Rows.Kind[rec]
-		}
-		row := RecordRow{Row: rec + 1, File: b.Inputs[1+b.Rows.File[rec]].File, Line: b.Rows.Line[rec], Kind: kind,
+		file, line := b.Rows.Place(rec)
+		row := RecordRow{Row: rec + 1, File: file, Line: line, Kind: b.Rows.Kind[rec].String(),
 			Excluded: r.Rows.Excluded[n], Channels: map[string]Number{}, Response: Number(r.Rows.Response[n]), Fitted: Number(r.Rows.Fitted[n]),
 			U: Number(r.Rows.U[n]), Residual: Number(r.Rows.Residual[n]), Standardised: Number(r.Rows.Standardised[n]),
 			Leverage: Number(r.Rows.Leverage[n]), Studentised: Number(r.Rows.Studentised[n])}

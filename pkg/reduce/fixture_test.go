@@ -76,15 +76,12 @@ func attractedDisc(t testing.TB) *world {
 	force := bench.Channel{Name: "force", Column: "F/mN", Unit: si.MustUnit("mN"), Noise: 2e-6, RelativeNoise: 1e-4, NoiseDOF: math.Inf(1), Resolution: 1e-6, ResolutionPer: "reading"}
 	group := bench.Grouped{By: "setting", U: 2e-6, DOF: math.Inf(1)}
 	setting := 0
-	labels := map[string][]string{"setting": nil}
-	add := func(kind string, v, d float64) {
+	labels := &bench.Labels{Column: "gap_no"}
+	add := func(kind bench.RowKind, v, d float64) {
 		rows.Kind = append(rows.Kind, kind)
 		rows.Time = append(rows.Time, 30*float64(rows.N))
-		rows.File = append(rows.File, 0)
-		rows.Line = append(rows.Line, rows.N+2)
 		rows.Excluded = append(rows.Excluded, false)
-		rows.Reason = append(rows.Reason, "")
-		labels["setting"] = append(labels["setting"], fmt.Sprint(setting))
+		labels.Index = append(labels.Index, int32(setting))
 		group.Group = append(group.Group, setting)
 		volt.Readings = append(volt.Readings, v)
 		gap.Readings = append(gap.Readings, d)
@@ -93,17 +90,21 @@ func attractedDisc(t testing.TB) *world {
 	}
 	for range 3 {
 		for _, d := range []float64{4e-3, 6e-3, 8e-3, 10e-3, 12e-3} {
-			add("zero", 0, d)
+			add(bench.Zero, 0, d)
 			for _, v := range []float64{3e3, -3e3, 8e3, -8e3} {
-				add("reading", v, d)
+				add(bench.Reading, v, d)
 			}
 			setting++
 		}
 	}
-	add("zero", 0, 4e-3)
+	add(bench.Zero, 0, 4e-3)
 	group.Count = setting + 1
 	gap.Grouped = []bench.Grouped{group}
-	rows.Labels = labels
+	for i := range setting + 1 {
+		labels.Words = append(labels.Words, fmt.Sprint(i))
+	}
+	rows.Labels = map[string]*bench.Labels{"setting": labels}
+	rows.HasTime = true
 	b.Channels = []bench.Channel{volt, gap, force}
 	w.truth = make([]float64, len(k.Scalars))
 	for i, s := range b.Scalars {
@@ -212,7 +213,7 @@ func (w *world) draw(t testing.TB, seed uint64) *bench.Bench {
 			}
 			f := (m.Row(q, xj).V - o) / g
 			u := ch.Noise
-			if b.Rows.Kind[r] == "reading" {
+			if b.Rows.Kind[r] == bench.Reading {
 				u = math.Hypot(u, ch.RelativeNoise*f)
 			}
 			ch.Readings[r] = quantise(f+w.zero(b.Rows.Time[r])+u*src.Normal(), ch.Resolution)

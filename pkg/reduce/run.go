@@ -217,7 +217,8 @@ func (c *chain) header(s Settings) Record {
 	rows := &c.b.Rows
 	for i := range rows.N {
 		if rows.Excluded[i] {
-			r.Exclusions = append(r.Exclusions, Exclusion{Row: i + 1, File: c.b.Inputs[1+rows.File[i]].File, Line: rows.Line[i], Reason: rows.Reason[i]})
+			file, line := rows.Place(i)
+			r.Exclusions = append(r.Exclusions, Exclusion{Row: i + 1, File: file, Line: line, Reason: rows.Reason(i)})
 		}
 	}
 	return r

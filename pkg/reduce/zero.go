@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"math"
 	"sort"
+
+	"example.org/guardring/pkg/bench"
 )
 
 // zeroModel is the zero of the response in time, found from the readings of
@@ -30,11 +32,9 @@ func (c *chain) fitZero() (*zeroModel, error) {
 	r := &c.b.Rows
 	ch := &c.b.Channels[c.resp]
 	z := &zeroModel{method: c.b.Options["corrections.zero.method"]}
-	if r.Kind != nil {
-		for i := range r.N {
-			if r.Kind[i] == "zero" && !r.Excluded[i] && !math.IsNaN(ch.Readings[i]) {
-				z.record = append(z.record, i)
-			}
+	for i := range r.N {
+		if r.Kind[i] == bench.Zero && !r.Excluded[i] && !math.IsNaN(ch.Readings[i]) {
+			z.record = append(z.record, i)
 		}
 	}
 	if !on {
@@ -47,7 +47,7 @@ func (c *chain) fitZero() (*zeroModel, error) {
 		return nil, fmt.Errorf("%s/bench.toml: corrections.zero: there are no rows of kind \"zero\" to find the zero from; name the column in [rows] kind, or switch the correction off", c.b.Dir)
 	}
 	time := func(i int) float64 {
-		if r.Time != nil && !math.IsNaN(r.Time[i]) {
+		if r.HasTime && !math.IsNaN(r.Time[i]) {
 			return r.Time[i]
 		}
 		return float64(i)
