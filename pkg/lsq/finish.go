@@ -277,9 +277,9 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 
 	// what later questions need
 	r.white, r.factor = &f.white, sp.factor
-	r.jac = s.cols
+	r.jac = s.columns()
 	r.problem, r.settings = p, f.set
-	r.priorW = s.priorW
+	r.priorW = append([]float64(nil), s.priorW...)
 
 	// rows
 	root := math.Sqrt(scale)

@@ -43,6 +43,7 @@ func Fit(ctx context.Context, p *Problem, set Settings) (*Result, error) {
 	if err := f.weights(); err != nil {
 		return nil, err
 	}
+	defer f.search.release()
 	if err := f.fit(ctx); err != nil {
 		return nil, err
 	}

@@ -23,7 +23,6 @@ func dsin(z dual) dual { return complex(math.Sin(real(z)), math.Cos(real(z))*ima
 func datan(z dual) dual {
 	return complex(math.Atan(real(z)), imag(z)/(1+real(z)*real(z)))
 }
-func dlog(z dual) dual { return complex(math.Log(real(z)), imag(z)/real(z)) }
 func dpow(a, b dual) dual {
 	p := math.Pow(real(a), real(b))
 	return complex(p, p*(imag(b)*math.Log(real(a))+imag(a)*real(b)/real(a)))

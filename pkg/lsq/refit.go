@@ -35,7 +35,7 @@ func (r *Result) NewRefitter() *Refitter {
 	w.white = *r.white
 	w.white.sum = append([]float64(nil), r.white.sum...)
 	w.white.t = append([]float64(nil), r.white.t...)
-	w.fold.init(q)
+	w.fold.init(q, n)
 	slab := make([]float64, (2+q)*n+np+2*q)
 	take := func(k int) []float64 {
 		v := slab[:k:k]

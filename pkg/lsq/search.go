@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"sync"
 )
 
 // search is one run of the trust-region Levenberg–Marquardt method (Moré,
@@ -34,6 +35,7 @@ type search struct {
 	now, next     fold
 	chi2          float64
 	d, x, rx      []float64
+	slab, own     []float64   // pooled scratch; columns that leave with the result
 	wcols         [][]float64 // whitened copies when the covariance is not diagonal
 	wres          []float64
 	trust         trust
@@ -51,32 +53,36 @@ type search struct {
 	checkedLinear bool
 }
 
-// init allocates for n readings and the parameters of p.
+// init prepares for the readings y and the parameters of p. Scratch memory
+// comes from a pool; release gives it back.
 func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 	n, np, q := len(y), len(p.Parameters), len(free)
 	s.p, s.y, s.free, s.q, s.white, s.eval = p, y, free, q, white, p.Eval
-	slab := make([]float64, 2*n+2*n*q+4*np+4*q)
+	m := min(n, foldRows)
+	tri := (q + 1) * (q + 1)
+	s.slab = takeSlab(2*n + n*q + 4*np + 3*q + 2*tri + (q+1)*m + q*q + 3*q)
+	at := 0
 	take := func(k int) []float64 {
-		v := slab[:k:k]
-		slab = slab[k:]
+		v := s.slab[at : at+k : at+k]
+		at += k
 		return v
 	}
 	s.f, s.ftrial = take(n), take(n)
 	heads := make([][]float64, 2*np+2*q)
 	s.jac, s.jtrial, s.cols, s.ctrial = heads[:np:np], heads[np:2*np:2*np], heads[2*np:2*np+q:2*np+q], heads[2*np+q:]
+	s.own = make([]float64, n*q) // leaves with the result
 	for k, j := range free {
-		s.cols[k], s.ctrial[k] = take(n), take(n)
+		s.cols[k], s.ctrial[k] = s.own[k*n:k*n+n:k*n+n], take(n)
 		s.jac[j], s.jtrial[j] = s.cols[k], s.ctrial[k]
 	}
 	s.theta, s.trial = take(np), take(np)
 	s.priorV, s.priorW = take(np), take(np)
 	s.d, s.x, s.rx = take(q), take(q), take(q)
-	s.now.init(q)
-	s.next.init(0)
-	s.next.q, s.next.r, s.next.buf = q, make([]float64, (q+1)*(q+1)), s.now.buf
-	s.trust.init(q)
+	s.now = fold{q: q, r: take(tri), stride: m, buf: take((q + 1) * m)}
+	s.next = fold{q: q, r: take(tri), stride: m, buf: s.now.buf}
+	s.trust = trust{q: q, s: take(q * q), x: take(q), w: take(q), b: take(q)}
 	for j := range p.Parameters {
-		s.priorV[j] = math.NaN()
+		s.priorV[j], s.priorW[j] = math.NaN(), 0
 	}
 	for k, j := range free {
 		q := &p.Parameters[j]
@@ -104,6 +110,42 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 		s.diff = newDifference(s)
 	}
 	s.prepareWhite()
+}
+
+// columns returns the free columns of the Jacobian in memory of their own.
+func (s *search) columns() [][]float64 {
+	n := len(s.y)
+	for k, c := range s.cols {
+		if dst := s.own[k*n : k*n+n : k*n+n]; n > 0 && &c[0] != &dst[0] {
+			copy(dst, c)
+			s.cols[k] = dst
+		}
+	}
+	return s.cols
+}
+
+// release gives the scratch memory back; the search is then of no further use.
+func (s *search) release() {
+	giveSlab(s.slab)
+	s.slab = nil
+}
+
+// slabs keeps scratch memory between fits: they come in series of one size.
+var slabs sync.Pool
+
+func takeSlab(n int) []float64 {
+	if p, ok := slabs.Get().(*[]float64); ok {
+		if cap(*p) >= n && cap(*p) <= 8*n+4096 {
+			return (*p)[:n]
+		}
+	}
+	return make([]float64, n)
+}
+
+func giveSlab(v []float64) {
+	if v != nil {
+		slabs.Put(&v)
+	}
 }
 
 // prepareWhite allocates what correlated readings need.
@@ -233,12 +275,20 @@ func (s *search) begin(start []float64) error {
 	return nil
 }
 
+// notFinite is the index of the first element that is not finite, −1 for none.
 func notFinite(v []float64) int {
-	s := 0.0
-	for _, x := range v {
-		s += x * 0
+	var a, b, c, d float64 // 0·x is NaN exactly when x is not finite
+	i := 0
+	for ; i+3 < len(v); i += 4 {
+		a += v[i] * 0
+		b += v[i+1] * 0
+		c += v[i+2] * 0
+		d += v[i+3] * 0
 	}
-	if s == 0 {
+	for ; i < len(v); i++ {
+		a += v[i] * 0
+	}
+	if a+b+c+d == 0 {
 		return -1
 	}
 	for i, x := range v {
@@ -252,6 +302,20 @@ func notFinite(v []float64) int {
 // length is the length of the weighted readings, which sets how small a
 // chi-squared can be resolved.
 func (s *search) length() float64 {
+	if s.white.diagonal() {
+		var a, b float64
+		w, y := s.white.w, s.y[:len(s.white.w)]
+		i := 0
+		for ; i+1 < len(w); i += 2 {
+			p, q := w[i]*y[i], w[i+1]*y[i+1]
+			a += p * p
+			b += q * q
+		}
+		if i < len(w) {
+			a += w[i] * y[i] * w[i] * y[i]
+		}
+		return math.Sqrt(a + b)
+	}
 	sum := 0.0
 	for i, y := range s.y {
 		sum += y * y / s.white.variance(i)

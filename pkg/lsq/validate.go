@@ -25,10 +25,8 @@ func (p *Problem) validate() (free []int, priors int, err error) {
 	if p.Eval == nil {
 		return nil, 0, fmt.Errorf("lsq: Problem.Eval is nil; it must compute the model's values")
 	}
-	for i, y := range p.Y {
-		if !finite(y) {
-			return nil, 0, fmt.Errorf("lsq: reading %d is %v; a reading must be finite (exclude the row instead)", i+1, y)
-		}
+	if i := notFinite(p.Y); i >= 0 {
+		return nil, 0, fmt.Errorf("lsq: reading %d is %v; a reading must be finite (exclude the row instead)", i+1, p.Y[i])
 	}
 	if p.Covariance != nil {
 		if p.U != nil || p.Effects != nil {
@@ -52,7 +50,16 @@ func (p *Problem) validate() (free []int, priors int, err error) {
 		if len(p.U) != n {
 			return nil, 0, fmt.Errorf("lsq: %d uncertainties for %d readings", len(p.U), n)
 		}
+		least := math.Inf(1)
+		for _, u := range p.U {
+			if u < least {
+				least = u
+			}
+		}
 		for i, u := range p.U {
+			if least > 0 && notFinite(p.U) < 0 {
+				break
+			}
 			if !(u >= 0) || math.IsInf(u, 0) || (u == 0 && p.Reweight == nil) {
 				return nil, 0, fmt.Errorf("lsq: standard uncertainty of reading %d is %v; it must be positive and finite", i+1, u)
 			}
