@@ -87,7 +87,7 @@ type Channel struct {
 // word in a row column: one setting, one mounting, one day.
 type Grouped struct {
 	By       string   // setting, polarity, direction, mount, range, phase or quality
-	U        float64  // standard uncertainty, SI; 0 when only Relative is given
+	U        float64  // standard uncertainty, SI
 	Relative float64  // standard uncertainty relative to the reading; 0 when U is given
 	DOF      float64  // +Inf when not stated
 	Group    []int    // of each data record: 0 to Count−1; shared between channels, not to be changed
@@ -129,7 +129,7 @@ type Instrument struct {
 	Certificate, IssuedBy           string
 	Calibrated, Due                 string
 	DriftPerYear, PerKelvin         string // as written, with unit: "0.002 %", "12 ppm"
-	DriftPerYearValue, PerKelvinSI  float64
+	DriftPerYearSI, PerKelvinSI     float64
 	DriftPerYearUnit, PerKelvinUnit si.Unit
 	Line                            int
 }
@@ -263,7 +263,6 @@ type Report struct {
 	Coverage   float64 // probability
 	Digits     int     // significant digits for the comparison of JCGM 101 clause 8; 0 is the default
 	Definition string  // definition of the factor stated, where the kind offers a choice
-	Language   string
 }
 
 // Rows are what the readings say of themselves, one entry a data record over
@@ -312,6 +311,8 @@ type Labels struct {
 	Column string   // header in the CSV
 	Words  []string // in order of first appearance
 	Index  []int32  // of each data record, into Words
+
+	known map[string]int32 // while reading
 }
 
 // At returns the word of data record i, counted from 0.
