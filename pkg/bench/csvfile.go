@@ -7,6 +7,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"os"
 	"runtime"
 	"sync"
 	"time"
@@ -23,7 +24,13 @@ const partSize = 256 << 10
 // parsed, in one read. Errors are *Error, up to ten joined, with file, line and
 // column. name stands for the file in them.
 func ReadCSV(r io.Reader, name string, s CSVSettings) (*Table, error) {
-	return readCSV(r, name, 0, s, append(append([]string(nil), s.Numbers...), s.Words...), func(l *layout) error {
+	var size int64
+	if f, ok := r.(*os.File); ok {
+		if info, err := f.Stat(); err == nil && info.Mode().IsRegular() {
+			size = info.Size()
+		}
+	}
+	return readCSV(r, name, size, s, append(append([]string(nil), s.Numbers...), s.Words...), func(l *layout) error {
 		if s.Numbers == nil && s.Words == nil {
 			for c := range l.modes {
 				l.modes[c] = number
