@@ -62,7 +62,7 @@ func (r *runner) adaptive(ctx context.Context, res *Result) error {
 			seq := make([][]float64, outputs)
 			for o := range seq {
 				seq[o] = buffer[o][k*m : (k+1)*m]
-				sample, err := Summarise(seq[o], s.Probability)
+				sample, err := summarise(seq[o], s.Probability, 1)
 				if err != nil {
 					return fmt.Errorf("output %s: %w", res.Outputs[o].Name, err)
 				}
@@ -84,7 +84,7 @@ func (r *runner) adaptive(ctx context.Context, res *Result) error {
 		res.Warnings = append(res.Warnings, fmt.Errorf("adaptive Monte Carlo stopped at %d trials without meeting its tolerance for %d significant digits of the uncertainty", h*m, s.Digits))
 	}
 	if tallies == nil {
-		return res.fromTrials(y, s)
+		return res.fromTrials(y, s, len(r.worker))
 	}
 	return tallies.fill(res, s)
 }

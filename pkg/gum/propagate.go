@@ -48,7 +48,7 @@ func Propagate(ctx context.Context, m *Model, s Settings) (*Result, error) {
 		if err != nil {
 			return nil, err
 		}
-		if err := r.fromTrials(y, s); err != nil {
+		if err := r.fromTrials(y, s, len(run.worker)); err != nil {
 			return nil, err
 		}
 	}
@@ -114,10 +114,10 @@ func (r *runner) keep(ctx context.Context, trials int64) ([][]float64, error) {
 }
 
 // fromTrials fills in what Monte Carlo says from trials that are all at hand.
-func (r *Result) fromTrials(y [][]float64, s Settings) error {
+func (r *Result) fromTrials(y [][]float64, s Settings, workers int) error {
 	r.Trials = int64(len(y[0]))
 	for o := range y {
-		sample, err := Summarise(y[o], s.Probability)
+		sample, err := summarise(y[o], s.Probability, workers)
 		if err != nil {
 			return fmt.Errorf("output %s: %w", r.Outputs[o].Name, err)
 		}

@@ -209,13 +209,11 @@ func regionsOfTrials(y [][]float64, mean []float64, cov [][]float64, p float64) 
 		return nil, nil
 	}
 	k := int(rankFor(int64(len(q)), p)) - 1
-	selectNth(q, k)
 	kp := math.NaN()
 	if m.factor != nil {
-		selectNth(e, k)
-		kp = e[k]
+		kp = kth(e, k)
 	}
-	return m.regions(p, kp, q[k])
+	return m.regions(p, kp, kth(q, k))
 }
 
 // A jointTally is what a run that streams keeps of several outputs together.

@@ -9,18 +9,18 @@ import (
 
 // A grid is the bins of one quantity in a run that streams.
 type grid struct {
-	low, width float64 // left edge of bin 0; width of each of Bins
+	low, width float64 // left edge of bin 0; width of each
 	centre     float64 // deviations are summed about it
 }
 
-// newGrid lays bins over what the pilot's trials show of a quantity: their range
+// newGrid lays that many bins over what the pilot's trials show of a quantity: their range
 // and a tenth of the symmetric interval on either side (all of it where a tail holds
 // fewer than 20 trials), but no further out from that interval than one and a half
 // times its width, so that rare far trials do not coarsen the bins.
-func newGrid(pilot []float64, p float64) grid {
+func newGrid(pilot []float64, p float64, bins int) grid {
 	y := slices.DeleteFunc(slices.Clone(pilot), func(v float64) bool { return v-v != 0 })
 	if len(y) == 0 {
-		return grid{low: -1, width: 2.0 / Bins}
+		return grid{low: -1, width: 2 / float64(bins)}
 	}
 	slices.Sort(y)
 	n := len(y)
@@ -35,11 +35,11 @@ func newGrid(pilot []float64, p float64) grid {
 	lo := max(y[0]-margin, a-1.5*span)
 	hi := min(y[n-1]+margin, b+1.5*span)
 	g := grid{low: lo, centre: y[n/2]}
-	if w := (hi - lo) / Bins; w > 1e-16*max(math.Abs(lo), math.Abs(hi)) && !math.IsInf(w, 1) {
+	if w := (hi - lo) / float64(bins); w > 1e-16*max(math.Abs(lo), math.Abs(hi)) && !math.IsInf(w, 1) {
 		g.width = w
 	} else { // constant to rounding
 		g.width = max(math.Abs(lo), math.Abs(hi), math.SmallestNonzeroFloat64*1e16) * 1e-15
-		g.low = lo - g.width*Bins/2
+		g.low = lo - g.width*float64(bins)/2
 	}
 	return g
 }
@@ -178,7 +178,7 @@ func (t *tally) sample(p float64) (*Sample, error) {
 	s.Resolution = max(wa, wb)
 	s.Shortest, wa = c.shortest(tails, int64(q))
 	s.Resolution = max(s.Resolution, wa)
-	s.Histogram = t.display(s)
+	s.Histogram = displayHistogram(s, &t.grid, t.counts, t.below, t.above)
 	return s, nil
 }
 
@@ -256,28 +256,6 @@ func (c *cumulation) shortest(tails, q int64) (interval [2]float64, width float6
 		try(i, a, j, b)
 	}
 	return interval, width
-}
-
-// display gathers the bins into a histogram for display.
-func (t *tally) display(s *Sample) Histogram {
-	margin := (s.Interval[1] - s.Interval[0]) / 2
-	bin := func(x float64) int { return int(max(0, min(Bins-1, math.Floor((x-t.low)/t.width)))) }
-	first, last := bin(max(s.Min, s.Interval[0]-margin)), bin(min(s.Max, s.Interval[1]+margin))
-	group := (last - first + displayBins) / displayBins
-	h := Histogram{Low: t.low + t.width*float64(first), Width: t.width * float64(group)}
-	h.Counts = make([]int64, min((last-first+group)/group, (Bins-first+group-1)/group))
-	h.Below, h.Above = t.below, t.above
-	for i, n := range t.counts {
-		switch k := (i - first) / group; {
-		case i < first:
-			h.Below += n
-		case k < len(h.Counts):
-			h.Counts[k] += n
-		default:
-			h.Above += n
-		}
-	}
-	return h
 }
 
 // withoutMoments withdraws the mean or the standard deviation of a sample that has

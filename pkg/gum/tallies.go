@@ -30,7 +30,7 @@ func (r *runner) newTallies(ctx context.Context) (*tallies, error) {
 	p := r.s.Probability
 	t := &tallies{}
 	for o := range y {
-		t.output = append(t.output, newTally(newGrid(y[o], p)))
+		t.output = append(t.output, newTally(newGrid(y[o], p, Bins)))
 		t.points = append(t.points, append([]float64(nil), y[o][:min(r.s.Points, PilotTrials)]...))
 	}
 	if len(y) > 1 {
