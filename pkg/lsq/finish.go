@@ -177,13 +177,12 @@ func (f *fitter) confounded(sp *spectrum) (sentences []string, involved []bool) 
 // result gathers everything about the end of the fit.
 func (f *fitter) result(ctx context.Context) (*Result, error) {
 	s, p := &f.search, f.p
-	n, np, q := len(s.y), len(p.Parameters), s.q
+	n := len(s.y)
 	sp := f.analyse()
 	r := &Result{
 		Status: s.status, Reason: s.reason, Free: f.free,
-		Values: append([]float64(nil), s.theta...), U: make([]float64, np),
 		Iterations: s.iterations, Evaluations: s.evaluations, Reweighting: f.reweighting, Restarts: f.restarts,
-		Condition: sp.cond, Warnings: f.warnings, Covariance: mat.NewSymDense(np, nil),
+		Condition: sp.cond, Warnings: f.warnings,
 	}
 	r.ChiSquared = s.chi2
 	r.DOF = n + f.priors - (len(sp.idx) - len(sp.null))
@@ -235,45 +234,7 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	}
 	r.scale = scale
 
-	// covariance
-	var involved []bool
-	if len(sp.null) > 0 {
-		r.Confounded, involved = f.confounded(sp)
-		r.Status = Singular
-		r.Reason = "some parameters can't be told apart by these readings"
-		for _, c := range r.Confounded {
-			r.warn("%s; their uncertainties are unknown", c)
-		}
-	}
-	r.inv = make([]float64, q*q)
-	for _, b := range sp.factor {
-		for i, x := range b {
-			for j, y := range b {
-				r.inv[i*q+j] += x * y
-			}
-		}
-	}
-	for k, j := range f.free {
-		held := s.held != nil && s.held[k]
-		if held {
-			r.AtBound = append(r.AtBound, j)
-			r.warn("%s is held at its bound %.6g: its uncertainty is unknown, and those of the others hold for that value", p.name(j), s.theta[j])
-		}
-		for l := 0; l <= k; l++ {
-			c := r.inv[k*q+l] * scale
-			if held || (s.held != nil && s.held[l]) || (involved != nil && (involved[k] || involved[l])) {
-				c = math.NaN()
-			}
-			r.Covariance.SetSym(j, f.free[l], c)
-		}
-		r.U[j] = math.Sqrt(r.Covariance.At(j, j))
-	}
-	if len(sp.null) == 0 && sp.cond > 1e8 {
-		r.warn("the problem is badly conditioned (%.2g): small changes of the readings change the parameters much", sp.cond)
-	}
-	if r.Status != Converged && r.Status != Singular {
-		r.warn("the fit did not converge: %s", r.Reason)
-	}
+	f.parameters(r, sp, scale)
 
 	// what later questions need
 	r.white, r.factor = &f.white, sp.factor
@@ -450,4 +411,52 @@ func (r *Result) Correlation(i, j int) float64 {
 		return math.NaN()
 	}
 	return r.Covariance.At(i, j) / (r.U[i] * r.U[j])
+}
+
+// parameters fills in the estimates, their covariance times scale, and what is
+// to be said about them.
+func (f *fitter) parameters(r *Result, sp *spectrum, scale float64) {
+	s, p := &f.search, f.p
+	np, q := len(p.Parameters), s.q
+	r.Values, r.U = append([]float64(nil), s.theta...), make([]float64, np)
+	r.Covariance = mat.NewSymDense(np, nil)
+	var involved []bool
+	if len(sp.null) > 0 {
+		r.Confounded, involved = f.confounded(sp)
+		r.Status = Singular
+		r.Reason = "some parameters can't be told apart by these readings"
+		for _, c := range r.Confounded {
+			r.warn("%s; their uncertainties are unknown", c)
+		}
+	}
+	r.inv = make([]float64, q*q)
+	for _, b := range sp.factor {
+		for i, x := range b {
+			for j, y := range b {
+				r.inv[i*q+j] += x * y
+			}
+		}
+	}
+	for k, j := range f.free {
+		held := s.held != nil && s.held[k]
+		if held {
+			r.AtBound = append(r.AtBound, j)
+			r.warn("%s is held at its bound %.6g: its uncertainty is unknown, and those of the others hold for that value", p.name(j), s.theta[j])
+		}
+		for l := 0; l <= k; l++ {
+			c := r.inv[k*q+l] * scale
+			if held || (s.held != nil && s.held[l]) || (involved != nil && (involved[k] || involved[l])) {
+				c = math.NaN()
+			}
+			r.Covariance.SetSym(j, f.free[l], c)
+		}
+		r.U[j] = math.Sqrt(r.Covariance.At(j, j))
+	}
+	if len(sp.null) == 0 && sp.cond > 1e8 {
+		r.warn("the problem is badly conditioned (%.2g): small changes of the readings change the parameters much", sp.cond)
+	}
+	if r.Status != Converged && r.Status != Singular {
+		r.warn("the fit did not converge: %s", r.Reason)
+	}
+
 }

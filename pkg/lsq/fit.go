@@ -30,14 +30,8 @@ func Fit(ctx context.Context, p *Problem, set Settings) (*Result, error) {
 	if err := ctx.Err(); err != nil {
 		return nil, fmt.Errorf("lsq: fit cancelled: %w", err)
 	}
-	if set.MaxIterations == 0 {
-		set.MaxIterations = 1000
-	}
-	if set.Tolerance == 0 {
-		set.Tolerance = 1e-11
-	}
-	if set.MaxIterations < 0 || !(set.Tolerance > 0) {
-		return nil, fmt.Errorf("lsq: MaxIterations %d and Tolerance %v must be positive (or 0 for the default)", set.MaxIterations, set.Tolerance)
+	if err := set.defaults(); err != nil {
+		return nil, err
 	}
 	f := &fitter{p: p, set: set, free: free, priors: priors}
 	if err := f.weights(); err != nil {

@@ -40,6 +40,7 @@ type search struct {
 	wres          []float64
 	trust         trust
 	sub           *subspace
+	eiv           *eivState // errors in variables: the linearisation of the rows moves with the search
 	diff          *difference
 	iterations    int
 	evaluations   int
@@ -165,6 +166,9 @@ func (s *search) prepareWhite() {
 // call evaluates the model and, when jac is not nil, its derivatives.
 func (s *search) call(theta, f []float64, jac, cols [][]float64) error {
 	s.evaluations++
+	if s.eiv != nil {
+		return s.eiv.call(theta, f, jac, cols)
+	}
 	if s.numeric {
 		if err := s.eval(theta, f, nil); err != nil {
 			return err
@@ -186,6 +190,10 @@ func (s *search) reduce(t *fold, theta, f []float64, cols [][]float64) {
 				t.diagonal(k, w, w*(s.priorV[j]-theta[j]))
 			}
 		}
+	}
+	if s.eiv != nil {
+		t.weighted(s.eiv.weights(f), s.y, f, cols)
+		return
 	}
 	if s.white.diagonal() {
 		t.weighted(s.white.w, s.y, f, cols)
@@ -431,7 +439,7 @@ func (s *search) run(ctx context.Context) error {
 		}
 		if ratio < small {
 			rejected++
-			jointly = false
+			jointly = s.eiv != nil
 			if delta <= 1e-16*s.scaledSize() || rejected > 60 {
 				s.finish("no step lowers chi-squared")
 				return nil
@@ -450,7 +458,7 @@ func (s *search) run(ctx context.Context) error {
 			// values are finite but derivatives are not: treat as out of the domain
 			rejected++
 			delta = 0.1 * math.Min(delta, norm)
-			jointly = false
+			jointly = s.eiv != nil
 			if rejected > 60 {
 				s.finish("the derivatives are not finite near the best point")
 				return nil
@@ -458,10 +466,10 @@ func (s *search) run(ctx context.Context) error {
 			continue
 		}
 		rejected = 0
-		jointly = ratio > 0.5
+		jointly = ratio > 0.5 || s.eiv != nil
 		if !s.checkedLinear {
 			s.checkedLinear = true
-			s.linear = !s.numeric && s.sameColumns()
+			s.linear = !s.numeric && s.eiv == nil && s.sameColumns()
 		}
 		s.accept()
 		if act <= 1e3*noise && pred <= 1e3*noise {
@@ -539,6 +547,9 @@ func (s *search) polish(ctx context.Context, norm float64) error {
 func (s *search) accept() {
 	s.theta, s.trial = s.trial, s.theta
 	copy(s.trial, s.theta)
+	if s.eiv != nil {
+		s.eiv.accept()
+	}
 	s.f, s.ftrial = s.ftrial, s.f
 	s.jac, s.jtrial = s.jtrial, s.jac
 	s.cols, s.ctrial = s.ctrial, s.cols

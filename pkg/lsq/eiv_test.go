@@ -1,0 +1,297 @@
+package lsq
+
+import (
+	"context"
+	"encoding/json"
+	"math"
+	"os"
+	"testing"
+)
+
+// eivRefs reads the published errors-in-variables cases.
+func eivRefs(t testing.TB) map[string]map[string]json.RawMessage {
+	t.Helper()
+	raw, err := os.ReadFile("../../testdata/refs/eiv.json")
+	if err != nil {
+		t.Fatal(err)
+	}
+	var items []map[string]json.RawMessage
+	if err := json.Unmarshal(raw, &items); err != nil {
+		t.Fatal(err)
+	}
+	out := map[string]map[string]json.RawMessage{}
+	for _, it := range items {
+		var id string
+		if err := json.Unmarshal(it["id"], &id); err != nil {
+			t.Fatal(err)
+		}
+		out[id] = it
+	}
+	return out
+}
+
+func decode(t testing.TB, raw json.RawMessage, to any) {
+	t.Helper()
+	if err := json.Unmarshal(raw, to); err != nil {
+		t.Fatal(err)
+	}
+}
+
+func straight(p *EIVProblem) *EIVProblem {
+	p.Eval = func(th []float64, x [][]float64, f []float64, jac, dx [][]float64) error {
+		for i, v := range x[0] {
+			f[i] = th[0] + th[1]*v
+			if jac != nil {
+				jac[0][i], jac[1][i], dx[0][i] = 1, v, th[1]
+			}
+		}
+		return nil
+	}
+	p.Parameters = []Parameter{{Name: "a", Start: 0.1}, {Name: "b", Start: 1}}
+	return p
+}
+
+func fitEIV(t testing.TB, p *EIVProblem) *EIVResult {
+	t.Helper()
+	r, err := FitEIV(context.Background(), p, Settings{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if r.Status != Converged {
+		t.Fatalf("%s: %s", r.Status, r.Reason)
+	}
+	return r
+}
+
+// Pearson's data with York's weights: Pearson, Phil. Mag. 2 (1901) 559; York,
+// Can. J. Phys. 44 (1966) 1079; standard errors of York et al., Am. J. Phys. 72
+// (2004) 367. ISO/TS 28037:2010 clauses 6 and 7 (values from memory).
+func TestEIVStraightLines(t *testing.T) {
+	refs := eivRefs(t)
+	for _, id := range []string{"eiv-pearson-york", "eiv-28037-cl6-equal", "eiv-28037-cl7", "odr-pearson-rounded-u"} {
+		t.Run(id, func(t *testing.T) {
+			var in struct {
+				X, Y, Wx, Wy []float64
+				Ux           json.RawMessage `json:"ux"`
+				Uy           []float64       `json:"uy"`
+			}
+			decode(t, refs[id]["inputs"], &in)
+			var want struct {
+				A, B     float64
+				Ua       float64     `json:"ua"`
+				Ub       float64     `json:"ub"`
+				CovAB    float64     `json:"cov_ab"`
+				Chi2     float64     `json:"chi2"`
+				DOF      int         `json:"dof"`
+				UaScaled float64     `json:"ua_scaled"`
+				UbScaled float64     `json:"ub_scaled"`
+				Cov      [][]float64 `json:"cov_unscaled"`
+				Swapped  struct{ A, B, Ua, Ub float64 }
+			}
+			decode(t, refs[id]["expected"], &want)
+			n := len(in.X)
+			ux, uy := make([]float64, n), in.Uy
+			for i, w := range in.Wx {
+				ux[i] = 1 / math.Sqrt(w)
+			}
+			if in.Wy != nil {
+				uy = make([]float64, n)
+				for i, w := range in.Wy {
+					uy[i] = 1 / math.Sqrt(w)
+				}
+			}
+			if len(in.Ux) > 0 && in.Ux[0] == '[' {
+				decode(t, in.Ux, &ux)
+			}
+			p := straight(&EIVProblem{X: [][]float64{in.X}, UX: [][]float64{ux}, Y: in.Y, UY: uy})
+			r := fitEIV(t, p)
+			tol := 1e-9 // the values of ISO/TS 28037 are given to ten decimals
+			line, err := Line(&LineData{X: in.X, Y: in.Y, UX: ux, UY: uy})
+			if err != nil {
+				t.Fatal(err)
+			}
+			if id == "odr-pearson-rounded-u" {
+				tol = 1e-6
+				near(t, "scaled u(a)", r.U[0]*r.BirgeRatio, want.UaScaled, 1e-5)
+				near(t, "scaled u(b)", r.U[1]*r.BirgeRatio, want.UbScaled, 1e-5)
+				for i := range want.Cov {
+					for j := range want.Cov {
+						near(t, "covariance", r.Covariance.At(i, j), want.Cov[i][j], 1e-5)
+					}
+				}
+				q := straight(&EIVProblem{X: [][]float64{in.Y}, UX: [][]float64{uy}, Y: in.X, UY: ux, Relative: true})
+				s := fitEIV(t, q)
+				near(t, "swapped a", s.Values[0], want.Swapped.A, 1e-6)
+				near(t, "swapped b", s.Values[1], want.Swapped.B, 1e-6)
+				near(t, "swapped u(a)", s.U[0], want.Swapped.Ua, 1e-5)
+				near(t, "swapped u(b)", s.U[1], want.Swapped.Ub, 1e-5)
+			} else {
+				near(t, "u(a)", r.U[0], want.Ua, 1e-8)
+				near(t, "u(b)", r.U[1], want.Ub, 1e-8)
+				near(t, "cov(a,b)", r.Covariance.At(0, 1), want.CovAB, 1e-8)
+				near(t, "chi-squared", r.ChiSquared, want.Chi2, 1e-8)
+				near(t, "line u(a)", line.UIntercept, want.Ua, 1e-8)
+				near(t, "line u(b)", line.USlope, want.Ub, 1e-8)
+				near(t, "line cov(a,b)", line.Covariance, want.CovAB, 1e-8)
+				near(t, "line chi-squared", line.ChiSquared, want.Chi2, 1e-8)
+				if want.UaScaled != 0 {
+					near(t, "scaled u(a)", r.U[0]*r.BirgeRatio, want.UaScaled, 1e-8)
+				}
+				if r.DOF != want.DOF {
+					t.Errorf("dof %d", r.DOF)
+				}
+			}
+			near(t, "a", r.Values[0], want.A, tol)
+			near(t, "b", r.Values[1], want.B, tol)
+			near(t, "line a", line.Intercept, want.A, tol)
+			near(t, "line b", line.Slope, want.B, tol)
+		})
+	}
+}
+
+// Boggs, Byrd, Rogers, Schnabel, User's Reference Guide for ODRPACK 2.01
+// (NISTIR 92-4834), the explicit example.
+func TestEIVExplicit(t *testing.T) {
+	ref := eivRefs(t)["odrpack-explicit"]
+	var in struct {
+		X, Y  []float64
+		Fixed []bool `json:"fixed_x"`
+		Start []float64
+	}
+	var want struct {
+		Beta, SD []float64
+		Cov      [][]float64 `json:"cov_unscaled"`
+	}
+	decode(t, ref["inputs"], &in)
+	decode(t, ref["expected"], &want)
+	ux, uy := make([]float64, len(in.X)), make([]float64, len(in.X))
+	for i := range ux {
+		uy[i] = 1
+		if !in.Fixed[i] {
+			ux[i] = 1
+		}
+	}
+	p := &EIVProblem{X: [][]float64{in.X}, UX: [][]float64{ux}, Y: in.Y, UY: uy, Relative: true,
+		Parameters: []Parameter{{Start: in.Start[0]}, {Start: in.Start[1]}, {Start: in.Start[2]}},
+		Eval: func(b []float64, x [][]float64, f []float64, jac, dx [][]float64) error {
+			for i, v := range x[0] {
+				e := math.Exp(b[2] * v)
+				f[i] = b[0] + b[1]*(e-1)*(e-1)
+				if jac != nil {
+					jac[0][i], jac[1][i], jac[2][i] = 1, (e-1)*(e-1), 2*b[1]*(e-1)*e*v
+					dx[0][i] = 2 * b[1] * (e - 1) * e * b[2]
+				}
+			}
+			return nil
+		}}
+	for _, numeric := range []bool{false, true} {
+		p.Numeric = numeric
+		r := fitEIV(t, p)
+		s2 := r.ChiSquared / float64(r.DOF)
+		for j := range want.Beta {
+			near(t, "value", r.Values[j], want.Beta[j], 1e-6)
+			near(t, "standard deviation", r.U[j], want.SD[j], 1e-4)
+			for k := range want.Cov {
+				near(t, "covariance", r.Covariance.At(j, k)/s2, want.Cov[j][k], 1e-3)
+			}
+		}
+		for i := range in.X {
+			if in.Fixed[i] && r.X[0][i] != in.X[i] {
+				t.Errorf("exact predictor %d moved to %v", i, r.X[0][i])
+			}
+		}
+	}
+}
+
+// The implicit example of the same guide: an ellipse through points.
+func TestEIVImplicit(t *testing.T) {
+	ref := eivRefs(t)["odrpack-implicit-ellipse"]
+	var in struct{ X1, X2, Start []float64 }
+	var want struct{ Beta, SD []float64 }
+	decode(t, ref["inputs"], &in)
+	decode(t, ref["expected"], &want)
+	one := make([]float64, len(in.X1))
+	for i := range one {
+		one[i] = 1
+	}
+	p := &EIVProblem{X: [][]float64{in.X1, in.X2}, UX: [][]float64{one, one}, Relative: true,
+		Eval: func(b []float64, x [][]float64, f []float64, jac, dx [][]float64) error {
+			for i := range f {
+				u, v := x[0][i]-b[0], x[1][i]-b[1]
+				f[i] = b[2]*u*u + 2*b[3]*u*v + b[4]*v*v - 1
+				if jac != nil {
+					dx[0][i], dx[1][i] = 2*b[2]*u+2*b[3]*v, 2*b[3]*u+2*b[4]*v
+					jac[0][i], jac[1][i] = -dx[0][i], -dx[1][i]
+					jac[2][i], jac[3][i], jac[4][i] = u*u, 2*u*v, v*v
+				}
+			}
+			return nil
+		}}
+	for _, b := range in.Start {
+		p.Parameters = append(p.Parameters, Parameter{Start: b})
+	}
+	r := fitEIV(t, p)
+	for j := range want.Beta {
+		near(t, "value", r.Values[j], want.Beta[j], 1e-5)
+		near(t, "standard deviation", r.U[j], want.SD[j], 1e-3)
+	}
+	f := make([]float64, len(one))
+	if err := p.Eval(r.Values, r.X, f, nil, nil); err != nil {
+		t.Fatal(err)
+	}
+	for i, v := range f {
+		if math.Abs(v) > 1e-10 {
+			t.Errorf("estimated point %d is off the ellipse by %g", i, v)
+		}
+	}
+}
+
+// A covariance for each row, against independent errors of rotated points: the
+// fit does not know in which axes the errors were stated.
+func TestEIVRowCovariance(t *testing.T) {
+	ref := eivRefs(t)["eiv-pearson-york"]
+	var in struct{ X, Y, Wx, Wy []float64 }
+	decode(t, ref["inputs"], &in)
+	n := len(in.X)
+	diag := &EIVProblem{X: [][]float64{in.X}, Y: in.Y, UX: [][]float64{make([]float64, n)}, UY: make([]float64, n)}
+	straight(diag)
+	for i := range in.X {
+		diag.UX[0][i], diag.UY[i] = 1/math.Sqrt(in.Wx[i]), 1/math.Sqrt(in.Wy[i])
+	}
+	a := fitEIV(t, diag)
+	full := &EIVProblem{X: [][]float64{in.X}, Y: in.Y}
+	straight(full)
+	for i := range in.X {
+		full.Covariance = append(full.Covariance, 1/in.Wx[i], 0, 0, 1/in.Wy[i])
+	}
+	b := fitEIV(t, full)
+	// the sheared point (x, y + c·x) has slope b + c and correlated errors
+	const c = 0.7
+	shear := &EIVProblem{X: [][]float64{in.X}, Y: make([]float64, n)}
+	straight(shear)
+	r := make([]float64, n)
+	uy := make([]float64, n)
+	for i := range in.X {
+		vx, vy := 1/in.Wx[i], 1/in.Wy[i]
+		shear.Y[i] = in.Y[i] + c*in.X[i]
+		shear.Covariance = append(shear.Covariance, vx, c*vx, c*vx, vy+c*c*vx)
+		uy[i] = math.Sqrt(vy + c*c*vx)
+		r[i] = c * vx / (diag.UX[0][i] * uy[i])
+	}
+	s := fitEIV(t, shear)
+	for j := range a.Values {
+		near(t, "full", b.Values[j], a.Values[j], 1e-10)
+		near(t, "full", b.U[j], a.U[j], 1e-9)
+		near(t, "sheared u", s.U[j], a.U[j], 1e-8)
+	}
+	near(t, "sheared a", s.Values[0], a.Values[0], 1e-9)
+	near(t, "sheared b", s.Values[1], a.Values[1]+c, 1e-9)
+	line, err := Line(&LineData{X: in.X, Y: shear.Y, UX: diag.UX[0], UY: uy, R: r})
+	if err != nil {
+		t.Fatal(err)
+	}
+	near(t, "line a", line.Intercept, s.Values[0], 1e-9)
+	near(t, "line b", line.Slope, s.Values[1], 1e-9)
+	near(t, "line u(a)", line.UIntercept, s.U[0], 1e-8)
+	near(t, "line u(b)", line.USlope, s.U[1], 1e-8)
+}
