@@ -137,7 +137,11 @@ func parse(s string) (expr, error) {
 				p.blanks()
 			}
 			if !p.starts() {
-				return none, p.fail(p.pos, "a unit is missing behind the solidus", "")
+				hint := ""
+				if plainDigit(p.peek()) >= 0 {
+					hint = "write fractional exponents as m^(1/2)"
+				}
+				return none, p.fail(p.pos, "a unit is missing behind the solidus", hint)
 			}
 			joined = true
 		case c == ')' && inside:

@@ -3,6 +3,7 @@ package si
 import (
 	"fmt"
 	"math"
+	"math/big"
 	"strconv"
 	"strings"
 )
@@ -127,11 +128,75 @@ func Exact(x float64) string {
 }
 
 // Format returns the SI value x in unit u, exactly: "50.012 mm". ParseQuantity
-// reads finite values back; the value may then differ by the rounding of one
-// conversion, unless u is a coherent SI unit, whose values come back to the
-// bit.
+// reads finite values back to the same bits when u differs from SI by a power
+// of ten (mm, kV, %, hPa), where the point of the shortest decimal is moved, and
+// for temperatures in degC (1 µK to 1e15 K): nothing is rounded. In other units (min, in, deg)
+// two roundings of one conversion lie between.
 func (u Unit) Format(x float64) string {
-	return join(Exact(u.FromSI(x)), u)
+	return join(u.Number(x), u)
+}
+
+// Number is Format without the unit, for columns that have it in their header.
+func (u Unit) Number(x float64) string {
+	switch {
+	case math.IsNaN(x) || math.IsInf(x, 0):
+		return Exact(x)
+	case u == Unit{}:
+		return plain(x, 0)
+	case u.Offset != 0 && u.offsetText() != "" && math.Abs(x) > 1e-6 && math.Abs(x) < 1e15:
+		return shifted(x, u.offsetText())
+	case u.num == 1 && u.den == 1 && u.Offset == 0:
+		return plain(x, -u.exp)
+	}
+	return plain(u.FromSI(x), 0)
+}
+
+// plain writes the shortest decimal of a finite x times 10^shift, without an
+// exponent for the sizes that people read so.
+func plain(x float64, shift int) string {
+	mantissa, e, _ := strings.Cut(strconv.FormatFloat(x, 'e', -1, 64), "e")
+	exp, err := strconv.Atoi(e)
+	if err != nil || x == 0 {
+		return Exact(x)
+	}
+	exp += shift
+	sign, digits := "", strings.Replace(mantissa, ".", "", 1)
+	if digits[0] == '-' {
+		sign, digits = "-", digits[1:]
+	}
+	const most = 15 // longer numbers carry an exponent
+	switch {
+	case exp < -5 || exp >= most:
+		if len(digits) > 1 {
+			digits = digits[:1] + "." + digits[1:]
+		}
+		return sign + digits + "e" + strconv.Itoa(exp)
+	case exp >= len(digits)-1:
+		return sign + digits + strings.Repeat("0", exp-len(digits)+1)
+	case exp >= 0:
+		return sign + digits[:exp+1] + "." + digits[exp+1:]
+	}
+	return sign + "0." + strings.Repeat("0", -exp-1) + digits
+}
+
+// shifted writes the shortest decimal of x less the decimal off, exactly: 293.15
+// K less 273.15 is 20, where the difference of the doubles would not always be
+// so short.
+func shifted(x float64, off string) string {
+	text := strconv.FormatFloat(x, 'f', -1, 64)
+	decimals := 0
+	for _, s := range []string{text, off} {
+		if _, frac, ok := strings.Cut(s, "."); ok {
+			decimals = max(decimals, len(frac))
+		}
+	}
+	r, _ := new(big.Rat).SetString(text)
+	o, _ := new(big.Rat).SetString(off) // both are decimals written by program
+	s := r.Sub(r, o).FloatString(decimals)
+	if decimals > 0 {
+		s = strings.TrimRight(strings.TrimRight(s, "0"), ".")
+	}
+	return s
 }
 
 // join sets a unit behind a number, with a blank except before the degrees,
@@ -195,6 +260,11 @@ func Prefixed(x float64, u Unit) (float64, Unit) {
 	n, err := ParseUnit(e.text(true, true))
 	if err != nil || n.Dim != u.Dim {
 		return same, u
+	}
+	// The nearest double to the decimal that people see, 7853.9 mm², rather than
+	// to the product of doubles, 7853.900000000001.
+	if v, err := strconv.ParseFloat(n.Number(x), 64); err == nil {
+		return v, n
 	}
 	return n.FromSI(x), n
 }

@@ -1,6 +1,7 @@
 package si
 
 import (
+	"errors"
 	"math"
 	"math/big"
 	"strconv"
@@ -50,57 +51,80 @@ func quantity(s string, interval bool) (float64, Unit, error) {
 	}
 	unit := One
 	if rest = strings.TrimFunc(rest, unicode.IsSpace); rest != "" {
+		if rest[0] == '.' || '0' <= rest[0] && rest[0] <= '9' {
+			return fail("two numbers stand here", "write digits without blanks between them")
+		}
 		var err error
 		if unit, err = ParseUnit(rest); err != nil {
 			return 0, Unit{}, &QuantityError{Text: clip(s), Err: err}
 		}
 	}
-	v, err := strconv.ParseFloat(number, 64)
-	if err != nil || math.IsInf(v, 0) {
+	var v float64
+	var err error
+	switch off := offsetOf(unit, interval); {
+	case unit.den == 0: // irrational factor: two roundings, nothing better
+		if v, err = strconv.ParseFloat(number, 64); err == nil {
+			v = unit.DeltaToSI(v)
+		}
+	case unit.num == 1 && unit.den == 1 && off == "":
+		v, err = timesPower(number, unit.exp)
+	default:
+		v, err = rational(number, unit, off)
+	}
+	switch {
+	case math.IsInf(v, 0) || errors.Is(err, strconv.ErrRange):
 		return fail("the number is too large", "")
-	}
-	if v == 0 && interval || v == 0 && unit.Offset == 0 {
-		return v, unit, nil
-	}
-	if unit.den == 0 { // irrational factor: two roundings, nothing better
-		v = unit.DeltaToSI(v)
-	} else if simple := unit.num == 1 && unit.den == 1 && unit.Offset == 0; simple && !strings.ContainsAny(number, "eE") {
-		// The unit's power of ten joins the text, which is then rounded once.
-		v, err = strconv.ParseFloat(number+"e"+strconv.Itoa(unit.exp), 64)
-	} else if v, err = rational(number, unit, interval); err != nil {
-		return fail("the number is beyond the range of double precision", "")
-	}
-	if err != nil || math.IsInf(v, 0) {
-		return fail("the number is too large in SI units", "")
+	case err != nil:
+		return fail("the exponent is not understood", "")
 	}
 	return v, unit, nil
 }
 
+// offsetOf is the decimal offset that counts for a value; for an interval none does.
+func offsetOf(u Unit, interval bool) string {
+	if interval || u.Offset == 0 {
+		return ""
+	}
+	return u.offsetText()
+}
+
+// exponent takes a decimal number apart. Exponents beyond reason, which make
+// any number that is short enough to be read here zero or infinite, are cut to
+// what does the same.
+func exponent(number string) (mantissa string, exp int, err error) {
+	mantissa, e, ok := strings.Cut(number, "e")
+	if !ok {
+		return mantissa, 0, nil
+	}
+	exp, err = strconv.Atoi(e)
+	const reason = 2000 // above the range of doubles and longestQuantity together
+	return mantissa, min(max(exp, -reason), reason), err
+}
+
+// timesPower reads number × 10^exp with one rounding.
+func timesPower(number string, exp int) (float64, error) {
+	mantissa, e, err := exponent(number)
+	if err != nil {
+		return 0, err
+	}
+	return strconv.ParseFloat(mantissa+"e"+strconv.Itoa(e+exp), 64)
+}
+
 // rational converts exactly and rounds once.
-func rational(number string, u Unit, interval bool) (float64, error) {
-	mantissa, exponent, _ := strings.Cut(strings.ToLower(number), "e")
-	exp := 0
-	if exponent != "" {
-		var err error
-		if exp, err = strconv.Atoi(exponent); err != nil {
-			return 0, err
-		}
-	}
-	// ParseFloat has found the number finite; a tiny one may still have an
-	// absurd exponent, which would make a rational of that many digits.
-	if exp < -1000 {
-		exp, mantissa = 0, "0"
-	}
-	if exp > 1000 { // finite only with as many leading zeros: not met in earnest
-		return 0, strconv.ErrRange
+func rational(number string, u Unit, off string) (float64, error) {
+	mantissa, exp, err := exponent(number)
+	if err != nil {
+		return 0, err
 	}
 	r, ok := new(big.Rat).SetString(mantissa)
 	if !ok {
 		return 0, strconv.ErrSyntax
 	}
-	r.Mul(r, ratio(u.num, u.den, u.exp))
-	r.Mul(r, ratio(1, 1, exp))
-	if off := u.offsetText(); off != "" && !interval {
+	if r.Sign() == 0 {
+		exp = 0
+	}
+	r.Mul(r, ratio(u.num, u.den, u.exp+exp))
+	if off != "" {
 		o, _ := new(big.Rat).SetString(off) // a literal of the table
 		r.Add(r, o)
 	}

@@ -55,11 +55,11 @@ func Short(value, u float64, unit Unit) string {
 	r := round(unit.FromSI(value), unit.DeltaFromSI(u), digitsOfU)
 	switch {
 	case u == 0:
-		return join(r.value, unit) + " (exact)"
+		return join(timesTen(r.value), unit) + " (exact)"
 	case r.apart && (r.u == unknownU || r.u == infiniteU):
-		return join(r.value, unit) + " (u " + r.u + ")"
+		return join(timesTen(r.value), unit) + " (u " + r.u + ")"
 	case r.apart:
-		return join(r.value, unit) + " (u = " + join(timesTen(r.u), unit) + ")"
+		return join(timesTen(r.value), unit) + " (u = " + join(timesTen(r.u), unit) + ")"
 	}
 	digits := strings.TrimLeft(strings.Replace(r.u, ".", "", 1), "0")
 	if whole, frac, point := strings.Cut(r.u, "."); point && strings.Trim(whole, "0") != "" && frac != "" {
@@ -78,11 +78,11 @@ func Expanded(value, U float64, unit Unit, k, p float64) string {
 	var s string
 	switch {
 	case U == 0:
-		return join(r.value, unit) + " (exact)"
+		return join(timesTen(r.value), unit) + " (exact)"
 	case r.apart && (r.u == unknownU || r.u == infiniteU):
-		return join(r.value, unit) + " (U " + r.u + ")"
+		return join(timesTen(r.value), unit) + " (U " + r.u + ")"
 	case r.apart:
-		s = join(r.value, unit) + " ± " + join(timesTen(r.u), unit)
+		s = join(timesTen(r.value), unit) + " ± " + join(timesTen(r.u), unit)
 	default:
 		s = join(r.value+times(r.exp), unit) + " ± " + join(r.u+times(r.exp), unit)
 	}
@@ -125,7 +125,7 @@ func round(value, u float64, digits int) rounded {
 	case math.IsInf(u, 0):
 		return rounded{value: strconv.FormatFloat(value, 'g', 6, 64), u: infiniteU, apart: true}
 	case u == 0:
-		return rounded{value: Exact(value), u: "0", apart: true}
+		return rounded{value: plain(value, 0), u: "0", apart: true}
 	}
 	place := top(u) - digits + 1
 	n := at(u, place)
@@ -134,7 +134,7 @@ func round(value, u float64, digits int) rounded {
 		n = at(u, place)
 	}
 	if value != 0 && top(value)-place >= mostDigits {
-		return rounded{value: Exact(value), u: strconv.FormatFloat(u, 'e', digits-1, 64), apart: true}
+		return rounded{value: plain(value, 0), u: strconv.FormatFloat(u, 'e', digits-1, 64), apart: true}
 	}
 	m := at(value, place)
 	head := max(len(m), len(n)) - 1 + place // power of ten of the leading digit of both

@@ -26,10 +26,11 @@ type Unit struct {
 var One = Unit{Symbol: "1", Factor: 1, num: 1, den: 1}
 
 // ToSI converts x in unit u to SI, with one correct rounding where the factor
-// is rational (all units but the degrees of arc).
+// is rational (all units but the degrees of arc). degC adds its offset as a
+// double, so that −273.15 is 0 K.
 func (u Unit) ToSI(x float64) float64 {
 	if u.Offset != 0 {
-		return u.offset(x)
+		return u.DeltaToSI(x) + u.Offset
 	}
 	return u.DeltaToSI(x)
 }
@@ -43,24 +44,10 @@ func (u Unit) FromSI(x float64) float64 {
 	return u.DeltaFromSI(x)
 }
 
-// offset is ToSI for scales whose zero is not that of SI.
-func (u Unit) offset(x float64) float64 {
-	if math.IsNaN(x) || math.IsInf(x, 0) {
-		return x
-	}
-	if off := u.offsetText(); off != "" {
-		r := new(big.Rat).SetFloat64(x)
-		o, _ := new(big.Rat).SetString(off)
-		f, _ := r.Add(r, o).Float64()
-		return f
-	}
-	return u.DeltaToSI(x) + u.Offset
-}
-
 // offsetText is the offset as the exact decimal of the table; "" for a Unit
 // made by hand.
 func (u Unit) offsetText() string {
-	if u.Offset == 273.15 && u.num == 1 && u.den == 1 && u.exp == 0 {
+	if u.Offset == ZeroCelsius && u.num == 1 && u.den == 1 && u.exp == 0 {
 		return "273.15"
 	}
 	return ""
