@@ -266,6 +266,8 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 			Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(q[iE0]) }},
 	}
 	if s.On["air"] {
+		m.Factors = map[string]func(q []jet.Jet) jet.Jet{
+			"air": func(q []jet.Jet) jet.Jet { return field.AirPermittivityJet(q[iT], q[iP], q[iH]).Plus(-1) }}
 		m.Measurands = append(m.Measurands, Measurand{
 			Name: "vacuum_permittivity", Doc: "permittivity of the gap over that of its moist air relative to vacuum", Unit: si.MustUnit("pF/m"),
 			Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(field.AirPermittivityJet(q[iT], q[iP], q[iH])) }})

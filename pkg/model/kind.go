@@ -132,6 +132,9 @@ type Model struct {
 	Check func(q []float64, x [][]float64, y []float64) ([]error, error)
 	// Hazard gives the stored energy, charge and field at the highest setting.
 	Hazard func(q []float64, x [][]float64) Hazard
+	// Factors holds, by name, the factor less one of a correction that acts on a
+	// measurand and not on the predicted response.
+	Factors map[string]func(q []jet.Jet) jet.Jet
 	// Measurands are those of the kind that this bench can state.
 	Measurands []Measurand
 	// Causes are effects that leave a known signature in the residuals.

@@ -54,6 +54,10 @@ func (c *chain) zeroSize() (size, u Number) {
 // correction, less one, and its standard uncertainty from the correction's own
 // inputs.
 func (c *chain) correctionSize(name string, k *carried) (size, u float64, err error) {
+	if f := c.m.Factors[name]; f != nil {
+		size, u = c.factorSize(f, k)
+		return size, u, nil
+	}
 	off := *c.setup
 	off.On = map[string]bool{}
 	for n, on := range c.setup.On {
@@ -108,6 +112,25 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 		v += d * d
 	}
 	return size / rows, math.Sqrt(v), nil
+}
+
+// factorSize is a correction of a measurand and its standard uncertainty from
+// all inputs.
+func (c *chain) factorSize(factor func(q []jet.Jet) jet.Jet, k *carried) (size, u float64) {
+	space := jet.NewSpace(len(c.inputs), 0)
+	qj := constants(k.q)
+	for s, in := range c.inputs {
+		if in.kind == scalarInput {
+			qj[in.index] = space.Var(s, k.q[in.index])
+		}
+	}
+	f := factor(qj)
+	var v float64
+	for s, in := range c.inputs {
+		d := f.Grad(s) * in.u
+		v += d * d
+	}
+	return f.V, math.Sqrt(v)
 }
 
 // causeLevel is the significance below which a cause is listed.

@@ -1,0 +1,136 @@
+package main
+
+import (
+	"fmt"
+
+	"github.com/spf13/cobra"
+
+	"example.org/guardring/pkg/kernel"
+)
+
+// kernelCommand is `guardring kernel`: build, install, list and remove the notebook kernel.
+func kernelCommand() *cobra.Command {
+	cmd := &cobra.Command{
+		Use:   "kernel",
+		Short: "Build, install, list or remove the notebook kernel",
+		Long: "Build, install, list or remove the notebook kernel. Jupyter then offers \"" + kernel.DisplayName + "\" for new notebooks.\n" +
+			"The kernel is compiled on this machine from a checkout; the first time takes some minutes, a second time with nothing changed none.",
+		Args: cobra.NoArgs,
+	}
+	cmd.AddCommand(kernelBuildCommand(), kernelInstallCommand(), kernelListCommand(), kernelRemoveCommand())
+	return cmd
+}
+
+// locationFlags adds the flags that say where Jupyter finds the kernel.
+func locationFlags(cmd *cobra.Command, at *kernel.Location) {
+	var user bool
+	cmd.Flags().BoolVar(&user, "user", false, "in your own Jupyter data folder (the default; JUPYTER_DATA_DIR is honoured)")
+	cmd.Flags().StringVar(&at.Prefix, "prefix", "", "under `DIR`/share/jupyter")
+	cmd.Flags().BoolVar(&at.SysPrefix, "sys-prefix", false, "under the prefix of the Python in PATH, such as a virtual environment")
+	cmd.MarkFlagsMutuallyExclusive("user", "prefix", "sys-prefix")
+}
+
+func kernelBuildCommand() *cobra.Command {
+	var source, output string
+	cmd := &cobra.Command{
+		Use:     "build -o FILE",
+		Short:   "Compile the kernel to a file",
+		Example: "  guardring kernel build -o ./guardring-kernel",
+		Args:    cobra.NoArgs,
+		RunE: func(cmd *cobra.Command, _ []string) error {
+			dir, err := kernel.FindSource(source)
+			if err != nil {
+				return err
+			}
+			built, err := kernel.Build(cmd.Context(), dir, output, cmd.ErrOrStderr())
+			if err != nil {
+				return err
+			}
+			if !built {
+				fmt.Fprintln(cmd.OutOrStdout(), output, "is current: nothing had changed")
+				return nil
+			}
+			fmt.Fprintln(cmd.OutOrStdout(), "built", output)
+			return nil
+		},
+	}
+	cmd.Flags().StringVarP(&output, "output", "o", "guardring-kernel", "`FILE` to write")
+	cmd.Flags().StringVar(&source, "source", "", "`DIR` of a checkout (default: the one around the working directory)")
+	return cmd
+}
+
+func kernelInstallCommand() *cobra.Command {
+	var at kernel.Location
+	var source string
+	cmd := &cobra.Command{
+		Use:     "install",
+		Short:   "Compile the kernel and make it known to Jupyter",
+		Example: "  guardring kernel install\n  go run -C CLONE ./cmd/guardring kernel install",
+		Args:    cobra.NoArgs,
+		RunE: func(cmd *cobra.Command, _ []string) error {
+			dir, err := kernel.FindSource(source)
+			if err != nil {
+				return err
+			}
+			where, built, err := kernel.Install(cmd.Context(), dir, at, cmd.ErrOrStderr())
+			if err != nil {
+				return err
+			}
+			note := ""
+			if !built {
+				note = " (nothing had changed)"
+			}
+			fmt.Fprintf(cmd.OutOrStdout(), "installed %s in %s%s\n", kernel.DisplayName, where, note)
+			return nil
+		},
+	}
+	locationFlags(cmd, &at)
+	cmd.Flags().StringVar(&source, "source", "", "`DIR` of a checkout (default: the one around the working directory)")
+	return cmd
+}
+
+func kernelListCommand() *cobra.Command {
+	return &cobra.Command{
+		Use:     "list",
+		Short:   "List where the kernel is installed",
+		Example: "  guardring kernel list",
+		Args:    cobra.NoArgs,
+		RunE: func(cmd *cobra.Command, _ []string) error {
+			found, err := kernel.List(cmd.Context())
+			if err != nil {
+				return err
+			}
+			if len(found) == 0 {
+				fmt.Fprintln(cmd.OutOrStdout(), "no kernel is installed; `guardring kernel install` installs one")
+			}
+			for _, k := range found {
+				line := k.Dir + "  " + k.Version
+				if k.Problem != "" {
+					line += "  (" + k.Problem + ")"
+				}
+				fmt.Fprintln(cmd.OutOrStdout(), line)
+			}
+			return nil
+		},
+	}
+}
+
+func kernelRemoveCommand() *cobra.Command {
+	var at kernel.Location
+	cmd := &cobra.Command{
+		Use:     "remove",
+		Short:   "Take the kernel away from Jupyter",
+		Example: "  guardring kernel remove",
+		Args:    cobra.NoArgs,
+		RunE: func(cmd *cobra.Command, _ []string) error {
+			dir, err := kernel.Remove(cmd.Context(), at)
+			if err != nil {
+				return err
+			}
+			fmt.Fprintln(cmd.OutOrStdout(), "removed", dir)
+			return nil
+		},
+	}
+	locationFlags(cmd, &at)
+	return cmd
+}

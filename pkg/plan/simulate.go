@@ -1,0 +1,256 @@
+package plan
+
+import (
+	"bytes"
+	"encoding/csv"
+	"fmt"
+	"io"
+	"math"
+	"os"
+	"path/filepath"
+	"strconv"
+	"strings"
+
+	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/jet"
+	"example.org/guardring/pkg/model"
+	"example.org/guardring/pkg/random"
+)
+
+// stream names the random streams of simulated readings.
+const stream = "simulation"
+
+func isResponse(b *bench.Bench, channel int) bool {
+	return b.Kind.Channels[channel].Role == model.Response
+}
+
+// Simulate makes the response readings of a bench from its truth: SI, one per
+// data record, quantised to the channel's resolution.
+func Simulate(b *bench.Bench, t *Truth, seed uint64) ([]float64, error) {
+	k := b.Kind
+	setup := &model.Setup{Channels: map[string]bool{}, On: b.Corrections, Options: b.Options, Given: map[string]bool{}, Scalars: make([]float64, len(k.Scalars))}
+	for i := range b.Channels {
+		setup.Channels[b.Channels[i].Name] = true
+	}
+	for i := range k.Scalars {
+		key := k.Scalars[i].Key()
+		v, ok := t.Values[key]
+		if !ok {
+			if k.Scalars[i].Sought {
+				return nil, fmt.Errorf("%s: truth.%s: a simulation needs the true value of what the bench seeks", filepath.Join(b.Dir, TruthFile), key)
+			}
+			v = b.Scalars[i].Dist.Value
+		}
+		if k.Scalars[i].Squared {
+			v *= v
+		}
+		setup.Scalars[i] = v
+		setup.Given[key] = b.Scalars[i].Given || ok
+	}
+	m, err := k.Prepare(k, setup)
+	if err != nil {
+		return nil, fmt.Errorf("%s: %w", b.Dir, err)
+	}
+	x, err := trueValues(b, m, t, seed)
+	if err != nil {
+		return nil, err
+	}
+	return response(b, m, setup.Scalars, x, t, seed)
+}
+
+// scale returns the true gain and offset of a channel.
+func (t *Truth) scale(ch *bench.Channel) (gain, offset float64) {
+	gain = 1
+	if ch.HasGain {
+		gain = ch.Gain.Value
+	}
+	if ch.HasOffset {
+		offset = ch.Offset.Value
+	}
+	if v, ok := t.Values["channels."+ch.Name+".gain"]; ok {
+		gain = v
+	}
+	if v, ok := t.Values["channels."+ch.Name+".offset"]; ok {
+		offset = v
+	}
+	return gain, offset
+}
+
+// trueValues draws what the predictors really were.
+func trueValues(b *bench.Bench, m *model.Model, t *Truth, seed uint64) ([][]float64, error) {
+	var x [][]float64
+	for _, name := range m.Predictors {
+		var ch *bench.Channel
+		for i := range b.Channels {
+			if b.Channels[i].Name == name {
+				ch = &b.Channels[i]
+			}
+		}
+		if ch == nil {
+			return nil, fmt.Errorf("%s: channels.%s: the model %s needs this channel", b.Dir, name, b.Kind.Name)
+		}
+		src := random.New(seed, stream+" "+name, 0)
+		gain, offset := t.scale(ch)
+		v := make([]float64, b.Rows.N)
+		for i, r := range ch.Readings {
+			e := math.Hypot(ch.Noise, ch.RelativeNoise*r) * src.Normal()
+			if ch.Resolution > 0 {
+				e += ch.Resolution * (src.Float64() - 0.5)
+			}
+			v[i] = gain*(r+e) + offset
+		}
+		for _, g := range ch.Grouped {
+			errs := make([]float64, g.Count)
+			src.FillNormal(errs)
+			for i := range v {
+				v[i] += math.Hypot(g.U, g.Relative*ch.Readings[i]) * errs[g.Group[i]]
+			}
+		}
+		x = append(x, v)
+	}
+	if m.TimeDependent {
+		x = append(x, b.Rows.Time)
+	}
+	return x, nil
+}
+
+// response predicts the readings and disturbs them.
+func response(b *bench.Bench, m *model.Model, q []float64, x [][]float64, t *Truth, seed uint64) ([]float64, error) {
+	ch := &b.Channels[responseChannel(b)]
+	gain, offset := t.scale(ch)
+	src := random.New(seed, stream+" "+ch.Name, 0)
+	qj := make([]jet.Jet, len(q))
+	for i, v := range q {
+		qj[i] = jet.Const(v)
+	}
+	xj := make([]jet.Jet, len(x))
+	noise := ch.Noise
+	if ch.FromResiduals {
+		return nil, fmt.Errorf("%s: channels.%s.noise: a simulation needs the noise as a number, not from the residuals", b.Dir, ch.Name)
+	}
+	y := make([]float64, b.Rows.N)
+	for i := range y {
+		for p := range x {
+			xj[p] = jet.Const(x[p][i])
+		}
+		f := (m.Row(qj, xj).V - offset) / gain
+		y[i] = f + t.ZeroStart + math.Hypot(noise, ch.RelativeNoise*f)*src.Normal()
+		if t.ZeroRate != 0 && b.Rows.HasTime {
+			y[i] += t.ZeroRate * (b.Rows.Time[i] - b.Rows.Time[0])
+		}
+	}
+	for _, g := range ch.Grouped {
+		errs := make([]float64, g.Count)
+		src.FillNormal(errs)
+		for i := range y {
+			y[i] += math.Hypot(g.U, g.Relative*y[i]) * errs[g.Group[i]]
+		}
+	}
+	for _, f := range t.Faults {
+		y[f.Row-1] += f.Add
+	}
+	for i, v := range y {
+		if math.IsNaN(v) || math.IsInf(v, 0) {
+			file, line := b.Rows.Place(i)
+			return nil, fmt.Errorf("%s:%d: the model gives %g for this setting; check the truth and the settings", file, line, v)
+		}
+		if ch.Resolution > 0 {
+			y[i] = math.Round(v/ch.Resolution) * ch.Resolution
+		}
+	}
+	return y, nil
+}
+
+// File is a file of a simulated bench, named relative to its folder.
+type File struct {
+	Name string
+	Data []byte
+}
+
+// Files returns the files of the bench with the response column of its readings
+// replaced: everything else in them stays as it is.
+func Files(b *bench.Bench, y []float64) ([]File, error) {
+	ch := &b.Channels[responseChannel(b)]
+	var files []File
+	record := 0
+	for _, in := range b.Inputs {
+		data, err := os.ReadFile(filepath.Join(b.Dir, filepath.FromSlash(in.File)))
+		if err != nil {
+			return nil, err
+		}
+		if in.Rows > 0 {
+			if data, err = replaceColumn(data, ch, y[record:record+in.Rows]); err != nil {
+				return nil, fmt.Errorf("%s: %w", in.File, err)
+			}
+			record += in.Rows
+		}
+		files = append(files, File{Name: in.File, Data: data})
+	}
+	truth, err := os.ReadFile(filepath.Join(b.Dir, TruthFile))
+	if err != nil {
+		return nil, err
+	}
+	return append(files, File{Name: TruthFile, Data: truth}), nil
+}
+
+// replaceColumn rewrites the column of a channel in a CSV file.
+func replaceColumn(data []byte, ch *bench.Channel, y []float64) ([]byte, error) {
+	header, _, _ := bytes.Cut(data, []byte("\n"))
+	r := csv.NewReader(bytes.NewReader(data))
+	for _, sep := range []rune{';', '\t'} {
+		if bytes.ContainsRune(header, sep) && !bytes.ContainsRune(header, ',') {
+			r.Comma = sep
+		}
+	}
+	var out bytes.Buffer
+	w := csv.NewWriter(&out)
+	w.Comma = r.Comma
+	column, record := -1, -1
+	for {
+		fields, err := r.Read()
+		if err == io.EOF {
+			break
+		} else if err != nil {
+			return nil, err
+		}
+		if column < 0 {
+			for i, f := range fields {
+				if strings.TrimSpace(strings.TrimPrefix(f, "\ufeff")) == ch.Column {
+					column = i
+				}
+			}
+			if column < 0 {
+				return nil, fmt.Errorf("there is no column %q", ch.Column)
+			}
+		} else {
+			record++
+			if record >= len(y) {
+				return nil, fmt.Errorf("the file has grown since it was read")
+			}
+			fields[column] = decimal(ch, y[record])
+		}
+		if err := w.Write(fields); err != nil {
+			return nil, err
+		}
+	}
+	w.Flush()
+	return out.Bytes(), w.Error()
+}
+
+// decimal prints a reading in the channel's unit with the digits its resolution
+// has; without a resolution, with those its noise leaves meaningful.
+func decimal(ch *bench.Channel, v float64) string {
+	step := ch.Unit.DeltaFromSI(ch.Resolution)
+	if step == 0 {
+		step = ch.Unit.DeltaFromSI(math.Hypot(ch.Noise, ch.RelativeNoise*v)) / 10
+	}
+	digits := 6
+	if step > 0 {
+		digits = max(0, int(math.Ceil(-math.Log10(step)-1e-9)))
+	}
+	s := strconv.FormatFloat(ch.Unit.FromSI(v), 'f', digits, 64)
+	if strings.Trim(s, "-0.") == "" {
+		s = strings.TrimPrefix(s, "-")
+	}
+	return s
+}
