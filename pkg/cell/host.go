@@ -2,6 +2,7 @@ package cell
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"sync/atomic"
 )
@@ -19,6 +20,8 @@ type Host struct {
 	Clear func(wait bool)
 	// Fail ends the running cell with err. It must not return to its caller.
 	Fail func(err error)
+	// Input asks the person at the notebook for a line of text; password hides what is typed.
+	Input func(prompt string, password bool) (string, error)
 }
 
 // Failure is what Fail panics with where no host ends the cell. It is an error that wraps the cause.
@@ -78,6 +81,14 @@ func Clear(wait bool) {
 	if h := current.Load(); h != nil && h.Clear != nil {
 		h.Clear(wait)
 	}
+}
+
+// Input asks the person at the notebook for a line of text. Outside a notebook there is nobody to ask: an error.
+func Input(prompt string) (string, error) {
+	if h := current.Load(); h != nil && h.Input != nil {
+		return h.Input(prompt, false)
+	}
+	return "", errors.New("nobody to ask for input: not in a notebook")
 }
 
 // Fail ends the running cell with err, shown as an ordinary error without a stack. Outside a notebook it panics with
