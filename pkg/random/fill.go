@@ -113,7 +113,7 @@ const (
 	sin15 = -2.1085602852487744e-05
 )
 
-// sine returns sin πt for |t| ≤ 1/2, within 3e-16.
+// sine returns sin πt for |t| ≤ 1/2, within 5e-16.
 func sine(t float64) float64 {
 	q := t * t
 	q2 := q * q
