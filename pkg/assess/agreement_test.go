@@ -2,6 +2,7 @@ package assess
 
 import (
 	"context"
+	"encoding/json"
 	"errors"
 	"fmt"
 	"math"
@@ -424,6 +425,46 @@ func TestSharedCovarianceNames(t *testing.T) {
 	refuses(t, "budget of another unit", err, "add up")
 	_, err = SharedCovariance([]*reduce.Record{c, c}, nil)
 	refuses(t, "a record twice", err, "fully correlated")
+}
+
+// Three records, two with one divider: the parts of a comparison belong together.
+func TestCompare(t *testing.T) {
+	record := func(title string, value float64, source string) *reduce.Record {
+		return &reduce.Record{Title: title, Measurands: []reduce.Measurand{{Name: "factor", Unit: "1", Value: reduce.Number(value), U: 5e-4, K: 2,
+			Budget: []reduce.BudgetLine{
+				{Input: "channels.voltage.gain", U: 4e-4, Sensitivity: 1, Contribution: 4e-4, Source: source},
+				{Input: "spacing", U: 3e-4, Sensitivity: 1, Contribution: 3e-4},
+			}}}}
+	}
+	records := []*reduce.Record{record("A", 1.0000, "D-7"), record("B", 1.0012, "D-7"), record("C", 1.0003, "D-8")}
+	a, err := Compare(context.Background(), records, AgreementSettings{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	near(t, "covariance", a.Shared.Covariance.At(0, 1), 1.6e-7, 1e-20)
+	near(t, "E_n of the pair", a.Degrees.Bilateral[1][0].En, 1.2e-3/(2*math.Sqrt(2)*3e-4), 1e-9)
+	if a.Agrees || a.Robust == nil {
+		t.Errorf("agrees %v, robust %v", a.Agrees, a.Robust)
+	}
+	apart, err := Compare(context.Background(), records, AgreementSettings{Independent: true})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if len(apart.Shared.Inputs) != 0 || !apart.Agrees {
+		t.Errorf("independent: common %v, agrees %v", apart.Shared.Inputs, apart.Agrees)
+	}
+	if _, err := json.Marshal(a); err != nil {
+		t.Error(err)
+	}
+	_, err = Compare(context.Background(), records, AgreementSettings{Independent: true, Shared: []string{"D-7"}})
+	refuses(t, "independent with common inputs", err, "independent")
+	far := []*reduce.Record{records[0], record("B", 1.0003, "D-7"), record("D", 1.01, "D-9")}
+	if a, err = Compare(context.Background(), far, AgreementSettings{}); err != nil {
+		t.Fatal(err)
+	}
+	if a.Subset == nil || fmt.Sprint(a.Subset.Excluded) != "[2]" || a.SubsetDegrees == nil {
+		t.Errorf("subset %+v", a.Subset)
+	}
 }
 
 func BenchmarkLargestConsistentSubset(b *testing.B) {

@@ -49,6 +49,7 @@ type DecisionSettings struct {
 	Rule Rule
 	// The guard band is w = U (expanded) unless exactly one of these chooses it:
 	Guard        float64 // w itself, in the unit of the limits, > 0
+	Factor       float64 // r in w = rU, > 0 (JCGM 106:2012 8.3.2.2)
 	FalseAccept  float64 // largest specific risk of false acceptance (with Rejection: of false rejection), 0 … 0.5
 	ConsumerRisk float64 // largest global consumer's risk, 0 … 0.5; needs Population
 	// Rejection moves the limits of the guard-band rule out instead of in: only
@@ -198,7 +199,7 @@ func Decide(r Result, l Limits, s DecisionSettings) (*Statement, error) {
 // guard returns the guard band in the unit of the result.
 func (s DecisionSettings) guard(r Result, unit string, lower, upper float64, population *Population) (float64, error) {
 	chosen := 0
-	for _, x := range []float64{s.Guard, s.FalseAccept, s.ConsumerRisk} {
+	for _, x := range []float64{s.Guard, s.Factor, s.FalseAccept, s.ConsumerRisk} {
 		if x != 0 {
 			chosen++
 		}
@@ -223,7 +224,7 @@ func (s DecisionSettings) guard(r Result, unit string, lower, upper float64, pop
 		return 0, fmt.Errorf("decision rule %q is unknown%s (rules: %s)", s.Rule, hint, strings.Join(rules, ", "))
 	}
 	if chosen > 1 {
-		return 0, errors.New("the guard band is chosen more than once; give its width, or a specific risk, or a global consumer's risk")
+		return 0, errors.New("the guard band is chosen more than once; give its width, or a multiple of U, or a specific risk, or a global consumer's risk")
 	}
 	sign := 1.0
 	if s.Rejection {
@@ -243,6 +244,11 @@ func (s DecisionSettings) guard(r Result, unit string, lower, upper float64, pop
 			w = to.DeltaFromSI(from.DeltaToSI(w))
 		}
 		return sign * w, nil
+	case s.Factor != 0:
+		if !(s.Factor > 0) || math.IsInf(s.Factor, 0) {
+			return 0, fmt.Errorf("guard band of %v expanded uncertainties: the factor must be above zero", s.Factor)
+		}
+		return sign * s.Factor * r.Expanded(), nil
 	case s.FalseAccept != 0:
 		if s.Rejection { // risk of refusing an item that conforms; one limit decides
 			w, err := guardForRisk(s.FalseAccept, r, math.Inf(-1), 0)
@@ -266,7 +272,11 @@ func (s *Statement) String() string {
 	var b strings.Builder
 	unit := s.Result.Unit
 	v, u := si.Round(s.Result.Value, s.Result.Expanded())
-	fmt.Fprintf(&b, "%s: (%s ± %s) %s against ", s.Verdict, v, u, unit)
+	if unit == "1" {
+		fmt.Fprintf(&b, "%s: %s ± %s against ", s.Verdict, v, u)
+	} else {
+		fmt.Fprintf(&b, "%s: (%s ± %s) %s against ", s.Verdict, v, u, unit)
+	}
 	switch {
 	case s.Limits.Lower == nil:
 		fmt.Fprintf(&b, "at most %s", short(*s.Limits.Upper, unit))
@@ -300,4 +310,6 @@ func Percent(p, complement float64) string {
 	return fmt.Sprintf("%.1f %%", 100*p)
 }
 
-func short(x float64, unit string) string { return fmt.Sprintf("%.6g %s", x, unit) }
+func short(x float64, unit string) string {
+	return strings.TrimSuffix(fmt.Sprintf("%.6g %s", x, unit), " 1")
+}

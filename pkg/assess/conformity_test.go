@@ -1,6 +1,7 @@
 package assess
 
 import (
+	"encoding/json"
 	"math"
 	"testing"
 
@@ -51,6 +52,7 @@ func TestWorstRisk(t *testing.T) {
 		{DecisionSettings{Rule: SimpleAcceptance}, 0.5},
 		{DecisionSettings{Rule: GuardBand}, 0.022750131948179},
 		{DecisionSettings{Rule: GuardBand, FalseAccept: 0.01}, 0.01},
+		{DecisionSettings{Rule: GuardBand, Factor: 0.5}, 0.158655253931457},
 		{DecisionSettings{Rule: NonBinary, FalseAccept: 1e-6}, 1e-6},
 	} {
 		s, err := Decide(r, AtMost(5, "mm"), c.s)
@@ -193,6 +195,39 @@ func TestLimitsConverted(t *testing.T) {
 	near(t, "consumer", a.Global.Consumer, b.Global.Consumer, 1e-12)
 }
 
+// Statements are written whole: absent ends and infinite degrees of freedom as
+// null, and a result is read again as it was.
+func TestStatementJSON(t *testing.T) {
+	for _, r := range []Result{{Name: "x", Value: 1, U: 0.1, Unit: "V/m"}, {Value: 1, U: 0.1, DOF: 7.5, K: 2.4, Unit: "1"}} {
+		s, err := Decide(r, AtMost(2, r.Unit), DecisionSettings{Rule: NonBinary})
+		if err != nil {
+			t.Fatal(err)
+		}
+		b, err := json.Marshal(s)
+		if err != nil {
+			t.Fatal(err)
+		}
+		var back Statement
+		if err := json.Unmarshal(b, &back); err != nil {
+			t.Fatal(err)
+		}
+		r.K = r.factor()
+		if back.Result != r || back.Verdict != Pass || !math.IsNaN(float64(back.AcceptLower)) || back.AcceptUpper != s.AcceptUpper {
+			t.Errorf("%s came back as %+v", b, back)
+		}
+	}
+}
+
+// The unit of a record is written with superscripts or slashes.
+func TestUnitSpellings(t *testing.T) {
+	for _, unit := range []string{"V m⁻¹", "V/m", "V m-1", "kg m s⁻³ A⁻¹"} {
+		r, err := Result{Value: 5000, U: 10, Unit: unit}.to("kV/m")
+		if err != nil || r.Value != 5 || r.U != 0.01 {
+			t.Errorf("%s: %+v, %v", unit, r, err)
+		}
+	}
+}
+
 // The reading that belongs to a probability, put back into the probability.
 func TestReadingAt(t *testing.T) {
 	for _, s := range []Spread{{U: 0.3}, {Relative: 0.02}, {U: 0.3, Relative: 0.02, DOF: 6}} {
@@ -237,6 +272,7 @@ func TestDecideRefuses(t *testing.T) {
 		{"misspelt rule", good, limits, DecisionSettings{Rule: "gard-band"}, `did you mean "guard-band"`},
 		{"guard with simple acceptance", good, limits, DecisionSettings{Rule: SimpleAcceptance, Guard: 0.1}, "no guard band"},
 		{"negative guard", good, limits, DecisionSettings{Rule: GuardBand, Guard: -0.1}, "above zero"},
+		{"negative factor", good, limits, DecisionSettings{Rule: GuardBand, Factor: -1}, "above zero"},
 		{"guard twice", good, limits, DecisionSettings{Rule: GuardBand, Guard: 0.1, FalseAccept: 0.05}, "more than once"},
 		{"risk as percent", good, limits, DecisionSettings{Rule: GuardBand, FalseAccept: 5}, "0.05"},
 		{"risk not a number", good, limits, DecisionSettings{Rule: GuardBand, FalseAccept: nan}, "between 0 and 0.5"},

@@ -9,7 +9,7 @@
 // Agreement. [En], [Zeta] and [Z] compare two results, [WeightedMean] and
 // [Mean.Degrees] several, with their full covariance; [SharedCovariance] builds
 // that covariance from the budgets of records that used the same instrument or
-// certificate. [LargestConsistentSubset] and [AlgorithmA] serve when they do not
+// certificate, and [Compare] does all of it for records. [LargestConsistentSubset] and [AlgorithmA] serve when they do not
 // agree.
 //
 // Drift. [Drift] fits a line through the calibrations of one instrument, tests

@@ -69,9 +69,11 @@ type Line struct {
 
 	history     History
 	probability float64
-	b           [2][]float64 // level and slope as linear forms of the values
-	inner       []float64    // variances of the values without what is shared
-	stated      [2]float64   // standard uncertainties of level and slope without what is shared, not scaled
+	span        float64       // length of the history, s
+	column      []int         // of each calibration's adjustment in theta; 0: none
+	theta       *mat.VecDense // level − first value, slope × span, adjustments' departures over their u
+	covariance  *mat.SymDense // of theta
+	stated      [2]float64    // standard uncertainties of level and slope without what is shared, not scaled
 }
 
 // ChartPoint is one calibration in a control chart about the line. Limits are
@@ -96,11 +98,10 @@ type LatestCheck struct {
 	Signal    Signal  `json:"signal"`
 }
 
-// Drift fits a line to a history by generalised least squares in time, with the
-// stated uncertainties as weights (JCGM 100 H.3 for the line; the formulas with
-// a covariance are those of WeightedMean, with a second column). Values are
-// compared with the adjustments taken out, whose uncertainty correlates all
-// later values. At least three calibrations on three dates are wanted.
+// Drift fits a line to a history by least squares in time, with the stated
+// uncertainties as weights (JCGM 100 H.3 for the line). Each adjustment moves all
+// later values by its true size, of which the stated one is an estimate. At least
+// three calibrations on three dates are wanted.
 //
 // Two tests of drift are given: PSlope by the stated uncertainties, PScatter by
 // the scatter about the line; a warning says when they disagree. Control limits
@@ -120,7 +121,7 @@ func Drift(h History, s DriftSettings) (*Line, error) {
 		return nil, err
 	}
 	h.Calibrations = append([]Calibration(nil), h.Calibrations...)
-	l, v, err := fitLine(h)
+	l, err := fitLine(h)
 	if err != nil {
 		return nil, err
 	}
@@ -144,12 +145,12 @@ func Drift(h History, s DriftSettings) (*Line, error) {
 	if (l.PScatter < s.Level) != l.Significant {
 		l.Warnings = append(l.Warnings, fmt.Errorf("drift is %s by the stated uncertainties (p = %.2g) but not so by the scatter (p = %.2g): too few calibrations, or uncertainties that do not describe them", map[bool]string{true: "significant", false: "not significant"}[l.Significant], l.PSlope, l.PScatter))
 	}
-	l.chart(v)
+	l.chart()
 	if n > 3 {
 		rest := h
 		rest.Calibrations = h.Calibrations[:n-1]
 		if rest.check() == nil { // still three dates
-			before, _, err := fitLine(rest)
+			before, err := fitLine(rest)
 			if err != nil {
 				return nil, err
 			}
@@ -211,113 +212,109 @@ func (h History) check() error {
 	return nil
 }
 
-// fitLine returns level, slope and chi-squared, with the covariance of the
-// values after the adjustments are taken out (without what is shared).
-func fitLine(h History) (*Line, *mat.SymDense, error) {
+// fitLine estimates level, slope and the true size of each uncertain adjustment
+// (its stated size is one more datum): the errors of all data are then
+// independent but for what is shared, which only the level feels.
+func fitLine(h History) (*Line, error) {
 	cs := h.Calibrations
 	n := len(cs)
-	v := mat.NewSymDense(n, nil)
-	rs := make([]Result, n)
-	t, y := make([]float64, n), make([]float64, n)
-	l := &Line{Unit: h.Unit, DOF: n - 2, history: h, inner: make([]float64, n)}
-	var moved, variance float64 // sums over the adjustments made before
+	l := &Line{Unit: h.Unit, DOF: n - 2, history: h, column: make([]int, n), span: cs[n-1].Date.Sub(cs[0].Date).Seconds()}
+	p := 2
+	for j, c := range cs[:n-1] { // the last adjustment is in no value
+		if c.UAdjustment > 0 {
+			l.column[j], p = p, p+1
+		}
+	}
+	x, y := mat.NewDense(n+p-2, p, nil), mat.NewVecDense(n+p-2, nil)
+	moved := 0.0
 	for i, c := range cs {
-		l.inner[i] = (c.U - h.Shared) * (c.U + h.Shared)
-		t[i] = c.Date.Sub(cs[0].Date).Seconds()
-		y[i] = c.Value - moved
-		for k := i; k < n; k++ {
-			v.SetSym(i, k, variance)
+		u := math.Sqrt((c.U - h.Shared) * (c.U + h.Shared))
+		for k, v := range l.row(l.tau(c.Date), func(j int) bool { return j < i }, p) {
+			x.Set(i, k, v/u)
 		}
-		v.SetSym(i, i, variance+l.inner[i])
-		rs[i] = Result{Name: c.label(i), Value: y[i], U: math.Sqrt(variance + l.inner[i]), Unit: h.Unit}
+		y.SetVec(i, (c.Value-moved-cs[0].Value)/u)
 		moved += c.Adjustment
-		variance += c.UAdjustment * c.UAdjustment
-	}
-	_, chol, err := covariance(rs, v)
-	if err != nil {
-		return nil, nil, err
-	}
-	solve := func(x []float64) ([]float64, error) {
-		b := mat.NewVecDense(n, nil)
-		for i := range n {
-			b.SetVec(i, x[i]/rs[i].U)
+		if k := l.column[i]; k > 0 { // departure from the stated size, in units of its uncertainty
+			x.Set(n+k-2, k, 1)
 		}
-		if err := chol.SolveVecTo(b, b); err != nil {
-			return nil, err
-		}
-		out := make([]float64, n)
-		for i := range n {
-			out[i] = b.AtVec(i) / rs[i].U
-		}
-		return out, nil
 	}
-	one := make([]float64, n)
-	for i := range one {
-		one[i] = 1
+	var qr mat.QR
+	qr.Factorize(x)
+	theta := mat.NewVecDense(p, nil)
+	if err := qr.SolveVecTo(theta, false, y); err != nil {
+		return nil, fmt.Errorf("level and slope can't be told apart by these dates and uncertainties: %w", err)
 	}
-	w, err := solve(one)
-	if err != nil {
-		return nil, nil, err
+	var r, inverse mat.Dense
+	qr.RTo(&r)
+	if err := inverse.Inverse(r.Slice(0, p, 0, p)); err != nil {
+		return nil, fmt.Errorf("level and slope can't be told apart by these dates and uncertainties: %w", err)
 	}
-	s0, centre := sum(w), dot(w, t)/sum(w)
-	for i := range t {
-		t[i] -= centre
-	}
-	wt, err := solve(t)
-	if err != nil {
-		return nil, nil, err
-	}
-	s2 := dot(wt, t)
-	// about the weighted mean date the normal matrix is diagonal
-	y0 := y[0]
-	for i := range y {
-		y[i] -= y0
-	}
-	level := dot(w, y) / s0
-	l.Level, l.Slope = y0+level, dot(wt, y)/s2
-	l.stated = [2]float64{1 / math.Sqrt(s0), 1 / math.Sqrt(s2)}
-	l.ULevel, l.USlope = math.Hypot(l.stated[0], h.Shared), l.stated[1]
-	l.Reference = cs[0].Date.Add(time.Duration(centre * float64(time.Second)))
-	for i := range n {
-		w[i] /= s0
-		wt[i] /= s2
-	}
-	l.b = [2][]float64{w, wt}
-	chi := func(slope float64) (float64, error) {
-		e := make([]float64, n)
-		for i := range e {
-			e[i] = y[i] - level - slope*t[i]
-		}
-		we, err := solve(e)
-		if err != nil {
-			return 0, err
-		}
-		return math.Max(0, dot(e, we)), nil
-	}
-	if l.ChiSquared, err = chi(l.Slope); err != nil {
-		return nil, nil, err
-	}
-	constant, err := chi(0)
-	if err != nil {
-		return nil, nil, err
-	}
+	l.theta, l.covariance = theta, mat.NewSymDense(p, nil)
+	l.covariance.SymOuterK(1, &inverse) // (XᵀX)⁻¹ = R⁻¹R⁻ᵀ
+	var residual mat.VecDense
+	residual.MulVec(x, theta)
+	residual.SubVec(&residual, y)
+	l.ChiSquared = mat.Dot(&residual, &residual)
 	l.PValue, l.BirgeRatio = chiTail(l.ChiSquared, l.DOF), math.Sqrt(l.ChiSquared/float64(l.DOF))
-	l.PConstant = chiTail(constant, n-1)
-	return l, v, nil
+	// moving the origin by −cov/var makes level and slope uncorrelated
+	c := l.covariance
+	centre := -c.At(0, 1) / c.At(1, 1)
+	l.Reference = cs[0].Date.Add(time.Duration(centre * l.span * float64(time.Second)))
+	l.Level = cs[0].Value + theta.AtVec(0) + centre*theta.AtVec(1)
+	l.stated = [2]float64{math.Sqrt(c.At(0, 0) + centre*c.At(0, 1)), math.Sqrt(c.At(1, 1)) / l.span}
+	l.ULevel, l.USlope = math.Hypot(l.stated[0], h.Shared), l.stated[1]
+	l.Slope = theta.AtVec(1) / l.span
+	z := l.Slope / l.USlope
+	l.PConstant = chiTail(l.ChiSquared+z*z, n-1) // the fit without slope has a chi-squared larger by z²
+	return l, nil
 }
 
-func sum(a []float64) (s float64) {
-	for _, x := range a {
-		s += x
-	}
-	return s
+// tau is a date in units of the history's length from its first date.
+func (l *Line) tau(date time.Time) float64 {
+	return date.Sub(l.history.Calibrations[0].Date).Seconds() / l.span
 }
 
-func dot(a, b []float64) (s float64) {
-	for i := range a {
-		s += a[i] * b[i]
+// row is the value at tau as a linear form of what was estimated, with those
+// adjustments that were made before.
+func (l *Line) row(tau float64, before func(j int) bool, p int) []float64 {
+	row := make([]float64, p)
+	row[0], row[1] = 1, tau
+	for j, k := range l.column {
+		if k > 0 && before(j) {
+			row[k] = l.history.Calibrations[j].UAdjustment
+		}
 	}
-	return s
+	return row
+}
+
+// expect returns the value of the line with the adjustments made before, and its
+// variance without what is shared and without scaling.
+func (l *Line) expect(tau float64, before func(j int) bool) (value, variance float64) {
+	cs := l.history.Calibrations
+	h := mat.NewVecDense(l.theta.Len(), l.row(tau, before, l.theta.Len()))
+	value, variance = cs[0].Value+mat.Dot(h, l.theta), mat.Inner(h, l.covariance, h)
+	for j, c := range cs {
+		if before(j) {
+			value += c.Adjustment
+		}
+	}
+	if last := len(cs) - 1; before(last) { // not estimated: no value follows it
+		variance += cs[last].UAdjustment * cs[last].UAdjustment
+	}
+	return value, variance
+}
+
+// at returns what to expect at a date before any adjustment on that date.
+func (l *Line) at(date time.Time) (value, variance float64) {
+	return l.expect(l.tau(date), func(j int) bool { return l.history.Calibrations[j].Date.Before(date) })
+}
+
+// factor is what the stated uncertainties are multiplied by.
+func (l *Line) factor() float64 {
+	if l.Scaled {
+		return l.BirgeRatio
+	}
+	return 1
 }
 
 // dof returns the degrees of freedom of the line's uncertainties.
@@ -326,30 +323,4 @@ func (l *Line) dof() float64 {
 		return float64(l.DOF)
 	}
 	return math.Inf(1)
-}
-
-// at returns the value expected before any adjustment on that date, and its
-// variance without what is shared and without scaling.
-func (l *Line) at(date time.Time) (value, variance float64) {
-	cs := l.history.Calibrations
-	tau := date.Sub(l.Reference).Seconds()
-	value = l.Level + l.Slope*tau
-	g := make([]float64, len(cs)) // the line's value as a linear form of the values
-	for i := range cs {
-		g[i] = l.b[0][i] + tau*l.b[1][i]
-		variance += g[i] * g[i] * l.inner[i]
-	}
-	// An adjustment j enters values i > j with −1, and the prediction with +1
-	// when it was made before that date.
-	later := 0.0
-	for j := len(cs) - 1; j >= 0; j-- {
-		c := -later
-		if cs[j].Date.Before(date) {
-			value += cs[j].Adjustment
-			c++
-		}
-		variance += c * c * cs[j].UAdjustment * cs[j].UAdjustment
-		later += g[j]
-	}
-	return value, variance
 }

@@ -6,37 +6,25 @@ import (
 	"time"
 
 	"example.org/guardring/pkg/reduce"
-	"gonum.org/v1/gonum/mat"
 )
 
-// chart fills the control chart about the line; v is the covariance of the
-// values with the adjustments taken out, without what is shared.
-func (l *Line) chart(v *mat.SymDense) {
-	moved, factor := 0.0, l.factor()
+// chart fills the control chart about the line.
+func (l *Line) chart() {
 	for i, c := range l.history.Calibrations {
-		tau := c.Date.Sub(l.Reference).Seconds()
-		centre := l.Level + l.Slope*tau + moved
-		moved += c.Adjustment
+		centre, variance := l.expect(l.tau(c.Date), func(j int) bool { return j < i })
 		p := ChartPoint{Name: c.label(i), Date: c.Date, Value: c.Value, U: c.U, Centre: centre,
 			Warn: [2]float64{centre, centre}, Act: [2]float64{centre, centre},
 			Standardised: reduce.Number(math.NaN()), Signal: Acceptable}
-		// generalised least squares: the residuals have covariance V − X(XᵀV⁻¹X)⁻¹Xᵀ
-		inner := v.At(i, i) - l.stated[0]*l.stated[0] - tau*tau*l.stated[1]*l.stated[1]
-		if inner > 1e-10*v.At(i, i) {
-			u := factor * math.Sqrt(inner)
+		// least squares: var(residual) = σ²(1 − leverage)
+		own := (c.U - l.history.Shared) * (c.U + l.history.Shared)
+		if inner := own - variance; inner > 1e-10*own {
+			u := l.factor() * math.Sqrt(inner)
 			e := (c.Value - centre) / u
 			p.Standardised, p.Signal = reduce.Number(e), signal(e)
 			p.Warn, p.Act = [2]float64{centre - 2*u, centre + 2*u}, [2]float64{centre - 3*u, centre + 3*u}
 		}
 		l.Points = append(l.Points, p)
 	}
-}
-
-func (l *Line) factor() float64 {
-	if l.Scaled {
-		return l.BirgeRatio
-	}
-	return 1
 }
 
 // Prediction is what a line expects at a date.

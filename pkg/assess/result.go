@@ -1,6 +1,7 @@
 package assess
 
 import (
+	"encoding/json"
 	"errors"
 	"fmt"
 	"math"
@@ -15,7 +16,7 @@ type Result struct {
 	Name  string  `json:"name"`  // laboratory, item or quantity; for messages
 	Value float64 `json:"value"` // measured value, corrected for all known effects
 	U     float64 `json:"u"`     // standard uncertainty, ≥ 0
-	DOF   float64 `json:"-"`     // degrees of freedom of U; 0, NaN or +Inf: infinite
+	DOF   float64 `json:"dof"`   // degrees of freedom of U; 0, NaN or +Inf: infinite
 	K     float64 `json:"k"`     // coverage factor of the stated expanded uncertainty; 0: 2
 	Unit  string  `json:"unit"`
 }
@@ -35,6 +36,17 @@ func (r Result) dof() float64 {
 		return math.Inf(1)
 	}
 	return r.DOF
+}
+
+// MarshalJSON implements json.Marshaler: infinite degrees of freedom are null, as
+// in a record, and the coverage factor is the one in force.
+func (r Result) MarshalJSON() ([]byte, error) {
+	type plain Result
+	r.K = r.factor()
+	return json.Marshal(struct {
+		plain
+		DOF reduce.Number `json:"dof"`
+	}{plain(r), reduce.Number(r.dof())})
 }
 
 // label names the result in a message.

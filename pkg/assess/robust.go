@@ -50,7 +50,7 @@ type Robust struct {
 func AlgorithmA(x []float64, s RobustSettings) (*Robust, error) {
 	n := len(x)
 	if n < 3 {
-		return nil, fmt.Errorf("Algorithm A needs at least 3 values; got %d", n)
+		return nil, fmt.Errorf("a robust mean needs at least 3 values; got %d", n)
 	}
 	for i, v := range x {
 		if math.IsNaN(v) || math.IsInf(v, 0) {
@@ -113,7 +113,7 @@ func AlgorithmA(x []float64, s RobustSettings) (*Robust, error) {
 			return r, nil
 		}
 	}
-	return nil, fmt.Errorf("Algorithm A did not converge in %d iterations (mean %v, standard deviation %v)", most, r.Mean, r.SD)
+	return nil, fmt.Errorf("the robust mean (Algorithm A) did not converge in %d iterations (mean %v, standard deviation %v)", most, r.Mean, r.SD)
 }
 
 func median(x []float64) float64 {

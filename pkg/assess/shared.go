@@ -98,7 +98,7 @@ func SharedCovarianceOf(records []*reduce.Record, measurand string, shared []str
 		out.Covariance.SetSym(k.i, k.j, out.Covariance.At(k.i, k.j)+c)
 	}
 	if _, _, err := covariance(out.Results, out.Covariance); err != nil {
-		return nil, fmt.Errorf("covariance of common inputs: %w", err)
+		return nil, fmt.Errorf("covariance of common inputs (is one record given twice?): %w", err)
 	}
 	return out, nil
 }
