@@ -169,6 +169,9 @@ func (c *chain) measurands(k *carried, p float64) ([]Measurand, []*gum.Law, []er
 		r := Measurand{Name: m.Name, Doc: m.Doc, Unit: siSymbol(m.Unit), Value: Number(l.Value), U: Number(l.U), DOF: Number(l.DOF),
 			K: Number(l.K), Probability: Number(l.Probability), Interval: [2]Number{Number(l.Interval[0]), Number(l.Interval[1])}}
 		for i, b := range l.Budget {
+			if b.Sensitivity == 0 {
+				continue // it does not enter this measurand
+			}
 			line := BudgetLine{Input: b.Input, Group: b.Group, Value: Number(b.Value), U: Number(b.U), Shape: b.Shape, DOF: Number(b.DOF),
 				Sensitivity: Number(b.Sensitivity), Contribution: Number(math.Abs(b.Contribution)), Share: Number(b.Share)}
 			if i < len(c.inputs) {

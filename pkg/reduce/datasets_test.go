@@ -1,0 +1,253 @@
+package reduce_test
+
+import (
+	"math"
+	"os"
+	"path/filepath"
+	"testing"
+
+	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/gum"
+	"example.org/guardring/pkg/jet"
+	"example.org/guardring/pkg/model"
+	"example.org/guardring/pkg/plan"
+	"example.org/guardring/pkg/random"
+)
+
+// world is a dataset with its truth: an invented bench whose readings can be
+// made again and again.
+type world struct {
+	name  string
+	b     *bench.Bench
+	truth *plan.Truth
+	model *model.Model
+	q     []float64 // true scalars, Δ² for squared ones
+}
+
+// worlds opens every dataset that states its truth.
+func worlds(t testing.TB) []*world {
+	paths, err := filepath.Glob(filepath.Join("..", "..", "datasets", "*", plan.TruthFile))
+	if err != nil || len(paths) == 0 {
+		t.Fatalf("no dataset with a truth found (%v)", err)
+	}
+	var all []*world
+	for _, p := range paths {
+		all = append(all, openWorld(t, filepath.Base(filepath.Dir(p))))
+	}
+	return all
+}
+
+func openWorld(t testing.TB, name string) *world {
+	dir := filepath.Join("..", "..", "datasets", name)
+	if _, err := os.Stat(dir); err != nil {
+		t.Fatal(err)
+	}
+	b, err := bench.Open(dir)
+	if err != nil {
+		t.Fatal(err)
+	}
+	w := &world{name: name, b: b}
+	if w.truth, err = plan.ReadTruth(b); err != nil {
+		t.Fatal(err)
+	}
+	setup := &model.Setup{Channels: map[string]bool{}, On: b.Corrections, Options: b.Options, Given: map[string]bool{}}
+	for i := range b.Channels {
+		setup.Channels[b.Channels[i].Name] = true
+	}
+	for i, s := range b.Scalars {
+		setup.Given[s.Name] = s.Given
+		v := w.trueScalar(i)
+		if b.Kind.Scalars[i].Squared {
+			v *= v
+		}
+		w.q = append(w.q, v)
+	}
+	setup.Scalars = w.q
+	if w.model, err = b.Kind.Prepare(b.Kind, setup); err != nil {
+		t.Fatal(err)
+	}
+	return w
+}
+
+// trueScalar is the true value of a scalar: as the truth says, else as stated.
+func (w *world) trueScalar(i int) float64 {
+	if v, ok := w.truth.Values[w.b.Scalars[i].Name]; ok {
+		return v
+	}
+	return w.b.Scalars[i].Dist.Value
+}
+
+// trueMeasurand is the true value of a measurand of the bench.
+func (w *world) trueMeasurand(n int) float64 {
+	q := make([]jet.Jet, len(w.q))
+	for i, v := range w.q {
+		q[i] = jet.Const(v)
+	}
+	return w.model.Measurands[n].Value(q).V
+}
+
+// draw makes one laboratory's bench of the world: what is stated scatters about
+// the truth as it claims to, and the readings are made anew.
+func (w *world) draw(t testing.TB, seed uint64) *bench.Bench {
+	src := random.New(seed, "coverage", 0)
+	b := *w.b
+	b.Scalars = append([]bench.Scalar(nil), w.b.Scalars...)
+	b.Channels = append([]bench.Channel(nil), w.b.Channels...)
+	truth := plan.Truth{Values: map[string]float64{}, ZeroStart: w.truth.ZeroStart, ZeroRate: w.truth.ZeroRate}
+	for k, v := range w.truth.Values {
+		truth.Values[k] = v
+	}
+	about := func(d gum.Distribution, centre float64) gum.Distribution {
+		v := d.Sample(&src)
+		d.Value, v = centre, v-d.Value
+		d.Value += v
+		return d
+	}
+	for i := range b.Scalars {
+		s := &b.Scalars[i]
+		switch {
+		case s.Dist.U == 0 || (s.Adjust && !s.HasPrior):
+		case w.b.Kind.Scalars[i].Squared:
+			// Stated as a range about zero: it is the truth that lies anywhere in it.
+			truth.Values[s.Name] = s.Dist.Sample(&src)
+		default:
+			s.Dist = about(s.Dist, w.trueScalar(i))
+		}
+	}
+	y, err := plan.Simulate(w.b, &truth, seed)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i := range b.Channels {
+		ch := &b.Channels[i]
+		if ch.Name == w.model.Response {
+			ch.Readings = y
+		}
+		if v, ok := truth.Values["channels."+ch.Name+".gain"]; ch.HasGain {
+			if !ok {
+				v = ch.Gain.Value
+			}
+			ch.Gain = about(ch.Gain, v)
+		}
+		if v, ok := truth.Values["channels."+ch.Name+".offset"]; ch.HasOffset {
+			if !ok {
+				v = ch.Offset.Value
+			}
+			ch.Offset = about(ch.Offset, v)
+		}
+	}
+	return &b
+}
+
+// TestBlockAgreesWithRow compares the fast prediction of a kind with its jets.
+func TestBlockAgreesWithRow(t *testing.T) {
+	for _, w := range worlds(t) {
+		if w.model.Block == nil {
+			continue
+		}
+		x := w.predictors()
+		n := w.b.Rows.N
+		for i := range w.q {
+			f, jac := make([]float64, n), [][]float64{make([]float64, n)}
+			if !w.model.Block(w.q, x, 0, n, []int{i}, f, jac) {
+				continue
+			}
+			space := jet.NewSpace(1, 0)
+			for r := range n {
+				space.Reset()
+				got := w.row(space, i, r)
+				scale := math.Abs(got.V) + 1e-300
+				if math.Abs(f[r]-got.V) > 1e-12*scale {
+					t.Fatalf("%s row %d: block %g, row %g", w.name, r+1, f[r], got.V)
+				}
+				if d := math.Abs(jac[0][r] - got.Grad(0)); d > 1e-11*math.Abs(got.Grad(0))+1e-300 {
+					t.Fatalf("%s row %d: derivative by %s: block %g, row %g", w.name, r+1, w.b.Scalars[i].Name, jac[0][r], got.Grad(0))
+				}
+			}
+		}
+	}
+}
+
+// predictors are the readings of the model's predictors.
+func (w *world) predictors() [][]float64 {
+	var x [][]float64
+	for _, name := range w.model.Predictors {
+		for i := range w.b.Channels {
+			if w.b.Channels[i].Name == name {
+				x = append(x, w.b.Channels[i].Readings)
+			}
+		}
+	}
+	if w.model.TimeDependent {
+		x = append(x, w.b.Rows.Time)
+	}
+	return x
+}
+
+// row predicts record r with scalar i as the seed.
+func (w *world) row(space *jet.Space, i, r int) jet.Jet {
+	q := make([]jet.Jet, len(w.q))
+	for k, v := range w.q {
+		q[k] = jet.Const(v)
+	}
+	q[i] = space.Var(0, w.q[i])
+	var x []jet.Jet
+	for _, c := range w.predictors() {
+		x = append(x, jet.Const(c[r]))
+	}
+	return w.model.Row(q, x)
+}
+
+// TestDerivatives compares the derivative of every kind's prediction by every
+// scalar and predictor with central differences of its values.
+func TestDerivatives(t *testing.T) {
+	for _, w := range worlds(t) {
+		x := w.predictors()
+		n := len(w.q) + len(x)
+		value := func(r, k int, by float64) float64 {
+			q, xr := make([]jet.Jet, len(w.q)), make([]jet.Jet, len(x))
+			for i, v := range w.q {
+				q[i] = jet.Const(v)
+			}
+			for p := range x {
+				xr[p] = jet.Const(x[p][r])
+			}
+			if k < len(q) {
+				q[k].V += by
+			} else {
+				xr[k-len(q)].V += by
+			}
+			return w.model.Row(q, xr).V
+		}
+		for _, r := range []int{1, w.b.Rows.N / 3, w.b.Rows.N - 2} {
+			space := jet.NewSpace(n, 0)
+			q, xr := make([]jet.Jet, len(w.q)), make([]jet.Jet, len(x))
+			for i, v := range w.q {
+				q[i] = space.Var(i, v)
+			}
+			for p := range x {
+				xr[p] = space.Var(len(q)+p, x[p][r])
+			}
+			f := w.model.Row(q, xr)
+			for k := range n {
+				at, name := 0.0, ""
+				if k < len(q) {
+					at, name = w.q[k], w.b.Scalars[k].Name
+					if at == 0 {
+						at = math.Max(w.b.Scalars[k].Dist.U, 1e-6*math.Abs(w.b.Scalars[k].Unit.DeltaToSI(1)))
+					}
+				} else {
+					at, name = x[k-len(q)][r], w.model.Predictors[min(k-len(q), len(w.model.Predictors)-1)]
+					if at == 0 {
+						continue // a zero reading: nothing to scale a step by
+					}
+				}
+				h := 1e-4 * math.Abs(at)
+				want := (8*(value(r, k, h)-value(r, k, -h)) - (value(r, k, 2*h) - value(r, k, -2*h))) / (12 * h)
+				if d := math.Abs(f.Grad(k) - want); d > 2e-7*math.Abs(want)+1e-11*math.Abs(f.V/at) {
+					t.Errorf("%s record %d: derivative by %s is %g, central difference %g", w.name, r+1, name, f.Grad(k), want)
+				}
+			}
+		}
+	}
+}
