@@ -42,7 +42,10 @@ func SharedCovariance(records []*reduce.Record, shared []string) (*Shared, error
 //
 // shared names the inputs that the records have in common, by input ("voltage
 // gain" of every budget) or by source (a certificate). With shared nil they are
-// found: budget lines with the same input and the same source, not empty. Where
+// found: budget lines with the same input and the same source, not empty. So a
+// source has to name one certificate or serial number: under a phrase that fits
+// any ("divider certificate") two instruments look like one. Inputs of the result
+// says what was taken as common. Where
 // two records state different u for a common input the smaller is taken as
 // common (a drift allowance that one of them adds is its own), and a warning
 // says so. It refuses a name that fewer than two records have.
