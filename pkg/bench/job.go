@@ -145,6 +145,12 @@ func (l *loader) limits() {
 		l.fail(t.field("upper"), "the limits are the wrong way round: lower is %s, upper %s", shown(t.field("lower")), shown(t.field("upper")))
 	}
 	m.Rule = l.word(t, "rule", "simple", "simple", "guard-band", "non-binary")
+	if m.Rule == "simple" {
+		m.GuardFactor = 0
+		if n := t.field("false_accept"); n != nil {
+			l.fail(n, `a guard band belongs to rule = "guard-band" or "non-binary"`)
+		}
+	}
 	l.guard(t, u, m)
 	if p, ok := l.probability(t, "false_accept"); ok {
 		m.FalseAccept = p

@@ -349,12 +349,12 @@ func (r *reader) typeA(n *node, want wanted, q *stated) {
 
 // fromReadings fills q from repeated readings.
 func (r *reader) fromReadings(n *node, xs []float64, q *stated) {
-	mean, s := meanAndScatter(xs)
-	if !(s > 0) {
-		r.fail(n, "all %d readings are equal, so that their scatter says nothing; state value and u (at least the resolution over sqrt(12))", len(xs))
+	d, err := gum.FromReadings(xs)
+	if err != nil {
+		r.fail(n, "%v", err)
 		return
 	}
-	q.dist = gum.StudentT(mean, s/math.Sqrt(float64(len(xs))), float64(len(xs)-1))
+	q.dist = d
 	q.hasValue, q.hasU = true, true
 	if q.source == "" {
 		q.source = fmt.Sprintf("mean of %d readings", len(xs))

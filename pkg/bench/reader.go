@@ -278,7 +278,12 @@ func (r *reader) number(n *node, want wanted) (float64, si.Unit, bool) {
 			r.errs.add(e)
 			return 0, si.Unit{}, false
 		}
-		if !want.any && !r.measures(n, u, want.like) {
+		if !want.any && u.Dim != want.like.Dim {
+			if form := "relative_" + n.name; want.interval && u.Dim.IsOne() && indexOf(append(uncertaintyForms, "relative_noise"), form) >= 0 {
+				r.fail(n, "%s is a pure number; %s is due, or write %s = %s", quoted(n.text), dimensionName(want.like), form, quoted(n.text))
+				return 0, si.Unit{}, false
+			}
+			r.measures(n, u, want.like)
 			return 0, si.Unit{}, false
 		}
 		return v, u, true
