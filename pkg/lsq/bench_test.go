@@ -98,3 +98,93 @@ func BenchmarkRefitter(b *testing.B) {
 	}
 	b.ReportMetric(float64(b.N)/b.Elapsed().Seconds(), "fits/s")
 }
+
+// discEIV is disc with errors in both predictors too.
+func discEIV(n int) *EIVProblem {
+	src := random.New(7, "discEIV", 0)
+	v, d := make([]float64, n), make([]float64, n)
+	y, uy, uv, ud := make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
+	for i := range v {
+		v[i], d[i] = 100+900*src.Float64(), 1+4*src.Float64()
+		q := (v[i] - discTruth[1]) / (d[i] + discTruth[2])
+		f := discK * discTruth[0] * q * q
+		uy[i], uv[i], ud[i] = 1e-6+1e-3*f, 0.05+2e-4*v[i], 2e-3
+		y[i] = f + uy[i]*src.Normal()
+		v[i] += uv[i] * src.Normal()
+		d[i] += ud[i] * src.Normal()
+	}
+	return &EIVProblem{
+		Parameters: []Parameter{{Name: "eps", Start: discStart[0]}, {Name: "V0", Start: discStart[1]}, {Name: "d0", Start: discStart[2]}},
+		X:          [][]float64{v, d}, UX: [][]float64{uv, ud}, Y: y, UY: uy,
+		Eval: func(th []float64, x [][]float64, f []float64, jac, dx [][]float64) error {
+			eps, v0, d0 := th[0], th[1], th[2]
+			n := len(f)
+			v, d := x[0][:n], x[1][:n]
+			if jac == nil {
+				for i := range f {
+					q := (v[i] - v0) / (d[i] + d0)
+					f[i] = discK * eps * q * q
+				}
+				return nil
+			}
+			a, b, c, dv, dd := jac[0][:n], jac[1][:n], jac[2][:n], dx[0][:n], dx[1][:n]
+			k, k2 := discK*eps, -2*eps*discK
+			for i := range f {
+				r := 1 / (d[i] + d0)
+				q := (v[i] - v0) * r
+				g := q * q
+				f[i] = k * g
+				a[i] = discK * g
+				t := k2 * q * r
+				b[i], dv[i] = t, -t
+				t *= q
+				c[i], dd[i] = t, t
+			}
+			return nil
+		},
+	}
+}
+
+func BenchmarkFitEIV(b *testing.B) {
+	for _, n := range []int{40, 1000, 10000} {
+		b.Run(fmt.Sprintf("n=%d", n), func(b *testing.B) {
+			p := discEIV(n)
+			b.ReportAllocs()
+			for b.Loop() {
+				r, err := FitEIV(context.Background(), p, Settings{})
+				if err != nil || r.Status != Converged {
+					b.Fatal(err, r)
+				}
+			}
+		})
+	}
+}
+
+// 10,000 lines of 11 points with errors in both axes.
+func BenchmarkLineEIV(b *testing.B) {
+	const m, n = 10000, 11
+	b.Run(fmt.Sprintf("batch=%d", m), func(b *testing.B) {
+		src := random.New(3, "lines", 0)
+		lines := make([]LineData, m)
+		for k := range lines {
+			d := &lines[k]
+			d.X, d.Y, d.UX, d.UY = make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
+			for i := range d.X {
+				x := float64(i)
+				d.UX[i], d.UY[i] = 0.02+0.03*src.Float64(), 0.05+0.05*src.Float64()
+				d.X[i] = x + d.UX[i]*src.Normal()
+				d.Y[i] = 1 + 2*x + d.UY[i]*src.Normal()
+			}
+		}
+		var f LineFitter
+		var r LineResult
+		b.ReportAllocs()
+		for b.Loop() {
+			for k := range lines {
+				if err := f.Fit(&lines[k], &r); err != nil {
+					b.Fatal(err)
+				}
+			}
+		}
+	})
+}

@@ -178,7 +178,11 @@ func TestEIVExplicit(t *testing.T) {
 				e := math.Exp(b[2] * v)
 				f[i] = b[0] + b[1]*(e-1)*(e-1)
 				if jac != nil {
-					jac[0][i], jac[1][i], jac[2][i] = 1, (e-1)*(e-1), 2*b[1]*(e-1)*e*v
+					for k, d := range []float64{1, (e - 1) * (e - 1), 2 * b[1] * (e - 1) * e * v} {
+						if jac[k] != nil { // nil for a fixed parameter
+							jac[k][i] = d
+						}
+					}
 					dx[0][i] = 2 * b[1] * (e - 1) * e * b[2]
 				}
 			}
@@ -188,12 +192,26 @@ func TestEIVExplicit(t *testing.T) {
 		p.Numeric = numeric
 		r := fitEIV(t, p)
 		s2 := r.ChiSquared / float64(r.DOF)
+		// The guide's estimates are those of a search stopped at its default
+		// tolerance: b3 lies 1.6e-6 from the minimum. Ours must meet the
+		// minimum (computed independently, with tolerances of 1e-15), and have
+		// a sum of squares no larger than any at the guide's estimates.
+		minimum := []float64{1264.6548105, -54.0183868132, -0.0878498518191}
 		for j := range want.Beta {
-			near(t, "value", r.Values[j], want.Beta[j], 1e-6)
+			near(t, "minimum", r.Values[j], minimum[j], 1e-9)
+			near(t, "value", r.Values[j], want.Beta[j], 2e-6)
 			near(t, "standard deviation", r.U[j], want.SD[j], 1e-4)
 			for k := range want.Cov {
 				near(t, "covariance", r.Covariance.At(j, k)/s2, want.Cov[j][k], 1e-3)
 			}
+		}
+		guide := *p
+		guide.Parameters = append([]Parameter(nil), p.Parameters...)
+		for j := range guide.Parameters[1:] {
+			guide.Parameters[j+1] = Parameter{Start: want.Beta[j+1], Fixed: true}
+		}
+		if g := fitEIV(t, &guide); !(g.ChiSquared >= r.ChiSquared) {
+			t.Errorf("sum of squares %.15g, at the guide's b2 and b3 %.15g", r.ChiSquared, g.ChiSquared)
 		}
 		for i := range in.X {
 			if in.Fixed[i] && r.X[0][i] != in.X[i] {

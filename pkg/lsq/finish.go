@@ -213,7 +213,7 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 		r.ResidualSD = math.Sqrt(r.RSS / float64(r.DOF))
 	}
 	scale := 1.0 // variance of unit weight
-	known := p.U != nil || p.Covariance != nil || p.Reweight != nil
+	known := (p.U != nil || p.Covariance != nil || p.Reweight != nil) && !p.Relative
 	switch {
 	case known && r.DOF > 0:
 		r.BirgeRatio = math.Sqrt(r.ChiSquared / float64(r.DOF))
@@ -227,6 +227,10 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	case f.estimated():
 		r.ScaledByResiduals = true
 		r.warn("the readings' uncertainty was not stated: it was found from the residuals as %.4g, so that chi-squared equals its degrees of freedom and has no probability", f.noise)
+	case p.Relative:
+		r.ScaledByResiduals = true
+		scale = r.ChiSquared / float64(r.DOF)
+		r.warn("only the ratios of the readings' uncertainties were stated: their size was taken from the residuals, so that chi-squared has no probability")
 	default:
 		r.ScaledByResiduals = true
 		scale = r.ChiSquared / float64(r.DOF)

@@ -24,7 +24,7 @@ func (f *fitter) refine(ctx context.Context) error {
 	}
 	n := len(s.y)
 	cond := s.roughCondition()
-	if cond < 10 || math.IsInf(cond, 0) {
+	if (cond < 10 && f.p.powers == nil) || math.IsInf(cond, 0) {
 		s.settleLinear(cond)
 		return nil
 	}
@@ -60,9 +60,18 @@ func (f *fitter) refine(ctx context.Context) error {
 	}
 	rhs := make([]wide, rows)
 	if s.white.diagonal() {
-		for i, w := range s.white.w {
+		if f.p.powers != nil {
+			f.p.powers(cols)
+		} else {
 			for k, c := range s.ctrial {
-				cols[k][i] = twoProd(w, c[i])
+				for i, v := range c {
+					cols[k][i] = wide{v, 0}
+				}
+			}
+		}
+		for i, w := range s.white.w {
+			for k := range cols {
+				cols[k][i] = cols[k][i].mul(wide{w, 0})
 			}
 			rhs[i] = twoSum(s.y[i], -s.ftrial[i]).mul(wide{w, 0})
 		}

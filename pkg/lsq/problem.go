@@ -64,6 +64,13 @@ type Problem struct {
 	// Linear states that f is linear in the parameters. Fit also recognises
 	// it when the derivatives do not change with the parameters.
 	Linear bool
+
+	// Relative says that U or Covariance are known only up to a common factor:
+	// the covariance of the parameters is then scaled by the residual variance
+	// s², and the result says so. It can't be used with priors or effects.
+	Relative bool
+
+	powers func(cols [][]wide) // derivatives in extended precision, of a linear model
 }
 
 // Effects is a sparse matrix G by rows: reading i is moved by

@@ -440,6 +440,10 @@ func (s *search) run(ctx context.Context) error {
 		if ratio < small {
 			rejected++
 			jointly = s.eiv != nil
+			if s.eiv != nil && !s.refresh() {
+				s.finish("the points can't be projected onto the curve")
+				return nil
+			}
 			if delta <= 1e-16*s.scaledSize() || rejected > 60 {
 				s.finish("no step lowers chi-squared")
 				return nil
@@ -484,6 +488,30 @@ func (s *search) run(ctx context.Context) error {
 	}
 }
 
+// refresh moves the points of an errors-in-variables fit to their places at the
+// present parameters. The objective is known only to the linearisation at the
+// points' present places; unless these have settled, values at two different
+// parameters can't be compared.
+func (s *search) refresh() bool {
+	for i := 0; i < 5; i++ {
+		copy(s.trial, s.theta)
+		if err := s.call(s.trial, s.ftrial, s.jtrial, s.ctrial); err != nil {
+			s.lastEvalErr = err
+			return false
+		}
+		s.reduce(&s.next, s.trial, s.ftrial, s.ctrial)
+		if !s.goodTriangle() {
+			return false
+		}
+		before := s.chi2
+		s.accept()
+		if math.Abs(s.chi2-before) <= 1e-6*s.chi2 {
+			break
+		}
+	}
+	return true
+}
+
 // polish takes Gauss–Newton steps until the error left in the parameters,
 // judged from how fast the steps shrink, meets the tolerance, or rounding stops
 // them from shrinking.
@@ -503,11 +531,15 @@ func (s *search) polish(ctx context.Context, norm float64) error {
 		}
 		s.reduce(&s.next, s.trial, s.ftrial, s.ctrial)
 		chi2 := s.next.chi2()
-		if !s.goodTriangle() || !(chi2 <= s.chi2*(1+1e5*s.noise())) {
+		settled := true
+		if s.eiv != nil { // the points move too: see refresh
+			settled = math.Abs(chi2-s.chi2) <= 1e-9*s.chi2
+		}
+		if !s.goodTriangle() || !(chi2 <= s.chi2*(1+1e5*s.noise()) || s.eiv != nil) {
 			s.finish("Gauss–Newton steps no longer lower chi-squared")
 			return nil
 		}
-		small := true
+		small := settled
 		sd := math.Sqrt(s.chi2 / float64(len(s.y)))
 		before := norm
 		s.accept()
@@ -530,7 +562,7 @@ func (s *search) polish(ctx context.Context, norm float64) error {
 			return nil
 		}
 		s.iterations++
-		if rate >= 0.95 {
+		if rate >= 0.95 && settled {
 			grown++
 		}
 		if grown >= 3 || i >= 200 {

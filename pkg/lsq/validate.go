@@ -102,6 +102,9 @@ func (p *Problem) validate() (free []int, priors int, err error) {
 	if len(free) == 0 {
 		return nil, 0, fmt.Errorf("lsq: every parameter is fixed; there is nothing to estimate")
 	}
+	if p.Relative && (priors > 0 || p.Effects != nil) {
+		return nil, 0, fmt.Errorf("lsq: relative uncertainties can't be used with priors or effects, whose size is known; leave U nil to have the noise found from the residuals")
+	}
 	if n+priors < len(free) {
 		return nil, 0, fmt.Errorf("lsq: %d parameters can't be estimated from %d readings and %d priors; fix some parameters or add readings", len(free), n, priors)
 	}
