@@ -188,7 +188,7 @@ func (d *Data) reasons() (mark map[int]int, lines []string) {
 		if !x {
 			continue
 		}
-		r := tidy(why[d.number(i)])
+		r := OneLine(why[d.number(i)])
 		if r == "" {
 			r = "no reason stated"
 		}
@@ -259,7 +259,7 @@ func (d *Data) split(x int) []series {
 			if !ok {
 				k = len(s)
 				index[g] = k
-				s = append(s, series{name: "setting " + tidy(g)})
+				s = append(s, series{name: "setting " + OneLine(g)})
 			}
 			s[k].rows = append(s[k].rows, i)
 		}

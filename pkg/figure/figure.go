@@ -41,7 +41,7 @@ func (f *Figure) WriteSVG(w io.Writer) error {
 func (f *Figure) WritePNG(w io.Writer, dpi int) error { return f.c.writePNG(w, dpi) }
 
 // WritePDF writes the figure as a PDF page of its own size, fonts embedded.
-func (f *Figure) WritePDF(w io.Writer) error { return f.c.writePDF(w, tidy(f.Title)) }
+func (f *Figure) WritePDF(w io.Writer) error { return f.c.writePDF(w, OneLine(f.Title)) }
 
 // String returns the title and the summary.
 func (f *Figure) String() string {

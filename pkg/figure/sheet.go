@@ -104,7 +104,7 @@ func (s *sheet) finish(name, title, caption, summary string) *Figure {
 		s.note("%s of %s points drawn: the lowest and the highest of each column of the page are kept.", count(s.drawn), count(s.given))
 	}
 	for _, n := range s.notes {
-		for _, l := range wrap(tidy(n), noteSize, s.c.w-2*marginX) {
+		for _, l := range wrap(OneLine(n), noteSize, s.c.w-2*marginX) {
 			s.y += noteSize + 3
 			s.c.write(label{x: marginX, y: s.y, size: noteSize, color: slate, s: l})
 		}
@@ -113,7 +113,7 @@ func (s *sheet) finish(name, title, caption, summary string) *Figure {
 	var bg path
 	bg.rect(0, 0, s.c.w, s.c.h)
 	s.c.ops = append([]op{{path: bg, pen: pen{fill: paper}}}, s.c.ops...)
-	return &Figure{Name: name, Title: tidy(title), Caption: caption, Summary: summary, c: s.c}
+	return &Figure{Name: name, Title: OneLine(title), Caption: caption, Summary: summary, c: s.c}
 }
 
 // count writes a whole number with thin spaces.
@@ -146,7 +146,7 @@ func wrap(s string, size, most float64) []string {
 
 // words makes a name of the bench readable: "contact_potential" is "contact
 // potential".
-func words(name string) string { return strings.ReplaceAll(tidy(name), "_", " ") }
+func words(name string) string { return strings.ReplaceAll(OneLine(name), "_", " ") }
 
 // number writes a value for a sentence, three significant digits.
 func number(x float64) string {

@@ -137,7 +137,7 @@ var xmlEscaper = strings.NewReplacer("&", "&amp;", "<", "&lt;", ">", "&gt;", `"`
 // that XML 1.0 forbids.
 func escape(s string) string { return xmlEscaper.Replace(tidyKeep(s)) }
 
-// tidyKeep is tidy with the blanks left as they are.
+// tidyKeep is OneLine with the blanks left as they are.
 func tidyKeep(s string) string {
 	return strings.Map(func(r rune) rune {
 		if r < 0x20 || r == 0xfffe || r == 0xffff {

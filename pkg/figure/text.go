@@ -131,7 +131,7 @@ func width(s string, size float64, bold bool) float64 {
 
 // fitted shortens a text to a width, with an ellipsis where it was cut.
 func fitted(s string, size float64, bold bool, most float64) string {
-	s = tidy(s)
+	s = OneLine(s)
 	if width(s, size, bold) <= most {
 		return s
 	}
@@ -148,9 +148,11 @@ func fitted(s string, size float64, bold bool, most float64) string {
 	return strings.TrimRight(string(r[:lo]), " ") + "…"
 }
 
-// tidy makes one line of a text that somebody else wrote: control characters
-// and line ends become blanks.
-func tidy(s string) string {
+// OneLine returns a text that somebody else wrote as one printable line: control
+// characters, line ends and marks that turn the direction of writing become
+// blanks, runs of blanks one, and bytes that are not UTF-8 the replacement
+// character. It does not escape for any form.
+func OneLine(s string) string {
 	return strings.Join(strings.FieldsFunc(strings.ToValidUTF8(s, "\uFFFD"), func(r rune) bool {
 		return r == ' ' || r < 0x20 || r >= 0x7f && r < 0xa0 || r >= 0xfdd0 && r <= 0xfdef || r&0xfffe == 0xfffe ||
 			r >= 0x202a && r <= 0x202e || r >= 0x2066 && r <= 0x2069 || r == '\u2028' || r == '\u2029'
