@@ -106,10 +106,11 @@ func (c *chain) typicalU(comp *component) float64 {
 		return c.zeroNoise()
 	}
 	var s float64
-	for _, u := range comp.u {
+	for i := range c.record {
+		u := comp.u(i)
 		s += u * u
 	}
-	return math.Sqrt(s / float64(len(comp.u)))
+	return math.Sqrt(s / float64(len(c.record)))
 }
 
 // contribution is the standard uncertainty that a component gives to a quantity
@@ -129,12 +130,12 @@ func (c *chain) contribution(comp *component, k *carried, w []float64) float64 {
 	case comp.group != nil:
 		by := make([]float64, comp.count)
 		for i, g := range comp.group {
-			by[g] += w[i] * c.gainOf(comp, k, i) * comp.u[i]
+			by[g] += w[i] * c.gainOf(comp, k, i) * comp.u(i)
 		}
 		sum = dot(by, by)
 	default:
-		for i, u := range comp.u {
-			d := w[i] * c.gainOf(comp, k, i) * u
+		for i := range w {
+			d := w[i] * c.gainOf(comp, k, i) * comp.u(i)
 			sum += d * d
 		}
 	}

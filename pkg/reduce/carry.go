@@ -30,13 +30,14 @@ func (c *chain) carry(r *lsq.Result) (*carried, error) {
 	v := make([]float64, n)
 	r.SolveCovariance(r.Residuals, v)
 
-	jac, bySh, curve := c.derivatives(k.q, v)
-	// Σ⁻¹J, column by column.
+	// J and Σ⁻¹J, column by column.
+	jac := r.Jacobian()
 	wj := make([][]float64, np)
 	for j := range wj {
 		wj[j] = make([]float64, n)
 		r.SolveCovariance(jac[j], wj[j])
 	}
+	cross, curve := c.derivatives(k.q, v, wj)
 	h := mat.NewDense(np, np, nil)
 	for a := range np {
 		for b := range np {
@@ -71,7 +72,7 @@ func (c *chain) carry(r *lsq.Result) (*carried, error) {
 				}
 				continue
 			}
-			rhs[a] = -(dot(wj[a], bySh[s]) - curve[a][np+s])
+			rhs[a] = -(cross[a][s] - curve[a][np+s])
 		}
 		d := make([]float64, np)
 		for a := range np {
@@ -85,62 +86,73 @@ func (c *chain) carry(r *lsq.Result) (*carried, error) {
 	return k, nil
 }
 
-// derivatives returns ∂f/∂θ [parameter][row], ∂f/∂s [input][row] (nil for
-// priors) and Σ_i v_i ∂²f_i/∂θ∂(θ, s) [parameter][parameter, then input], f
-// being the indication.
-func (c *chain) derivatives(q []float64, v []float64) (jac, bySh, curve [][]float64) {
+// derivatives returns JᵀΣ⁻¹ ∂f/∂s [parameter][input] from w = Σ⁻¹J, and
+// Σ_i v_i ∂²f_i/∂θ∂(θ, s) [parameter][parameter, then input], f being the
+// indication. Sums run in chunks of rows added in order, so that they do not
+// depend on the number of cores.
+func (c *chain) derivatives(q, v []float64, w [][]float64) (cross, curve [][]float64) {
 	n, np, ni := len(c.record), len(c.free), len(c.inputs)
-	jac, bySh, curve = grid(np, n), make([][]float64, ni), grid(np, np+ni)
-	for s, in := range c.inputs {
-		if in.kind != priorInput {
-			bySh[s] = make([]float64, n)
-		}
-	}
+	cross, curve = grid(np, ni), grid(np, np+ni)
 	chunks := (n + chunkRows - 1) / chunkRows
 	partial := make([][][]float64, chunks)
 	parallel(n, chunkRows, func(lo, hi int) {
-		part := grid(np, np+ni)
+		part := grid(2*np, np+ni)
 		partial[lo/chunkRows] = part
 		space := jet.NewSpace(np+ni, np)
+		row := c.newRowJets(q)
 		for i := lo; i < hi; i++ {
 			space.Reset()
-			f := c.rowJet(space, q, i)
+			f := row.at(space, i)
 			for j := range np {
-				jac[j][i] = f.Grad(j)
 				for l := range np + ni {
 					part[j][l] += v[i] * f.Hess(j, l)
 				}
-			}
-			for s := range bySh {
-				if bySh[s] != nil {
-					bySh[s][i] = f.Grad(np + s)
+				for s := range ni {
+					part[np+j][s] += w[j][i] * f.Grad(np+s)
 				}
 			}
 		}
 	})
 	for _, part := range partial {
-		for j := range part {
+		for j := range np {
 			for l, x := range part[j] {
 				curve[j][l] += x
 			}
+			for s := range ni {
+				cross[j][s] += part[np+j][s]
+			}
 		}
 	}
-	return jac, bySh, curve
+	return cross, curve
 }
 
-// rowJet is the indication predicted for row i, with the parameters as seeds 0
-// to p−1 and the inputs after them.
-func (c *chain) rowJet(space *jet.Space, q []float64, i int) jet.Jet {
-	np := len(c.free)
-	qj := constants(q)
-	for j, f := range c.free {
-		qj[f] = space.Var(j, q[f])
-	}
-	type scale struct{ gain, offset jet.Jet }
-	scales := make([]scale, 1+len(c.pred))
+// rowJets predicts indications with the parameters as seeds 0 to p−1 and the
+// inputs after them.
+type rowJets struct {
+	c      *chain
+	q      []float64
+	qj, xj []jet.Jet
+	scales []scaleJet // the response, then the predictors
+}
+
+// scaleJet is the gain and offset of a channel.
+type scaleJet struct{ gain, offset jet.Jet }
+
+func (c *chain) newRowJets(q []float64) *rowJets {
+	r := &rowJets{c: c, q: q, qj: constants(q), xj: make([]jet.Jet, len(c.x)), scales: make([]scaleJet, 1+len(c.pred))}
 	for k, ci := range append([]int{c.resp}, c.pred...) {
 		g, o := gainOffset(&c.b.Channels[ci])
-		scales[k] = scale{jet.Const(g), jet.Const(o)}
+		r.scales[k] = scaleJet{jet.Const(g), jet.Const(o)}
+	}
+	return r
+}
+
+// at is the indication of row i.
+func (r *rowJets) at(space *jet.Space, i int) jet.Jet {
+	c, q, qj, xj, scales := r.c, r.q, r.qj, r.xj, r.scales
+	np := len(c.free)
+	for j, f := range c.free {
+		qj[f] = space.Var(j, q[f])
 	}
 	for s, in := range c.inputs {
 		switch in.kind {
@@ -152,7 +164,6 @@ func (c *chain) rowJet(space *jet.Space, q []float64, i int) jet.Jet {
 			scales[1+in.index].offset = space.Var(np+s, in.value)
 		}
 	}
-	xj := make([]jet.Jet, len(c.x))
 	for p := range c.x {
 		if p < len(c.pred) {
 			xj[p] = scales[1+p].gain.Scale(c.xr[p][i]).Add(scales[1+p].offset)

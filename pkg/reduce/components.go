@@ -18,12 +18,24 @@ type component struct {
 	unit    si.Unit
 	on      int // −1 the response, else the predictor
 	dof     float64
-	flat    bool      // rectangular (resolution), else normal
-	u       []float64 // standard uncertainty of each row, SI, on the scale it acts on
-	group   []int     // group of each row; nil: independent
-	count   int       // number of groups
-	column  int       // first column in the effects
-	unknown bool      // noise of the response, from the residuals
+	flat    bool // rectangular (resolution), else normal
+	// The standard uncertainty of a row, SI, on the scale it acts on, is
+	// gain·√(fixed² + (relative·reading)²).
+	gain, fixed, relative float64
+	readings              []float64
+	group                 []int // group of each row; nil: independent
+	count                 int   // number of groups
+	column                int   // first column in the effects
+	unknown               bool  // noise of the response, from the residuals
+}
+
+// u is the standard uncertainty of row i.
+func (k *component) u(i int) float64 {
+	if k.relative == 0 {
+		return k.gain * k.fixed
+	}
+	r := k.relative * k.readings[i]
+	return k.gain * math.Sqrt(k.fixed*k.fixed+r*r)
 }
 
 // zeroComponent marks the component of the zero correction.
@@ -44,23 +56,17 @@ func (c *chain) listComponents() error {
 		}
 		if on < 0 && ch.FromResiduals {
 			c.comps = append(c.comps, component{name: ch.Name + " noise", channel: ch.Name, unit: ch.Unit, on: on,
-				u: make([]float64, n), unknown: true, dof: math.NaN()})
+				gain: 1, unknown: true, dof: math.NaN()})
 		} else if ch.FromResiduals {
 			return fmt.Errorf("%s/bench.toml: channels.%s.noise: \"from-residuals\" is for the response (%s); state the noise of a predictor, or leave it out when it is part of the scatter",
 				c.b.Dir, ch.Name, c.m.Response)
 		} else if ch.Noise > 0 || ch.RelativeNoise > 0 {
-			u := make([]float64, n)
-			for i, r := range readings {
-				u[i] = gain * math.Hypot(ch.Noise, ch.RelativeNoise*r)
-			}
-			c.comps = append(c.comps, component{name: ch.Name + " noise", channel: ch.Name, unit: ch.Unit, on: on, u: u, dof: ch.NoiseDOF})
+			c.comps = append(c.comps, component{name: ch.Name + " noise", channel: ch.Name, unit: ch.Unit, on: on, dof: ch.NoiseDOF,
+				gain: gain, fixed: ch.Noise, relative: ch.RelativeNoise, readings: readings})
 		}
 		if ch.Resolution > 0 {
-			u := make([]float64, n)
-			for i := range u {
-				u[i] = gain * ch.Resolution / math.Sqrt(12)
-			}
-			comp := component{name: ch.Name + " resolution", channel: ch.Name, unit: ch.Unit, on: on, u: u, flat: true, dof: math.Inf(1)}
+			comp := component{name: ch.Name + " resolution", channel: ch.Name, unit: ch.Unit, on: on, flat: true, dof: math.Inf(1),
+				gain: gain, fixed: ch.Resolution / math.Sqrt(12)}
 			if ch.ResolutionPer == "setting" {
 				g := groupOf(c.b, "setting")
 				if g == nil {
@@ -71,11 +77,8 @@ func (c *chain) listComponents() error {
 			c.comps = append(c.comps, comp)
 		}
 		for _, g := range ch.Grouped {
-			u := make([]float64, n)
-			for i, r := range readings {
-				u[i] = gain * math.Hypot(g.U, g.Relative*r)
-			}
-			comp := component{name: ch.Name + " per " + g.By, channel: ch.Name, unit: ch.Unit, on: on, u: u, dof: g.DOF}
+			comp := component{name: ch.Name + " per " + g.By, channel: ch.Name, unit: ch.Unit, on: on, dof: g.DOF,
+				gain: gain, fixed: g.U, relative: g.Relative, readings: readings}
 			comp.group, comp.count = compact(g.Group, c.record)
 			c.comps = append(c.comps, comp)
 		}
@@ -86,19 +89,15 @@ func (c *chain) listComponents() error {
 			dof: ch.NoiseDOF, count: len(c.zero.coef), unknown: ch.FromResiduals})
 	}
 	// Every row needs an independent part, or the weights are infinite.
-	total := make([]float64, n)
-	unknown := false
-	for _, k := range c.comps {
-		unknown = unknown || k.unknown
-		for i := range k.u {
-			if k.group == nil {
-				total[i] += k.u[i]
+	if !c.unknownNoise() {
+		for i := range n {
+			var total float64
+			for k := range c.comps {
+				if comp := &c.comps[k]; comp.group == nil && comp.channel != zeroComponent {
+					total += comp.u(i)
+				}
 			}
-		}
-	}
-	if !unknown {
-		for i, t := range total {
-			if !(t > 0) {
+			if !(total > 0) {
 				return fmt.Errorf("%s: the reading has no stated noise: give channels.%s.noise (a value with unit, or \"from-residuals\") in bench.toml",
 					c.place(c.record[i]), c.m.Response)
 			}
@@ -199,11 +198,10 @@ func (c *chain) reweight(q []float64, u []float64, e *lsq.Effects) {
 			continue
 		}
 		if comp.unknown {
-			for i := range comp.u {
-				comp.u[i] = c.scale
-			}
+			comp.fixed = c.scale
 		}
-		for i, v := range comp.u {
+		for i := range u {
+			v := comp.u(i)
 			if comp.on >= 0 {
 				v *= slope[comp.on][i]
 			}
@@ -228,7 +226,7 @@ func (c *chain) reweight(q []float64, u []float64, e *lsq.Effects) {
 					at++
 				}
 			case comp.group != nil:
-				v := comp.u[i]
+				v := comp.u(i)
 				if comp.on >= 0 {
 					v *= slope[comp.on][i]
 				}

@@ -82,14 +82,14 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 	space := jet.NewSpace(len(own), 0)
 	grad := make([]float64, len(own))
 	rows := 0.0
+	plain, qj := constants(k.q), constants(k.q)
+	xj := make([]jet.Jet, len(c.x))
 	for i := 0; i < len(c.record); i += step {
 		space.Reset()
-		qj := constants(k.q)
-		xj := make([]jet.Jet, len(c.x))
 		for p := range c.x {
 			xj[p] = jet.Const(c.x[p][i])
 		}
-		f0 := without.Row(qj, xj).V
+		f0 := without.Row(plain, xj).V
 		for n, s := range own {
 			qj[c.inputs[s].index] = space.Var(n, k.q[c.inputs[s].index])
 		}

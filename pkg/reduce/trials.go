@@ -260,12 +260,12 @@ func (w *worker) drawComponent(src *random.Source, comp *component) {
 	if comp.group != nil {
 		e := draw(comp.count)
 		for i, g := range comp.group {
-			target[i] += scale * comp.u[i] * e[g]
+			target[i] += scale * comp.u(i) * e[g]
 		}
 		return
 	}
 	e := draw(len(target))
-	for i, u := range comp.u {
-		target[i] += scale * u * e[i]
+	for i := range target {
+		target[i] += scale * comp.u(i) * e[i]
 	}
 }
