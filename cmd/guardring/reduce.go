@@ -130,7 +130,7 @@ func (o *reduceOptions) render(r *reduce.Result) ([]outFile, error) {
 			if err := f.WriteSVG(&b); err != nil {
 				return nil, err
 			}
-			files = append(files, outFile{filepath.Join(o.figures, f.Name()+".svg"), b.Bytes()})
+			files = append(files, outFile{filepath.Join(o.figures, f.Name+".svg"), b.Bytes()})
 		}
 	}
 	return files, nil
@@ -161,4 +161,3 @@ func writeJSON(w io.Writer, v any) error {
 	e.SetEscapeHTML(false)
 	return e.Encode(v)
 }
-

@@ -9,6 +9,10 @@ import (
 	"example.org/guardring/pkg/si"
 )
 
+// negligible is the contribution, relative to the combined uncertainty, below
+// which a line is rounding and not an input.
+const negligible = 1e-9
+
 // readingsGroup is the part of the bench under which the budget lists what
 // varies between rows.
 const readingsGroup = "readings"
@@ -170,8 +174,8 @@ func (c *chain) measurands(k *carried, p float64) ([]Measurand, []*gum.Law, []er
 		r := Measurand{Name: m.Name, Doc: m.Doc, Unit: siSymbol(m.Unit), Value: Number(l.Value), U: Number(l.U), DOF: Number(l.DOF),
 			K: Number(l.K), Probability: Number(l.Probability), Interval: [2]Number{Number(l.Interval[0]), Number(l.Interval[1])}}
 		for i, b := range l.Budget {
-			if b.Sensitivity == 0 {
-				continue // it does not enter this measurand
+			if math.Abs(b.Contribution) <= negligible*l.U {
+				continue // it does not enter this measurand, or the fit takes it up whole
 			}
 			line := BudgetLine{Input: b.Input, Group: b.Group, Value: Number(b.Value), U: Number(b.U), Shape: b.Shape, DOF: Number(b.DOF),
 				Sensitivity: Number(b.Sensitivity), Contribution: Number(math.Abs(b.Contribution)), Share: Number(b.Share)}
