@@ -183,26 +183,38 @@ func (r *reader) syntax(flat string, err error) error {
 	if strings.HasSuffix(before, "*") && strings.HasPrefix(after, "*") || strings.HasPrefix(after, "**") {
 		return r.fail(col, "** is no operator here", powHint)
 	}
-	what := "the end"
-	if rest := strings.TrimLeft(after, " \t"); rest != "" {
-		c, _ := utf8.DecodeRuneInString(rest)
-		what = strconv.QuoteRune(c)
-		if token.IsIdentifier(before) || c == '_' || c == '(' || token.IsIdentifier(string(c)) {
-			return r.fail(col, fmt.Sprintf("%s is not expected here", what), "put an operator (+ - * /) between two terms")
-		}
-		for _, word := range strings.FieldsFunc(rest, func(c rune) bool { return c != '_' && !token.IsIdentifier(string(c)) })[:1:1] {
-			if token.IsKeyword(word) {
-				return r.fail(col, fmt.Sprintf("%q is a word of the Go language", word), "give the quantity another name")
-			}
+	for _, signs := range []string{"--", "++"} {
+		if strings.HasPrefix(after, signs) {
+			return r.fail(col, signs+" is no operator here", "put parentheses or a blank between two signs: x - (-y)")
 		}
 	}
-	for word := range strings.FieldsFuncSeq(flat, func(c rune) bool {
-		return !(c == '_' || '0' <= c && c <= '9' || token.IsIdentifier(string(c)))
-	}) {
+	letter := func(c rune) bool { return token.IsIdentifier(string(c)) || c == '_' || '0' <= c && c <= '9' }
+	keyword := func(at int, word string) error {
+		return r.fail(utf8.RuneCountInString(flat[:at])+1, fmt.Sprintf("%q is a word of the Go language", word), "give the quantity another name")
+	}
+	word := after
+	if i := strings.IndexFunc(after, func(c rune) bool { return !letter(c) }); i >= 0 {
+		word = after[:i]
+	}
+	if token.IsKeyword(word) {
+		return keyword(off, word)
+	}
+	c, _ := utf8.DecodeRuneInString(after)
+	if after != "" && (letter(c) || c == '(') {
+		return r.fail(col, fmt.Sprintf("%q is not expected here", c), "put an operator (+ - * /) between two terms")
+	}
+	// A keyword earlier on can mislead go/parser as to what follows it.
+	at := 0
+	for word := range strings.FieldsFuncSeq(flat, func(c rune) bool { return !letter(c) }) {
+		at += strings.Index(flat[at:], word)
 		if token.IsKeyword(word) {
-			return r.fail(utf8.RuneCountInString(flat[:strings.Index(flat, word)])+1,
-				fmt.Sprintf("%q is a word of the Go language", word), "give the quantity another name")
+			return keyword(at, word)
 		}
+		at += len(word)
+	}
+	what := "the end"
+	if strings.TrimLeft(after, " \t") != "" {
+		what = strconv.QuoteRune(c)
 	}
 	return r.fail(col, what+" is not expected here", "formulas hold names, decimal numbers, + - * /, parentheses and calls like sqrt(x)")
 }
