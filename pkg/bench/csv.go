@@ -168,6 +168,9 @@ func readHeader(file string, line []byte, s CSVSettings, wanted []string) (*layo
 	if len(l.header) > maxColumns {
 		return fail("the header has %d columns; at most %d are read", len(l.header), maxColumns)
 	}
+	if allNumbers(l.header) {
+		return fail("the first line holds numbers, where a header is due that names the columns")
+	}
 	first := map[string]int{}
 	for i, h := range l.header {
 		if h == "" {
@@ -253,21 +256,37 @@ func cellAt(b []byte, i int, sep byte) (cell []byte, end int, problem string) {
 
 // missingColumn says that a file lacks a column.
 func missingColumn(header []string, column string) string {
-	known := make([]string, 0, len(header))
-	numeric := 0
+	var known []string
+	stem, _, _ := strings.Cut(column, "/")
+	near := ""
 	for _, h := range header {
 		if h == "" {
 			continue
 		}
 		known = append(known, h)
-		if _, ok, _ := parseDecimal([]byte(h), '.'); ok {
-			numeric++
+		if s, _, _ := strings.Cut(h, "/"); s == stem && near == "" {
+			near = h // the same quantity, perhaps in another unit
 		}
 	}
-	if numeric > 0 && numeric == len(known) {
-		return fmt.Sprintf("there is no column %s: the first line holds numbers, where a header is due", quoted(column))
+	if near != "" {
+		return fmt.Sprintf("there is no column %s; did you mean %s?", quoted(column), near)
 	}
 	return fmt.Sprintf("there is no column %s%s", quoted(column), didYouMean(column, known))
+}
+
+// allNumbers reports whether a header consists of numbers: it is none, then.
+func allNumbers(header []string) bool {
+	numeric := 0
+	for _, h := range header {
+		if h == "" {
+			continue
+		}
+		if !onlyDecimal(h) {
+			return false
+		}
+		numeric++
+	}
+	return numeric > 0
 }
 
 // stamp reads a time: seconds, or RFC 3339.
