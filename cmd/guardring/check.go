@@ -47,7 +47,7 @@ number and whether the model applies, and prints what it found.`,
 			}
 			for _, q := range b.Scalars {
 				if q.Given {
-					fmt.Fprintf(w, "given        %s = %s\n", q.Name, si.Short(q.Unit.FromSI(q.Dist.Value), q.Unit.DeltaFromSI(q.Dist.U), q.Unit))
+					fmt.Fprintf(w, "given        %s = %s\n", q.Name, si.Short(q.Dist.Value, q.Dist.U, q.Unit))
 				}
 			}
 			names := make([]string, 0, len(b.Corrections))
