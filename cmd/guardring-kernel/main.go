@@ -63,7 +63,10 @@ func serve(path string) error {
 	if err != nil {
 		return err
 	}
-	in := gointerp.New(symbols.Linked, nil)
+	in, err := gointerp.New(symbols.Linked, nil)
+	if err != nil {
+		return err
+	}
 	in.SetRender(renderer(in))
 	server, err := kernel.NewServer(in, kernel.Config{
 		Sockets: kernel.Sockets{

@@ -36,6 +36,7 @@ type Interp struct {
 	linked []string // import paths to name first when an import is refused
 
 	warnings warnings
+	listener *listener
 	stringer xreflect.Type
 	goid     atomic.Uint64 // of the goroutine that runs cells
 	cells    int           // pieces of code run, cells or not: the file names of positions
@@ -43,15 +44,19 @@ type Interp struct {
 }
 
 // New returns an interpreter. linked are the import paths that the kernel brings besides the standard library.
-func New(linked []string, render Render) *Interp {
+func New(linked []string, render Render) (*Interp, error) {
 	rebind()
-	in := &Interp{ir: fast.New(), render: render, linked: linked, numbers: map[string]int{}}
+	l, err := newListener()
+	if err != nil {
+		return nil, err
+	}
+	in := &Interp{ir: fast.New(), render: render, linked: linked, numbers: map[string]int{}, listener: l}
 	in.warnings.at = in.position
 	g := &in.ir.Comp.Globals
 	g.Stdout, g.Stderr = &in.warnings, &in.warnings
 	in.stringer = in.ir.Comp.TypeOf((*fmt.Stringer)(nil)).Elem()
 	in.prepareGuard()
-	return in
+	return in, nil
 }
 
 // Interp returns the interpreter underneath, for renderers that convert interpreted types.
@@ -117,29 +122,18 @@ func (in *Interp) compile(code string) (nodes []ast.Node, expr *fast.Expr, err e
 		}
 	}()
 	c := in.ir.Comp
-	nodes = c.ParseBytes([]byte(code))
+	nodes = c.ParseBytes([]byte(parenthesise(code)))
 	if err := in.refuseImports(nodes); err != nil {
 		return nil, nil, err
 	}
 	in.guardGoroutines(nodes)
 	nodes = blockExpressions(nodes)
 	form, _ := c.MacroExpandCodewalk(ast2.AnyToAst(nodes, "cell"))
-	expr = in.ir.CompileAst(form)
-	if in.warnings.text.Len() > 0 {
-		return nil, nil, in.valuesDropped()
+	dropped := in.listener.during(func() { expr = in.ir.CompileAst(form) })
+	if len(dropped) > 0 || in.warnings.text.Len() > 0 {
+		return nil, nil, in.valuesDropped(nodes)
 	}
 	return nodes, expr, nil
-}
-
-// valuesDropped is the error for a declaration that takes fewer values than its right side has.
-func (in *Interp) valuesDropped() error {
-	msg := "the right side returns more values than there are variables on the left: an error it returns would be lost; " +
-		"write x, err := … and look at err"
-	e := &kernel.CellError{Kind: kernel.CompileError, Message: msg}
-	if len(in.warnings.pos) > 0 {
-		e.Places = []kernel.Place{in.place(in.warnings.pos[0], true)}
-	}
-	return e
 }
 
 // blockExpressions puts the expressions of a cell but the last into blocks, so that a panic in one is found at its
@@ -245,10 +239,16 @@ func (in *Interp) runError(fault any, at []kernel.Place) error {
 		e.Kind, e.Message = kernel.ExitRefused, f.String()
 	case base.Signal:
 		e.Kind, e.Message = kernel.Interrupted, "the cell was interrupted"
+	case *reflect.ValueError:
+		// The interpreter reaches through pointers by reflection.
+		e.Message, e.Cause = "nil pointer dereference", f
+		if f.Kind != reflect.Invalid && f.Kind != reflect.Pointer {
+			e.Message = f.Error()
+		}
 	case error:
 		e.Message, e.Cause = f.Error(), f
 	default:
-		e.Message = safeText(f)
+		e.Message = strings.TrimPrefix(safeText(f), "reflect: ")
 	}
 	return e
 }
@@ -375,7 +375,7 @@ func (in *Interp) Check(code string) (c kernel.Completeness) {
 	var p mp.Parser
 	g := &in.ir.Comp.Globals
 	p.Configure(g.ParserMode, g.MacroChar)
-	p.Init(g.Fileset, "check", 0, []byte(code))
+	p.Init(g.Fileset, "check", 0, []byte(parenthesise(code)))
 	_, err := p.Parse()
 	if err == nil {
 		return kernel.CodeComplete

@@ -12,6 +12,7 @@ import (
 	"sync"
 	"time"
 
+	"github.com/cosmos72/gomacro/base"
 	"github.com/cosmos72/gomacro/gls"
 	"github.com/cosmos72/gomacro/imports"
 
@@ -81,7 +82,8 @@ func sleep(d time.Duration) {
 	defer t.Stop()
 	select {
 	case <-t.C:
-	case <-ctx.Done(): // the interrupt itself comes at the next statement
+	case <-ctx.Done():
+		panic(base.SigInterrupt) // as the interpreter does at a statement
 	}
 }
 

@@ -22,6 +22,9 @@ func (in *Interp) result(nodes []ast.Node, vals []xreflect.Value, types []xrefle
 		return &kernel.Result{}, nil
 	}
 	n := len(vals)
+	if _, isCall := ast.Unparen(x).(*ast.CallExpr); !isCall && n > 1 {
+		vals, types, n = vals[:1], types[:1], 1 // the "ok" of a receive, an index or an assertion is not asked for
+	}
 	call, isCall := ast.Unparen(x).(*ast.CallExpr)
 	if n > 0 && len(types) == n && in.isError(types[n-1]) && (n > 1 || isCall) {
 		if err, ok := basereflect.ValueInterface(vals[n-1]).(error); ok && err != nil {

@@ -1,0 +1,160 @@
+package gointerp
+
+import (
+	"bytes"
+	"fmt"
+	"go/ast"
+	"go/token"
+	"os"
+	"strings"
+	"sync"
+
+	"github.com/cosmos72/gomacro/fast"
+
+	"example.org/guardring/pkg/kernel"
+)
+
+// listener takes what is printed to os.Stdout while a cell is compiled. The interpreter's compiler prints there when
+// it drops a value, and has no other way to say so.
+type listener struct {
+	r, w *os.File
+
+	mu   sync.Mutex
+	text []byte
+	seen chan struct{}
+}
+
+func newListener() (*listener, error) {
+	r, w, err := os.Pipe()
+	if err != nil {
+		return nil, err
+	}
+	l := &listener{r: r, w: w, seen: make(chan struct{}, 1)}
+	go func() {
+		buf := make([]byte, 4<<10)
+		for {
+			n, err := r.Read(buf)
+			if err != nil {
+				return
+			}
+			l.mu.Lock()
+			l.text = append(l.text, buf[:n]...)
+			if l.text[len(l.text)-1] == 0 {
+				l.text = l.text[:len(l.text)-1]
+				l.seen <- struct{}{}
+			}
+			l.mu.Unlock()
+		}
+	}()
+	return l, nil
+}
+
+// during runs work and returns the compiler's warnings that a value is dropped. What goroutines of earlier cells
+// printed meanwhile goes where it belongs.
+func (l *listener) during(work func()) (dropped []string) {
+	before := os.Stdout
+	os.Stdout = l.w
+	defer func() {
+		os.Stdout = before
+		if _, err := l.w.Write([]byte{0}); err != nil {
+			return
+		}
+		<-l.seen
+		l.mu.Lock()
+		text := l.text
+		l.text = nil
+		l.mu.Unlock()
+		for _, line := range bytes.SplitAfter(text, []byte("\n")) {
+			if bytes.HasPrefix(line, []byte("// warning: expression return")) {
+				dropped = append(dropped, string(line))
+			} else if len(line) > 0 && !bytes.HasPrefix(line, []byte("// warning: ")) {
+				_, _ = before.Write(line) // a stream of the kernel
+			}
+		}
+	}()
+	work()
+	return nil
+}
+
+// valuesDropped is the error for a place that takes fewer values than a call returns.
+func (in *Interp) valuesDropped(nodes []ast.Node) error {
+	e := &kernel.CellError{Kind: kernel.CompileError, Message: "a call returns more values than are taken here"}
+	if call, n := in.droppingCall(nodes); call != nil {
+		e.Places = []kernel.Place{in.place(in.ir.Comp.Fileset.Position(call.Pos()), true)}
+		e.Message = fmt.Sprintf("%s returns %d values, and one is taken", callName(call), n)
+	} else if len(in.warnings.pos) > 0 {
+		e.Places = []kernel.Place{in.place(in.warnings.pos[0], true)}
+	}
+	e.Message += ": an error among the others would be lost; give each value a variable, as in x, err := …"
+	return e
+}
+
+func callName(call *ast.CallExpr) string {
+	switch f := call.Fun.(type) {
+	case *ast.Ident:
+		return f.Name
+	case *ast.SelectorExpr:
+		if id, ok := f.X.(*ast.Ident); ok {
+			return id.Name + "." + f.Sel.Name
+		}
+		return f.Sel.Name
+	}
+	return "the call"
+}
+
+// droppingCall finds the first call that returns several values where one is taken. Calls of functions that only the
+// cell's own functions see can't be judged.
+func (in *Interp) droppingCall(nodes []ast.Node) (found *ast.CallExpr, values int) {
+	for _, n := range nodes {
+		var stack []ast.Node
+		ast.Inspect(n, func(n ast.Node) bool {
+			if n == nil {
+				stack = stack[:len(stack)-1]
+				return true
+			}
+			if call, ok := n.(*ast.CallExpr); ok && found == nil && singleValue(stack, call) {
+				if k := in.results(call.Fun); k > 1 {
+					found, values = call, k
+				}
+			}
+			stack = append(stack, n)
+			return true
+		})
+	}
+	return found, values
+}
+
+// singleValue reports whether a call stands where one value is taken.
+func singleValue(stack []ast.Node, call *ast.CallExpr) bool {
+	if len(stack) == 0 {
+		return false
+	}
+	switch p := stack[len(stack)-1].(type) {
+	case *ast.ExprStmt, *ast.GoStmt, *ast.DeferStmt, *ast.ReturnStmt:
+		return false
+	case *ast.AssignStmt:
+		return len(p.Lhs) == len(p.Rhs) || p.Tok != token.DEFINE && p.Tok != token.ASSIGN
+	case *ast.ValueSpec:
+		return len(p.Names) == len(p.Values)
+	case *ast.CallExpr:
+		return p.Fun == call || len(p.Args) > 1
+	}
+	return true
+}
+
+// results returns how many values a function expression returns, 0 when that can't be told.
+func (in *Interp) results(fun ast.Expr) (n int) {
+	defer func() {
+		if recover() != nil { // the compiler's way to say that the expression does not compile by itself
+			n = 0
+		}
+	}()
+	c := fast.NewComp(in.ir.Comp, nil)
+	c.UpCost = 0
+	c.Depth--
+	e := c.Expr(fun, nil)
+	if e == nil || e.Type == nil || e.Type.ReflectType() == nil || !strings.HasPrefix(e.Type.Kind().String(), "func") {
+		return 0
+	}
+	return e.Type.NumOut()
+}
