@@ -97,12 +97,13 @@ func (l *loader) channel(n *node, k *model.Channel) {
 
 // headerUnit warns when the header of a column says another unit than the bench.
 func (l *loader) headerUnit(n *node, header string, u si.Unit) {
-	i := strings.LastIndexByte(header, '/')
-	if i <= 0 {
+	first, last := strings.IndexByte(header, '/'), strings.LastIndexByte(header, '/')
+	if first <= 0 {
 		return
 	}
-	// A quotient such as m/s needs the whole of what follows the first solidus.
-	for _, at := range []int{strings.IndexByte(header, '/'), i} {
+	says := si.Unit{}
+	// NAME/m/s holds a quotient behind the first solidus, a/b/V a unit behind the last.
+	for _, at := range []int{last, first} {
 		h, err := si.ParseUnit(header[at+1:])
 		if err != nil {
 			continue
@@ -110,9 +111,10 @@ func (l *loader) headerUnit(n *node, header string, u si.Unit) {
 		if h.Dim == u.Dim && h.Factor == u.Factor && h.Offset == u.Offset {
 			return
 		}
-		if at == i && (h.Dim == u.Dim || !h.Dim.IsOne()) {
-			l.warnf(n, "the header %s says %s, the bench %s; the bench counts", quoted(header), h.Symbol, u.Symbol)
-		}
+		says = h
+	}
+	if says.Symbol != "" {
+		l.warnf(n, "the header %s says %s, the bench %s; the bench counts", quoted(header), says.Symbol, u.Symbol)
 	}
 }
 

@@ -146,7 +146,10 @@ func (f *folder) document(name string) (data []byte, sum string, err error) {
 	if err != nil {
 		var e *Error
 		if errors.As(err, &e) && errors.Is(err, fs.ErrNotExist) {
-			e.Problem = "there is no such file in " + f.dir + "; a dataset is a folder with " + benchFile + f.near(name)
+			e.Problem = "there is no such file in " + f.dir + f.near(name)
+			if name == benchFile {
+				e.Problem = "there is no such file in " + f.dir + "; a dataset is a folder with " + benchFile + f.near(name)
+			}
 		}
 		return nil, "", err
 	}

@@ -232,8 +232,8 @@ func (r *reader) bounded(n *node, shape string, half float64, q *stated) {
 			r.fail(n.field("inexactness"), "%s is larger than half_width", shown(n.field("inexactness")))
 			return
 		}
-		q.dist = gum.CurvilinearTrapezoidal(v-half, v+half, d)
-		q.dist.Value = v // not rounded by way of its limits
+		q.dist = gum.CurvilinearTrapezoidal(-half, half, d)
+		q.dist.Value = v // set afterwards, so that nothing is rounded by way of the limits
 	default:
 		r.fail(n.field("shape"), "shape %s is not stated by half_width; use u", quoted(shape))
 	}
