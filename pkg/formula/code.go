@@ -4,6 +4,7 @@ package formula
 // subexpression once, with the registers that a block of rows needs.
 type code struct {
 	nodes []node  // arguments stand before their users
+	vars  []int32 // those nodes that are variables
 	outs  []int32 // node of each output
 	dest  []int32 // for each node the output it is written to directly; −1: none
 	slot  []int32 // for each operation its register
@@ -46,6 +47,9 @@ func newCode(g *graph, outs []int32) *code {
 		moved[i] = int32(len(c.nodes))
 		if n.op.args() > 0 {
 			n.a, n.b = moved[n.a], moved[n.b]
+		}
+		if n.op == opVar {
+			c.vars = append(c.vars, moved[i])
 		}
 		c.nodes = append(c.nodes, n)
 	}
@@ -105,22 +109,30 @@ func (c *code) registers() {
 // eval computes all nodes at one point.
 func (c *code) eval(x, vals []float64) {
 	for i := range c.nodes {
-		n := &c.nodes[i]
-		switch n.op {
+		switch n := &c.nodes[i]; n.op {
 		case opConst:
 			vals[i] = n.val
 		case opVar:
 			vals[i] = x[n.a]
-		case opAdd:
-			vals[i] = vals[n.a] + vals[n.b]
-		case opSub:
-			vals[i] = vals[n.a] - vals[n.b]
-		case opMul:
-			vals[i] = vals[n.a] * vals[n.b]
-		case opDiv:
-			vals[i] = vals[n.a] / vals[n.b]
 		default:
-			vals[i] = apply(n.op, vals[n.a], vals[n.b])
+			vals[i] = c.one(int32(i), vals)
 		}
+	}
+}
+
+// one computes operation i from the values of its arguments.
+func (c *code) one(i int32, vals []float64) float64 {
+	n := &c.nodes[i]
+	switch a, b := vals[n.a], vals[n.b]; n.op {
+	case opAdd:
+		return a + b
+	case opSub:
+		return a - b
+	case opMul:
+		return a * b
+	case opDiv:
+		return a / b
+	default:
+		return apply(n.op, a, b)
 	}
 }

@@ -42,16 +42,19 @@ const (
 	opPowLog2 // a^b log² a
 )
 
-// unary and binary operations by their number of arguments.
-func (o op) args() int {
-	switch o {
-	case opConst, opVar:
-		return 0
-	case opAdd, opSub, opMul, opDiv, opPow, opAtan2, opMin, opMax, opGE, opPowLog, opPowLog2:
-		return 2
+// arguments is the number of arguments of each operation.
+var arguments = func() (n [opPowLog2 + 1]uint8) {
+	for o := range n {
+		n[o] = 1
 	}
-	return 1
-}
+	for _, o := range []op{opAdd, opSub, opMul, opDiv, opPow, opAtan2, opMin, opMax, opGE, opPowLog, opPowLog2} {
+		n[o] = 2
+	}
+	n[opConst], n[opVar] = 0, 0
+	return n
+}()
+
+func (o op) args() int { return int(arguments[o]) }
 
 // node is one operation; its arguments stand before it.
 type node struct {

@@ -29,14 +29,23 @@ type runner struct {
 	wrt     []int
 	vals    []float64 // of nodes that are the same in all rows
 	uniform []bool
+	once    []int32     // operations that are the same in all rows
 	todo    []int32     // operations that differ from row to row
+	sorted  bool        // once and todo fit the columns that uniform tells of
 	regs    [][]float64 // by slot; made with the first block
 	memory  []float64
 }
 
 func newRunner(c *code, wrt []int) *runner {
 	n := len(c.nodes)
-	return &runner{c: c, wrt: wrt, vals: make([]float64, n), uniform: make([]bool, n), todo: make([]int32, 0, n)}
+	r := &runner{c: c, wrt: wrt, vals: make([]float64, n), uniform: make([]bool, n),
+		once: make([]int32, 0, n), todo: make([]int32, 0, n)}
+	for i, nd := range c.nodes {
+		if nd.op == opConst {
+			r.vals[i], r.uniform[i] = nd.val, true
+		}
+	}
+	return r
 }
 
 // Block fills out with the values of the formula at len(out) rows. x[v] is the
@@ -132,37 +141,48 @@ func (w *Workspace) Hessian(x []float64, g []float64, h []float64) float64 {
 	return r.vals[r.c.outs[0]]
 }
 
+// columns notes which variables are the same in all rows, and their values, and
+// sorts the operations by that when it has changed.
+func (r *runner) columns(x [][]float64) {
+	c := r.c
+	for _, i := range c.vars {
+		col := x[c.nodes[i].a]
+		u := len(col) == 1
+		if u {
+			r.vals[i] = col[0]
+		}
+		if u != r.uniform[i] {
+			r.uniform[i], r.sorted = u, false
+		}
+	}
+	if r.sorted {
+		return
+	}
+	r.once, r.todo, r.sorted = r.once[:0], r.todo[:0], true
+	for i := range c.nodes {
+		nd := &c.nodes[i]
+		args := nd.op.args()
+		if args == 0 {
+			continue
+		}
+		u := r.uniform[nd.a] && (args == 1 || r.uniform[nd.b])
+		if r.uniform[i] = u; u {
+			r.once = append(r.once, int32(i))
+		} else {
+			r.todo = append(r.todo, int32(i))
+		}
+	}
+}
+
 // run computes n rows of all outputs that are not nil.
 func (r *runner) run(x [][]float64, out [][]float64, n int) {
 	c := r.c
 	if n == 0 {
 		return
 	}
-	// What is the same in all rows is computed once.
-	r.todo = r.todo[:0]
-	for i := range c.nodes {
-		nd := &c.nodes[i]
-		switch nd.op.args() {
-		case 0:
-			if nd.op == opConst {
-				r.uniform[i], r.vals[i] = true, nd.val
-				continue
-			}
-			col := x[nd.a]
-			if r.uniform[i] = len(col) == 1; r.uniform[i] {
-				r.vals[i] = col[0]
-			}
-			continue
-		case 1:
-			r.uniform[i] = r.uniform[nd.a]
-		case 2:
-			r.uniform[i] = r.uniform[nd.a] && r.uniform[nd.b]
-		}
-		if r.uniform[i] {
-			r.vals[i] = apply(nd.op, r.vals[nd.a], r.vals[nd.b])
-		} else {
-			r.todo = append(r.todo, int32(i))
-		}
+	r.columns(x)
+	for _, i := range r.once {
+		r.vals[i] = c.one(i, r.vals)
 	}
 	for k, o := range c.outs {
 		if out[k] != nil && r.uniform[o] {
@@ -186,11 +206,9 @@ func (r *runner) rows(x, out [][]float64, from, to int) {
 	for _, i := range r.todo {
 		nd := &c.nodes[i]
 		d := r.view(i, x, out, from, to)
-		if nd.op.args() == 1 {
-			unary(nd.op, d, r.view(nd.a, x, out, from, to))
-			continue
-		}
 		switch {
+		case nd.op.args() == 1:
+			unary(nd.op, d, r.view(nd.a, x, out, from, to))
 		case r.uniform[nd.a]:
 			scalarVector(nd.op, d, r.vals[nd.a], r.view(nd.b, x, out, from, to))
 		case r.uniform[nd.b]:

@@ -138,7 +138,7 @@ func parse(s string) (expr, error) {
 			}
 			if !p.starts() {
 				hint := ""
-				if plainDigit(p.peek()) >= 0 {
+				if plainDigit(p.peek()) >= 0 || p.peek() == '√' {
 					hint = "write fractional exponents as m^(1/2)"
 				}
 				return none, p.fail(p.pos, "a unit is missing behind the solidus", hint)
@@ -209,6 +209,8 @@ func (p *parser) factor() (factor, error) {
 		switch {
 		case unicode.IsDigit(c):
 			hint = "put powers of ten into the prefix"
+		case c == '√':
+			hint = "write V/Hz^(1/2)"
 		case c == '.' || c == '×':
 			hint = "multiply by a blank, * or ·"
 		case c == '(':

@@ -95,7 +95,7 @@ func TestBadUnits(t *testing.T) {
 		"pf": `did you mean "pF"`, "gf": "gram-force", "kgf": "gram-force", "mgf": "gram-force", "m//s": "missing", "m/s/s": "second solidus",
 		"/s": "before the solidus", "m/": "missing behind", "m**2": "write m^2", "m^": "exponent", "m^x": "exponent", "m^0": "zero", "m^1/2": "m^(1/2)",
 		"m^(1/0)": "zero", "m^(1/7)": "1/12", "m^99": "beyond", "m^2.5": "whole", "2 m": "can't start", "10 m": "number", "1e3 m": "number", "m.s": "not understood here",
-		"m×s": "not understood here", "(m s)": "parentheses", "J/(kg K": "not closed", "J/(kg K) s": "more follows", "W/m K": "not clear", "u": "micro is a prefix",
+		"m×s": "not understood here", "√Hz": "^(1/2)", "V/√Hz": "^(1/2)", "(m s)": "parentheses", "J/(kg K": "not closed", "J/(kg K) s": "more follows", "W/m K": "not clear", "u": "micro is a prefix",
 		"µ": "micro is a prefix", "degF": "degC or K", "mdegC": "mK", "m*": "missing", "*m": "missing", "m**": "exponent", "kmin": "not known", "1 m": "a 1 stands",
 		"m 1": "a 1 stands", "sec": "write s", "m\xff": "UTF-8", "m'": "not understood here", strings.Repeat("m ", 17): "factors", strings.Repeat("m", 200): "longer",
 		"Qm^24": "1e±300", "qm^24": "1e±300", "m₂": "not understood here", "dB": "level", "mm^2^2": "not understood here",
