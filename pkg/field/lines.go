@@ -140,6 +140,15 @@ func (s *Scene) Line(start Vec, forward bool, lo, hi Vec, set LineSettings) (*Fi
 			}
 			continue
 		}
+		if dot(k1, k7) < 0 { // the field turned back within the step: a zero, once the step is small
+			if h > 10*set.Tolerance*size {
+				h /= 4
+				continue
+			}
+			line.Points = append(line.Points, q)
+			line.End = AtZero
+			return line, nil
+		}
 		last := p
 		p, k1 = q, k7
 		h = math.Min(set.MaxStep, h*math.Min(4, grow))
