@@ -86,10 +86,12 @@ func Trapezoidal(v, half, beta float64) Distribution {
 }
 
 // CurvilinearTrapezoidal returns CTrap(a, b, d) (JCGM 101:2008 6.4.3): limits a < b
-// each known to ±d only, their sum fixed; u² = (b−a)²/12 + d²/9.
+// each known to ±d only, their sum fixed; u² = (b−a)²/12 + d²/9. Its degrees of
+// freedom for the law are those of a half-width w = (b−a)/2 known to d/w, w²/2d²
+// (JCGM 100:2008 equation (G.3)).
 func CurvilinearTrapezoidal(a, b, d float64) Distribution {
 	half := (b - a) / 2
-	return Distribution{Shape: ShapeCurvilinear, Value: a + half, U: math.Sqrt(half*half/3 + d*d/9), DOF: math.Inf(1),
+	return Distribution{Shape: ShapeCurvilinear, Value: a + half, U: math.Sqrt(half*half/3 + d*d/9), DOF: half * half / (2 * d * d),
 		Half: half, D: d}
 }
 

@@ -118,6 +118,9 @@ func (r *Result) fromTrials(y [][]float64, s Settings, workers int) error {
 	r.Trials = int64(len(y[0]))
 	for o := range y {
 		sample, err := summarise(y[o], s.Probability, workers)
+		if err == nil {
+			err = sample.checkUndefined()
+		}
 		if err != nil {
 			return fmt.Errorf("output %s: %w", r.Outputs[o].Name, err)
 		}

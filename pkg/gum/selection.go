@@ -17,7 +17,14 @@ func Summarise(y []float64, p float64) (*Sample, error) {
 	if err := checkProbability(p); err != nil {
 		return nil, err
 	}
-	return summarise(y, p, 1)
+	s, err := summarise(y, p, 1)
+	if err == nil {
+		err = s.checkUndefined()
+	}
+	if err != nil {
+		return nil, err
+	}
+	return s, nil
 }
 
 // checkUndefined reports too many undefined trials, and warns of any.
@@ -76,7 +83,7 @@ func binOf(g *grid, inverse, v float64) int {
 	return selectionBins + 1
 }
 
-// summarise is Summarise on several processors; their number does not change a bit
+// summarise is Summarise on several processors, without judging undefined trials; their number does not change a bit
 // of the answer. Trials are counted in rough bins; the bins that hold the two tails
 // are gathered and ordered, which gives the order statistics that the intervals
 // need without ordering the rest.
@@ -100,9 +107,6 @@ func summarise(y []float64, p float64, workers int) (*Sample, error) {
 		}
 	}
 	s.combine(segments)
-	if err := s.checkUndefined(); err != nil {
-		return nil, err
-	}
 	n := len(y) - s.Undefined
 	q, err := coverCount(n, p)
 	if err != nil {

@@ -34,12 +34,13 @@ func newGrid(pilot []float64, p float64, bins int) grid {
 	}
 	lo := max(y[0]-margin, a-1.5*span)
 	hi := min(y[n-1]+margin, b+1.5*span)
-	g := grid{low: lo, centre: y[n/2]}
-	if w := (hi - lo) / float64(bins); w > 1e-16*max(math.Abs(lo), math.Abs(hi)) && !math.IsInf(w, 1) {
-		g.width = w
-	} else { // constant to rounding
-		g.width = max(math.Abs(lo), math.Abs(hi), math.SmallestNonzeroFloat64*1e16) * 1e-15
-		g.low = lo - g.width*float64(bins)/2
+	g := grid{low: lo, width: hi/float64(bins) - lo/float64(bins), centre: y[n/2]}
+	// Bins narrower than the spacing of numbers there would only blur their own edges; a
+	// constant output has one spacing.
+	least := max(math.Abs(lo), math.Abs(hi), 1e-280) * 0x1p-52
+	if !(g.width >= least) {
+		g.width = least
+		g.low = lo - (least*float64(bins)-(hi-lo))/2
 	}
 	return g
 }
