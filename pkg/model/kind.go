@@ -50,6 +50,10 @@ type Scalar struct {
 	// first-order term of an even effect at zero vanishes while the effect does
 	// not.
 	Squared bool
+	// Own marks a scalar of which every series of the bench (Kind.SeriesBy) has its
+	// own, estimated together with all others: the factor of a meter as found and
+	// as left, on each range.
+	Own bool
 }
 
 // Key returns the name by which budgets, correlations and messages call the
@@ -160,6 +164,10 @@ type Kind struct {
 	Scalars     []Scalar
 	Corrections []Correction
 	Options     []Option
+	// SeriesBy names the row columns (phase, range) whose words split the readings
+	// into series; scalars marked Own are then estimated once a series, and the
+	// measurands are stated for each.
+	SeriesBy []string
 	// Prepare checks the choices of a bench and returns its model.
 	Prepare func(k *Kind, s *Setup) (*Model, error)
 }

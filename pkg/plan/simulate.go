@@ -15,6 +15,7 @@ import (
 	"example.org/guardring/pkg/jet"
 	"example.org/guardring/pkg/model"
 	"example.org/guardring/pkg/random"
+	"example.org/guardring/pkg/reduce"
 )
 
 // stream names the random streams of simulated readings.
@@ -27,35 +28,70 @@ func isResponse(b *bench.Bench, channel int) bool {
 // Simulate makes the response readings of a bench from its truth: SI, one per
 // data record, quantised to the channel's resolution.
 func Simulate(b *bench.Bench, t *Truth, seed uint64) ([]float64, error) {
-	k := b.Kind
-	setup := &model.Setup{Channels: map[string]bool{}, On: b.Corrections, Options: b.Options, Given: map[string]bool{}, Scalars: make([]float64, len(k.Scalars))}
-	for i := range b.Channels {
-		setup.Channels[b.Channels[i].Name] = true
+	of, names := reduce.SeriesOf(b)
+	var q [][]float64
+	for _, name := range names {
+		v, err := t.Scalars(b, name)
+		if err != nil {
+			return nil, err
+		}
+		q = append(q, v)
 	}
+	m, err := t.Model(b, q[0])
+	if err != nil {
+		return nil, err
+	}
+	x, err := trueValues(b, m, t, seed)
+	if err != nil {
+		return nil, err
+	}
+	return response(b, m, q, of, x, t, seed)
+}
+
+// Scalars returns the true scalars of a series of the bench ("" when it has only
+// one), SI, in the kind's order, squared where the kind takes squares. A truth
+// named "factor (as-left)" is that series' own; one named "factor" holds for
+// every series without.
+func (t *Truth) Scalars(b *bench.Bench, series string) ([]float64, error) {
+	k := b.Kind
+	q := make([]float64, len(k.Scalars))
 	for i := range k.Scalars {
 		key := k.Scalars[i].Key()
-		v, ok := t.Values[key]
+		v, ok := t.Values[reduce.SeriesName(key, series)]
+		if !ok {
+			v, ok = t.Values[key]
+		}
 		if !ok {
 			if k.Scalars[i].Sought {
-				return nil, fmt.Errorf("%s: truth.%s: a simulation needs the true value of what the bench seeks", filepath.Join(b.Dir, TruthFile), key)
+				return nil, fmt.Errorf("%s: truth.%s: a simulation needs the true value of what the bench seeks", filepath.Join(b.Dir, TruthFile), reduce.SeriesName(key, series))
 			}
 			v = b.Scalars[i].Dist.Value
 		}
 		if k.Scalars[i].Squared {
 			v *= v
 		}
-		setup.Scalars[i] = v
+		q[i] = v
+	}
+	return q, nil
+}
+
+// Model prepares the kind of a bench at true scalars q.
+func (t *Truth) Model(b *bench.Bench, q []float64) (*model.Model, error) {
+	k := b.Kind
+	setup := &model.Setup{Channels: map[string]bool{}, On: b.Corrections, Options: b.Options, Given: map[string]bool{}, Scalars: q}
+	for i := range b.Channels {
+		setup.Channels[b.Channels[i].Name] = true
+	}
+	for i := range k.Scalars {
+		key := k.Scalars[i].Key()
+		_, ok := t.Values[key]
 		setup.Given[key] = b.Scalars[i].Given || ok
 	}
 	m, err := k.Prepare(k, setup)
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", b.Dir, err)
 	}
-	x, err := trueValues(b, m, t, seed)
-	if err != nil {
-		return nil, err
-	}
-	return response(b, m, setup.Scalars, x, t, seed)
+	return m, nil
 }
 
 // scale returns the true gain and offset of a channel.
@@ -115,13 +151,15 @@ func trueValues(b *bench.Bench, m *model.Model, t *Truth, seed uint64) ([][]floa
 }
 
 // response predicts the readings and disturbs them.
-func response(b *bench.Bench, m *model.Model, q []float64, x [][]float64, t *Truth, seed uint64) ([]float64, error) {
+func response(b *bench.Bench, m *model.Model, q [][]float64, of []int, x [][]float64, t *Truth, seed uint64) ([]float64, error) {
 	ch := &b.Channels[responseChannel(b)]
 	gain, offset := t.scale(ch)
 	src := random.New(seed, stream+" "+ch.Name, 0)
-	qj := make([]jet.Jet, len(q))
-	for i, v := range q {
-		qj[i] = jet.Const(v)
+	qj := make([][]jet.Jet, len(q))
+	for s := range q {
+		for _, v := range q[s] {
+			qj[s] = append(qj[s], jet.Const(v))
+		}
 	}
 	xj := make([]jet.Jet, len(x))
 	noise := ch.Noise
@@ -133,7 +171,7 @@ func response(b *bench.Bench, m *model.Model, q []float64, x [][]float64, t *Tru
 		for p := range x {
 			xj[p] = jet.Const(x[p][i])
 		}
-		f := (m.Row(qj, xj).V - offset) / gain
+		f := (m.Row(qj[of[i]], xj).V - offset) / gain
 		y[i] = f + t.ZeroStart + math.Hypot(noise, ch.RelativeNoise*f)*src.Normal()
 		if t.ZeroRate != 0 && b.Rows.HasTime {
 			y[i] += t.ZeroRate * (b.Rows.Time[i] - b.Rows.Time[0])

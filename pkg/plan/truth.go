@@ -11,6 +11,7 @@ import (
 	"github.com/pelletier/go-toml/v2"
 
 	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/si"
 )
 
@@ -135,8 +136,15 @@ func ReadTruth(b *bench.Bench) (*Truth, error) {
 // truthUnits lists what a truth may name, with a unit of its dimension.
 func truthUnits(b *bench.Bench) map[string]si.Unit {
 	units := map[string]si.Unit{}
+	_, series := reduce.SeriesOf(b)
 	for i := range b.Kind.Scalars {
-		units[b.Kind.Scalars[i].Key()] = b.Kind.Scalars[i].Unit
+		s := &b.Kind.Scalars[i]
+		units[s.Key()] = s.Unit
+		for _, name := range series {
+			if s.Own {
+				units[reduce.SeriesName(s.Key(), name)] = s.Unit
+			}
+		}
 	}
 	for i := range b.Channels {
 		ch := &b.Channels[i]

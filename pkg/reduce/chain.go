@@ -17,7 +17,8 @@ import (
 // chain is a bench prepared for fitting: numbers only, in SI, rows in use
 // first to last.
 type chain struct {
-	b     *bench.Bench
+	b     *bench.Bench // with the scalars of every series
+	kind  *model.Kind  // as registered
 	setup *model.Setup
 	m     *model.Model
 
@@ -35,6 +36,7 @@ type chain struct {
 	yr     []float64   // response readings
 	y      []float64   // response readings after the zero correction
 	zero   *zeroModel  // nil when there is none
+	series *series     // nil when all rows are one
 
 	inputs []input     // shared inputs and priors: what the budget lists by name
 	comps  []component // what varies between rows
@@ -72,6 +74,7 @@ type input struct {
 func newChain(b *bench.Bench) (*chain, error) {
 	c := &chain{b: b, scale: math.NaN()}
 	k := b.Kind
+	c.kind = k
 	c.setup = &model.Setup{Channels: map[string]bool{}, On: b.Corrections, Options: b.Options, Given: map[string]bool{}}
 	for _, ch := range b.Channels {
 		c.setup.Channels[ch.Name] = true
@@ -84,11 +87,13 @@ func newChain(b *bench.Bench) (*chain, error) {
 			c.q[i], _ = squareMoments(s.Dist)
 		}
 	}
-	c.setup.Scalars = c.q
+	c.setup.Scalars = append([]float64(nil), c.q...)
 	var err error
 	if c.m, err = k.Prepare(k, c.setup); err != nil {
 		return nil, fmt.Errorf("%s/bench.toml: %w", b.Dir, err)
 	}
+	c.expandSeries()
+	k, b = c.b.Kind, c.b
 	if err := c.findChannels(); err != nil {
 		return nil, err
 	}
@@ -237,6 +242,13 @@ func (c *chain) correctReadings() {
 	}
 	if c.m.TimeDependent {
 		c.x = append(c.x, c.t)
+	}
+	if c.series != nil {
+		s := make([]float64, len(c.record))
+		for i, rec := range c.record {
+			s[i] = float64(c.series.of[rec])
+		}
+		c.x = append(c.x, s)
 	}
 }
 

@@ -63,9 +63,12 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 	for n, on := range c.setup.On {
 		off.On[n] = on && n != name
 	}
-	without, err := c.b.Kind.Prepare(c.b.Kind, &off)
+	without, err := c.kind.Prepare(c.kind, &off)
 	if err != nil {
 		return 0, 0, fmt.Errorf("%s/bench.toml: without corrections.%s: %w", c.b.Dir, name, err)
+	}
+	if c.series != nil {
+		without = c.series.wrap(without)
 	}
 	if without.Response != c.m.Response {
 		return 0, 0, fmt.Errorf("corrections.%s changes the response of the model", name)

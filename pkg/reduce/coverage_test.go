@@ -26,7 +26,7 @@ func TestTruthIsRecovered(t *testing.T) {
 			t.Errorf("%s: no measurand is stated: %v", w.name, r.Record.Warnings)
 		}
 		for n, m := range r.Record.Measurands {
-			truth := w.trueMeasurand(n)
+			truth := w.trueMeasurand(t, n)
 			pull := (float64(m.Value) - truth) / float64(m.U)
 			t.Logf("%s: %s = %g, u = %g (%.2f %%), truth %g, pull %.2f; p = %.3f", w.name, m.Name, m.Value, m.U, 100*math.Abs(float64(m.U/m.Value)), truth, pull, r.Record.Fit.PValue)
 			if !(math.Abs(pull) < 3) {
@@ -46,7 +46,7 @@ func TestCoverageLaw(t *testing.T) {
 			continue
 		}
 		t.Run(w.name, func(t *testing.T) {
-			truth := w.trueMeasurand(0)
+			truth := w.trueMeasurand(t, 0)
 			const runs = 2000
 			in := 0
 			var sum, sum2 float64
@@ -95,7 +95,7 @@ func TestCoverageLaw(t *testing.T) {
 func TestCoverageMonteCarlo(t *testing.T) {
 	for _, w := range worlds(t) {
 		t.Run(w.name, func(t *testing.T) {
-			truth := w.trueMeasurand(0)
+			truth := w.trueMeasurand(t, 0)
 			const runs = 400
 			in := 0
 			for run := range runs {

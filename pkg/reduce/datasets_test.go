@@ -12,16 +12,18 @@ import (
 	"example.org/guardring/pkg/model"
 	"example.org/guardring/pkg/plan"
 	"example.org/guardring/pkg/random"
+	"example.org/guardring/pkg/reduce"
 )
 
 // world is a dataset with its truth: an invented bench whose readings can be
 // made again and again.
 type world struct {
-	name  string
-	b     *bench.Bench
-	truth *plan.Truth
-	model *model.Model
-	q     []float64 // true scalars, Δ² for squared ones
+	name   string
+	b      *bench.Bench
+	truth  *plan.Truth
+	model  *model.Model
+	series []string
+	q      []float64 // true scalars of the first series, Δ² for squared ones
 }
 
 // worlds opens every dataset that states its truth.
@@ -50,20 +52,11 @@ func openWorld(t testing.TB, name string) *world {
 	if w.truth, err = plan.ReadTruth(b); err != nil {
 		t.Fatal(err)
 	}
-	setup := &model.Setup{Channels: map[string]bool{}, On: b.Corrections, Options: b.Options, Given: map[string]bool{}}
-	for i := range b.Channels {
-		setup.Channels[b.Channels[i].Name] = true
+	_, w.series = reduce.SeriesOf(b)
+	if w.q, err = w.truth.Scalars(b, w.series[0]); err != nil {
+		t.Fatal(err)
 	}
-	for i, s := range b.Scalars {
-		setup.Given[s.Name] = s.Given
-		v := w.trueScalar(i)
-		if b.Kind.Scalars[i].Squared {
-			v *= v
-		}
-		w.q = append(w.q, v)
-	}
-	setup.Scalars = w.q
-	if w.model, err = b.Kind.Prepare(b.Kind, setup); err != nil {
+	if w.model, err = w.truth.Model(b, w.q); err != nil {
 		t.Fatal(err)
 	}
 	return w
@@ -77,13 +70,19 @@ func (w *world) trueScalar(i int) float64 {
 	return w.b.Scalars[i].Dist.Value
 }
 
-// trueMeasurand is the true value of a measurand of the bench.
-func (w *world) trueMeasurand(n int) float64 {
-	q := make([]jet.Jet, len(w.q))
-	for i, v := range w.q {
+// trueMeasurand is the true value of the n-th measurand of the reduction: those
+// of the first series, then those of the next.
+func (w *world) trueMeasurand(t testing.TB, n int) float64 {
+	each := len(w.model.Measurands)
+	truth, err := w.truth.Scalars(w.b, w.series[n/each])
+	if err != nil {
+		t.Fatal(err)
+	}
+	q := make([]jet.Jet, len(truth))
+	for i, v := range truth {
 		q[i] = jet.Const(v)
 	}
-	return w.model.Measurands[n].Value(q).V
+	return w.model.Measurands[n%each].Value(q).V
 }
 
 // draw makes one laboratory's bench of the world: what is stated scatters about

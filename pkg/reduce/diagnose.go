@@ -67,8 +67,13 @@ func (c *chain) rows(r *lsq.Result, out *Rows) {
 			x[p][0] = gp*b.Channels[ci].Readings[rec] + op
 			out.Predictors[p][n] = x[p][0]
 		}
+		extra := x[len(c.pred):]
 		if c.m.TimeDependent {
-			x[len(x)-1][0] = b.Rows.Time[rec]
+			extra[0][0] = b.Rows.Time[rec]
+			extra = extra[1:]
+		}
+		if c.series != nil {
+			extra[0][0] = float64(c.series.of[rec])
 		}
 		one.rows(q, x, 0, 1, f, nil)
 		toIndication(g, o, 0, 1, f, nil)
