@@ -27,8 +27,8 @@ var floors = map[string]int{
 	"pkg/lab":            10,
 	"pkg/kernel":         10,
 	"pkg/replay":         11,
-	"pkg/kernel/symbols": 11,
-	"cmd/guardring":      12, "cmd/guardring-kernel": 12,
+	"pkg/kernel/symbols": 11, "pkg/kernel/gointerp": 11,
+	"cmd/guardring": 12, "cmd/guardring-kernel": 12,
 }
 
 // sameFloor are imports within a floor that are meant.

@@ -380,6 +380,9 @@ func (in *Interp) Check(code string) (c kernel.Completeness) {
 	if err == nil {
 		return kernel.CodeComplete
 	}
+	if wantsOperand(code) {
+		return kernel.CodeIncomplete
+	}
 	end := len(strings.TrimRight(code, " \t\r\n"))
 	var list scanner.ErrorList
 	if errors.As(err, &list) && len(list) > 0 {

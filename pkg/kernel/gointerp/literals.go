@@ -92,3 +92,27 @@ func parenthesise(code string) string {
 	}
 	return out.String() + code[last:]
 }
+
+// wantsOperand reports whether code ends in a token that something must follow, such as an operator.
+func wantsOperand(code string) bool {
+	fset := token.NewFileSet()
+	var s scanner.Scanner
+	s.Init(fset.AddFile("", fset.Base(), len(code)), []byte(code), func(token.Position, string) {}, 0)
+	last := token.EOF
+	for {
+		_, t, lit := s.Scan()
+		if t == token.EOF {
+			break
+		}
+		if t != token.SEMICOLON || lit == ";" {
+			last = t
+		}
+	}
+	switch last {
+	case token.INC, token.DEC, token.RPAREN, token.RBRACK, token.RBRACE, token.SEMICOLON, token.ELLIPSIS:
+		return false
+	case token.FUNC, token.VAR, token.CONST, token.TYPE, token.IMPORT, token.IF, token.FOR, token.SWITCH, token.GO, token.DEFER, token.RANGE:
+		return true
+	}
+	return last.IsOperator()
+}

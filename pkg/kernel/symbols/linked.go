@@ -4,8 +4,22 @@ package symbols
 
 // Linked are the import paths of the packages whose tables stand in this package, sorted.
 var Linked = []string{
+	"example.org/guardring/pkg",
+	"example.org/guardring/pkg/assess",
+	"example.org/guardring/pkg/bench",
 	"example.org/guardring/pkg/cell",
+	"example.org/guardring/pkg/field",
 	"example.org/guardring/pkg/figure",
+	"example.org/guardring/pkg/formula",
+	"example.org/guardring/pkg/gum",
+	"example.org/guardring/pkg/jet",
+	"example.org/guardring/pkg/lsq",
+	"example.org/guardring/pkg/model",
+	"example.org/guardring/pkg/plan",
+	"example.org/guardring/pkg/random",
+	"example.org/guardring/pkg/reduce",
+	"example.org/guardring/pkg/report",
+	"example.org/guardring/pkg/si",
 	"github.com/go-gota/gota/dataframe",
 	"github.com/go-gota/gota/series",
 	"gonum.org/v1/gonum/diff/fd",

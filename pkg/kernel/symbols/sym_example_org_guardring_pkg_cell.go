@@ -19,6 +19,7 @@ func init() {
 			"DisplayAs":    r.ValueOf(p0_cell.DisplayAs),
 			"Fail":         r.ValueOf(p0_cell.Fail),
 			"Forms":        r.ValueOf(p0_cell.Forms),
+			"Input":        r.ValueOf(p0_cell.Input),
 			"Report":       r.ValueOf(p0_cell.Report),
 			"SetHost":      r.ValueOf(p0_cell.SetHost),
 			"Update":       r.ValueOf(p0_cell.Update),

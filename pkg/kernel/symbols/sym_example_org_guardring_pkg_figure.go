@@ -11,10 +11,30 @@ import (
 
 func init() {
 	imports.Packages["example.org/guardring/pkg/figure"] = imports.Package{
-		Name:  "figure",
-		Binds: map[string]r.Value{},
+		Name: "figure",
+		Binds: map[string]r.Value{
+			"All":        r.ValueOf(p0_figure.All),
+			"Fit":        r.ValueOf(p0_figure.Fit),
+			"FromRecord": r.ValueOf(p0_figure.FromRecord),
+			"Histogram":  r.ValueOf(p0_figure.Histogram),
+			"Of":         r.ValueOf(p0_figure.Of),
+			"OneLine":    r.ValueOf(p0_figure.OneLine),
+			"Order":      r.ValueOf(p0_figure.Order),
+			"Pairs":      r.ValueOf(p0_figure.Pairs),
+			"Quantiles":  r.ValueOf(p0_figure.Quantiles),
+			"Residuals":  r.ValueOf(p0_figure.Residuals),
+			"Shares":     r.ValueOf(p0_figure.Shares),
+			"Stack":      r.ValueOf(p0_figure.Stack),
+		},
 		Types: map[string]r.Type{
+			"Axis":   r.TypeOf((*p0_figure.Axis)(nil)).Elem(),
+			"Band":   r.TypeOf((*p0_figure.Band)(nil)).Elem(),
+			"Data":   r.TypeOf((*p0_figure.Data)(nil)).Elem(),
 			"Figure": r.TypeOf((*p0_figure.Figure)(nil)).Elem(),
+			"Level":  r.TypeOf((*p0_figure.Level)(nil)).Elem(),
+			"Plot":   r.TypeOf((*p0_figure.Plot)(nil)).Elem(),
+			"Series": r.TypeOf((*p0_figure.Series)(nil)).Elem(),
+			"Shape":  r.TypeOf((*p0_figure.Shape)(nil)).Elem(),
 		},
 		Proxies:  map[string]r.Type{},
 		Untypeds: map[string]string{},

@@ -1,0 +1,5 @@
+package main_test
+
+import "time"
+
+func sleepShort() { time.Sleep(10 * time.Millisecond) }
