@@ -2,8 +2,6 @@ package lsq
 
 import (
 	"math"
-
-	"gonum.org/v1/gonum/floats"
 )
 
 // foldRows is the number of rows folded at a time: a block of a few columns
@@ -19,15 +17,17 @@ type fold struct {
 	q      int       // columns of J
 	r      []float64 // (q+1)×(q+1) by columns, upper triangle; column q is b
 	rest   float64   // squared length of the part of r outside the span of J
-	stride int       // rows of a block, at most foldRows
+	stride int       // rows of a block, a multiple of four, at most foldRows
+	dots   []float64 // scratch, q+1
 	buf    []float64 // q+1 columns of stride rows
 }
 
 func (t *fold) init(q, n int) {
 	t.q = q
-	t.stride = min(n, foldRows)
+	t.stride = blockRows(n)
 	t.r = make([]float64, (q+1)*(q+1))
 	t.buf = make([]float64, (q+1)*t.stride)
+	t.dots = make([]float64, q+1)
 }
 
 func (t *fold) reset() {
@@ -52,6 +52,9 @@ func (t *fold) chi2() float64 {
 	}
 	return s
 }
+
+// blockRows is the number of rows of a block for n rows in all.
+func blockRows(n int) int { return (min(n, foldRows) + 3) &^ 3 }
 
 // weighted folds all rows of [w·jac | w·(y−f)].
 func (t *fold) weighted(w, y, f []float64, jac [][]float64) {
@@ -90,38 +93,65 @@ func (t *fold) columns(cols [][]float64, rhs []float64) {
 	}
 }
 
-// block folds the first m rows of buf. A reflection I − 2vvᵀ/vᵀv with
-// v = (R_kk − α, x), α = −sign(R_kk)·‖(R_kk, x)‖, has vᵀv = −2α(R_kk − α)
-// (Golub, Van Loan, Matrix Computations, 4th ed., section 5.1).
-func (t *fold) block(m int) {
-	q, ld := t.q, t.q+1
-	for k := 0; k < q; k++ {
-		x := t.buf[k*t.stride : k*t.stride+m]
-		nn := floats.Dot(x, x)
-		if nn == 0 {
-			continue
-		}
-		rkk := t.r[k*ld+k]
-		alpha := math.Sqrt(rkk*rkk + nn)
-		if rkk > 0 {
-			alpha = -alpha
-		}
-		v0 := rkk - alpha
-		t.r[k*ld+k] = alpha
-		g := -1 / (alpha * v0)
-		for j := k + 1; j <= q; j++ {
-			c := t.buf[j*t.stride : j*t.stride+m]
-			s := (floats.Dot(x, c) + v0*t.r[j*ld+k]) * g
-			t.r[j*ld+k] -= s * v0
-			floats.AddScaled(c, -s, x)
-		}
-	}
-	c := t.buf[q*t.stride : q*t.stride+m]
-	t.rest += floats.Dot(c, c)
+// column is column j of the block, padded to a multiple of four rows.
+func (t *fold) column(j, m int) []float64 {
+	return t.buf[j*t.stride : j*t.stride+(m+3)&^3]
 }
 
-// reflect prepares the reflection of column k for the squared norm nn of its
-// block and returns v0 and −2/vᵀv.
+// block folds the first m rows of buf. Each pass applies one reflection to the
+// remaining columns and gathers the dot products of the next.
+func (t *fold) block(m int) {
+	q := t.q
+	for j := 0; j <= q && m&3 != 0; j++ {
+		clear(t.column(j, m)[m:])
+	}
+	if q == 0 {
+		var s lanes
+		c := t.column(0, m)
+		dotLanes(c, c, &s)
+		t.rest += s.total(0)
+		return
+	}
+	x := t.column(0, m)
+	dots := t.dots[:0]
+	for j := 0; j <= q; j++ {
+		var s lanes
+		dotLanes(x, t.column(j, m), &s)
+		dots = append(dots, s.total(0))
+	}
+	for k := 0; k < q; k++ {
+		v0, g := t.reflect(k, dots[0])
+		x := t.column(k, m)
+		// factors of column k to subtract from columns k+1 … q
+		for j := k + 1; j <= q; j++ {
+			dots[j-k] = t.pull(k, j, v0, g, dots[j-k])
+		}
+		var s lanes
+		next := t.column(k+1, m)
+		switch q - k {
+		case 1:
+			fuse1(x, next, dots[1], &s)
+			dots[0] = s.total(0)
+		case 2:
+			fuse2(x, next, t.column(k+2, m), dots[1], dots[2], &s)
+			dots[0], dots[1] = s.total(0), s.total(1)
+		default:
+			fuse3(x, next, t.column(k+2, m), t.column(k+3, m), dots[1], dots[2], dots[3], &s)
+			dots[0], dots[1], dots[2] = s.total(0), s.total(1), s.total(2)
+			for j := k + 4; j <= q; j++ {
+				s = lanes{}
+				pair(x, next, t.column(j, m), dots[j-k], &s)
+				dots[j-k-1] = s.total(0)
+			}
+		}
+	}
+	t.rest += dots[0]
+}
+
+// reflect prepares the reflection of column k, I − 2vvᵀ/vᵀv with v = (R_kk − α,
+// x) and α = −sign(R_kk)·‖(R_kk, x)‖, for the squared norm nn of its block x. It
+// returns v0 = R_kk − α and 2/vᵀv = −1/(α·v0) (Golub, Van Loan, Matrix
+// Computations, 4th ed., section 5.1).
 func (t *fold) reflect(k int, nn float64) (v0, g float64) {
 	if nn == 0 {
 		return 0, 0
@@ -147,115 +177,37 @@ func (t *fold) pull(k, j int, v0, g, d float64) float64 {
 	return s
 }
 
-// weighted3 is weighting and block for three columns with the loops fused:
-// each pass applies one reflection and gathers the dot products of the next.
+// weighted3 is weighting and block for three columns in four passes.
 func (t *fold) weighted3(w, y, f, j0, j1, j2 []float64) {
 	m := len(w)
-	y, f, j0, j1, j2 = y[:m], f[:m], j0[:m], j1[:m], j2[:m]
-	a := t.buf[0*t.stride : 0*t.stride+m]
-	b := t.buf[1*t.stride : 1*t.stride+m]
-	c := t.buf[2*t.stride : 2*t.stride+m]
-	r := t.buf[3*t.stride : 3*t.stride+m]
-	// two rows at a time, each with its own sums: the additions then overlap
-	var nn, d1, d2, d3, ee, e1, e2, e3 float64
-	i := 0
-	for ; i+1 < m; i += 2 {
-		wi := w[i]
-		ai, bi, ci, ri := wi*j0[i], wi*j1[i], wi*j2[i], wi*(y[i]-f[i])
-		a[i], b[i], c[i], r[i] = ai, bi, ci, ri
-		nn += ai * ai
-		d1 += ai * bi
-		d2 += ai * ci
-		d3 += ai * ri
-		k := i + 1
-		wi = w[k]
-		ai, bi, ci, ri = wi*j0[k], wi*j1[k], wi*j2[k], wi*(y[k]-f[k])
-		a[k], b[k], c[k], r[k] = ai, bi, ci, ri
-		ee += ai * ai
-		e1 += ai * bi
-		e2 += ai * ci
-		e3 += ai * ri
+	whole := m &^ 3
+	a, b, c, r := t.column(0, m), t.column(1, m), t.column(2, m), t.column(3, m)
+	var s lanes
+	weigh3(whole, w, y, f, j0, j1, j2, t.buf, t.stride, &s)
+	if whole < m {
+		for i := whole; i < len(a); i++ {
+			a[i], b[i], c[i], r[i] = 0, 0, 0, 0
+			if i < m {
+				a[i], b[i], c[i], r[i] = w[i]*j0[i], w[i]*j1[i], w[i]*j2[i], w[i]*(y[i]-f[i])
+			}
+			l := i & 3
+			s[l] += a[i] * a[i]
+			s[4+l] += a[i] * b[i]
+			s[8+l] += a[i] * c[i]
+			s[12+l] += a[i] * r[i]
+		}
 	}
-	if i < m {
-		wi := w[i]
-		ai, bi, ci, ri := wi*j0[i], wi*j1[i], wi*j2[i], wi*(y[i]-f[i])
-		a[i], b[i], c[i], r[i] = ai, bi, ci, ri
-		nn += ai * ai
-		d1 += ai * bi
-		d2 += ai * ci
-		d3 += ai * ri
-	}
-	v0, g := t.reflect(0, nn+ee)
-	s1, s2, s3 := t.pull(0, 1, v0, g, d1+e1), t.pull(0, 2, v0, g, d2+e2), t.pull(0, 3, v0, g, d3+e3)
-	nn, d1, d2, ee, e1, e2 = 0, 0, 0, 0, 0, 0
-	for i = 0; i+1 < m; i += 2 {
-		ai := a[i]
-		bi := b[i] - s1*ai
-		ci := c[i] - s2*ai
-		ri := r[i] - s3*ai
-		b[i], c[i], r[i] = bi, ci, ri
-		nn += bi * bi
-		d1 += bi * ci
-		d2 += bi * ri
-		k := i + 1
-		ai = a[k]
-		bi = b[k] - s1*ai
-		ci = c[k] - s2*ai
-		ri = r[k] - s3*ai
-		b[k], c[k], r[k] = bi, ci, ri
-		ee += bi * bi
-		e1 += bi * ci
-		e2 += bi * ri
-	}
-	if i < m {
-		ai := a[i]
-		bi := b[i] - s1*ai
-		ci := c[i] - s2*ai
-		ri := r[i] - s3*ai
-		b[i], c[i], r[i] = bi, ci, ri
-		nn += bi * bi
-		d1 += bi * ci
-		d2 += bi * ri
-	}
-	v0, g = t.reflect(1, nn+ee)
-	s1, s2 = t.pull(1, 2, v0, g, d1+e1), t.pull(1, 3, v0, g, d2+e2)
-	nn, d1, ee, e1 = 0, 0, 0, 0
-	for i = 0; i+1 < m; i += 2 {
-		bi := b[i]
-		ci := c[i] - s1*bi
-		ri := r[i] - s2*bi
-		c[i], r[i] = ci, ri
-		nn += ci * ci
-		d1 += ci * ri
-		k := i + 1
-		bi = b[k]
-		ci = c[k] - s1*bi
-		ri = r[k] - s2*bi
-		c[k], r[k] = ci, ri
-		ee += ci * ci
-		e1 += ci * ri
-	}
-	if i < m {
-		bi := b[i]
-		ci := c[i] - s1*bi
-		ri := r[i] - s2*bi
-		c[i], r[i] = ci, ri
-		nn += ci * ci
-		d1 += ci * ri
-	}
-	v0, g = t.reflect(2, nn+ee)
-	s1 = t.pull(2, 3, v0, g, d1+e1)
-	nn, ee, e1, e2 = 0, 0, 0, 0
-	for i = 0; i+3 < m; i += 4 {
-		r0, r1, r2, r3 := r[i]-s1*c[i], r[i+1]-s1*c[i+1], r[i+2]-s1*c[i+2], r[i+3]-s1*c[i+3]
-		nn += r0 * r0
-		ee += r1 * r1
-		e1 += r2 * r2
-		e2 += r3 * r3
-	}
-	for ; i < m; i++ {
-		r0 := r[i] - s1*c[i]
-		nn += r0 * r0
-	}
-	t.rest += nn + ee + e1 + e2
+	v0, g := t.reflect(0, s.total(0))
+	s1, s2, s3 := t.pull(0, 1, v0, g, s.total(1)), t.pull(0, 2, v0, g, s.total(2)), t.pull(0, 3, v0, g, s.total(3))
+	s = lanes{}
+	fuse3(a, b, c, r, s1, s2, s3, &s)
+	v0, g = t.reflect(1, s.total(0))
+	s1, s2 = t.pull(1, 2, v0, g, s.total(1)), t.pull(1, 3, v0, g, s.total(2))
+	s = lanes{}
+	fuse2(b, c, r, s1, s2, &s)
+	v0, g = t.reflect(2, s.total(0))
+	s1 = t.pull(2, 3, v0, g, s.total(1))
+	s = lanes{}
+	fuse1(c, r, s1, &s)
+	t.rest += s.total(0)
 }

@@ -70,31 +70,29 @@ func (f *LineFitter) Fit(d *LineData, r *LineResult) error {
 		vc[i] = c * d.UX[i] * d.UY[i]
 	}
 	// first slope: of the unweighted line
-	xm, ym := 0.0, 0.0
+	x0, y0 := 0.0, 0.0
 	for i, v := range x {
-		xm += v
-		ym += y[i]
+		x0 += v
+		y0 += y[i]
 	}
-	xm /= float64(n)
-	ym /= float64(n)
+	x0 /= float64(n)
+	y0 /= float64(n)
 	sxx, sxy := 0.0, 0.0
 	for i, v := range x {
-		sxx += (v - xm) * (v - xm)
-		sxy += (v - xm) * (y[i] - ym)
+		sxx += (v - x0) * (v - x0)
+		sxy += (v - x0) * (y[i] - y0)
 	}
 	if sxx == 0 {
 		return fmt.Errorf("lsq: all predictors of the line are %v; a slope needs at least two different ones", x[0])
 	}
 	b := sxy / sxx
-	var sw float64
 	// York's fixed-point iteration, accelerated by the secant method on
 	// next(b) − b.
 	prevB, prevG := 0.0, 0.0
 	converged := false
 	for it := 1; it <= 200; it++ {
 		r.Iterations = it
-		var next float64
-		next, sw, xm, ym = f.next(x, y, b)
+		next, _, _, _ := f.next(x, y, b)
 		if math.IsNaN(next) || math.IsInf(next, 0) {
 			return fmt.Errorf("lsq: the slope of the line overflows: the points lie on a vertical line within their uncertainties; exchange the axes")
 		}
@@ -120,7 +118,7 @@ func (f *LineFitter) Fit(d *LineData, r *LineResult) error {
 	if !converged {
 		return fmt.Errorf("lsq: the line did not converge in %d iterations; the points do not define a slope within their uncertainties", r.Iterations)
 	}
-	_, sw, xm, ym = f.next(x, y, b)
+	_, sw, xm, ym := f.next(x, y, b)
 	beta := f.beta[:n]
 	a := ym - b*xm
 	// adjusted x are xm + β (York 2004, eq. 13 and following)

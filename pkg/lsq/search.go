@@ -59,9 +59,9 @@ type search struct {
 func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 	n, np, q := len(y), len(p.Parameters), len(free)
 	s.p, s.y, s.free, s.q, s.white, s.eval = p, y, free, q, white, p.Eval
-	m := min(n, foldRows)
+	m := blockRows(n)
 	tri := (q + 1) * (q + 1)
-	s.slab = takeSlab(2*n + n*q + 4*np + 3*q + 2*tri + (q+1)*m + q*q + 3*q)
+	s.slab = takeSlab(2*n + n*q + 4*np + 3*q + 2*tri + (q+1)*(m+1) + q*q + 3*q)
 	at := 0
 	take := func(k int) []float64 {
 		v := s.slab[at : at+k : at+k]
@@ -79,8 +79,8 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 	s.theta, s.trial = take(np), take(np)
 	s.priorV, s.priorW = take(np), take(np)
 	s.d, s.x, s.rx = take(q), take(q), take(q)
-	s.now = fold{q: q, r: take(tri), stride: m, buf: take((q + 1) * m)}
-	s.next = fold{q: q, r: take(tri), stride: m, buf: s.now.buf}
+	s.now = fold{q: q, r: take(tri), stride: m, buf: take((q + 1) * m), dots: take(q + 1)}
+	s.next = fold{q: q, r: take(tri), stride: m, buf: s.now.buf, dots: s.now.dots}
 	s.trust = trust{q: q, s: take(q * q), x: take(q), w: take(q), b: take(q)}
 	for j := range p.Parameters {
 		s.priorV[j], s.priorW[j] = math.NaN(), 0
