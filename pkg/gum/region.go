@@ -97,60 +97,40 @@ func (m *metric) regions(p, kp, kq float64) (regions []Region, warnings []error)
 }
 
 // covarianceOfTrials returns means and covariance matrix of the trials y[output]
-// in which all outputs are defined, and their number.
+// in which all outputs are defined, and their number. Sums over a block are about the
+// block's own means, joined by pairwise updates in order, as in Sample.combine.
 func covarianceOfTrials(y [][]float64) (mean []float64, cov [][]float64, n int) {
 	k := len(y)
 	mean, cov = make([]float64, k), square(k)
-	defined := func(r int) bool {
-		for j := range y {
-			if y[j][r]-y[j][r] != 0 {
-				return false
-			}
-		}
-		return true
-	}
-	// Sums over a block about its own mean, then pairwise updates in order: Chan, Golub and
-	// LeVeque, "Algorithms for computing the sample variance", Amer. Statist. 37 (1983)
-	// 242–247, equations (1.5a, b) and their like for products.
 	m, d := make([]float64, k), make([]float64, k)
-	c := square(k)
+	cols := make([][]float64, k)
 	for from := 0; from < len(y[0]); from += BlockTrials {
 		to := min(from+BlockTrials, len(y[0]))
-		clear(m)
-		for i := range c {
-			clear(c[i])
+		for j := range y {
+			cols[j] = y[j][from:to]
 		}
-		b := 0
-		for r := from; r < to; r++ {
-			if defined(r) {
-				b++
-				for j := range y {
-					m[j] += (y[j][r] - m[j]) / float64(b)
-				}
-			}
+		finite := blockMeans(cols, m)
+		if !finite {
+			keepDefined(cols)
+			blockMeans(cols, m)
 		}
+		b := len(cols[0])
 		if b == 0 {
 			continue
 		}
-		for r := from; r < to; r++ {
-			if !defined(r) {
-				continue
-			}
-			for j := range y {
-				d[j] = y[j][r] - m[j]
-				for i := range j + 1 {
-					c[j][i] += d[j] * d[i]
-				}
-			}
-		}
 		w := float64(n) * float64(b) / float64(n+b)
-		for j := range y {
+		for j := range cols {
 			d[j] = m[j] - mean[j]
 			for i := range j + 1 {
-				cov[j][i] += c[j][i] + d[j]*d[i]*w
+				mj, mi, ci := m[j], m[i], cols[i][:b]
+				var s float64
+				for r, v := range cols[j] {
+					s += (v - mj) * (ci[r] - mi)
+				}
+				cov[j][i] += s + d[j]*d[i]*w
 			}
 		}
-		for j := range y {
+		for j := range mean {
 			mean[j] += d[j] * float64(b) / float64(n+b)
 		}
 		n += b
@@ -162,6 +142,41 @@ func covarianceOfTrials(y [][]float64) (mean []float64, cov [][]float64, n int) 
 		}
 	}
 	return mean, cov, n
+}
+
+// blockMeans fills m with the means of the columns and reports whether all are
+// finite.
+func blockMeans(cols [][]float64, m []float64) bool {
+	finite := true
+	for j, c := range cols {
+		if len(c) == 0 {
+			return true
+		}
+		var s float64
+		for _, v := range c {
+			s += v - c[0]
+		}
+		m[j] = c[0] + s/float64(len(c))
+		finite = finite && m[j]-m[j] == 0
+	}
+	return finite
+}
+
+// keepDefined replaces the columns by copies of the rows in which all are finite.
+func keepDefined(cols [][]float64) {
+	kept := make([][]float64, len(cols))
+rows:
+	for r := range cols[0] {
+		for _, c := range cols {
+			if c[r]-c[r] != 0 {
+				continue rows
+			}
+		}
+		for j, c := range cols {
+			kept[j] = append(kept[j], c[r])
+		}
+	}
+	copy(cols, kept)
 }
 
 func square(n int) [][]float64 {

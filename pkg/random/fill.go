@@ -26,7 +26,7 @@ func (s *Source) FillUniformIn(dst []float64, lo, hi float64) {
 		s0 ^= s3
 		s2 ^= t
 		s3 = bits.RotateLeft64(s3, 45)
-		dst[k] = lo + width*min(float64(int64(u>>1|1))*0x1p-63, 1-0x1p-53)
+		dst[k] = lo + width*unit(u)
 	}
 	s.s0, s.s1, s.s2, s.s3 = s0, s1, s2, s3
 }
@@ -137,7 +137,7 @@ func (s *Source) FillArcsine(dst []float64, centre, half float64) {
 		s0 ^= s3
 		s2 ^= t
 		s3 = bits.RotateLeft64(s3, 45)
-		dst[k] = centre + half*sine(min(float64(int64(u>>1|1))*0x1p-63, 1-0x1p-53)-0.5)
+		dst[k] = centre + half*sine(unit(u)-0.5)
 	}
 	s.s0, s.s1, s.s2, s.s3 = s0, s1, s2, s3
 }

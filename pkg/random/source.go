@@ -79,7 +79,11 @@ func (s *Source) Float64() float64 { return unit(s.Uint64()) }
 
 // unit maps 64 random bits to the open unit interval.
 func unit(u uint64) float64 {
-	return min(float64(int64(u>>1|1))*0x1p-63, 1-0x1p-53)
+	x := float64(int64(u>>1|1)) * 0x1p-63
+	if x == 1 { // rounded up, once in 2^54
+		x = 1 - 0x1p-53
+	}
+	return x
 }
 
 // Exponential returns a number with the exponential distribution of mean 1, by
