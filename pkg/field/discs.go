@@ -40,28 +40,34 @@ const (
 	DiscLimit = 50.0
 )
 
-// discTable is C(κ) on the intervals of ln κ between its bounds, less a leading
-// part, as Chebyshev series with those of its first three derivatives by ln κ.
+// discTable is C(κ), less a leading part, on the intervals of ln κ between its
+// bounds: Chebyshev series of it and of its first three derivatives by ln κ,
+// side by side for one pass.
 type discTable struct {
 	bounds []float64      // of ln κ
-	coef   [][4][]float64 // one for each interval
+	coef   [][][4]float64 // by interval and degree
 }
 
 func newDiscTable(bounds []float64, values [][]float64) *discTable {
 	t := &discTable{bounds: bounds}
 	for i, c := range values {
-		var d [4][]float64
-		d[0] = c
 		half := (bounds[i+1] - bounds[i]) / 2
-		for k := 1; k < 4; k++ {
-			d[k] = chebyshevDerivative(d[k-1], half)
+		series := make([][4]float64, len(c))
+		for k := range 4 {
+			if k > 0 {
+				c = chebyshevDerivative(c, half)
+			}
+			for j, v := range c {
+				series[j][k] = v
+			}
 		}
-		t.coef = append(t.coef, d)
+		t.coef = append(t.coef, series)
 	}
 	return t
 }
 
-// chebyshevDerivative differentiates Σ' c_k T_k(x/half): NIST DLMF 18.9.
+// chebyshevDerivative differentiates c₀/2 + Σ c_k T_k(x/half) (recurrence from
+// NIST DLMF 18.9.21 and 18.9.22).
 func chebyshevDerivative(c []float64, half float64) []float64 {
 	n := len(c)
 	d := make([]float64, n)
@@ -78,27 +84,27 @@ func chebyshevDerivative(c []float64, half float64) []float64 {
 	return d
 }
 
-// chebyshev sums c₀/2 + Σ c_k T_k(x) by Clenshaw's recurrence.
-func chebyshev(c []float64, x float64) float64 {
-	var b1, b2 float64
-	for k := len(c) - 1; k >= 1; k-- {
-		b1, b2 = c[k]+2*x*b1-b2, b1
-	}
-	return 0.5*c[0] + x*b1 - b2
-}
-
-// at returns the function and its first n derivatives by ln κ at y = ln κ.
-func (t *discTable) at(y float64, n int) (h [4]float64) {
+// at returns the function and its first three derivatives by ln κ at y = ln κ,
+// by Clenshaw's recurrence on the four series at once.
+func (t *discTable) at(y float64) (h [4]float64) {
 	i := 0
 	for i+2 < len(t.bounds) && y > t.bounds[i+1] {
 		i++
 	}
 	lo, hi := t.bounds[i], t.bounds[i+1]
 	x := (2*y - lo - hi) / (hi - lo)
-	for k := range n + 1 {
-		h[k] = chebyshev(t.coef[i][k], x)
+	x2 := 2 * x
+	var p0, p1, p2, p3, q0, q1, q2, q3 float64
+	c := t.coef[i]
+	for k := len(c) - 1; k >= 1; k-- {
+		v := &c[k]
+		p0, q0 = v[0]+x2*p0-q0, p0
+		p1, q1 = v[1]+x2*p1-q1, p1
+		p2, q2 = v[2]+x2*p2-q2, p2
+		p3, q3 = v[3]+x2*p3-q3, p3
 	}
-	return h
+	v := &c[0]
+	return [4]float64{0.5*v[0] + x*p0 - q0, 0.5*v[1] + x*p1 - q1, 0.5*v[2] + x*p2 - q2, 0.5*v[3] + x*p3 - q3}
 }
 
 // byKappa turns derivatives by ln κ into derivatives by κ.
@@ -135,7 +141,7 @@ func addTo(h *[4]float64, g [4]float64) {
 
 // discOpposite returns c = C/εR of two discs at opposite potentials and its
 // first three derivatives by κ; C = εR c is the capacitance between them.
-func discOpposite(kappa float64, n int) [4]float64 {
+func discOpposite(kappa float64) [4]float64 {
 	r := 1 / kappa
 	// Kirchhoff (1877): π/κ + ln(16π/κ) − 1
 	lead := [4]float64{math.Pi*r + math.Log(16*math.Pi*r) - 1, -(math.Pi*r + 1) * r, (2*math.Pi*r + 1) * r * r, -(6*math.Pi*r + 2) * r * r * r}
@@ -146,7 +152,7 @@ func discOpposite(kappa float64, n int) [4]float64 {
 		addTo(&h, logPowers(kappa, 2, oppositeSquare))
 		addTo(&h, logPowers(kappa, 3, oppositeCube))
 	} else {
-		h = oppositeTable.at(math.Log(kappa), n)
+		h = oppositeTable.at(math.Log(kappa))
 	}
 	h = byKappa(h, kappa)
 	addTo(&h, lead)
@@ -155,7 +161,7 @@ func discOpposite(kappa float64, n int) [4]float64 {
 
 // discSame returns c = Q/εR(2φ)·2 of two discs at the same potential φ, that is
 // 2∫f₊, and its first three derivatives by κ.
-func discSame(kappa float64, n int) [4]float64 {
+func discSame(kappa float64) [4]float64 {
 	if kappa < discTableLow {
 		h := logPowers(kappa, 1, []float64{(1 - 4*math.Ln2) / math.Pi, 1 / math.Pi})
 		addTo(&h, logPowers(kappa, 2, sameSquare))
@@ -164,7 +170,7 @@ func discSame(kappa float64, n int) [4]float64 {
 		h[0] += 2
 		return h
 	}
-	return byKappa(sameTable.at(math.Log(kappa), n), kappa)
+	return byKappa(sameTable.at(math.Log(kappa)), kappa)
 }
 
 var (
@@ -186,13 +192,13 @@ func DiscCapacitance(eps, R, d float64) (float64, error) {
 	if err := discChecks("capacitance of unguarded discs", eps, R, d, 0); err != nil {
 		return 0, err
 	}
-	return eps * R * discOpposite(d/R, 0)[0], nil
+	return eps * R * discOpposite(d / R)[0], nil
 }
 
 // DiscCapacitanceJet is DiscCapacitance with derivatives.
 func DiscCapacitanceJet(eps, R, d jet.Jet) jet.Jet {
 	kappa := d.Div(R)
-	c := discOpposite(kappa.V, 2)
+	c := discOpposite(kappa.V)
 	return eps.Mul(R).Mul(kappa.Chain(c[0], c[1], c[2]))
 }
 
@@ -204,6 +210,19 @@ func KirchhoffCapacitance(eps, R, d float64) (float64, error) {
 		return 0, err
 	}
 	return eps * R * (math.Pi*R/d + math.Log(16*math.Pi*R/d) - 1), nil
+}
+
+// DiscCoefficient returns c(κ), κ = d/R, and its first three derivatives, with
+// which the live disc's charge is εR c V and the attraction −½εV² c′, without
+// refusals: what a fit needs, row by row.
+func DiscCoefficient(drive Drive, kappa float64) [4]float64 {
+	c := discOpposite(kappa)
+	if drive == OneSideEarthed {
+		// V and 0 are ±V/2 and a common V/2, which adds the charge εR c₊ V and,
+		// as energy ½V²·εR(c₋ + c₊), its part of the force
+		addTo(&c, discSame(kappa))
+	}
+	return c
 }
 
 // DiscForce returns the attraction (N, positive) between two thin equal coaxial
@@ -224,15 +243,7 @@ func DiscForce(drive Drive, eps, R, d, V float64) (float64, error) {
 // DiscForceJet is DiscForce with derivatives.
 func DiscForceJet(drive Drive, eps, R, d, V jet.Jet) jet.Jet {
 	kappa := d.Div(R)
-	n := 3
-	if kappa.IsConst() {
-		n = 1
-	}
-	c := discOpposite(kappa.V, n)
-	if drive == OneSideEarthed {
-		// energy ½V²·εR(c₋ + c₊): the charge of the live disc is εRV(c₋ + c₊)
-		addTo(&c, discSame(kappa.V, n))
-	}
+	c := DiscCoefficient(drive, kappa.V)
 	return eps.Mul(V.Sqr()).Mul(kappa.Chain(c[1], c[2], c[3])).Scale(-0.5)
 }
 
@@ -253,14 +264,7 @@ func DiscCharge(drive Drive, eps, R, d, V float64) (float64, error) {
 // DiscChargeJet is DiscCharge with derivatives.
 func DiscChargeJet(drive Drive, eps, R, d, V jet.Jet) jet.Jet {
 	kappa := d.Div(R)
-	n := 2
-	if kappa.IsConst() {
-		n = 0
-	}
-	c := discOpposite(kappa.V, n)
-	if drive == OneSideEarthed {
-		addTo(&c, discSame(kappa.V, n))
-	}
+	c := DiscCoefficient(drive, kappa.V)
 	return eps.Mul(R).Mul(V).Mul(kappa.Chain(c[0], c[1], c[2]))
 }
 

@@ -25,7 +25,7 @@ func SlotLengthBound(R, Rg float64) float64 { return (Rg - R) * math.Ln2 / math.
 
 func guardChecks(formula string, R, Rg, D float64) error {
 	if err := refuse(formula, positive("disc radius", R, "m"), positive("guard inner radius", Rg, "m"), positive("spacing", D, "m"),
-		check{"guard inner radius less disc radius", Rg - R, "m", Rg >= R, "0 or more: the guard surrounds the disc"}); err != nil {
+		that("guard inner radius less disc radius", Rg-R, "m", Rg >= R, "0 or more: the guard surrounds the disc")); err != nil {
 		return err
 	}
 	if Rg > R {

@@ -102,7 +102,7 @@ func GuardedDiscChargeJet(eps, R, Rg, Cs, V, Vc, d, delta jet.Jet) jet.Jet {
 func SheetCapacitance(eps0, A, d, t, epsr, epsAir float64) (float64, error) {
 	if err := refuse("dielectric sheet", positive("electric constant", eps0, "F/m"), positive("area", A, "m²"), positive("spacing", d, "m"), notNegative("sheet thickness", t, "m"),
 		positive("relative permittivity of the sheet", epsr, "1"), positive("relative permittivity of the gap", epsAir, "1"),
-		check{"sheet thickness", t, "m", t <= d, "no more than the spacing: the sheet lies in the gap"}); err != nil {
+		that("sheet thickness", t, "m", t <= d, "no more than the spacing: the sheet lies in the gap")); err != nil {
 		return 0, err
 	}
 	return eps0 * A / ((d-t)/epsAir + t/epsr), nil
@@ -139,7 +139,7 @@ func FieldForceJet(q, E jet.Jet) jet.Jet { return q.Mul(E) }
 // unstable.
 func PlateImageForce(eps, q, z, d float64) (float64, error) {
 	if err := refuse("image force between plates", positive("permittivity", eps, "F/m"), finite("charge", q, "C"), positive("spacing", d, "m"),
-		check{"height", z, "m", z > 0 && z < d, "more than 0 and less than the spacing"}); err != nil {
+		that("height", z, "m", z > 0 && z < d, "more than 0 and less than the spacing")); err != nil {
 		return 0, err
 	}
 	return PlateImageForceJet(jet.Const(eps), jet.Const(q), jet.Const(z), jet.Const(d)).V, nil

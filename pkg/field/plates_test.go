@@ -8,6 +8,7 @@ import (
 
 	"example.org/guardring/pkg/field"
 	"example.org/guardring/pkg/jet"
+	"example.org/guardring/pkg/si"
 )
 
 // An attracted disc of 50 mm radius in a guard with a 0.5 mm gap, 5 mm from the
@@ -17,12 +18,12 @@ func ExampleGuardedDiscForce() {
 	if err != nil {
 		panic(err)
 	}
-	f, err := field.GuardedDiscForce(8.8541878188e-12*epsr, 0.050, 0.0505, 5000, 0, 0.005, 0)
+	f, err := field.GuardedDiscForce(si.Eps0*epsr, 0.050, 0.0505, 5000, 0, 0.005, 0)
 	if err != nil {
 		panic(err)
 	}
 	fmt.Printf("%.4f mN\n", f*1e3)
-	_, err = field.GuardedDiscForce(8.8541878188e-12*epsr, 0.050, 0.0505, 5000, 0, 0.002, 0)
+	_, err = field.GuardedDiscForce(si.Eps0*epsr, 0.050, 0.0505, 5000, 0, 0.002, 0)
 	fmt.Println(err)
 	// Output:
 	// 35.1277 mN
@@ -125,7 +126,7 @@ func wedgeAverage(shape field.Shape, on field.Effect, y float64) float64 {
 }
 
 func TestSheet(t *testing.T) {
-	const e0, A, d = 8.8541878188e-12, 0.01, 0.004
+	const e0, A, d = si.Eps0, 0.01, 0.004
 	near(t, "no sheet", must(t)(field.SheetCapacitance(e0, A, d, 0, 4, 1.0005)), e0*1.0005*A/d, 1e-15, 0)
 	near(t, "full sheet", must(t)(field.SheetCapacitance(e0, A, d, d, 4, 1.0005)), e0*4*A/d, 1e-15, 0)
 	near(t, "sheet of air", must(t)(field.SheetCapacitance(e0, A, d, 0.002, 1.0005, 1.0005)), e0*1.0005*A/d, 1e-15, 0)
@@ -136,7 +137,7 @@ func TestSheet(t *testing.T) {
 }
 
 func TestImageForce(t *testing.T) {
-	const e0, q = 8.8541878188e-12, 1e-9
+	const e0, q = si.Eps0, 1e-9
 	near(t, "mid-plane", must(t)(field.PlateImageForce(e0, q, 0.05, 0.1)), 0, 0, 1e-20)
 	// near one plate the other does not matter: F = −q²/16πε z²
 	near(t, "near a plate", must(t)(field.PlateImageForce(e0, q, 1e-4, 0.1)), -q*q/(16*math.Pi*e0*1e-8), 1e-5, 0)

@@ -29,9 +29,8 @@ func pair(a, b, gap float64) (z pairOrder2) {
 	va, vb := variable(0, a), variable(1, b)
 
 	// f = √[g(g+2a)(g+2b)(g+2a+2b)]/2c
-	p := g.mul(&ga)
-	q := gb.mul(&gab)
-	p = p.mul(&q)
+	p, pb := g.mul(&ga), gb.mul(&gab)
+	p = p.mul(&pb)
 	root := p.sqrt()
 	ic := c.inv()
 	f := root.mul(&ic)
@@ -51,9 +50,10 @@ func pair(a, b, gap float64) (z pairOrder2) {
 	u := alpha.add(&beta)
 	uG := alphaG.add(&betaG)
 
+	q := math.Exp(-u.v)
 	for i, x := range [2]struct{ r, t, tG *order2 }{{&va, &alpha, &alphaG}, {&vb, &beta, &betaG}} {
 		t, tG := x.t.add(&u), x.tG.add(&uG)
-		s := sumSinh(t.v, u.v)
+		s := sumSinh(t.v, u.v, math.Exp(-t.v), q)
 		S := chain2(&t, &u, s.s, s.a, s.u, s.aa, s.au, s.uu)
 		Sa := chain2(&t, &u, s.a, s.aa, s.au, s.aaa, s.aau, s.auu)
 		Su := chain2(&t, &u, s.u, s.au, s.uu, s.aau, s.auu, s.uuu)
@@ -65,7 +65,7 @@ func pair(a, b, gap float64) (z pairOrder2) {
 		d2 = fg.mul(&S)
 		z.w[2*i] = d1.add(&d2)
 	}
-	line := sumSinh(2*u.v, u.v)
+	line := sumSinh(2*u.v, u.v, q*q, q)
 	s, s1, s2, s3 := line.along()
 	S, S1 := u.chain(s, s1, s2), u.chain(s1, s2, s3)
 	h := va.mul(&vb)
@@ -120,7 +120,7 @@ func pairJets(a, b, gap jet.Jet) (c, w [3]jet.Jet) {
 
 func spheresChecks(eps, a, b, gap float64) error {
 	return refuse("sphere pair", positive("permittivity", eps, "F/m"), positive("first radius", a, "m"), positive("second radius", b, "m"),
-		check{"gap (centre distance less radii)", gap, "m", gap > 0 && !math.IsInf(gap, 0), "more than 0: the spheres must not touch or overlap"})
+		that("gap (centre distance less radii)", gap, "m", gap > 0 && !math.IsInf(gap, 0), "more than 0: the spheres must not touch or overlap"))
 }
 
 // SphereCapacities returns the capacity coefficients (F) of two conducting

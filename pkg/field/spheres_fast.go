@@ -25,9 +25,6 @@ func geometry(a, b, gap float64) (z pairGeometry) {
 	return z
 }
 
-// expSwitch is exp(−seriesSwitch).
-var expSwitch = math.Exp(-seriesSwitch)
-
 // pairFirst returns the capacity coefficients aa, ab, bb per 4πε and their
 // derivatives by the gap; pair without the derivatives that only a fit needs.
 func pairFirst(a, b, gap float64) (c, w [3]float64) {
@@ -127,7 +124,8 @@ func near1(alpha, u float64) (sa, s0 sum1) {
 	x := alpha / u
 	iu := 1 / u
 	l := (math.Ln2 - math.Log(u)) * iu
-	psi, psi1 := digamma(x), hurwitz(2, x)
+	poly := polygamma(x)
+	psi, psi1 := poly[0], poly[1]
 	// first terms: [ln(2/u) − ψ]/u
 	sa.s = l - psi*iu
 	sa.a = -psi1 * iu * iu

@@ -16,7 +16,11 @@ func pairSecond(a, b, gap float64) (z pairGap) {
 	agg := fgg/t.ha - t.fg*t.fg*t.f/(t.ha*t.ha*t.ha)
 	bgg := fgg/t.hb - t.fg*t.fg*t.f/(t.hb*t.hb*t.hb)
 	uG, ugg := t.alphaG+t.betaG, agg+bgg
-	alpha, beta := math.Asinh(t.f/a), math.Asinh(t.f/b)
+	q := t.ealpha * t.ebeta
+	var alpha, beta float64
+	if t.needsLogarithm {
+		alpha, beta = math.Asinh(t.f/a), math.Asinh(t.f/b)
+	}
 	u := alpha + beta
 
 	set := func(i int, sign, r, r1, r2 float64, s *sinhSum, pg, pgg float64) {
@@ -26,13 +30,13 @@ func pairSecond(a, b, gap float64) (z pairGap) {
 		z.w[i] = sign * (r1 + t.fg*s.s + t.f*s1)
 		z.w1[i] = sign * (r2 + fgg*s.s + 2*t.fg*s1 + t.f*s2)
 	}
-	s := sumSinh(alpha+u, u)
+	s := sumSinh(alpha+u, u, t.ealpha*q, q)
 	set(0, 1, a, 0, 0, &s, t.alphaG+uG, agg+ugg)
 	if a != b {
-		s = sumSinh(beta+u, u)
+		s = sumSinh(beta+u, u, t.ebeta*q, q)
 	}
 	set(2, 1, b, 0, 0, &s, t.betaG+uG, bgg+ugg)
-	s = sumSinh(2*u, u)
+	s = sumSinh(2*u, u, q*q, q)
 	h := a * b / d
 	set(1, -1, h, -h/d, 2*h/(d*d), &s, 2*uG, 2*ugg)
 	return z

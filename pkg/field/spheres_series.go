@@ -22,70 +22,70 @@ type sinhSum struct {
 	auu, uuu   float64
 }
 
-// sumSinh returns S and its derivatives at (α, u). Relative accuracy of S near
-// 1e-15, of the derivatives near 1e-14.
-func sumSinh(alpha, u float64) sinhSum {
-	if u < seriesSwitch {
+// sumSinh returns S and its derivatives at (α, u), given exp(−α) and exp(−u)
+// too. Relative accuracy of S near 1e-15, of the derivatives near 1e-14.
+func sumSinh(alpha, u, ealpha, eu float64) sinhSum {
+	if eu > expSwitch {
 		return sumSinhNear(alpha, u)
 	}
-	return sumSinhFar(alpha, u)
+	return sumSinhFar(ealpha, eu)
 }
+
+// expSwitch is exp(−seriesSwitch).
+var expSwitch = math.Exp(-seriesSwitch)
 
 // sumSinhFar sums the double series 2 ΣΣ exp[−(nu+α)(2m+1)] along its diagonal
 // n = m = k: with K = 2k+1 and t = ku + α (derived, package comment)
 //
-//	S = 2 Σ_k { exp(−Kt)/(1 − exp(−Ku)) + exp(−(K+2)t)/(1 − exp(−2t)) }.
-func sumSinhFar(alpha, u float64) (z sinhSum) {
-	for k := 0.0; ; k++ {
+//	S = 2 Σ_k { exp(−Kt)/(1 − exp(−Ku)) + exp(−(K+2)t)/(1 − exp(−2t)) },
+//
+// from x = exp(−α) and q = exp(−u), calling no transcendental function.
+func sumSinhFar(x, q float64) (z sinhSum) {
+	q2 := q * q
+	q4 := q2 * q2
+	e, ratio := 2*x, x*x*q2*q // 2 exp(−Kt) and what takes it to the next
+	r, s := q, x*x            // exp(−Ku), exp(−2t)
+	k := 0.0
+	for range 12 {
 		K := 2*k + 1
-		t := k*u + alpha
-		x := K * t
-		if x > 745 {
-			break
-		}
-		e := 2 * math.Exp(-x)
+		a, b := 1-r, 1-s
+		inv := 1 / (a * b)
+		w, P := inv*b, s*inv*a
 		// first part, e·w with w = 1/(1 − r); logarithmic derivatives −K in α, −K(k + p) in u
-		r := math.Exp(-K * u)
-		w := 1 / (1 - r)
 		p := r * w
 		m := p * (1 + p)
 		y := e * w
 		l := k + p
 		l2 := l*l + m
-		l3 := l*l*l + 3*l*m + m*(1+2*p)
-		K2, K3 := K*K, K*K*K
-		z.s += y
-		z.a -= K * y
-		z.u -= K * l * y
-		z.aa += K2 * y
-		z.au += K2 * l * y
-		z.uu += K2 * l2 * y
-		z.aaa -= K3 * y
-		z.aau -= K3 * l * y
-		z.auu -= K3 * l2 * y
-		z.uuu -= K3 * l3 * y
+		l3 := l*(l2+2*m) + m*(1+2*p)
+		y1 := K * y
+		y2 := K * y1
+		y3 := K * y2
 		// second part, a function of t alone
-		P := 1 / math.Expm1(2*t)
 		M := 4 * P * (1 + P)
 		L := K + 2*(1+P)
 		f := e * P
-		f1 := -f * L
+		f1 := f * L
 		f2 := f * (L*L + M)
-		f3 := -f * (L*L*L + 3*L*M + 2*M*(1+2*P))
-		z.s += f
-		z.a += f1
-		z.u += k * f1
-		z.aa += f2
-		z.au += k * f2
-		z.uu += k * k * f2
-		z.aaa += f3
-		z.aau += k * f3
-		z.auu += k * k * f3
-		z.uuu += k * k * k * f3
-		// the third derivative carries (k(2k+1))³ more than the sum
-		if kk := k*K + 1; y*kk*kk*kk < 1e-17*z.s {
+		f3 := f * (L*(L*L+3*M) + 2*M*(1+2*P))
+		z.s += y + f
+		z.a -= y1 + f1
+		z.u -= l*y1 + k*f1
+		z.aa += y2 + f2
+		z.au += l*y2 + k*f2
+		z.uu += l2*y2 + k*k*f2
+		z.aaa -= y3 + f3
+		z.aau -= l*y3 + k*f3
+		z.auu -= l2*y3 + k*k*f3
+		z.uuu -= l3*y3 + k*k*k*f3
+		e *= ratio
+		if e < 1e-23*z.s { // what is left out grows by K⁶ in the third derivative
 			break
 		}
+		ratio *= q4
+		r *= q2
+		s *= q2
+		k++
 	}
 	return z
 }
@@ -174,19 +174,24 @@ func sumSinhNear(alpha, u float64) (z sinhSum) {
 	z.u = (l - 1 - math.Ln2) * iu2
 	z.uu = (3 - 2*l + 2*math.Ln2) * iu2 * iu
 	z.uuu = (6*l - 11 - 6*math.Ln2) * iu2 * iu2
-	z.addScaled(-1, -1, x, u, iu2*iu2, digamma(x), hurwitz(2, x), -2*hurwitz(3, x), 6*hurwitz(4, x))
+	psi := polygamma(x)
+	z.addScaled(-1, -1, x, u, iu2*iu2, psi[0], psi[1], psi[2], psi[3])
 	un := iu2
+	var b [2*nearTerms + 1]float64 // Bernoulli polynomials at x
+	b[0] = 1
 	for k := 1; k <= nearTerms; k++ {
 		n := float64(2 * k)
-		h0 := horner(bernoulliPoly[2*k], x)
-		h1 := n * horner(bernoulliPoly[2*k-1], x)
-		h2 := n * (n - 1) * horner(bernoulliPoly[2*k-2], x)
+		b[2*k-1] = horner(bernoulliPoly[2*k-1], x)
+		b[2*k] = horner(bernoulliPoly[2*k], x)
 		h3 := 0.0
 		if k > 1 {
-			h3 = n * (n - 1) * (n - 2) * horner(bernoulliPoly[2*k-3], x)
+			h3 = n * (n - 1) * (n - 2) * b[2*k-3]
 		}
-		z.addScaled(nearCoefficient[k], n-1, x, u, un, h0, h1, h2, h3)
+		z.addScaled(nearCoefficient[k], n-1, x, u, un, b[2*k], n*b[2*k-1], n*(n-1)*b[2*k-2], h3)
 		un *= u * u
+		if un*u*u*math.Abs(nearEven[k]) < 1e-22 { // the next term, its derivatives' factors (2k)³ included
+			break
+		}
 	}
 	return z
 }

@@ -405,6 +405,17 @@ func BenchmarkSphereUnequal(b *testing.B) {
 	b.ReportMetric(float64(b.Elapsed().Nanoseconds())/float64(b.N*len(dst)), "ns/force")
 }
 
+// BenchmarkSphereSlope is one force with its gap derivative, as a fit asks.
+func BenchmarkSphereSlope(b *testing.B) {
+	for _, gap := range []float64{0.01, 0.7} {
+		b.Run(name("gap %g", gap), func(b *testing.B) {
+			for b.Loop() {
+				field.SphereForceChargesSlope(1, 1.2, gap, 1, 0.5)
+			}
+		})
+	}
+}
+
 func BenchmarkSphereJet(b *testing.B) {
 	s := jet.NewSpace(5, 5)
 	for b.Loop() {

@@ -108,7 +108,7 @@ func SphereChargeJet(eps, a, V jet.Jet) jet.Jet { return eps.Mul(a).Mul(V).Scale
 // a lone sphere of radius a (m) at potential V (V): that of a point charge.
 func SphereField(a, V, r float64) (float64, error) {
 	if err := refuse("field of a sphere", positive("radius", a, "m"), finite("potential", V, "V"), positive("distance", r, "m"),
-		check{"distance", r, "m", r >= a, "no less than the radius: the field inside is zero"}); err != nil {
+		that("distance", r, "m", r >= a, "no less than the radius: the field inside is zero")); err != nil {
 		return 0, err
 	}
 	return V * a / (r * r), nil

@@ -109,7 +109,7 @@ func WedgeMean(c, half, d float64) (mean, u float64, err error) {
 // rectangle, 2/(1+s) and 2/(s(1+s)) for a disc.
 func WedgeExact(shape Shape, on Effect, delta, d float64) (float64, error) {
 	if err := refuse("wedge", positive("spacing", d, "m"), finite("half-difference", delta, "m"),
-		check{"half-difference / spacing", math.Abs(delta) / d, "1", math.Abs(delta) < d, "less than 1: the plates must not touch"}); err != nil {
+		that("half-difference / spacing", math.Abs(delta)/d, "1", math.Abs(delta) < d, "less than 1: the plates must not touch")); err != nil {
 		return 0, err
 	}
 	if _, err := WedgeCoefficient(shape, on); err != nil {
