@@ -74,10 +74,15 @@ func (o *reduceOptions) many(ctx context.Context, dirs []string, stdout, stderr 
 	if _, err := stdout.Write(out.Bytes()); err != nil {
 		return err
 	}
-	for _, r := range results {
-		if r.err != nil {
-			fmt.Fprintf(stderr, "guardring: %v\n", r.err)
+	for i, r := range results {
+		if r.err == nil {
+			continue
 		}
+		msg := r.err.Error()
+		if dir := filepath.Clean(dirs[i]); !strings.HasPrefix(msg, dir) {
+			msg = dir + ": " + msg
+		}
+		fmt.Fprintf(stderr, "guardring: %s\n", msg)
 	}
 	if bad > 0 {
 		return fmt.Errorf("%d of %d benches are bad", bad, len(dirs))

@@ -376,7 +376,7 @@ func (r *reader) correlationTables(known []string) []Correlation {
 	seen := map[[2]string]int{}
 	for _, t := range tables {
 		between := r.texts(t, "between")
-		n := t.field("between")
+		n, f := t.field("between"), t.field("r")
 		switch {
 		case n == nil:
 			r.missing(t, "between", `like between = ["a", "b"]`)
@@ -396,7 +396,6 @@ func (r *reader) correlationTables(known []string) []Correlation {
 				bad = true
 			}
 		}
-		f := t.field("r")
 		switch {
 		case f == nil:
 			r.missing(t, "r", "the correlation coefficient, from -1 to 1")

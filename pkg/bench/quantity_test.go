@@ -69,7 +69,7 @@ func TestQuantityForms(t *testing.T) {
 			continue
 		}
 		d := q.dist
-		if d.Shape != c.shape || !near(d.Value, c.value, 1e-15) || !near(d.U, c.u, 1e-9) || d.DOF != c.dof {
+		if d.Shape != c.shape || !near(d.Value, c.value, 1e-15) || !near(d.U, c.u, 1e-9) || !near(d.DOF, c.dof, 1e-12) {
 			t.Errorf("%s: got %s %v u %v dof %v; want %s %v u %v dof %v", c.toml, d.Shape, d.Value, d.U, d.DOF, c.shape, c.value, c.u, c.dof)
 		}
 		if !near(d.Half, c.other, 1e-12) {

@@ -210,3 +210,48 @@ func unitVector(n Vec) (Vec, error) {
 	}
 	return scale(n, 1/l), nil
 }
+
+// A Contribution is what one source, with its mirror image, adds to the field at
+// a point, and how that changes: a row of the budget of a stray field.
+type Contribution struct {
+	Name string
+	// Field is its part of E (V/m); it goes with the charge, so that a relative
+	// uncertainty of the charge is one of Field.
+	Field Vec
+	// BySource[i][j] is ∂E_i/∂(place of the source)_j (V/m²), the image moving
+	// with it. With the plane fixed, ∂E/∂(place of the meter) is J of At.
+	BySource [3]Vec
+}
+
+// Contributions splits the field at p by source, in their order; see At.
+func (s *Scene) Contributions(p Vec) ([]Contribution, error) {
+	all, err := s.sources()
+	if err != nil {
+		return nil, err
+	}
+	if err := s.outside(p); err != nil {
+		return nil, err
+	}
+	out := make([]Contribution, len(s.Sources))
+	for i, c := range s.Sources {
+		_, e, j := sum(all[i:i+1], s.Eps, p)
+		out[i] = Contribution{Name: c.Name, Field: e}
+		for k := range 3 {
+			out[i].BySource[k] = scale(j[k], -1)
+		}
+		if s.Plane == nil {
+			continue
+		}
+		n, err := unitVector(s.Plane.Normal)
+		if err != nil {
+			return nil, err
+		}
+		_, e, j = sum(all[len(s.Sources)+i:len(s.Sources)+i+1], s.Eps, p)
+		out[i].Field = add(out[i].Field, e)
+		for k := range 3 { // the image moves by (1 − 2nnᵀ) times the source
+			row := sub(j[k], scale(n, 2*dot(j[k], n)))
+			out[i].BySource[k] = sub(out[i].BySource[k], row)
+		}
+	}
+	return out, nil
+}

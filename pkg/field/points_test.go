@@ -68,6 +68,50 @@ func TestSceneField(t *testing.T) {
 	}
 }
 
+// TestContributions: the parts add to the field, and each follows its source
+// (central differences).
+func TestContributions(t *testing.T) {
+	p := field.Vec{0.3, 0.4, 0.5}
+	for label, s := range scenes() {
+		parts, err := s.Contributions(p)
+		if err != nil {
+			t.Fatal(err)
+		}
+		E, err := s.Field(p)
+		if err != nil {
+			t.Fatal(err)
+		}
+		size := math.Sqrt(E[0]*E[0] + E[1]*E[1] + E[2]*E[2])
+		for i := range 3 {
+			total := 0.0
+			for _, c := range parts {
+				total += c.Field[i]
+			}
+			near(t, label+" sum", total, E[i], 0, 1e-12*size)
+		}
+		const h = 1e-5
+		for k := range s.Sources {
+			for j := range 3 {
+				moved := func(by float64) field.Vec {
+					m := *s
+					m.Sources = append([]field.Source(nil), s.Sources...)
+					m.Sources[k].From[j] += by
+					m.Sources[k].To[j] += by
+					e, err := m.Field(p)
+					if err != nil {
+						t.Fatal(err)
+					}
+					return e
+				}
+				up, down := moved(h), moved(-h)
+				for i := range 3 {
+					near(t, name("%s source %d, E%d by place %d", label, k, i, j), parts[k].BySource[i][j], (up[i]-down[i])/(2*h), 0, 1e-5*size)
+				}
+			}
+		}
+	}
+}
+
 // TestGauss: the flux through a closed sphere is the charge within over ε.
 func TestGauss(t *testing.T) {
 	s := scenes()["edge"]

@@ -19,6 +19,9 @@ type Axis struct {
 	Low, High float64
 	// Zero makes a linear axis reach zero.
 	Zero bool
+	// Labels name the places 1, 2, 3 … of an axis of things (laboratories,
+	// inputs) instead of numbers; the other fields but Name are ignored.
+	Labels []string
 }
 
 // tick is one mark on an axis.
@@ -77,6 +80,9 @@ func newScale(a Axis, data spanner, want int) (*scale, error) {
 	if what == "" {
 		what = "an axis"
 	}
+	if len(a.Labels) > 0 {
+		return placesScale(a), nil
+	}
 	lo, hi := data.lo, data.hi
 	held := a.Low < a.High
 	if held {
@@ -133,6 +139,15 @@ func newScale(a Axis, data spanner, want int) (*scale, error) {
 	}
 	s.title = axisTitle(a.Name, unit)
 	return s, nil
+}
+
+// placesScale is the scale of an axis of things.
+func placesScale(a Axis) *scale {
+	s := &scale{lo: 0.4, hi: float64(len(a.Labels)) + 0.6, title: a.Name}
+	for i, l := range a.Labels {
+		s.ticks = append(s.ticks, tick{at: float64(i + 1), label: fitted(l, tickSize, false, 0.8*wide/float64(len(a.Labels)))})
+	}
+	return s
 }
 
 // axisTitle writes the quantity divided by its unit: "E / (kV m⁻¹)".

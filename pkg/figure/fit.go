@@ -79,7 +79,7 @@ func (d *Data) Fit() (*Figure, error) {
 	foot.at(left, top.y+top.h+14+labelSize+6, top.w, 92)
 	foot.ground()
 	size := 2.6
-	if r.N > 400 {
+	if r.N > crowded {
 		size = 1.5
 	}
 	joined := true

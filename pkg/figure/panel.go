@@ -1,6 +1,9 @@
 package figure
 
-import "math"
+import (
+	"fmt"
+	"math"
+)
 
 // panel is one rectangle with its axes.
 type panel struct {
@@ -39,7 +42,6 @@ var (
 type frame struct {
 	tag      string // "a"
 	noX, noY bool   // leave out the numbers and the title (a neighbour has them)
-	headRoom bool   // title of the y axis above the panel
 }
 
 // axes draws the two spines with marks that point into the panel, the numbers
@@ -251,15 +253,20 @@ func (p *panel) bars(x, y, ux, uy []float64, keep []int, color string) {
 	p.c.draw(q, pen{stroke: color, width: 0.7})
 }
 
-// dots draws markers at the points kept.
+// crowded is the number of points from which markers go without a rim.
+const crowded = 400
+
+// dots draws markers at the points kept. A few have paper-coloured rims that set
+// them off from each other, for which each must be a path of its own; many share
+// one path.
 func (p *panel) dots(x, y []float64, keep []int, m marker, r float64, k pen) {
+	if len(keep) > crowded && k.stroke == paper {
+		k.stroke = ""
+	}
 	for start := 0; start < len(keep); {
-		// One path per marker would be large, one for all would hide the rims of
-		// those beneath: a few at a time share a path only where they don't touch,
-		// which is not worth finding out, so hollow and rimmed ones stand alone.
 		var q path
 		stop := len(keep)
-		if k.fill != "" && k.stroke != "" && len(keep) <= 400 {
+		if k.fill != "" && k.stroke != "" && len(keep) <= crowded {
 			stop = start + 1
 		}
 		for _, i := range keep[start:stop] {
@@ -282,6 +289,47 @@ func finite(x ...float64) bool {
 		}
 	}
 	return true
+}
+
+// extent draws, for points that are thinned, a stroke from the lowest to the
+// highest of each column of the page, so that what lies between is seen to be
+// filled. keep is what thin returned.
+func (p *panel) extent(x, y []float64, keep []int, color string) {
+	if len(keep) == len(x) {
+		return
+	}
+	type reach struct{ lo, hi float64 }
+	columns := map[int]reach{}
+	last := 0
+	for _, i := range keep {
+		cx, cy := p.xs.pos(x[i]), p.ys.pos(y[i])
+		if !finite(cx, cy) {
+			continue
+		}
+		cy = clamp(cy, p.y, p.y+p.h)
+		c := int(math.Floor(2 * (cx - p.x)))
+		r, ok := columns[c]
+		if !ok {
+			r = reach{cy, cy}
+		}
+		columns[c] = reach{math.Min(r.lo, cy), math.Max(r.hi, cy)}
+		last = max(last, c)
+	}
+	var q path
+	for c := 0; c <= last; c++ {
+		if r, ok := columns[c]; ok && r.hi > r.lo {
+			q.move(p.x+(float64(c)+0.5)/2, r.lo)
+			q.line(p.x+(float64(c)+0.5)/2, r.hi)
+		}
+	}
+	p.c.draw(q, pen{stroke: color, width: 0.5})
+}
+
+// pale returns a light tint of a colour.
+func pale(color string) string {
+	r, g, b := rgb(color)
+	mix := func(v uint8) int { return int(0.45*float64(v) + 0.55*255) }
+	return fmt.Sprintf("#%02x%02x%02x", mix(r), mix(g), mix(b))
 }
 
 // thinAbove is the number of points above which a panel is thinned.

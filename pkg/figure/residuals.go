@@ -50,7 +50,11 @@ func (p *panel) ground() {
 func (d *Data) residualDots(p *panel, x []float64, r float64, lk look) int {
 	rows := d.Rows
 	var used, out []int
-	for _, i := range thin(x, rows.Standardised, p.xs, p.ys, rows.Excluded, thinAbove) {
+	keep := thin(x, rows.Standardised, p.xs, p.ys, rows.Excluded, thinAbove)
+	if len(x) > thinAbove {
+		p.extent(x, rows.Standardised, keep, pale(lk.color))
+	}
+	for _, i := range keep {
 		if rows.Excluded[i] {
 			out = append(out, i)
 		} else {
@@ -213,7 +217,7 @@ func (d *Data) orderPanel(s *sheet, height float64, tag string) (*panel, error) 
 	p.ground()
 	d.settings(p, x)
 	size := 2.6
-	if d.Rows.N > 400 {
+	if d.Rows.N > crowded {
 		size = 1.4
 	} else {
 		// A thread through the readings in use shows runs and drift.
@@ -263,7 +267,7 @@ func (d *Data) Residuals() (*Figure, error) {
 	const height = 128
 	w := (top.w - 2*gap) / 3
 	size := 2.3
-	if r.N > 400 {
+	if r.N > crowded {
 		size = 1.3
 	}
 
@@ -394,7 +398,7 @@ func (d *Data) quantilePanel(s *sheet, p *panel, x, y, w, h float64, tag string,
 	ends := []float64{xs.lo, xs.hi}
 	p.curve(ends, ends, zeroPen)
 	size := 2.3
-	if n > 400 {
+	if n > crowded {
 		size = 1.3
 	}
 	keep := thin(q, v, p.xs, p.ys, nil, thinAbove)

@@ -146,3 +146,30 @@ func TestShared(t *testing.T) {
 	}
 	group.Wait()
 }
+
+// TestWrongLengths: columns and outputs that do not fit panic, even where there
+// is room behind their end.
+func TestWrongLengths(t *testing.T) {
+	p, err := Compile("x + y", []string{"x", "y"})
+	if err != nil {
+		t.Fatal(err)
+	}
+	room := make([]float64, 8)
+	for name, call := range map[string]func(){
+		"short column": func() { p.Workspace().Block([][]float64{room[:3], room}, make([]float64, 8)) },
+		"long column":  func() { p.Workspace().Block([][]float64{room, room}, make([]float64, 4)) },
+		"nil column":   func() { p.Workspace().Block([][]float64{room, nil}, make([]float64, 8)) },
+		"short output": func() {
+			p.Workspace().BlockGradient([][]float64{room, room}, []int{0}, make([]float64, 8), [][]float64{make([]float64, 8)[:3]})
+		},
+	} {
+		func() {
+			defer func() {
+				if recover() == nil {
+					t.Errorf("a %s passes", name)
+				}
+			}()
+			call()
+		}()
+	}
+}

@@ -1,6 +1,9 @@
 package formula
 
-import "slices"
+import (
+	"fmt"
+	"slices"
+)
 
 // Workspace evaluates a Program and its derivatives. It holds the registers, so
 // that nothing is allocated after the first call of a kind. It is not safe for
@@ -52,7 +55,8 @@ func newRunner(c *code, wrt []int) *runner {
 // column of variable v: as long as out, or of length 1 when the variable has
 // the same value in all rows, in which case what depends on such variables
 // alone is computed once. Columns of variables that do not occur may be nil.
-// out must not overlap the columns.
+// out must not overlap the columns. Columns of another length are a mistake of
+// the caller, and panic.
 //
 // Rows are computed independently: a row's result does not depend on its place
 // or on the other rows, to the bit.
@@ -83,7 +87,7 @@ func (w *Workspace) Gradient(x []float64, g []float64) float64 {
 // BlockGradient is Block with partial derivatives: grad[k][row] is that by
 // variable wrt[k]. out, or any grad[k], may be nil when it is not wanted; the
 // others have one length, the number of rows. They must overlap neither each
-// other nor the columns.
+// other nor the columns. Other lengths panic.
 func (w *Workspace) BlockGradient(x [][]float64, wrt []int, out []float64, grad [][]float64) {
 	r := w.gradient(wrt)
 	w.many = append(w.many[:0], out)
@@ -143,11 +147,14 @@ func (w *Workspace) Hessian(x []float64, g []float64, h []float64) float64 {
 
 // columns notes which variables are the same in all rows, and their values, and
 // sorts the operations by that when it has changed.
-func (r *runner) columns(x [][]float64) {
+func (r *runner) columns(x [][]float64, n int) {
 	c := r.c
 	for _, i := range c.vars {
 		col := x[c.nodes[i].a]
 		u := len(col) == 1
+		if !u && len(col) != n {
+			panic(fmt.Sprintf("formula: column %d has %d rows, not 1 or %d", c.nodes[i].a, len(col), n))
+		}
 		if u {
 			r.vals[i] = col[0]
 		}
@@ -180,7 +187,12 @@ func (r *runner) run(x [][]float64, out [][]float64, n int) {
 	if n == 0 {
 		return
 	}
-	r.columns(x)
+	for k, o := range out {
+		if o != nil && len(o) != n {
+			panic(fmt.Sprintf("formula: output %d has %d rows, not %d", k, len(o), n))
+		}
+	}
+	r.columns(x, n)
 	for _, i := range r.once {
 		r.vals[i] = c.one(i, r.vals)
 	}

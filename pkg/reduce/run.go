@@ -87,9 +87,6 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 	c.rows(fit, &res.Rows)
 	res.Record.Diagnosis.Tests = c.tests(fit)
 	if fit.Status == lsq.Singular {
-		for _, line := range fit.Confounded {
-			res.warn(fmt.Errorf("%s", line))
-		}
 		res.warn(fmt.Errorf("no measurand is stated: the fit is singular"))
 		return res.finish(s), nil
 	}

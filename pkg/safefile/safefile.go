@@ -23,7 +23,9 @@ const bufferSize = 64 << 10
 // On success the new content is on the disk under its name. On any error, that
 // of write included, the temporary file is removed, an old file at path is
 // untouched, and the error names path and wraps its cause. The writer is
-// buffered and is valid only until write returns.
+// buffered and is valid only until write returns. The one exception is a folder
+// that can't be flushed after the rename: the new file then stands, whole, and
+// the error says that a loss of power might still bring the old one back.
 //
 // A symbolic link at path is followed, so that the link stays and the file it
 // names is replaced. A target that is a folder, a device, a pipe or a socket
@@ -82,7 +84,10 @@ func Write(path string, write func(io.Writer) error) (err error) {
 		return err
 	}
 	done = true
-	return syncFolder(folder)
+	if err := syncFolder(folder); err != nil {
+		return fmt.Errorf("the new file stands, but its folder could not be flushed to the disk: %w", err)
+	}
+	return nil
 }
 
 // WriteBytes replaces the file at path by data, as Write does.
