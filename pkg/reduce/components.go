@@ -85,7 +85,7 @@ func (c *chain) listComponents() error {
 	}
 	if c.zero != nil {
 		ch := &c.b.Channels[c.resp]
-		c.comps = append(c.comps, component{name: ch.Name + " zero", channel: zeroComponent, unit: ch.Unit, on: -1,
+		c.comps = append(c.comps, component{name: ch.Name + " " + c.zero.name(), channel: zeroComponent, unit: ch.Unit, on: -1,
 			dof: ch.NoiseDOF, count: len(c.zero.coef), unknown: ch.FromResiduals})
 	}
 	// Every row needs an independent part, or the weights are infinite.

@@ -10,17 +10,15 @@ import (
 // corrections lists every correction of the kind with its mean size over the
 // rows in use and what remains uncertain of it. A correction of the model is
 // given relative to the response, found by predicting with and without it; the
-// zero correction as the root mean square of what was subtracted.
+// zero and the blank as the root mean square of what was subtracted.
 func (c *chain) corrections(k *carried) ([]Correction, error) {
 	var out []Correction
 	for _, corr := range c.b.Kind.Corrections {
 		r := Correction{Name: corr.Name, Doc: corr.Doc, Unit: "1", Used: c.b.Corrections[corr.Name]}
 		switch {
-		case corr.Name == "zero":
+		case corr.Name == "zero" || corr.Name == "blank":
 			r.Unit = siSymbol(c.b.Channels[c.resp].Unit)
-			if c.zero != nil {
-				r.Size, r.U = c.zeroSize()
-			}
+			r.Size, r.U = c.zero.subtracted(corr.Name, c.zeroNoise())
 		case r.Used:
 			size, u, err := c.correctionSize(corr.Name, k)
 			if err != nil {
@@ -31,23 +29,6 @@ func (c *chain) corrections(k *carried) ([]Correction, error) {
 		out = append(out, r)
 	}
 	return out, nil
-}
-
-// zeroSize is the root mean square zero and its standard uncertainty.
-func (c *chain) zeroSize() (size, u Number) {
-	var s, v float64
-	z := c.zero
-	for i := range c.record {
-		s += z.at(i) * z.at(i)
-		var one float64
-		for j := z.start[i]; j < z.start[i+1]; j++ {
-			w := z.weight[j] * z.unit[z.column[j]] * c.zeroNoise()
-			one += w * w
-		}
-		v += one
-	}
-	n := float64(len(c.record))
-	return Number(math.Sqrt(s / n)), Number(math.Sqrt(v / n))
 }
 
 // correctionSize is the mean of prediction with over prediction without a

@@ -92,7 +92,8 @@ func (w *world) draw(t testing.TB, seed uint64) *bench.Bench {
 	b := *w.b
 	b.Scalars = append([]bench.Scalar(nil), w.b.Scalars...)
 	b.Channels = append([]bench.Channel(nil), w.b.Channels...)
-	truth := plan.Truth{Values: map[string]float64{}, ZeroStart: w.truth.ZeroStart, ZeroRate: w.truth.ZeroRate}
+	truth := *w.truth
+	truth.Values, truth.Faults = map[string]float64{}, nil
 	for k, v := range w.truth.Values {
 		truth.Values[k] = v
 	}
