@@ -2,7 +2,8 @@ package gum
 
 import (
 	"fmt"
-	"math"
+
+	"gonum.org/v1/gonum/mat"
 
 	"example.org/guardring/pkg/random"
 )
@@ -40,34 +41,14 @@ func NewJoint(d []Distribution, corr []Correlation) (*Joint, error) {
 			}
 		}
 	}
-	n := len(j.index)
-	r := make([][]float64, n)
-	for i := range r {
-		r[i] = make([]float64, n)
-		r[i][i] = 1
+	r := mat.NewSymDense(max(1, len(j.index)), nil)
+	for i := range j.index {
+		r.SetSym(i, i, 1)
 	}
 	for _, c := range corr {
-		a, b := at[c.I], at[c.J]
-		r[a][b], r[b][a] = c.R, c.R
+		r.SetSym(at[c.I], at[c.J], c.R)
 	}
-	// Cholesky factor of a matrix that may be singular: a vanishing pivot is a
-	// quantity that the earlier ones determine.
-	j.root = make([][]float64, n)
-	for i := range r {
-		j.root[i] = make([]float64, i+1)
-		for k := 0; k <= i; k++ {
-			s := r[i][k]
-			for m := range k {
-				s -= j.root[i][m] * j.root[k][m]
-			}
-			switch {
-			case k == i:
-				j.root[i][i] = math.Sqrt(math.Max(s, 0))
-			case j.root[k][k] > 1e-8:
-				j.root[i][k] = s / j.root[k][k]
-			}
-		}
-	}
+	j.root = choleskySemi(r)
 	return j, nil
 }
 

@@ -448,6 +448,36 @@ func TestCorrelated(t *testing.T) {
 	}
 }
 
+// TestJoint: one draw of several inputs, some correlated.
+func TestJoint(t *testing.T) {
+	d := []gum.Distribution{gum.Normal(1, 2), gum.Rectangular(0, 1), gum.Normal(5, 3), gum.Exactly(7), gum.Normal(0, 1)}
+	j, err := gum.NewJoint(d, []gum.Correlation{{I: 0, J: 2, R: -0.8}, {I: 2, J: 4, R: 0.6}, {I: 0, J: 4, R: -0.48}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	const n = 200_000
+	src := random.New(12, "joint", 0)
+	x := make([]float64, len(d))
+	var cov [5][5]float64
+	for range n {
+		j.Sample(&src, x)
+		for a := range x {
+			for b := range x {
+				cov[a][b] += (x[a] - d[a].Value) * (x[b] - d[b].Value) / n
+			}
+		}
+	}
+	r := [5][5]float64{{1, 0, -0.8, 0, -0.48}, {0, 1, 0, 0, 0}, {-0.8, 0, 1, 0, 0.6}, {}, {-0.48, 0, 0.6, 0, 1}}
+	for a := range x {
+		for b := range x {
+			near(t, fmt.Sprintf("covariance of %d and %d", a, b), cov[a][b], r[a][b]*d[a].U*d[b].U, 0.015*d[a].U*d[b].U)
+		}
+	}
+	if _, err := gum.NewJoint(d, []gum.Correlation{{I: 0, J: 2, R: 2}}); err == nil {
+		t.Error("r = 2 is accepted")
+	}
+}
+
 // TestJointReadings reproduces JCGM 100:2008 H.2.2 (values from memory): five
 // simultaneous readings of voltage, current and phase, and the resistance from
 // them.
@@ -814,6 +844,9 @@ func TestCancel(t *testing.T) {
 		took := time.Duration(time.Now().UnixNano() - last.Load())
 		if !errors.Is(err, context.Canceled) {
 			t.Fatalf("error %v, want that of the context", err)
+		}
+		if !strings.Contains(err.Error(), "stopped after 3") {
+			t.Errorf("error %q does not say how far the run came", err)
 		}
 		t.Logf("ended %v after cancel", took)
 	}

@@ -2,6 +2,7 @@ package gum
 
 import (
 	"context"
+	"fmt"
 	"runtime"
 	"sync"
 	"sync/atomic"
@@ -68,7 +69,7 @@ func (r *runner) blocks(ctx context.Context, first, last, trials int64, count bo
 	}
 	n := int(min(int64(len(r.worker)), last-first))
 	if n <= 1 {
-		return work(0)
+		return r.stopped(work(0))
 	}
 	errs := make([]error, n)
 	var wg sync.WaitGroup
@@ -79,10 +80,21 @@ func (r *runner) blocks(ctx context.Context, first, last, trials int64, count bo
 	wg.Wait()
 	for _, err := range errs {
 		if err != nil {
-			return err
+			return r.stopped(err)
 		}
 	}
 	return nil
+}
+
+// stopped says how far a run came that its context ended.
+func (r *runner) stopped(err error) error {
+	switch {
+	case err == nil:
+		return nil
+	case r.total > 0:
+		return fmt.Errorf("Monte Carlo stopped after %d of %d trials: %w", r.done.Load(), r.total, err)
+	}
+	return fmt.Errorf("Monte Carlo stopped after %d trials: %w", r.done.Load(), err)
 }
 
 // blockCount returns how many blocks hold n trials.
