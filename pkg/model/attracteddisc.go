@@ -101,6 +101,17 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 		}
 		return g
 	}
+	// The same without jets: BalanceForce written out.
+	perMassValue := func(q []float64) float64 {
+		g := q[iGrav]
+		if !surveyed {
+			g = field.GravityJet(jet.Const(q[iLat]), jet.Const(q[iHeight])).V + q[iAnomaly]
+		}
+		if s.On["balance"] {
+			g *= 1 - q[iRho]/field.ConventionalDensity
+		}
+		return g
+	}
 	m := &Model{Response: response, Predictors: []string{"voltage", "gap"}}
 	m.Row = func(q, x []jet.Jet) jet.Jet {
 		d := x[1].Add(q[iOff])
@@ -150,7 +161,7 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 			edge = 1 + q[iEdge]*step/r
 		}
 		if response == "mass" {
-			scale /= perMassValue(perMass, q)
+			scale /= perMassValue(q)
 		}
 		vc, off := q[iVc], q[iOff]
 		xv, xd := x[0], x[1]
@@ -292,13 +303,4 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 			Signature: func(q, x []float64, f, t float64) float64 { return f * (x[1] + q[iOff]) }},
 	}
 	return m, nil
-}
-
-// perMassValue evaluates a jet function of the scalars at plain numbers.
-func perMassValue(f func(q []jet.Jet) jet.Jet, q []float64) float64 {
-	c := make([]jet.Jet, len(q))
-	for i, v := range q {
-		c[i] = jet.Const(v)
-	}
-	return f(c).V
 }
