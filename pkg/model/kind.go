@@ -199,10 +199,16 @@ func register(k *Kind) *Kind {
 	if kinds[k.Name] != nil {
 		panic("model: " + k.Name + " registered twice")
 	}
-	k.Corrections = append(k.Corrections, Correction{Name: "zero", Doc: "zero of the response, from readings of kind \"zero\""})
-	k.Options = append(k.Options, Option{Key: "corrections.zero.method",
-		Doc:    "how the zero is found between zero readings: interpolate in time, a linear drift, or one mean",
-		Values: []string{"interpolate", "linear", "mean"}, Default: "interpolate"})
+	k.Corrections = append(k.Corrections,
+		Correction{Name: "zero", Doc: "zero of the response, from readings of kind \"zero\""},
+		Correction{Name: "blank", Doc: "what the whole cycle reads without the effect, from readings of kind \"blank\""})
+	k.Options = append(k.Options,
+		Option{Key: "corrections.zero.method",
+			Doc:    "how the zero is found between zero readings: interpolate in time (ABA, ABBA), a linear drift, one mean, or a zero that settles exponentially",
+			Values: []string{"interpolate", "linear", "mean", "exponential"}, Default: "interpolate"},
+		Option{Key: "corrections.blank.method",
+			Doc:    "how the blank is found between blank readings, after the zero has been taken off them: as for the zero",
+			Values: []string{"interpolate", "linear", "mean", "exponential"}, Default: "mean"})
 	kinds[k.Name] = k
 	return k
 }

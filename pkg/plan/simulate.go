@@ -176,6 +176,9 @@ func response(b *bench.Bench, m *model.Model, q [][]float64, of []int, x [][]flo
 		if t.ZeroRate != 0 && b.Rows.HasTime {
 			y[i] += t.ZeroRate * (b.Rows.Time[i] - b.Rows.Time[0])
 		}
+		if t.ZeroSettling != 0 && b.Rows.HasTime {
+			y[i] += t.ZeroSettling * math.Exp(-(b.Rows.Time[i]-b.Rows.Time[0])/t.ZeroTime)
+		}
 	}
 	for _, g := range ch.Grouped {
 		errs := make([]float64, g.Count)

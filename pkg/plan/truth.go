@@ -25,8 +25,12 @@ type Truth struct {
 	// "channels.NAME.gain" and "channels.NAME.offset".
 	Values map[string]float64
 	// ZeroStart and ZeroRate are the zero of the response at the first record,
-	// and its drift per second.
-	ZeroStart, ZeroRate float64
+	// and its drift per second. ZeroSettling is what it had still to lose at the
+	// first record, with the time constant ZeroTime (s).
+	ZeroStart, ZeroRate, ZeroSettling, ZeroTime float64
+	// Blank is what the cycle of a measurement adds to readings and blanks, and
+	// not to zeros.
+	Blank float64
 	// Faults are added to single readings of the response.
 	Faults []Fault
 }
@@ -43,9 +47,14 @@ type truthFile struct {
 	Seed   uint64            `toml:"seed"`
 	Truth  map[string]string `toml:"truth"`
 	Zero   struct {
-		Start   string `toml:"start"`
-		PerHour string `toml:"per_hour"`
+		Start        string `toml:"start"`
+		PerHour      string `toml:"per_hour"`
+		Settling     string `toml:"settling"`
+		TimeConstant string `toml:"time_constant"`
 	} `toml:"zero"`
+	Blank struct {
+		Add string `toml:"add"`
+	} `toml:"blank"`
 	Fault []struct {
 		Row int    `toml:"row"`
 		Add string `toml:"add"`
@@ -119,6 +128,22 @@ func ReadTruth(b *bench.Bench) (*Truth, error) {
 			return nil, err
 		}
 		t.ZeroRate /= 3600
+	}
+	if f.Zero.Settling != "" {
+		if t.ZeroSettling, err = quantity("zero.settling", f.Zero.Settling, response); err != nil {
+			return nil, err
+		}
+		if t.ZeroTime, err = quantity("zero.time_constant", f.Zero.TimeConstant, si.MustUnit("s")); err != nil {
+			return nil, err
+		}
+		if !(t.ZeroTime > 0) {
+			return nil, fmt.Errorf("%s: zero.time_constant: %q must be above zero", path, f.Zero.TimeConstant)
+		}
+	}
+	if f.Blank.Add != "" {
+		if t.Blank, err = quantity("blank.add", f.Blank.Add, response); err != nil {
+			return nil, err
+		}
 	}
 	for _, x := range f.Fault {
 		add, err := quantity("fault.add", x.Add, response)
