@@ -59,13 +59,20 @@ func disc(n int) *Problem {
 	}
 }
 
-func BenchmarkFit(b *testing.B) {
+// BenchmarkFit gives estimates, covariance, residuals, chi-squared and condition:
+// what the baseline gives. BenchmarkFitDiagnostics adds leverage, studentised
+// residuals and Cook's distances.
+func BenchmarkFit(b *testing.B) { benchmarkFit(b, Settings{SkipDiagnostics: true}) }
+
+func BenchmarkFitDiagnostics(b *testing.B) { benchmarkFit(b, Settings{}) }
+
+func benchmarkFit(b *testing.B, s Settings) {
 	for _, n := range []int{40, 1000, 100000} {
 		b.Run(fmt.Sprintf("attracted-disc/n=%d", n), func(b *testing.B) {
 			p := disc(n)
 			b.ReportAllocs()
 			for b.Loop() {
-				r, err := Fit(context.Background(), p, Settings{})
+				r, err := Fit(context.Background(), p, s)
 				if err != nil || r.Status != Converged {
 					b.Fatal(err, r)
 				}

@@ -80,20 +80,21 @@ type EIVResult struct {
 // problem with the points eliminated, in O(rows), and holds for singular V. The
 // covariance of θ at the end is (AᵀS⁻²A)⁻¹ at the adjusted points.
 type eivState struct {
-	p         *EIVProblem
-	s         *search
-	n, m      int
-	started   bool
-	xi, xt    [][]float64 // estimates of the predictors: present and trial
-	dx, dt    [][]float64 // ∂f/∂x there
-	w, wt     []float64   // 1/s there
-	vx        [][]float64 // variances of the predictors, nil column: exact
-	vy        []float64   // variance of the response, nil: exact or implicit
-	e         []float64   // scratch
-	hi, lo    []float64   // for differences
-	scale     []float64   // size of each predictor, for differences near zero
-	slab, own []float64
-	bad       int // a row whose condition no uncertain reading moves, −1 none
+	p       *EIVProblem
+	s       *search
+	n, m    int
+	started bool
+	xi, xt  [][]float64 // estimates of the predictors: present and trial
+	dx, dt  [][]float64 // ∂f/∂x there
+	w, wt   []float64   // 1/s there
+	vx      [][]float64 // variances of the predictors, nil column: exact
+	vy      []float64   // variance of the response, nil: exact or implicit
+	e       []float64   // scratch
+	hi, lo  []float64   // for differences
+	scale   []float64   // size of each predictor, for differences near zero
+	slab    *[]float64
+	own     []float64
+	bad     int // a row whose condition no uncertain reading moves, −1 none
 }
 
 // FitEIV adjusts the free parameters of p, and the true places of its points,
@@ -235,8 +236,8 @@ func (p *EIVProblem) check() (*Problem, []int, int, error) {
 func newEIV(p *EIVProblem, s *search) *eivState {
 	n, m := len(s.y), len(p.X)
 	t := &eivState{p: p, s: s, n: n, m: m, bad: -1}
-	slab := takeSlab(n * (4*m + 4))
-	t.slab = slab
+	t.slab = takeSlab(n * (4*m + 4))
+	slab := *t.slab
 	take := func() []float64 {
 		v := slab[:n:n]
 		slab = slab[n:]

@@ -23,12 +23,24 @@ type spectrum struct {
 	factor [][]float64 // columns of B with (JᵀΣ⁻¹J)⁻¹ = BBᵀ, over all free parameters
 }
 
+// take hands out zeroed memory for what is small and leaves with the result.
+func (f *fitter) take(k int) []float64 {
+	if len(f.small) < k {
+		q, np := f.search.q, len(f.p.Parameters)
+		f.small = make([]float64, k+4*q*q+2*q+np*np+4*np)
+	}
+	v := f.small[:k:k]
+	f.small = f.small[k:]
+	return v
+}
+
 // analyse decomposes the triangle at the end of the search.
 func (f *fitter) analyse() *spectrum {
 	s := &f.search
 	q, ld := s.q, s.q+1
-	sp := &spectrum{}
-	a := make([]float64, q*q)
+	ints := make([]int, 2*q)
+	sp := &spectrum{idx: ints[:0:q], null: ints[q : q : 2*q], norm: f.take(q)[:0], factor: make([][]float64, 0, q)}
+	a := f.take(q * q)
 	for k := 0; k < q; k++ {
 		if s.held != nil && s.held[k] {
 			continue
@@ -36,7 +48,7 @@ func (f *fitter) analyse() *spectrum {
 		l := len(sp.idx)
 		sp.idx = append(sp.idx, k)
 		c := columnNorm(k, ld, s.now.r)
-		if s.collapsed && c < 1e-7*s.d[k] {
+		if s.collapsed && s.silent(k, c) {
 			c = 0 // this parameter ran to where the readings no longer respond
 		}
 		sp.norm = append(sp.norm, c)
@@ -58,7 +70,7 @@ func (f *fitter) analyse() *spectrum {
 		}
 		a = c
 	}
-	sp.s, sp.v = make([]float64, m), make([]float64, m*m)
+	sp.s, sp.v = f.take(m), f.take(m*m)
 	jacobiSVD(m, a, sp.s, sp.v)
 	top, low := 0.0, math.Inf(1)
 	for _, x := range sp.s {
@@ -78,7 +90,7 @@ func (f *fitter) analyse() *spectrum {
 		if !(x > limit*top) {
 			continue
 		}
-		col := make([]float64, q)
+		col := f.take(q)
 		for l, at := range sp.idx {
 			col[at] = sp.v[k*m+l] / (x * sp.norm[l])
 		}
@@ -187,26 +199,33 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	r.ChiSquared = s.chi2
 	r.DOF = n + f.priors - (len(sp.idx) - len(sp.null))
 
-	slab := make([]float64, 7*n)
+	columns := 7
+	if f.set.SkipDiagnostics {
+		columns = 3
+	}
+	slab := make([]float64, columns*n)
 	take := func() []float64 {
 		v := slab[:n:n]
 		slab = slab[n:]
 		return v
 	}
-	r.Fitted, r.Residuals, r.Standardised, r.Weights = take(), take(), take(), take()
+	r.Fitted, r.Residuals, r.Weights = take(), take(), take()
 	copy(r.Fitted, s.f)
 	if f.exact != nil && s.white.diagonal() {
 		for i, v := range f.exact.residuals[:n] {
 			r.Residuals[i] = v / s.white.w[i]
 			r.Fitted[i] = s.y[i] - r.Residuals[i]
+			r.RSS += r.Residuals[i] * r.Residuals[i]
 		}
 	} else {
+		res, fit := r.Residuals[:n], s.f[:n]
+		var a, b float64
 		for i, y := range s.y {
-			r.Residuals[i] = y - s.f[i]
+			e := y - fit[i]
+			res[i] = e
+			a, b = b, a+e*e
 		}
-	}
-	for _, v := range r.Residuals {
-		r.RSS += v * v
+		r.RSS = a + b
 	}
 	r.ResidualSD, r.BirgeRatio, r.PValue = math.NaN(), math.NaN(), math.NaN()
 	if r.DOF > 0 {
@@ -244,27 +263,24 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	r.white, r.factor = &f.white, sp.factor
 	r.jac = s.columns()
 	r.problem, r.settings = p, f.set
-	r.priorW = append([]float64(nil), s.priorW...)
+	r.priorW = f.take(len(s.priorW))
+	copy(r.priorW, s.priorW)
 
 	// rows
-	root := math.Sqrt(scale)
 	if s.white.diagonal() {
+		inv := 1 / scale
 		for i, w := range s.white.w {
-			w /= root
-			r.Weights[i] = w * w
-			r.Standardised[i] = r.Residuals[i] * w
+			r.Weights[i] = w * w * inv
 		}
 	} else {
 		for i := range r.Weights {
-			v := s.white.variance(i) * scale
-			r.Weights[i] = 1 / v
-			r.Standardised[i] = r.Residuals[i] / math.Sqrt(v)
+			r.Weights[i] = 1 / (s.white.variance(i) * scale)
 		}
 	}
 	if f.set.SkipDiagnostics {
 		return r, nil
 	}
-	r.Leverage, r.Studentised, r.CooksDistance = take(), take(), take()
+	r.Standardised, r.Leverage, r.Studentised, r.CooksDistance = take(), take(), take(), take()
 	if err := ctx.Err(); err != nil {
 		return nil, fmt.Errorf("lsq: fit cancelled: %w", err)
 	}
@@ -276,30 +292,26 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 // cov(r) = Σ − J C Jᵀ (derived; for independent readings these are the usual
 // ones: Cook, Technometrics 19 (1977) 15).
 func (r *Result) influence() {
-	h := r.Leverage
+	n := len(r.Fitted)
+	std, h, stud, cook := r.Standardised[:n], r.Leverage[:n], r.Studentised[:n], r.CooksDistance[:n]
 	if r.scale == 0 || math.IsNaN(r.scale) {
-		fill(h, math.NaN())
-		fill(r.Studentised, math.NaN())
-		fill(r.CooksDistance, math.NaN())
+		for _, v := range [][]float64{std, h, stud, cook} {
+			fill(v, math.NaN())
+		}
 		return
 	}
-	for _, b := range r.factor {
-		switch len(b) {
-		case 2:
-			j0, j1 := r.jac[0], r.jac[1]
-			for i := range h {
-				z := j0[i]*b[0] + j1[i]*b[1]
-				h[i] += z * z
-			}
-		case 3:
-			j0, j1, j2 := r.jac[0][:len(h)], r.jac[1][:len(h)], r.jac[2][:len(h)]
-			b0, b1, b2 := b[0], b[1], b[2]
-			for i := range h {
-				z := j0[i]*b0 + j1[i]*b1 + j2[i]*b2
-				h[i] += z * z
-			}
-		default:
-			z := r.Studentised // free until below
+	if q := len(r.factor); q == len(r.jac) && q == 3 {
+		j0, j1, j2 := r.jac[0][:n], r.jac[1][:n], r.jac[2][:n]
+		a, b, c := r.factor[0], r.factor[1], r.factor[2]
+		a0, a1, a2, b0, b1, b2, c0, c1, c2 := a[0], a[1], a[2], b[0], b[1], b[2], c[0], c[1], c[2]
+		for i := range h {
+			x, y, z := j0[i], j1[i], j2[i]
+			p, s, t := x*a0+y*a1+z*a2, x*b0+y*b1+z*b2, x*c0+y*c1+z*c2
+			h[i] = p*p + s*s + t*t
+		}
+	} else {
+		z := stud // free until below
+		for _, b := range r.factor {
 			clear(z)
 			for k, x := range b {
 				if x != 0 {
@@ -313,18 +325,23 @@ func (r *Result) influence() {
 			}
 		}
 	}
-	q := float64(len(r.factor))
+	per := 1 / float64(len(r.factor))
+	res, wts := r.Residuals[:n], r.Weights[:n]
 	for i := range h {
-		h[i] *= r.Weights[i] * r.scale
-		if h[i] >= 1-1e-12 {
+		e := res[i] * math.Sqrt(wts[i])
+		std[i] = e
+		l := h[i] * wts[i] * r.scale
+		if l >= 1-1e-12 {
 			// the fit follows this reading whatever it is
-			h[i] = math.Min(h[i], 1)
-			r.Studentised[i], r.CooksDistance[i] = math.NaN(), math.NaN()
+			h[i] = math.Min(l, 1)
+			stud[i], cook[i] = math.NaN(), math.NaN()
 			continue
 		}
-		t := r.Standardised[i] / math.Sqrt(1-h[i])
-		r.Studentised[i] = t
-		r.CooksDistance[i] = t * t * h[i] / (q * (1 - h[i]))
+		h[i] = l
+		inv := 1 / (1 - l)
+		t2 := e * e * inv
+		stud[i] = e * math.Sqrt(inv)
+		cook[i] = t2 * l * inv * per
 	}
 }
 
@@ -422,8 +439,9 @@ func (r *Result) Correlation(i, j int) float64 {
 func (f *fitter) parameters(r *Result, sp *spectrum, scale float64) {
 	s, p := &f.search, f.p
 	np, q := len(p.Parameters), s.q
-	r.Values, r.U = append([]float64(nil), s.theta...), make([]float64, np)
-	r.Covariance = mat.NewSymDense(np, nil)
+	r.Values, r.U = f.take(np), f.take(np)
+	copy(r.Values, s.theta)
+	r.Covariance = mat.NewSymDense(np, f.take(np*np))
 	var involved []bool
 	if len(sp.null) > 0 {
 		r.Confounded, involved = f.confounded(sp)
@@ -433,7 +451,7 @@ func (f *fitter) parameters(r *Result, sp *spectrum, scale float64) {
 			r.warn("%s; their uncertainties are unknown", c)
 		}
 	}
-	r.inv = make([]float64, q*q)
+	r.inv = f.take(q * q)
 	for _, b := range sp.factor {
 		for i, x := range b {
 			for j, y := range b {

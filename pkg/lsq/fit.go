@@ -58,7 +58,8 @@ type fitter struct {
 	lastU    []float64
 	lastLoad []float64
 
-	noise       float64 // estimated equal uncertainty when U is unknown and priors or effects need it
+	noise       float64   // estimated equal uncertainty when U is unknown and priors or effects need it
+	small       []float64 // see take
 	reweighting int
 	restarts    int
 	warnings    []error
@@ -190,7 +191,7 @@ func (f *fitter) fit(ctx context.Context) error {
 	s := &f.search
 	s.init(f.p, f.p.Y, f.free, &f.white)
 	s.tol, s.maxIter = f.set.Tolerance, f.set.MaxIterations
-	start := make([]float64, len(f.p.Parameters))
+	start := f.take(len(f.p.Parameters))
 	for j := range start {
 		start[j] = f.p.Parameters[j].Start
 	}

@@ -35,7 +35,8 @@ type search struct {
 	now, next     fold
 	chi2          float64
 	d, x, rx      []float64
-	slab, own     []float64   // pooled scratch; columns that leave with the result
+	slab          *[]float64  // pooled scratch
+	own           []float64   // what leaves with the result
 	wcols         [][]float64 // whitened copies when the covariance is not diagonal
 	wres          []float64
 	trust         trust
@@ -64,7 +65,7 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 	s.slab = takeSlab(2*n + n*q + 4*np + 3*q + 2*tri + (q+1)*(m+1) + q*q + 3*q)
 	at := 0
 	take := func(k int) []float64 {
-		v := s.slab[at : at+k : at+k]
+		v := (*s.slab)[at : at+k : at+k]
 		at += k
 		return v
 	}
@@ -134,18 +135,20 @@ func (s *search) release() {
 // slabs keeps scratch memory between fits: they come in series of one size.
 var slabs sync.Pool
 
-func takeSlab(n int) []float64 {
+func takeSlab(n int) *[]float64 {
 	if p, ok := slabs.Get().(*[]float64); ok {
 		if cap(*p) >= n && cap(*p) <= 8*n+4096 {
-			return (*p)[:n]
+			*p = (*p)[:n]
+			return p
 		}
 	}
-	return make([]float64, n)
+	v := make([]float64, n)
+	return &v
 }
 
-func giveSlab(v []float64) {
-	if v != nil {
-		slabs.Put(&v)
+func giveSlab(p *[]float64) {
+	if p != nil {
+		slabs.Put(p)
 	}
 }
 
@@ -575,6 +578,14 @@ func (s *search) polish(ctx context.Context, norm float64) error {
 	}
 }
 
+// silent reports that the readings no longer respond to free parameter k, whose
+// column has the length c: the column has shrunk to nothing, and even a change of
+// the parameter by its own size moves the model by less than a millionth of the
+// residuals.
+func (s *search) silent(k int, c float64) bool {
+	return c < 1e-7*s.d[k] && c*math.Abs(s.theta[s.free[k]]) < 1e-6*math.Sqrt(s.chi2/float64(len(s.y)))
+}
+
 // accept makes the trial point the current one.
 func (s *search) accept() {
 	s.theta, s.trial = s.trial, s.theta
@@ -591,9 +602,7 @@ func (s *search) accept() {
 	s.collapsed = false
 	for k := range s.d {
 		c := columnNorm(k, s.q+1, s.now.r)
-		if c < 1e-7*s.d[k] {
-			s.collapsed = true
-		}
+		s.collapsed = s.collapsed || s.silent(k, c)
 		s.d[k] = math.Max(s.d[k], c)
 	}
 }

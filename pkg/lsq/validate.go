@@ -70,6 +70,7 @@ func (p *Problem) validate() (free []int, priors int, err error) {
 			return nil, 0, err
 		}
 	}
+	free = make([]int, 0, len(p.Parameters))
 	for j := range p.Parameters {
 		q := &p.Parameters[j]
 		if !finite(q.Start) {
