@@ -15,7 +15,10 @@ const batch = 8
 // criterion met by all of them: sequences of M trials, M the larger of 10⁴ and the
 // smallest integer not below 100/(1−p), here rounded up to whole blocks, until twice
 // the standard deviation of the average over the sequences is at most δ for the
-// estimate, the standard uncertainty and both ends of the symmetric interval.
+// estimate, the standard uncertainty and both ends of the symmetric interval. δ is
+// that of the average standard uncertainty. Where an output has no mean or no standard
+// deviation the criterion does without, and δ is that of the half-width of the interval
+// over the k of a normal.
 func (r *runner) adaptive(ctx context.Context, res *Result) error {
 	s := r.s
 	per := blockCount(max(10_000, int64(math.Ceil(100/(1-s.Probability)*(1-1e-12))))) // blocks a sequence
@@ -34,6 +37,10 @@ func (r *runner) adaptive(ctx context.Context, res *Result) error {
 		buffer[o] = make([]float64, batch*m)
 	}
 	track := make([]tracker, outputs)
+	for o := range track {
+		mean, variance, _ := r.plan.existing(r.worker[0].eval[o])
+		track[o] = tracker{k: CoverageFactor(s.Probability, math.Inf(1)), use: [4]bool{mean, variance, true, true}}
+	}
 	var tallies *tallies
 	r.total = 0 // unknown
 	h := int64(0)
@@ -62,7 +69,7 @@ func (r *runner) adaptive(ctx context.Context, res *Result) error {
 			seq := make([][]float64, outputs)
 			for o := range seq {
 				seq[o] = buffer[o][k*m : (k+1)*m]
-				sample, err := summarise(seq[o], s.Probability, 1)
+				sample, err := summarise(seq[o], s.Probability, 1, false)
 				if err != nil {
 					return fmt.Errorf("output %s: %w", res.Outputs[o].Name, err)
 				}
@@ -91,6 +98,8 @@ func (r *runner) adaptive(ctx context.Context, res *Result) error {
 
 // A tracker follows one output over the sequences.
 type tracker struct {
+	k    float64
+	use  [4]bool // which of the four exist
 	h    float64
 	mean [4]float64 // of estimate, u, and the interval's ends
 	ss   [4]float64
@@ -107,9 +116,13 @@ func (t *tracker) met(s *Sample, digits int) bool {
 	if t.h < 2 {
 		return false
 	}
-	delta := tolerance(t.mean[1], digits)
-	for _, ss := range t.ss {
-		if !(2*math.Sqrt(ss/(t.h*(t.h-1))) <= delta) {
+	u := t.mean[1]
+	if !t.use[1] {
+		u = (t.mean[3] - t.mean[2]) / (2 * t.k)
+	}
+	delta := tolerance(u, digits)
+	for i, ss := range t.ss {
+		if t.use[i] && !(2*math.Sqrt(ss/(t.h*(t.h-1))) <= delta) {
 			return false
 		}
 	}

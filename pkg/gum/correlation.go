@@ -45,11 +45,14 @@ func CheckCorrelation(r *mat.SymDense, names []string) error {
 	if err != nil {
 		return err
 	}
+	if near, err = rounded(near); err != nil {
+		return err
+	}
 	var changed []string
 	for i := range n {
 		for j := range i {
 			if math.Abs(near.At(i, j)-r.At(i, j)) > 5e-7 {
-				changed = append(changed, fmt.Sprintf("%s–%s %.6f instead of %v", names[j], names[i], towardsZero(near.At(i, j)), r.At(i, j)))
+				changed = append(changed, fmt.Sprintf("%s–%s %v instead of %v", names[j], names[i], near.At(i, j), r.At(i, j)))
 			}
 		}
 	}
@@ -57,9 +60,26 @@ func CheckCorrelation(r *mat.SymDense, names []string) error {
 		strings.Join(names, ", "), values[0], n, strings.Join(changed, ", "))
 }
 
-// towardsZero rounds to six decimals, never away from zero, so that an offered
-// coefficient is itself possible.
-func towardsZero(x float64) float64 { return math.Trunc(x*1e6) / 1e6 }
+// rounded returns r with few decimals and still possible: four where that leaves no
+// negative eigenvalue, else six after a slight shrink towards no correlation.
+func rounded(r *mat.SymDense) (*mat.SymDense, error) {
+	n := r.SymmetricDim()
+	out := mat.NewSymDense(n, nil)
+	round := func(shrink, digits float64) {
+		for i := range n {
+			for j := range i {
+				out.SetSym(i, j, math.Round(r.At(i, j)*shrink*digits)/digits)
+			}
+			out.SetSym(i, i, 1)
+		}
+	}
+	round(1, 1e4)
+	values, err := eigenvalues(out)
+	if err == nil && values[0] < -1e-12*float64(n) {
+		round(1-1e-6*float64(n), 1e6)
+	}
+	return out, err
+}
 
 func eigenvalues(r *mat.SymDense) ([]float64, error) {
 	var e mat.EigenSym

@@ -1,14 +1,51 @@
 package gum_test
 
 import (
+	"fmt"
 	"math"
 	"strings"
 	"testing"
 
 	"gonum.org/v1/gonum/mat"
+	"pgregory.net/rapid"
 
 	"example.org/guardring/pkg/gum"
 )
+
+// TestOfferedCorrelations: what an error offers is accepted, to the digits printed.
+func TestOfferedCorrelations(t *testing.T) {
+	rapid.Check(t, func(t *rapid.T) {
+		n := rapid.IntRange(2, 6).Draw(t, "n")
+		r := mat.NewSymDense(n, nil)
+		names := []string{"a", "b", "c", "d", "e", "f"}[:n]
+		for i := range n {
+			r.SetSym(i, i, 1)
+			for j := range i {
+				r.SetSym(i, j, rapid.Float64Range(-1, 1).Draw(t, "r"))
+			}
+		}
+		err := gum.CheckCorrelation(r, names)
+		if err == nil {
+			return
+		}
+		_, offers, ok := strings.Cut(err.Error(), "the nearest possible ones are ")
+		if !ok {
+			t.Fatal(err)
+		}
+		for _, o := range strings.Split(offers, ", ") {
+			var pair string
+			var x, was float64
+			if _, err := fmt.Sscanf(o, "%s %g instead of %g", &pair, &x, &was); err != nil {
+				t.Fatalf("%q: %v", o, err)
+			}
+			a, b, _ := strings.Cut(pair, "–")
+			r.SetSym(int(a[0]-'a'), int(b[0]-'a'), x)
+		}
+		if err := gum.CheckCorrelation(r, names); err != nil {
+			t.Fatalf("offered %s: %v", offers, err)
+		}
+	})
+}
 
 // TestNearestCorrelation reproduces the example of Higham, IMA J. Numer. Anal. 22
 // (2002) 329, section 1 or 4 (value from memory): the nearest correlation matrix to

@@ -5,6 +5,8 @@ import (
 	"fmt"
 	"log"
 
+	"gonum.org/v1/gonum/mat"
+
 	"example.org/guardring/pkg/formula"
 	"example.org/guardring/pkg/gum"
 )
@@ -86,4 +88,33 @@ func ExampleMerge() {
 	// Output:
 	// 300000 trials: y = 9.009, u = 0.601
 	// part 3 of 3 is missing
+}
+
+// A budget combined by hand: two lines of known uncertainty and one of ten readings.
+func ExampleCombine() {
+	law, err := gum.Combine(8.85e-12, []gum.Contribution{
+		{Input: "force", U: 1.0e-5, Sensitivity: 8.4e-10},
+		{Input: "spacing", U: 2.0e-6, Sensitivity: 8.6e-9},
+		{Input: "readings", U: 1.2e-14, DOF: 9, Sensitivity: 1},
+	}, nil, 0.95)
+	if err != nil {
+		log.Fatal(err)
+	}
+	fmt.Printf("u = %.3g, degrees of freedom %.1f, k = %.2f\n", law.U, law.DOF, law.K)
+	for _, c := range law.Budget {
+		fmt.Printf("%-9s %4.1f %%\n", c.Input, 100*c.Share)
+	}
+	// Output:
+	// u = 2.26e-14, degrees of freedom 113.1, k = 1.98
+	// force     13.8 %
+	// spacing   58.0 %
+	// readings  28.2 %
+}
+
+// Three correlations that can't hold at once.
+func ExampleCheckCorrelation() {
+	r := mat.NewSymDense(3, []float64{1, 0.9, -0.9, 0.9, 1, 0.9, -0.9, 0.9, 1})
+	fmt.Println(gum.CheckCorrelation(r, []string{"radius", "gain", "offset"}))
+	// Output:
+	// the correlations of radius, gain, offset can't all hold: smallest eigenvalue of their matrix is -0.8, of 3, and none may be negative; the nearest possible ones are radius–gain 0.5 instead of 0.9, radius–offset -0.5 instead of -0.9, gain–offset 0.5 instead of 0.9
 }

@@ -270,6 +270,14 @@ func TestCalliper(t *testing.T) {
 	}
 }
 
+// TestBlockCalibrator: the coverage factor of EA-4/02 S11 (from memory, least sure):
+// two rectangular inputs of 144 and 58 mK at 95.45 %.
+func TestBlockCalibrator(t *testing.T) {
+	var ref struct{ Expected map[string]float64 }
+	reference(t, "ea402", "ea-S11", &ref)
+	near(t, "k", gum.TrapezoidFactor(0.9545, (144.0-58)/(144+58)), ref.Expected["k"], 0.01)
+}
+
 // TestCoverageFactor compares with JCGM 100:2008 table G.2 (values from memory).
 func TestCoverageFactor(t *testing.T) {
 	inf := math.Inf(1)
@@ -331,6 +339,30 @@ func TestCombineRefuses(t *testing.T) {
 	if _, err := gum.Combine(math.NaN(), nil, nil, 0.95); err == nil {
 		t.Error("a value that is not a number is accepted")
 	}
+}
+
+// TestCorrelatedDOF: correlated inputs of known uncertainty are one component that
+// adds no doubt; the formula goes on with the others (JCGM 100:2008 G.4.1, derived for
+// the component).
+func TestCorrelatedDOF(t *testing.T) {
+	lines := []gum.Contribution{{Input: "a", U: 3, Sensitivity: 1}, {Input: "b", U: 4, Sensitivity: 1}, {Input: "c", U: 2, Sensitivity: 1, DOF: 5},
+		{Input: "idle", U: 1, DOF: 3}}
+	// idle has no sensitivity, so its correlation with c is nothing to the output
+	l, err := gum.Combine(0, lines, []gum.Correlation{{I: 0, J: 1, R: 0.5}, {I: 2, J: 3, R: 0.9}}, 0.95)
+	if err != nil {
+		t.Fatal(err)
+	}
+	u2 := 9 + 16 + 12 + 4.0
+	near(t, "u", l.U, math.Sqrt(u2), 1e-12)
+	near(t, "degrees of freedom", l.DOF, u2*u2/(16/5.0), 1e-9)
+	if len(l.Warnings) != 0 {
+		t.Errorf("warnings %v", l.Warnings)
+	}
+	var shares float64
+	for _, c := range l.Budget {
+		shares += c.Share
+	}
+	near(t, "sum of shares", shares, 1, 1e-12)
 }
 
 // TestFullCorrelation: JCGM 100:2008 5.2.2 note 1, all inputs correlated with r = 1:

@@ -117,10 +117,7 @@ func (r *runner) keep(ctx context.Context, trials int64) ([][]float64, error) {
 func (r *Result) fromTrials(y [][]float64, s Settings, workers int) error {
 	r.Trials = int64(len(y[0]))
 	for o := range y {
-		sample, err := summarise(y[o], s.Probability, workers)
-		if err == nil {
-			err = sample.checkUndefined()
-		}
+		sample, err := summarise(y[o], s.Probability, workers, true)
 		if err != nil {
 			return fmt.Errorf("output %s: %w", r.Outputs[o].Name, err)
 		}

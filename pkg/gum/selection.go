@@ -17,14 +17,7 @@ func Summarise(y []float64, p float64) (*Sample, error) {
 	if err := checkProbability(p); err != nil {
 		return nil, err
 	}
-	s, err := summarise(y, p, 1)
-	if err == nil {
-		err = s.checkUndefined()
-	}
-	if err != nil {
-		return nil, err
-	}
-	return s, nil
+	return summarise(y, p, 1, true)
 }
 
 // checkUndefined reports too many undefined trials, and warns of any.
@@ -83,11 +76,12 @@ func binOf(g *grid, inverse, v float64) int {
 	return selectionBins + 1
 }
 
-// summarise is Summarise on several processors, without judging undefined trials; their number does not change a bit
-// of the answer. Trials are counted in rough bins; the bins that hold the two tails
+// summarise is Summarise on several processors; their number does not change a bit
+// of the answer. Whether there are too many undefined trials is judged on request.
+// Trials are counted in rough bins; the bins that hold the two tails
 // are gathered and ordered, which gives the order statistics that the intervals
 // need without ordering the rest.
-func summarise(y []float64, p float64, workers int) (*Sample, error) {
+func summarise(y []float64, p float64, workers int, judge bool) (*Sample, error) {
 	s := &Sample{Trials: len(y), Probability: p}
 	g := roughGrid(y, p)
 	inverse := 1 / g.width
@@ -107,6 +101,11 @@ func summarise(y []float64, p float64, workers int) (*Sample, error) {
 		}
 	}
 	s.combine(segments)
+	if judge {
+		if err := s.checkUndefined(); err != nil {
+			return nil, err
+		}
+	}
 	n := len(y) - s.Undefined
 	q, err := coverCount(n, p)
 	if err != nil {
