@@ -19,6 +19,7 @@ import (
 	"example.org/guardring/pkg/kernel/docindex"
 	"example.org/guardring/pkg/kernel/gointerp"
 	"example.org/guardring/pkg/kernel/symbols"
+	"example.org/guardring/pkg/reduce"
 )
 
 // What the files of gophernotes expect their main file to define.
@@ -73,7 +74,7 @@ func serve(path string) error {
 			Shell: sockets.ShellSocket.Socket, Control: sockets.ControlSocket.Socket, Stdin: sockets.StdinSocket.Socket,
 			IOPub: sockets.IOPubSocket.Socket, Heartbeat: sockets.HBSocket.Socket,
 		},
-		Key: sockets.Key, Docs: docindex.New(docs), Version: kernel.Version(), Stderr: stderr,
+		Key: sockets.Key, Docs: docindex.New(docs), Version: reduce.Version, Stderr: stderr,
 		Abandon: func() { os.Exit(0) },
 	})
 	if err != nil {

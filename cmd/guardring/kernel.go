@@ -6,6 +6,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"example.org/guardring/pkg/kernel"
+	"example.org/guardring/pkg/reduce"
 )
 
 // kernelCommand is `guardring kernel`: build, install, list and remove the notebook kernel.
@@ -42,7 +43,9 @@ func kernelBuildCommand() *cobra.Command {
 			if err != nil {
 				return err
 			}
-			built, err := kernel.Build(cmd.Context(), dir, output, cmd.ErrOrStderr())
+			ctx, done := withProgress(cmd.Context(), cmd.ErrOrStderr())
+			built, err := kernel.Build(ctx, dir, output, cmd.ErrOrStderr())
+			done()
 			if err != nil {
 				return err
 			}
@@ -72,7 +75,9 @@ func kernelInstallCommand() *cobra.Command {
 			if err != nil {
 				return err
 			}
-			where, built, err := kernel.Install(cmd.Context(), dir, at, cmd.ErrOrStderr())
+			ctx, done := withProgress(cmd.Context(), cmd.ErrOrStderr())
+			where, built, err := kernel.Install(ctx, dir, at, reduce.Version, cmd.ErrOrStderr())
+			done()
 			if err != nil {
 				return err
 			}

@@ -215,6 +215,9 @@ func Build(ctx context.Context, source, binary string, stderr io.Writer) (built 
 	if upToDate(binary, stampFile, stamp) {
 		return false, nil
 	}
+	if stderr != nil {
+		fmt.Fprintln(stderr, "compiling the kernel; the first time takes some minutes")
+	}
 	dir, err := gophernotesDir(ctx, source)
 	if err != nil {
 		return false, err

@@ -122,7 +122,7 @@ func trailingOperand(s string) string {
 		}
 		i -= len(word)
 		j := len(strings.TrimRightFunc(s[:i], unicode.IsSpace))
-		if word == "" || j == 0 || s[j-1] != '.' {
+		if j == 0 || s[j-1] != '.' {
 			break
 		}
 		i = len(strings.TrimRightFunc(s[:j-1], unicode.IsSpace))
@@ -159,23 +159,31 @@ func openingBracket(s string) int {
 }
 
 // insideLiteral reports whether s ends inside a string, a rune or a comment.
-func insideLiteral(s string) bool { return scanCode(s, func(int, byte) {}) }
+func insideLiteral(s string) bool { return scanCode(s, func(int, byte) {}) != inCode }
 
-// scanCode calls visit for every ASCII byte of s outside literals and comments, and reports whether s ends inside
-// one.
-func scanCode(s string, visit func(i int, c byte)) bool {
+// What scanCode may end in.
+const (
+	inCode         = 0
+	inLineComment  = '/'
+	inBlockComment = '*'
+	inRaw          = '`'
+	inQuotes       = '"' // a string or a rune, over at the end of its line
+)
+
+// scanCode calls visit for every ASCII byte of s outside literals and comments, and returns what s ends in.
+func scanCode(s string, visit func(i int, c byte)) (end byte) {
 	for i := 0; i < len(s); {
 		switch c := s[i]; {
 		case c == '/' && strings.HasPrefix(s[i:], "//"):
 			n := strings.IndexByte(s[i:], '\n')
 			if n < 0 {
-				return true
+				return inLineComment
 			}
 			i += n
 		case c == '/' && strings.HasPrefix(s[i:], "/*"):
 			n := strings.Index(s[i+2:], "*/")
 			if n < 0 {
-				return true
+				return inBlockComment
 			}
 			i += n + 4
 		case c == '"' || c == '\'':
@@ -187,13 +195,13 @@ func scanCode(s string, visit func(i int, c byte)) bool {
 				j++
 			}
 			if j >= len(s) {
-				return true
+				return inQuotes
 			}
 			i = j + 1
 		case c == '`':
 			n := strings.IndexByte(s[i+1:], '`')
 			if n < 0 {
-				return true
+				return inRaw
 			}
 			i += n + 2
 		default:
@@ -203,5 +211,5 @@ func scanCode(s string, visit func(i int, c byte)) bool {
 			i++
 		}
 	}
-	return false
+	return inCode
 }

@@ -25,6 +25,7 @@ const (
 	writeTime      = 10 * time.Second // a peer that takes no bytes for that long is dropped
 	maxConnections = 256              // at one socket; a front end needs a handful
 	maxCommand     = 4 << 10          // bytes of the READY command
+	maxUnsent      = 32 << 20         // bytes that wait for a peer to read
 	greetingSize   = 64               // ZMTP 3.0, section "Greeting"
 )
 
@@ -129,6 +130,7 @@ func (l *guardedListener) run() {
 // its own greeting is not sent a second time.
 func guard(c net.Conn, onClose func(), drop func(error)) (net.Conn, error) {
 	g := &guardedConn{Conn: c, onClose: onClose, drop: drop}
+	g.sent = sync.NewCond(&g.mu)
 	fail := func(err error) (net.Conn, error) {
 		_ = g.Close()
 		return nil, err
@@ -222,17 +224,28 @@ type guardedConn struct {
 	once    sync.Once
 
 	replay []byte // bytes already read from the peer
-	in     frames
+	in     frameScan
 
 	writing sync.Mutex
 	swallow int // bytes of the library's greeting still to be thrown away
-	out     frames
+	out     frameScan
 	buffer  []byte // a message not yet complete
+
+	mu     sync.Mutex
+	sent   *sync.Cond // something was sent, or the connection is broken
+	queue  [][]byte   // complete messages
+	unsent int        // bytes in the queue and on their way
+	sender bool       // a goroutine is sending
+	broken bool
 }
 
 func (c *guardedConn) Close() error {
 	err := c.Conn.Close()
 	c.once.Do(c.onClose)
+	c.mu.Lock()
+	c.broken = true
+	c.sent.Broadcast()
+	c.mu.Unlock()
 	return err
 }
 
@@ -253,7 +266,8 @@ func (c *guardedConn) Read(p []byte) (int, error) {
 	return n, err
 }
 
-// Write gathers the pieces of a message and sends them at once.
+// Write gathers the pieces of a message and hands complete ones to a goroutine that sends them, so that a peer that
+// is slow to read holds up no other. It waits only when the peer has not read maxUnsent bytes.
 func (c *guardedConn) Write(p []byte) (int, error) {
 	c.writing.Lock()
 	defer c.writing.Unlock()
@@ -269,25 +283,55 @@ func (c *guardedConn) Write(p []byte) (int, error) {
 	if !c.out.between() || len(c.buffer) == 0 {
 		return n, nil
 	}
-	if err := c.Conn.SetWriteDeadline(time.Now().Add(writeTime)); err != nil {
-		return 0, err
+	message := c.buffer
+	c.buffer = nil
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	for c.unsent > maxUnsent && !c.broken {
+		c.sent.Wait()
 	}
-	_, err := c.Conn.Write(c.buffer)
-	if cap(c.buffer) > 1<<20 {
-		c.buffer = nil
+	if c.broken {
+		return 0, io.EOF // the one error after which the library always forgets a connection
 	}
-	c.buffer = c.buffer[:0]
-	if err != nil {
-		c.drop(fmt.Errorf("a peer that takes no bytes: %w", err))
-		_ = c.Close()
-		return 0, io.EOF
+	c.queue = append(c.queue, message)
+	c.unsent += len(message)
+	if !c.sender {
+		c.sender = true
+		go c.send()
 	}
 	return n, nil
 }
 
-// frames follows ZMTP traffic after the greeting: it knows where frames begin and end, and how long a message has
+// send writes what is queued and ends when there is nothing more.
+func (c *guardedConn) send() {
+	c.mu.Lock()
+	defer c.mu.Unlock()
+	defer func() { c.sender = false }()
+	for len(c.queue) > 0 && !c.broken {
+		batch := net.Buffers(c.queue)
+		c.queue = nil
+		c.mu.Unlock()
+		size, err := 0, c.Conn.SetWriteDeadline(time.Now().Add(writeTime))
+		for _, m := range batch {
+			size += len(m)
+		}
+		if err == nil {
+			_, err = batch.WriteTo(c.Conn)
+		}
+		c.mu.Lock()
+		c.unsent -= size
+		if err != nil && !c.broken {
+			c.broken = true
+			c.drop(fmt.Errorf("a peer that takes no bytes: %w", err))
+			_ = c.Conn.Close() // its reader then ends, and closes the rest
+		}
+		c.sent.Broadcast()
+	}
+}
+
+// frameScan follows ZMTP traffic after the greeting: it knows where frames begin and end, and how long a message has
 // become.
-type frames struct {
+type frameScan struct {
 	head    [9]byte
 	headLen int
 	body    uint64 // bytes of the current frame still to come
@@ -297,10 +341,10 @@ type frames struct {
 }
 
 // between reports whether the traffic so far ends with a complete message.
-func (f *frames) between() bool { return f.headLen == 0 && f.body == 0 && !f.more }
+func (f *frameScan) between() bool { return f.headLen == 0 && f.body == 0 && !f.more }
 
 // pass looks at the next bytes and reports a frame that must not go through.
-func (f *frames) pass(p []byte) error {
+func (f *frameScan) pass(p []byte) error {
 	for len(p) > 0 {
 		if f.body > 0 {
 			n := min(f.body, uint64(len(p)))

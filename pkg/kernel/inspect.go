@@ -116,8 +116,8 @@ func operandAt(code string, at int) string {
 }
 
 func insideComment(s string) bool {
-	line := s[strings.LastIndexByte(s, '\n')+1:]
-	return insideLiteral(s) && strings.Contains(line, "//") && !insideLiteral(s+"\n")
+	end := scanCode(s, func(int, byte) {})
+	return end == inLineComment || end == inBlockComment
 }
 
 // page is what a tooltip says.

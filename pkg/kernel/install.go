@@ -115,8 +115,8 @@ func binaryName() string {
 }
 
 // Install builds the kernel from the module in source and makes it known to Jupyter at a location. It returns the
-// folder of the kernel and whether anything had to be compiled.
-func Install(ctx context.Context, source string, at Location, stderr io.Writer) (dir string, built bool, err error) {
+// folder of the kernel and whether anything had to be compiled. version is written into kernel.json.
+func Install(ctx context.Context, source string, at Location, version string, stderr io.Writer) (dir string, built bool, err error) {
 	data, err := at.dataDir(ctx)
 	if err != nil {
 		return "", false, err
@@ -139,7 +139,7 @@ func Install(ctx context.Context, source string, at Location, stderr io.Writer) 
 		InterruptMode: "message",
 		// A Go installation in sight makes the interpreter load its packages' export data at the start.
 		Env:      map[string]string{"GOROOT": ""},
-		Metadata: map[string]any{"debugger": false, "guardring": map[string]any{"version": Version()}},
+		Metadata: map[string]any{"debugger": false, "guardring": map[string]any{"version": version}},
 	}, "", "  ")
 	if err != nil {
 		return "", false, err

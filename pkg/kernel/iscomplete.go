@@ -5,7 +5,7 @@ import "strings"
 // IsComplete judges whether code can be run as it stands: "complete", "incomplete" with the indent of the next line,
 // or "invalid".
 func IsComplete(in Interpreter, code string) (status, indent string) {
-	depth, bad := 0, false
+	bad := false
 	var stack []byte
 	open := scanCode(code, func(_ int, c byte) {
 		switch c {
@@ -20,14 +20,14 @@ func IsComplete(in Interpreter, code string) (status, indent string) {
 			stack = stack[:len(stack)-1]
 		}
 	})
-	depth = len(stack)
+	depth := len(stack)
 	if bad {
 		return "invalid", ""
 	}
-	if open && !openLineComment(code) {
-		if openLine(code) {
-			return "invalid", "" // an interpreted string ends with its line
-		}
+	switch open {
+	case inQuotes:
+		return "invalid", ""
+	case inRaw, inBlockComment:
 		return "incomplete", ""
 	}
 	if depth > 0 {
@@ -43,20 +43,4 @@ func IsComplete(in Interpreter, code string) (status, indent string) {
 		return "invalid", ""
 	}
 	return "complete", ""
-}
-
-// openLineComment reports whether code ends in a comment that goes to the end of its line.
-func openLineComment(code string) bool {
-	last := code[strings.LastIndexByte(code, '\n')+1:]
-	before := len(code) - len(last)
-	if insideLiteral(code[:before]) {
-		return false
-	}
-	return insideLiteral(code) && !insideLiteral(code+"\n")
-}
-
-// openLine reports whether code ends inside a string or rune that can't go on in the next line.
-func openLine(code string) bool {
-	// After a line break such a literal is over, while a raw string or a comment is not.
-	return !insideLiteral(code + "\n")
 }
