@@ -90,6 +90,9 @@ func newScale(a Axis, data spanner, want int) (*scale, error) {
 	} else if data.n == 0 {
 		return nil, fmt.Errorf("figure: nothing to draw: %s has no finite value", what)
 	}
+	if math.IsInf(1.2*(hi-lo), 0) {
+		return nil, fmt.Errorf("figure: %s runs from %s to %s, too far for an axis", what, si.Exact(lo), si.Exact(hi))
+	}
 	s := &scale{log: a.Log}
 	if a.Log && lo <= 0 {
 		return nil, fmt.Errorf("figure: %s is %s, which a logarithmic axis can't show: leave out values that are not above zero, or use a linear axis", what, si.Exact(lo))
@@ -100,8 +103,8 @@ func newScale(a Axis, data spanner, want int) (*scale, error) {
 	switch {
 	case held:
 	case a.Log:
-		if lo == hi {
-			lo, hi = lo/2, hi*2
+		if hi <= lo*(1+1e-9) {
+			lo, hi = lo/1.05, hi*1.05
 		}
 		pad := math.Pow(hi/lo, 0.05)
 		lo, hi = lo/pad, hi*pad
@@ -123,8 +126,8 @@ func newScale(a Axis, data spanner, want int) (*scale, error) {
 			hi += pad
 		}
 	}
-	if math.IsInf(hi-lo, 0) || math.IsNaN(hi-lo) {
-		return nil, fmt.Errorf("figure: %s runs from %s to %s, too far for an axis", what, si.Exact(lo), si.Exact(hi))
+	if s.lo, s.hi = lo, hi; !finite(s.pos(lo), s.pos(hi)) || hi <= lo {
+		return nil, fmt.Errorf("figure: %s runs from %s to %s, which an axis can't show", what, si.Exact(lo), si.Exact(hi))
 	}
 	s.lo, s.hi = lo, hi
 	largest := math.Max(math.Abs(lo), math.Abs(hi))
@@ -178,18 +181,30 @@ func linearTicks(lo, hi float64, u si.Unit, want int) []tick {
 	}
 	var out []tick
 	first := math.Ceil(dlo/step - 1e-9)
-	for i := first; i*step <= dhi+1e-9*step && len(out) < 400; i++ {
+	for n := range mostTicks {
+		i := first + float64(n)
+		if i*step > dhi+1e-9*step {
+			break
+		}
 		v := multiple(i, step, exp)
 		out = append(out, tick{at: u.ToSI(v), label: plainNumber(v, max(0, -exp))})
 	}
 	small := step / float64(parts)
-	for i := math.Ceil(dlo/small - 1e-9); i*small <= dhi+1e-9*small && len(out) < 400; i++ {
+	first = math.Ceil(dlo/small - 1e-9)
+	for n := range mostTicks * parts {
+		i := first + float64(n)
+		if i*small > dhi+1e-9*small {
+			break
+		}
 		if math.Mod(i, float64(parts)) != 0 {
 			out = append(out, tick{at: u.ToSI(i * small), minor: true})
 		}
 	}
 	return out
 }
+
+// mostTicks bounds the marks of an axis whatever the rounding of its numbers.
+const mostTicks = 60
 
 // multiple returns i × step rounded to its decimals, so that a zero is zero.
 func multiple(i, step float64, exp int) float64 {

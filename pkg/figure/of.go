@@ -82,7 +82,7 @@ func named(f *Figure, err error) func(string) (*Figure, error) {
 		if err != nil {
 			return nil, err
 		}
-		f.Name = name
+		f.Name = fileName(name)
 		return f, nil
 	}
 }

@@ -91,7 +91,7 @@ func (p *panel) axes(f frame) {
 	p.c.draw(minors, minorPen)
 	p.c.draw(majors, axisPen)
 	if !f.noX && p.xs.title != "" {
-		p.c.write(label{x: right, y: bottom + 4 + tickSize + 3 + labelSize, size: labelSize, anchor: 1, s: p.xs.title})
+		p.c.write(label{x: right, y: bottom + 4 + tickSize + 3 + labelSize, size: labelSize, anchor: 1, s: fitted(p.xs.title, labelSize, false, p.w)})
 	}
 	x := left
 	if f.tag != "" {

@@ -113,7 +113,7 @@ func (s *sheet) finish(name, title, caption, summary string) *Figure {
 	var bg path
 	bg.rect(0, 0, s.c.w, s.c.h)
 	s.c.ops = append([]op{{path: bg, pen: pen{fill: paper}}}, s.c.ops...)
-	return &Figure{Name: name, Title: OneLine(title), Caption: caption, Summary: summary, c: s.c}
+	return &Figure{Name: fileName(name), Title: OneLine(title), Caption: caption, Summary: summary, c: s.c}
 }
 
 // count writes a whole number with thin spaces.
@@ -123,7 +123,10 @@ func count(n int) string { return plainNumber(float64(n), 0) }
 func wrap(s string, size, most float64) []string {
 	var out []string
 	line := ""
-	for word := range strings.FieldsSeq(s) {
+	for word := range strings.SplitSeq(s, " ") {
+		if word == "" {
+			continue
+		}
 		word = fitted(word, size, false, most)
 		switch {
 		case line == "":
@@ -151,4 +154,20 @@ func words(name string) string { return strings.ReplaceAll(OneLine(name), "_", "
 // number writes a value for a sentence, three significant digits.
 func number(x float64) string {
 	return signed(strconv.FormatFloat(x, 'g', 3, 64))
+}
+
+// fileName makes a text usable as the base of a file name anywhere: letters,
+// digits, hyphens and underscores, at most 60.
+func fileName(s string) string {
+	out := strings.Map(func(r rune) rune {
+		switch {
+		case r >= 'a' && r <= 'z', r >= 'A' && r <= 'Z', r >= '0' && r <= '9', r == '-', r == '_':
+			return r
+		}
+		return '-'
+	}, s)
+	if out = out[:min(len(out), 60)]; out == "" {
+		return "figure"
+	}
+	return out
 }
