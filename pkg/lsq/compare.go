@@ -40,14 +40,14 @@ func (r *Result) LackOfFit(group []int) (*LackOfFit, error) {
 			g = append(g, sums{})
 		}
 		index[i] = s
-		w := r.Weights[i]
+		w := r.weight(i)
 		g[s].w += w
 		g[s].wy += w * r.Residuals[i] // replicates share their true setting, not always their fitted value
 	}
 	l := &LackOfFit{}
 	total := 0.0
 	for i, s := range index {
-		w := r.Weights[i]
+		w := r.weight(i)
 		d := r.Residuals[i] - g[s].wy/g[s].w
 		l.PureSS += w * d * d
 		total += w * r.Residuals[i] * r.Residuals[i]

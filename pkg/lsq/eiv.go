@@ -110,10 +110,11 @@ func FitEIV(ctx context.Context, p *EIVProblem, set Settings) (*EIVResult, error
 	if err := set.defaults(); err != nil {
 		return nil, err
 	}
-	f := &fitter{p: inner, set: set, free: free, priors: priors}
+	f := takeFitter()
+	defer f.release()
+	f.p, f.set, f.free, f.priors = inner, set, free, priors
 	s := &f.search
 	s.init(inner, inner.Y, free, &f.white)
-	defer s.release()
 	s.tol, s.maxIter = set.Tolerance, set.MaxIterations
 	st := newEIV(p, s)
 	defer giveSlab(st.slab)

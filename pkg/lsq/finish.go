@@ -199,9 +199,9 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	r.ChiSquared = s.chi2
 	r.DOF = n + f.priors - (len(sp.idx) - len(sp.null))
 
-	columns := 7
+	columns := 6
 	if f.set.SkipDiagnostics {
-		columns = 3
+		columns = 1
 	}
 	slab := make([]float64, columns*n)
 	take := func() []float64 {
@@ -209,8 +209,7 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 		slab = slab[n:]
 		return v
 	}
-	r.Fitted, r.Residuals, r.Weights = take(), take(), take()
-	copy(r.Fitted, s.f)
+	r.Fitted, r.Residuals = append([]float64(nil), s.f...), take()
 	if f.exact != nil && s.white.diagonal() {
 		for i, v := range f.exact.residuals[:n] {
 			r.Residuals[i] = v / s.white.w[i]
@@ -260,25 +259,20 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	f.parameters(r, sp, scale)
 
 	// what later questions need
-	r.white, r.factor = &f.white, sp.factor
-	r.jac = s.columns()
+	white := f.white
+	r.white, r.factor = &white, sp.factor
+	r.jac = append([][]float64(nil), s.columns()...)
 	r.problem, r.settings = p, f.set
 	r.priorW = f.take(len(s.priorW))
 	copy(r.priorW, s.priorW)
 
 	// rows
-	if s.white.diagonal() {
-		inv := 1 / scale
-		for i, w := range s.white.w {
-			r.Weights[i] = w * w * inv
-		}
-	} else {
-		for i := range r.Weights {
-			r.Weights[i] = 1 / (s.white.variance(i) * scale)
-		}
-	}
 	if f.set.SkipDiagnostics {
 		return r, nil
+	}
+	r.Weights = take()
+	for i := range r.Weights {
+		r.Weights[i] = r.weight(i)
 	}
 	r.Standardised, r.Leverage, r.Studentised, r.CooksDistance = take(), take(), take(), take()
 	if err := ctx.Err(); err != nil {
@@ -286,6 +280,15 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	}
 	r.influence()
 	return r, nil
+}
+
+// weight is 1/Σ_ii.
+func (r *Result) weight(i int) float64 {
+	if r.white.vars != nil {
+		return 1 / (r.white.vars[i] * r.scale)
+	}
+	w := r.white.w[i]
+	return w * w / r.scale
 }
 
 // influence computes leverage, studentised residuals and Cook's distances from

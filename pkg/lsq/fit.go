@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"sort"
+	"sync"
 
 	"gonum.org/v1/gonum/mathext"
 )
@@ -33,11 +34,12 @@ func Fit(ctx context.Context, p *Problem, set Settings) (*Result, error) {
 	if err := set.defaults(); err != nil {
 		return nil, err
 	}
-	f := &fitter{p: p, set: set, free: free, priors: priors}
+	f := takeFitter()
+	defer f.release()
+	f.p, f.set, f.free, f.priors = p, set, free, priors
 	if err := f.weights(); err != nil {
 		return nil, err
 	}
-	defer f.search.release()
 	if err := f.fit(ctx); err != nil {
 		return nil, err
 	}
@@ -64,6 +66,26 @@ type fitter struct {
 	restarts    int
 	warnings    []error
 	exact       *extended // solution of a linear model in extended precision
+}
+
+// fitters keeps the working memory of fits, which come in series.
+var fitters sync.Pool
+
+func takeFitter() *fitter {
+	if f, ok := fitters.Get().(*fitter); ok {
+		return f
+	}
+	return &fitter{}
+}
+
+// release forgets everything but memory that can be used again.
+func (f *fitter) release() {
+	f.search.release()
+	heads := f.search.heads
+	*f = fitter{}
+	f.search.heads = heads
+	clear(heads)
+	fitters.Put(f)
 }
 
 // estimated reports that the noise must be found from the residuals although

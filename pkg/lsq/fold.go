@@ -56,6 +56,10 @@ func (t *fold) chi2() float64 {
 // blockRows is the number of rows of a block for n rows in all.
 func blockRows(n int) int { return (min(n, foldRows) + 3) &^ 3 }
 
+// finite reports that no element of the triangle is NaN or infinite; a number
+// in the rows that is not finite spoils it.
+func (t *fold) finite() bool { return notFinite(t.r) < 0 && finite(t.rest) }
+
 // weighted folds all rows of [w·jac | w·(y−f)].
 func (t *fold) weighted(w, y, f []float64, jac [][]float64) {
 	n := len(y)

@@ -90,5 +90,5 @@ type Settings struct {
 	MaxIterations   int     // of one search; 0: 1000
 	Tolerance       float64 // relative error left in the parameters; 0: 1e-11
 	NoRestarts      bool    // do not try scaled starts when the first search stalls
-	SkipDiagnostics bool    // leave Standardised, Leverage, Studentised and CooksDistance nil: for fits in series
+	SkipDiagnostics bool    // leave Standardised, Leverage, Studentised, CooksDistance and Weights nil: for fits in series
 }

@@ -35,6 +35,7 @@ type search struct {
 	now, next     fold
 	chi2          float64
 	d, x, rx      []float64
+	heads         [][]float64 // memory of jac, jtrial, cols, ctrial
 	slab          *[]float64  // pooled scratch
 	own           []float64   // what leaves with the result
 	wcols         [][]float64 // whitened copies when the covariance is not diagonal
@@ -70,7 +71,11 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 		return v
 	}
 	s.f, s.ftrial = take(n), take(n)
-	heads := make([][]float64, 2*np+2*q)
+	if cap(s.heads) < 2*np+2*q {
+		s.heads = make([][]float64, 2*np+2*q)
+	}
+	heads := s.heads[:2*np+2*q]
+	clear(heads)
 	s.jac, s.jtrial, s.cols, s.ctrial = heads[:np:np], heads[np:2*np:2*np], heads[2*np:2*np+q:2*np+q], heads[2*np+q:]
 	s.own = make([]float64, n*q) // leaves with the result
 	for k, j := range free {
@@ -260,17 +265,17 @@ func (s *search) begin(start []float64) error {
 	if err := s.call(s.theta, s.f, s.jac, s.cols); err != nil {
 		return fmt.Errorf("lsq: the model can't be evaluated at the start: %w", err)
 	}
-	if i := notFinite(s.f); i >= 0 {
-		return fmt.Errorf("lsq: the model is %v for reading %d at the start; choose another start", s.f[i], i+1)
-	}
-	for k, c := range s.cols {
-		if i := notFinite(c); i >= 0 {
-			return fmt.Errorf("lsq: the derivative with respect to %s is %v for reading %d at the start; choose another start", s.p.name(s.free[k]), c[i], i+1)
-		}
-	}
 	s.reduce(&s.now, s.theta, s.f, s.cols)
 	s.chi2 = s.now.chi2()
-	if !finite(s.chi2) {
+	if !finite(s.chi2) || !s.now.finite() {
+		if i := notFinite(s.f); i >= 0 {
+			return fmt.Errorf("lsq: the model is %v for reading %d at the start; choose another start", s.f[i], i+1)
+		}
+		for k, c := range s.cols {
+			if i := notFinite(c); i >= 0 {
+				return fmt.Errorf("lsq: the derivative with respect to %s is %v for reading %d at the start; choose another start", s.p.name(s.free[k]), c[i], i+1)
+			}
+		}
 		return fmt.Errorf("lsq: chi-squared overflows at the start; choose a start nearer to the readings")
 	}
 	s.size = s.length()
@@ -608,12 +613,7 @@ func (s *search) accept() {
 }
 
 func (s *search) goodTriangle() bool {
-	for _, v := range s.next.r {
-		if !finite(v) {
-			return false
-		}
-	}
-	return finite(s.next.rest)
+	return s.next.finite()
 }
 
 func (s *search) scaledSize() float64 {
