@@ -125,7 +125,8 @@ func (e *extended) inverse() [][]float64 {
 // confounded names the parameters of each null vector, after reducing the null
 // vectors to echelon form so that each names as few as it can.
 func (f *fitter) confounded(sp *spectrum) (sentences []string, involved []bool) {
-	q, m := f.search.q, len(sp.idx)
+	s := &f.search
+	q, m := s.q, len(sp.idx)
 	involved = make([]bool, q)
 	rows := make([][]float64, 0, len(sp.null))
 	for _, k := range sp.null {
@@ -158,9 +159,17 @@ func (f *fitter) confounded(sp *spectrum) (sentences []string, involved []bool) 
 		}
 	}
 	for _, row := range rows {
-		big := 0.0
-		for _, v := range row {
+		// the direction in units of the parameters, scaled to a change of 1 % of
+		// the parameter that changes most relative to itself
+		big, most := 0.0, 0.0
+		for l, v := range row {
 			big = math.Max(big, math.Abs(v))
+			if at := s.theta[f.free[sp.idx[l]]]; at != 0 {
+				most = math.Max(most, math.Abs(v/sp.norm[l]/at))
+			}
+		}
+		if most == 0 {
+			most = 0.01
 		}
 		var names, moves []string
 		for l, v := range row {
@@ -169,9 +178,14 @@ func (f *fitter) confounded(sp *spectrum) (sentences []string, involved []bool) 
 			}
 			k := sp.idx[l]
 			involved[k] = true
-			name := f.p.name(f.free[k])
-			names = append(names, name)
-			moves = append(moves, fmt.Sprintf("%s by %.4g", name, v/sp.norm[l]))
+			j := f.free[k]
+			names = append(names, f.p.name(j))
+			change := 0.01 * v / sp.norm[l] / most
+			if at := s.theta[j]; at != 0 {
+				moves = append(moves, fmt.Sprintf("%s by %+.3g %%", f.p.name(j), 100*change/at))
+			} else {
+				moves = append(moves, fmt.Sprintf("%s by %+.3g", f.p.name(j), change))
+			}
 		}
 		switch len(names) {
 		case 0:

@@ -412,3 +412,92 @@ func TestCancel(t *testing.T) {
 		t.Errorf("cancelled fit returned %v, %v after %d calls", r, err, calls)
 	}
 }
+
+// A start from which the readings do not respond at all: scaled starts find the
+// peak, and the result says so.
+func TestRestart(t *testing.T) {
+	x := make([]float64, 41)
+	p := &Problem{Y: make([]float64, 41), U: make([]float64, 41), Parameters: []Parameter{{Name: "height", Start: 10}, {Name: "centre", Start: 60}}}
+	for i := range x {
+		x[i] = 0.5 * float64(i)
+		p.Y[i] = 3*math.Exp(-(x[i]-7)*(x[i]-7)/4) + 0.01*math.Sin(float64(7*i*i))
+		p.U[i] = 0.01
+	}
+	p.Eval = func(b, f []float64, jac [][]float64) error {
+		for i, v := range x {
+			d := v - b[1]
+			e := math.Exp(-d * d / 4)
+			f[i] = b[0] * e
+			if jac != nil {
+				jac[0][i], jac[1][i] = e, b[0]*e*d/2
+			}
+		}
+		return nil
+	}
+	r := fit(t, p)
+	if r.Status != Converged || r.Restarts == 0 || len(r.Warnings) == 0 || !strings.Contains(r.Warnings[0].Error(), "scaled starts") {
+		t.Fatalf("%s (%s), %d restarts, %v", r.Status, r.Reason, r.Restarts, r.Warnings)
+	}
+	near(t, "centre", r.Values[1], 7, 1e-2)
+	again := fit(t, p)
+	for j := range r.Values {
+		if r.Values[j] != again.Values[j] {
+			t.Errorf("two runs gave %v and %v", r.Values[j], again.Values[j])
+		}
+	}
+	s, err := Fit(context.Background(), p, Settings{NoRestarts: true})
+	if err != nil || s.Status == Converged {
+		t.Errorf("without restarts: %v %v", s.Status, err)
+	}
+	for j := range s.U {
+		if !math.IsNaN(s.U[j]) {
+			t.Errorf("uncertainty %v where nothing is known", s.U[j])
+		}
+	}
+}
+
+// Overflow, errors and undefined values during the search shorten the step and
+// never reach the result.
+func TestHostileModels(t *testing.T) {
+	x := []float64{1, 2, 3, 4, 5, 6, 7, 8}
+	for name, f := range map[string]func(b []float64, x float64) float64{
+		"exponential": func(b []float64, x float64) float64 { return b[0] * math.Exp(b[1]*x) },
+		"logarithm":   func(b []float64, x float64) float64 { return b[0] * math.Log(b[1]*x) },
+		"root":        func(b []float64, x float64) float64 { return b[0] * math.Sqrt(b[1]-x) },
+		"pole":        func(b []float64, x float64) float64 { return b[0] / (x - b[1]) },
+	} {
+		for _, start := range [][]float64{{1, 20}, {1e6, 9}, {-3, 100}, {1, 0.5}, {1e-300, 1e3}} {
+			p := &Problem{Numeric: true, Parameters: []Parameter{{Name: "a", Start: start[0]}, {Name: "b", Start: start[1]}}, Y: make([]float64, len(x)), U: make([]float64, len(x))}
+			for i := range x {
+				p.Y[i] = f([]float64{2, 8.5}, x[i])
+				if name == "exponential" {
+					p.Y[i] = f([]float64{2, -0.5}, x[i])
+				}
+				p.U[i] = 0.01 * math.Abs(p.Y[i])
+			}
+			calls := 0
+			p.Eval = func(b, out []float64, _ [][]float64) error {
+				calls++
+				for i, v := range x {
+					out[i] = f(b, v)
+				}
+				return nil
+			}
+			r, err := Fit(context.Background(), p, Settings{})
+			if err != nil {
+				continue // the start is outside the domain and the error says so
+			}
+			if calls > 200000 {
+				t.Errorf("%s from %v: %d calls", name, start, calls)
+			}
+			for j := range r.Values {
+				if !finite(r.Values[j]) || math.IsInf(r.U[j], 0) || (math.IsNaN(r.U[j]) && len(r.Warnings) == 0) {
+					t.Errorf("%s from %v: %s, %v ± %v, warnings %v", name, start, r.Status, r.Values, r.U, r.Warnings)
+				}
+			}
+			if r.Status == Converged && r.PValue < 0.99 && math.Abs(r.Values[0]-2) < 0.01 {
+				t.Errorf("%s from %v: %s with chi-squared %v at %v", name, start, r.Status, r.ChiSquared, r.Values)
+			}
+		}
+	}
+}
