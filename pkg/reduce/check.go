@@ -8,6 +8,7 @@ import (
 type Summary struct {
 	Rows      int      // in the fit
 	Estimated []string // the scalars that the fit will estimate
+	Hazard    Hazard   // what the bench stores, at the values the fit starts from
 	Warnings  []error
 }
 
@@ -19,8 +20,11 @@ func Check(b *bench.Bench) (*Summary, error) {
 		return nil, err
 	}
 	s := &Summary{Rows: len(c.record), Warnings: append(append([]error(nil), b.Warnings...), c.warnings...)}
-	for _, f := range c.free {
-		s.Estimated = append(s.Estimated, b.Scalars[f].Name)
+	q := append([]float64(nil), c.q...)
+	for k, f := range c.free {
+		s.Estimated = append(s.Estimated, c.b.Scalars[f].Name)
+		q[f] = c.start[k]
 	}
+	s.Hazard = c.hazard(&carried{q: q})
 	return s, nil
 }

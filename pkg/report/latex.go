@@ -92,14 +92,21 @@ func tex(s string) string {
 
 func (s *setter) document(d *document) {
 	b := &s.b
-	b.WriteString("\\documentclass[a4paper,10pt]{article}\n\\usepackage[T1]{fontenc}\n\\usepackage{textcomp}\n" +
+	b.WriteString("\\documentclass[a4paper,10pt]{article}\n\\usepackage[T1]{fontenc}\n\\usepackage{textcomp}\n\\IfFileExists{lmodern.sty}{\\usepackage{lmodern}}{}\n" +
 		"\\setlength{\\textwidth}{17cm}\\setlength{\\oddsidemargin}{-0.4cm}\\setlength{\\textheight}{24.5cm}\\setlength{\\topmargin}{-1.8cm}\n" +
 		"\\setlength{\\parindent}{0pt}\\setlength{\\parskip}{3pt plus 1pt}\\sloppy\n\\begin{document}\n")
 	b.WriteString("{\\Large\\bfseries " + tex(d.title) + "\\par}\n" + tex(d.subtitle) + "\\par\n")
+	s.blocks(d, func(heading string) string { return "\n\\subsection*{" + heading + "}\n" })
+	b.WriteString("\\end{document}\n")
+}
+
+// blocks writes the body; heading sets a heading that is already escaped.
+func (s *setter) blocks(d *document, heading func(string) string) {
+	b := &s.b
 	for _, bl := range d.blocks {
 		switch {
 		case bl.heading != "":
-			b.WriteString("\n\\subsection*{" + tex(bl.heading) + "}\n")
+			b.WriteString(heading(tex(bl.heading)))
 		case bl.caution != nil:
 			b.WriteString("\n\\begin{quote}\\small " + tex(bl.caution.text) + "\n")
 			for _, x := range bl.caution.above {
@@ -129,12 +136,17 @@ func (s *setter) document(d *document) {
 			}
 			b.WriteString("\\end{description}\n")
 		case bl.table != nil:
-			b.WriteString("{\\small\n")
+			size := "\\small"
+			if len(bl.table.Columns) > 7 {
+				size = "\\footnotesize\\setlength{\\tabcolsep}{3pt}"
+			}
+			b.WriteString("{" + size + "\n")
 			s.table(bl.table)
 			b.WriteString("\\par}\n")
+		case bl.figure != nil:
+			b.WriteString(tex(bl.figure.String()) + "\\par\n")
 		}
 	}
-	b.WriteString("\\end{document}\n")
 }
 
 // narrow is the length of a text up to which a column is set on one line; wider

@@ -40,6 +40,10 @@ func (p *printer) document(d *document) {
 	for _, l := range fold(figure.OneLine(d.subtitle), columns) {
 		p.line(l)
 	}
+	p.blocks(d)
+}
+
+func (p *printer) blocks(d *document) {
 	for _, b := range d.blocks {
 		switch {
 		case b.heading != "":
@@ -70,6 +74,8 @@ func (p *printer) document(d *document) {
 			}
 		case b.table != nil:
 			p.tableAt(b.table, "   ")
+		case b.figure != nil:
+			p.hang("   ", "   ", b.figure.String())
 		}
 	}
 }

@@ -1,0 +1,32 @@
+// Package lab is the front door for notebook cells: a few verbs, each of which
+// returns one value that shows itself when a cell ends in it.
+//
+//	import "example.org/guardring/pkg/lab"
+//
+//	b := lab.Open("../datasets/attracted-disc") // the bench, its first readings, the cautions
+//	r := lab.Reduce(b)                          // progress while it works
+//	r                                           // result, parameters, budget, warnings
+//	r.Residuals()                               // a figure
+//
+// # Verbs
+//
+// Open looks at a dataset, Reduce turns it into a result; Provenance says what
+// another laboratory needs to get the same numbers.
+//
+// # What a cell can end in
+//
+// Every value that a verb or a method returns has String for plain text and
+// SimpleRender for all its forms: text/plain, text/html and text/latex for
+// tables, image/svg+xml and image/png for figures, and for a result its record
+// as application/vnd.guardring.result+json (reduce.Record). What is shown is made
+// when the value is, so showing can't fail.
+//
+// # Failure
+//
+// A verb that can't do its work ends the cell with the error that the command of
+// the same name would print: what was wrong, where, and what would be right.
+// Outside a notebook the verbs panic with cell.Failure, which wraps the error;
+// programs use the packages underneath, which return (T, error).
+//
+// Numbers in fields and results are SI.
+package lab

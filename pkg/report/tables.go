@@ -1,0 +1,234 @@
+package report
+
+import (
+	"fmt"
+	"strings"
+
+	"example.org/guardring/pkg/figure"
+	"example.org/guardring/pkg/reduce"
+	"example.org/guardring/pkg/si"
+)
+
+// The functions of this file give the parts of a report one by one.
+
+// part makes a sheet of what add writes, without its first heading.
+func part(add func(d *document)) *Sheet {
+	s := &Sheet{}
+	add(&s.d)
+	if len(s.d.blocks) > 0 && s.d.blocks[0].heading != "" {
+		s.d.blocks = s.d.blocks[1:]
+	}
+	return s
+}
+
+// Summary tells a reduction at a glance: result, warnings, parameters, goodness
+// of the fit, the budget of the first measurand and the Monte Carlo check.
+// With cautions it opens with those of the bench; without, it still says what
+// exceeds a limit.
+func Summary(rec *reduce.Record, withCautions bool) *Sheet {
+	s := New(rec.Title, subtitle(rec))
+	if figure.OneLine(rec.Title) == "" {
+		s.d.title = "Reduction of a bench of kind " + rec.Model
+	}
+	if c := cautions(&rec.Hazard); c != nil {
+		if withCautions {
+			s.d.blocks = append(s.d.blocks, block{caution: c})
+		} else {
+			s.Notice(c.above...)
+		}
+	}
+	s.d.results(rec)
+	if len(rec.Warnings) > 0 {
+		s.d.head("Warnings")
+		s.d.notice(rec.Warnings)
+	}
+	s.d.parameters(rec)
+	s.d.goodness(rec)
+	if len(rec.Measurands) > 0 && len(rec.Measurands[0].Budget) > 0 {
+		s.d.head("Uncertainty budget of the " + words(rec.Measurands[0].Name))
+		s.d.show(budget(&rec.Measurands[0]))
+	}
+	s.d.monteCarlo(rec)
+	return s
+}
+
+// Cautions adds the usual cautions of high-voltage work with what the bench
+// stores; a bench without voltage adds nothing.
+func (s *Sheet) Cautions(h *reduce.Hazard) *Sheet {
+	if c := cautions(h); c != nil {
+		s.d.blocks = append(s.d.blocks, block{caution: c})
+	}
+	return s
+}
+
+// Parameters tells the estimates with their uncertainties, starts and priors.
+func Parameters(rec *reduce.Record) *Sheet {
+	return part(func(d *document) { d.parameters(rec) })
+}
+
+// Correlations tells the correlation coefficients of the estimates; a fit of one
+// parameter has none.
+func Correlations(rec *reduce.Record) *Sheet {
+	return part(func(d *document) {
+		d.correlations(rec)
+		if len(d.blocks) == 0 {
+			d.say("One parameter was estimated; there is nothing for it to be correlated with.")
+		}
+	})
+}
+
+// Corrections tells every correction with its size and what remains of it.
+func Corrections(rec *reduce.Record) *Sheet {
+	return part(func(d *document) {
+		d.corrections(rec)
+		if len(d.blocks) == 0 {
+			d.say("This kind of bench knows no corrections.")
+		}
+	})
+}
+
+// Budget is the uncertainty budget of a measurand, with the columns of EA-4/02
+// section 4 and the shares of the variance, by parts of the bench.
+func Budget(m *reduce.Measurand) *Table {
+	t := budget(m)
+	t.Caption = "Uncertainty budget of the " + words(m.Name)
+	return t
+}
+
+// Diagnosis tells the goodness of the fit, the tests of the residuals and what
+// the residuals point at.
+func Diagnosis(rec *reduce.Record) *Sheet {
+	return part(func(d *document) {
+		d.goodness(rec)
+		d.tests(rec)
+		d.causes(rec)
+	})
+}
+
+// Warnings tells every warning of a record, or that there is none.
+func Warnings(rec *reduce.Record) *Sheet {
+	s := New("", "")
+	if len(rec.Warnings) == 0 {
+		return s.Say("No warnings.")
+	}
+	return s.Notice(rec.Warnings...)
+}
+
+// Exclusions tells the readings that were left out, and why.
+func Exclusions(rec *reduce.Record) *Sheet {
+	return part(func(d *document) {
+		d.exclusions(rec)
+		if len(d.blocks) == 0 {
+			d.say("No reading was left out.")
+		}
+	})
+}
+
+// Inputs tells the files that a result depends on, with their SHA-256, and how
+// it was run.
+func Inputs(rec *reduce.Record) *Sheet {
+	return part(func(d *document) { d.provenance(rec) })
+}
+
+// Words makes a key of a bench or record readable: "disc_radius" is "disc
+// radius", "channels.voltage.gain" is "voltage gain".
+func Words(key string) string { return words(key) }
+
+// Number writes x with n significant digits for people, with a true minus sign.
+func Number(x float64, n int) string { return minus(digits(x, n)) }
+
+// Plain writes x with at most n significant digits and no idle zeros.
+func Plain(x float64, n int) string { return minus(short(x, n)) }
+
+// Measured writes a value and its standard uncertainty, both in unit, rounded
+// after GUM 7.2.6.
+func Measured(value, u float64, unit si.Unit) (v, du string) {
+	x, ux := unit.FromSI(value), unit.DeltaFromSI(u)
+	if !(ux > 0) {
+		return minus(short(x, 12)), minus(short(ux, 2))
+	}
+	v, du = si.Round(x, ux)
+	return minus(power(v)), power(du)
+}
+
+// Readings is a table of a result's readings as they entered the fit, with their
+// places in the CSV files, residuals and leverage, units in the second header
+// row; at most most of them, all when most is 0.
+func Readings(r *reduce.Result, units map[string]si.Unit, most int) *Table {
+	rows := &r.Rows
+	n := rows.N
+	if most > 0 && most < n {
+		n = most
+	}
+	unit := func(name string) si.Unit {
+		if u, ok := units[name]; ok {
+			return u
+		}
+		return si.Unit{Symbol: "", Factor: 1}
+	}
+	t := &Table{Columns: []Column{{Name: "reading", Align: Right}, {Name: "line", Align: Right}}}
+	files := r.Bench != nil && len(r.Bench.Rows.Files) > 1
+	if files {
+		t.Columns = append(t.Columns, Column{Name: "file", Most: 24})
+	}
+	for _, p := range rows.PredictorNames {
+		t.Columns = append(t.Columns, Column{Name: words(p), Unit: unitText(unit(p)), Align: Decimal})
+	}
+	ru := unit(rows.ResponseName)
+	t.Columns = append(t.Columns, Column{Name: words(rows.ResponseName), Unit: unitText(ru), Align: Decimal},
+		Column{Name: "fitted", Unit: unitText(ru), Align: Decimal}, Column{Name: "u", Unit: unitText(ru), Align: Decimal},
+		Column{Name: "residual", Unit: unitText(ru), Align: Decimal}, Column{Name: "standardised", Align: Decimal}, Column{Name: "leverage", Align: Decimal})
+	notes := false
+	for i := range n {
+		notes = notes || rows.Excluded[i]
+	}
+	if notes {
+		t.Columns = append(t.Columns, Column{Name: "left out", Most: 40})
+	}
+	for i := range n {
+		rec := rows.Record[i]
+		cells := []string{fmt.Sprint(rec + 1), ""}
+		file := ""
+		if r.Bench != nil {
+			var line int
+			file, line = r.Bench.Rows.Place(rec)
+			cells[1] = fmt.Sprint(line)
+		}
+		if files {
+			cells = append(cells, file)
+		}
+		for k, p := range rows.PredictorNames {
+			cells = append(cells, Plain(unit(p).FromSI(rows.Predictors[k][i]), 7))
+		}
+		res := ru.DeltaFromSI(rows.Residual[i])
+		u := ru.DeltaFromSI(rows.U[i])
+		v, _ := si.Round(ru.FromSI(rows.Response[i]), u)
+		f, _ := si.Round(ru.FromSI(rows.Fitted[i]), u)
+		d, du := si.Round(res, u)
+		cells = append(cells, minus(power(v)), minus(power(f)), power(du), minus(power(d)), fixed(rows.Standardised[i], 2), fixed(rows.Leverage[i], 3))
+		if notes {
+			why := ""
+			if rows.Excluded[i] && r.Bench != nil {
+				why = r.Bench.Rows.Reason(rec)
+			}
+			cells = append(cells, why)
+		}
+		t.Rows = append(t.Rows, cells)
+	}
+	if n < rows.N {
+		t.Caption = fmt.Sprintf("The first %d of %s", n, plural(rows.N, "reading", "readings"))
+	}
+	return t
+}
+
+// fixed writes x with n digits after the point; nothing for what is not known.
+func fixed(x float64, n int) string {
+	if x != x {
+		return ""
+	}
+	s := fmt.Sprintf("%.*f", n, x)
+	if strings.Trim(s, "-0.") == "" {
+		s = strings.TrimPrefix(s, "-")
+	}
+	return minus(s)
+}
