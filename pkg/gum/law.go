@@ -131,6 +131,31 @@ func (l *Law) cover() {
 	l.Interval = [2]float64{l.Value - l.K*l.U, l.Value + l.K*l.U}
 }
 
+// A GroupShare is what one group of budget lines contributes to the variance.
+type GroupShare struct {
+	Group string
+	Lines []int   // positions in the budget
+	Share float64 // sum of the lines' shares
+}
+
+// Groups sums the shares of the budget by Group, groups in order of their first
+// line.
+func (l *Law) Groups() []GroupShare {
+	var groups []GroupShare
+	at := make(map[string]int)
+	for i, c := range l.Budget {
+		k, ok := at[c.Group]
+		if !ok {
+			k = len(groups)
+			at[c.Group] = k
+			groups = append(groups, GroupShare{Group: c.Group})
+		}
+		groups[k].Lines = append(groups[k].Lines, i)
+		groups[k].Share += c.Share
+	}
+	return groups
+}
+
 // degreesOfFreedom sets DOF by the Welch–Satterthwaite formula over independent
 // components, or refuses it with a warning.
 func (l *Law) degreesOfFreedom(corr []Correlation) {

@@ -365,6 +365,20 @@ func TestCorrelatedDOF(t *testing.T) {
 	near(t, "sum of shares", shares, 1, 1e-12)
 }
 
+func TestGroups(t *testing.T) {
+	l, err := gum.Combine(0, []gum.Contribution{{Input: "a", Group: "voltage", U: 3, Sensitivity: 1}, {Input: "b", Group: "spacing", U: 4, Sensitivity: 1},
+		{Input: "c", Group: "voltage", U: 5, Sensitivity: 1}}, nil, 0.95)
+	if err != nil {
+		t.Fatal(err)
+	}
+	g := l.Groups()
+	if len(g) != 2 || g[0].Group != "voltage" || len(g[0].Lines) != 2 || g[0].Lines[1] != 2 {
+		t.Fatalf("groups %+v", g)
+	}
+	near(t, "share of the voltage", g[0].Share, 34.0/50, 1e-12)
+	near(t, "share of the spacing", g[1].Share, 16.0/50, 1e-12)
+}
+
 // TestFullCorrelation: JCGM 100:2008 5.2.2 note 1, all inputs correlated with r = 1:
 // contributions add linearly; with opposite signs they cancel. The example is that
 // of ten resistors of 1000 Ω in series, each u = 0.1 Ω: u = 1 Ω.

@@ -100,6 +100,31 @@ func TestComparisonLoss(t *testing.T) {
 	}
 }
 
+// TestMass reproduces JCGM 101:2008 9.3 (values from memory): mass calibration in
+// air; mg and kg/m³. First order misses the product of air density and density
+// difference; second order has it.
+func TestMass(t *testing.T) {
+	in := []gum.Input{
+		{Name: "mRc", Dist: gum.Normal(100_000, 0.050)}, {Name: "dmRc", Dist: gum.Normal(1.234, 0.020)},
+		{Name: "ra", Dist: gum.Rectangular(1.20, 0.10)}, {Name: "rW", Dist: gum.Rectangular(8000, 1000)}, {Name: "rR", Dist: gum.Rectangular(8000, 50)},
+	}
+	m := &gum.Model{Inputs: in, Outputs: []gum.Output{compiled(t, "dm", "(mRc+dmRc)*(1+(ra-1.2)*(1/rW-1/rR)) - 100000", in)}}
+	o := propagate(t, m, gum.Settings{Trials: 1_000_000, Probability: 0.95}).Outputs[0]
+	near(t, "law's value", o.Law.Value, 1.2340, 0.00005)
+	near(t, "law's u", o.Law.U, 0.0539, 0.00005)
+	near(t, "law's low", o.Law.Interval[0], 1.1285, 0.0001)
+	near(t, "law's high", o.Law.Interval[1], 1.3395, 0.0001)
+	near(t, "u", o.MonteCarlo.U, 0.0754, 0.0002)
+	near(t, "length of the shortest", o.MonteCarlo.Shortest[1]-o.MonteCarlo.Shortest[0], 1.3825-1.0834, 0.002)
+	if o.Comparison.Agrees {
+		t.Error("the law is said to agree; JCGM 101:2008 table 6 says that it does not")
+	}
+	second := propagate(t, m, gum.Settings{Trials: 1_000_000, Probability: 0.95, SecondOrder: true}).Outputs[0]
+	near(t, "u to second order", second.Law.U, 0.0750, 0.00005)
+	near(t, "low to second order", second.Law.Interval[0], 1.0870, 0.0001)
+	near(t, "high to second order", second.Law.Interval[1], 1.3810, 0.0001)
+}
+
 // gauge is JCGM 101:2008 9.5, in nm.
 func gauge(t testing.TB) *gum.Model {
 	arcsine := gum.Arcsine(0, 0.5)
