@@ -8,6 +8,7 @@ import (
 	"testing"
 
 	"example.org/guardring/pkg/random"
+	"gonum.org/v1/gonum/mathext"
 )
 
 // Swed and Eisenhart, Ann. Math. Stat. 14 (1943) 66, table I (value from
@@ -177,6 +178,18 @@ func TestLackOfFitPontius(t *testing.T) {
 // (tables, from memory).
 func TestFTail(t *testing.T) {
 	near(t, "p", fTail(4.1028, 2, 10), 0.05, 1e-4)
+}
+
+// The finite sums agree with the incomplete gamma function, and with the usual
+// tables: 3.841 at 5 % for one degree of freedom, 18.307 for ten (from memory).
+func TestChiSquaredTail(t *testing.T) {
+	near(t, "1", chiSquaredTail(3.841459, 1), 0.05, 1e-6)
+	near(t, "10", chiSquaredTail(18.307038, 10), 0.05, 1e-6)
+	for dof := 1; dof <= 60; dof++ {
+		for _, x := range []float64{1e-6, 0.3, 1, 7, 40, 90, 400} {
+			near(t, "tail", chiSquaredTail(x, dof), mathext.GammaIncRegComp(float64(dof)/2, x/2), 1e-10)
+		}
+	}
 }
 
 // puromycin is the data set of Bates and Watts, Nonlinear Regression Analysis

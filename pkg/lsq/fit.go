@@ -468,10 +468,29 @@ func (f *fitter) scaledStarts(start []float64) [][]float64 {
 }
 
 // chiSquaredTail is the probability that chi-squared with dof degrees of
-// freedom exceeds x.
+// freedom exceeds x: for few degrees of freedom the finite sums (26.4.4) and
+// (26.4.5) of Abramowitz and Stegun, Handbook of Mathematical Functions.
 func chiSquaredTail(x float64, dof int) float64 {
 	if dof <= 0 || math.IsNaN(x) {
 		return math.NaN()
 	}
-	return mathext.GammaIncRegComp(float64(dof)/2, x/2)
+	if dof > 60 || x > 500 {
+		return mathext.GammaIncRegComp(float64(dof)/2, x/2)
+	}
+	h := x / 2
+	if dof%2 == 0 {
+		term, sum := 1.0, 1.0
+		for k := 1; k < dof/2; k++ {
+			term *= h / float64(k)
+			sum += term
+		}
+		return math.Min(1, math.Exp(-h)*sum)
+	}
+	root := math.Sqrt(h)
+	term, sum := root/(0.5*math.SqrtPi), 0.0 // h^(k−1/2)/Γ(k+1/2) at k = 1
+	for k := 1; k <= (dof-1)/2; k++ {
+		sum += term
+		term *= h / (float64(k) + 0.5)
+	}
+	return math.Min(1, math.Erfc(root)+math.Exp(-h)*sum)
 }

@@ -89,19 +89,16 @@ func (f *LineFitter) Fit(d *LineData, r *LineResult) error {
 	// York's fixed-point iteration, accelerated by the secant method on
 	// next(b) − b.
 	prevB, prevG := 0.0, 0.0
+	var sw, xm, ym float64
 	converged := false
 	for it := 1; it <= 200; it++ {
 		r.Iterations = it
-		next, _, _, _ := f.next(x, y, b)
+		var next float64
+		next, sw, xm, ym = f.next(x, y, b)
 		if math.IsNaN(next) || math.IsInf(next, 0) {
 			return fmt.Errorf("lsq: the slope of the line overflows: the points lie on a vertical line within their uncertainties; exchange the axes")
 		}
 		g := next - b
-		if math.Abs(g) <= 1e-15*math.Abs(next) || g == 0 {
-			b = next
-			converged = true
-			break
-		}
 		step := g
 		if it > 1 && g != prevG {
 			if s := -g * (b - prevB) / (g - prevG); math.Abs(s) <= 10*math.Abs(g) && math.Abs(s) >= 0.1*math.Abs(g) {
@@ -110,7 +107,8 @@ func (f *LineFitter) Fit(d *LineData, r *LineResult) error {
 		}
 		prevB, prevG = b, g
 		b += step
-		if math.Abs(step) <= 4e-16*math.Abs(b) || (it > 1 && math.Abs(step) <= 1e-13*math.Abs(b) && math.Abs(g) < 1e-12*math.Abs(b)) {
+		if math.Abs(step) <= 1e-13*math.Abs(b) || g == 0 {
+			// weights and means belong to the slope before this step
 			converged = true
 			break
 		}
@@ -118,7 +116,6 @@ func (f *LineFitter) Fit(d *LineData, r *LineResult) error {
 	if !converged {
 		return fmt.Errorf("lsq: the line did not converge in %d iterations; the points do not define a slope within their uncertainties", r.Iterations)
 	}
-	_, sw, xm, ym := f.next(x, y, b)
 	beta := f.beta[:n]
 	a := ym - b*xm
 	// adjusted x are xm + β (York 2004, eq. 13 and following)
