@@ -223,16 +223,21 @@ func (r *Result) Histogram(name ...string) *figure.Figure {
 }
 
 // Budget is the uncertainty budget of a measurand; without a name, of the first.
-func (r *Result) Budget(name ...string) *report.Table { return report.Budget(r.measurand(name)) }
+func (r *Result) Budget(name ...string) *report.Table {
+	m := r.measurand(name)
+	t := report.Budget(m)
+	t.Caption = "Uncertainty budget of the " + report.Words(m.Name)
+	return t
+}
 
 // Parameters tells the estimates with their uncertainties, starts and priors.
-func (r *Result) Parameters() *report.Sheet { return report.Parameters(&r.Result.Record) }
+func (r *Result) Parameters() *report.Sheet { return report.ParameterSheet(&r.Result.Record) }
 
 // Correlations tells the correlation coefficients of the estimates.
-func (r *Result) Correlations() *report.Sheet { return report.Correlations(&r.Result.Record) }
+func (r *Result) Correlations() *report.Sheet { return report.CorrelationSheet(&r.Result.Record) }
 
 // Corrections tells every correction with its size and what remains of it.
-func (r *Result) Corrections() *report.Sheet { return report.Corrections(&r.Result.Record) }
+func (r *Result) Corrections() *report.Sheet { return report.CorrectionSheet(&r.Result.Record) }
 
 // Diagnosis tells the goodness of the fit, the tests of the residuals and what
 // the residuals point at.

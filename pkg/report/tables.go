@@ -46,7 +46,7 @@ func Summary(rec *reduce.Record, withCautions bool) *Sheet {
 	s.d.goodness(rec)
 	if len(rec.Measurands) > 0 && len(rec.Measurands[0].Budget) > 0 {
 		s.d.head("Uncertainty budget of the " + words(rec.Measurands[0].Name))
-		s.d.show(budget(&rec.Measurands[0]))
+		s.d.show(Budget(&rec.Measurands[0]))
 	}
 	s.d.monteCarlo(rec)
 	return s
@@ -61,14 +61,14 @@ func (s *Sheet) Cautions(h *reduce.Hazard) *Sheet {
 	return s
 }
 
-// Parameters tells the estimates with their uncertainties, starts and priors.
-func Parameters(rec *reduce.Record) *Sheet {
+// ParameterSheet tells the estimates with their uncertainties, starts and priors.
+func ParameterSheet(rec *reduce.Record) *Sheet {
 	return part(func(d *document) { d.parameters(rec) })
 }
 
-// Correlations tells the correlation coefficients of the estimates; a fit of one
+// CorrelationSheet tells the correlation coefficients of the estimates; a fit of one
 // parameter has none.
-func Correlations(rec *reduce.Record) *Sheet {
+func CorrelationSheet(rec *reduce.Record) *Sheet {
 	return part(func(d *document) {
 		d.correlations(rec)
 		if len(d.blocks) == 0 {
@@ -77,22 +77,14 @@ func Correlations(rec *reduce.Record) *Sheet {
 	})
 }
 
-// Corrections tells every correction with its size and what remains of it.
-func Corrections(rec *reduce.Record) *Sheet {
+// CorrectionSheet tells every correction with its size and what remains of it.
+func CorrectionSheet(rec *reduce.Record) *Sheet {
 	return part(func(d *document) {
 		d.corrections(rec)
 		if len(d.blocks) == 0 {
 			d.say("This kind of bench knows no corrections.")
 		}
 	})
-}
-
-// Budget is the uncertainty budget of a measurand, with the columns of EA-4/02
-// section 4 and the shares of the variance, by parts of the bench.
-func Budget(m *reduce.Measurand) *Table {
-	t := budget(m)
-	t.Caption = "Uncertainty budget of the " + words(m.Name)
-	return t
 }
 
 // Diagnosis tells the goodness of the fit, the tests of the residuals and what
