@@ -226,52 +226,128 @@ type series struct {
 // mostSeries is the number of looks that stay apart from each other.
 const mostSeries = 7
 
-// split sorts the rows into series for a figure against predictor x: the
-// settings where there are few, else the values of another predictor where they
-// fall into a few clusters, else one series.
-func (d *Data) split(x int) []series {
+// view is a choice of what to draw against what.
+type view struct {
+	x      int // predictor on the axis; −1: the order of acquisition
+	series []series
+	joined int // series whose fitted values x alone tells apart
+}
+
+// choose finds the view of a fit in which the fitted values of most series lie
+// on a line: it tries each predictor as the axis, in their order, with the rows
+// in one series, by the clusters of each other predictor, and by setting.
+func (d *Data) choose() view {
 	r := d.Rows
-	for c := range r.Predictors {
-		if c == x {
-			continue
-		}
-		if s := clusters(r.Predictors[c]); len(s) > 1 {
-			u := d.unit(r.PredictorNames[c])
-			for i := range s {
-				mean := 0.0
-				for _, k := range s[i].rows {
-					mean += r.Predictors[c][k] / float64(len(s[i].rows))
-				}
-				v, pu := si.Prefixed(mean, u)
-				s[i].name = words(r.PredictorNames[c]) + " " + signed(strconv.FormatFloat(v, 'g', 4, 64))
-				if t := pu.Unicode(); t != "1" && t != "" {
-					s[i].name += " " + t
-				}
-			}
-			return s
-		}
-	}
-	if d.Groups != nil {
-		index := map[string]int{}
-		var s []series
-		for i, g := range d.Groups {
-			k, ok := index[g]
-			if !ok {
-				k = len(s)
-				index[g] = k
-				s = append(s, series{name: "setting " + OneLine(g)})
-			}
-			s[k].rows = append(s[k].rows, i)
-		}
-		if len(s) > 1 && len(s) <= mostSeries {
-			return s
-		}
-	}
 	all := series{rows: make([]int, r.N)}
 	for i := range all.rows {
 		all.rows[i] = i
 	}
-	return []series{all}
+	best := view{x: -1, series: []series{all}}
+	share := -1.0
+	for x, v := range r.Predictors {
+		var s spanner
+		for _, t := range v {
+			s.add(t)
+		}
+		if s.n < r.N || !(s.hi-s.lo > 1e-3*math.Max(math.Abs(s.lo), math.Abs(s.hi))) {
+			continue // held constant, or not known for every row
+		}
+		tries := [][]series{{all}}
+		for c := range r.Predictors {
+			if c != x {
+				if g := d.byPredictor(c); g != nil {
+					tries = append(tries, g)
+				}
+			}
+		}
+		if g := d.bySetting(); g != nil {
+			tries = append(tries, g)
+		}
+		for _, t := range tries {
+			n := 0
+			for _, g := range t {
+				var some []int // a few thousand rows tell as much as all
+				for i := 0; i < len(g.rows); i += 1 + len(g.rows)/4000 {
+					some = append(some, g.rows[i])
+				}
+				skip := make([]bool, len(some))
+				for i, k := range some {
+					skip[i] = r.Excluded[k]
+				}
+				if _, _, ok := guide(pick(v, some), pick(r.Fitted, some), skip, &scale{}); ok {
+					n++
+				}
+			}
+			if f := float64(n) / float64(len(t)); f > share+1e-9 {
+				share = f
+				best = view{x: x, series: t, joined: n}
+			}
+		}
+	}
+	return best
+}
+
+// byPredictor parts the rows by the clusters of a predictor and names them by
+// their means, with as few digits as tell them apart; nil when there are none.
+func (d *Data) byPredictor(c int) []series {
+	v := d.Rows.Predictors[c]
+	s := clusters(v)
+	if s == nil {
+		return nil
+	}
+	means := make([]float64, len(s))
+	largest := 0.0
+	for i := range s {
+		for _, k := range s[i].rows {
+			means[i] += v[k] / float64(len(s[i].rows))
+		}
+		largest = math.Max(largest, math.Abs(means[i]))
+	}
+	_, u := si.Prefixed(largest, d.unit(d.Rows.PredictorNames[c]))
+	for decimals := 0; decimals <= 9; decimals++ {
+		seen := map[string]bool{}
+		close := true
+		for i := range s {
+			x := u.FromSI(means[i])
+			t := strconv.FormatFloat(x, 'f', decimals, 64)
+			f, err := strconv.ParseFloat(t, 64)
+			close = close && err == nil && math.Abs(f-x) <= 5e-3*math.Abs(x)
+			seen[t] = true
+			s[i].name = words(d.Rows.PredictorNames[c]) + " " + signed(t)
+			if sym := u.Unicode(); sym != "1" && sym != "" {
+				s[i].name += " " + sym
+			}
+		}
+		if close && len(seen) == len(s) {
+			break
+		}
+	}
+	return s
+}
+
+// bySetting parts the rows by setting where there are two to seven.
+func (d *Data) bySetting() []series {
+	if d.Groups == nil {
+		return nil
+	}
+	index := map[string]int{}
+	var s []series
+	for i, g := range d.Groups {
+		k, ok := index[g]
+		if !ok {
+			k = len(s)
+			index[g] = k
+			s = append(s, series{name: "setting " + OneLine(g)})
+		}
+		s[k].rows = append(s[k].rows, i)
+		if len(s) > mostSeries {
+			return nil
+		}
+	}
+	if len(s) < 2 {
+		return nil
+	}
+	return s
 }
 
 // clusters parts values that fall into two to seven heaps, each at least eight

@@ -5,8 +5,8 @@ import (
 	"math"
 )
 
-// Fit draws the response against the first predictor, one series for each value
-// of the others, with error bars of one standard uncertainty and the fitted
+// Fit draws the response against the predictor and in the series that show the
+// fitted values as lines, with error bars of one standard uncertainty and the fitted
 // values joined, over an aligned panel of standardised residuals.
 func (d *Data) Fit() (*Figure, error) {
 	r, err := d.rows()
@@ -15,10 +15,10 @@ func (d *Data) Fit() (*Figure, error) {
 	}
 	x, xName := d.order(), "reading, in order of acquisition"
 	xUnit := d.unit("")
-	first := -1
-	if c := d.leading(); c >= 0 {
-		first = c
-		x, xName, xUnit = r.Predictors[c], words(r.PredictorNames[c]), d.unit(r.PredictorNames[c])
+	chosen := d.choose()
+	first, groups := chosen.x, chosen.series
+	if first >= 0 {
+		x, xName, xUnit = r.Predictors[first], words(r.PredictorNames[first]), d.unit(r.PredictorNames[first])
 	}
 	var xsp, ysp spanner
 	for i := range x {
@@ -50,6 +50,27 @@ func (d *Data) Fit() (*Figure, error) {
 			}
 		}
 	}
+	// The lines through the fitted values, which the axis must hold too.
+	type curve struct{ x, y []float64 }
+	lines := make([]curve, len(groups))
+	if first >= 0 {
+		for k, g := range groups {
+			skip := make([]bool, len(g.rows))
+			for i, j := range g.rows {
+				skip[i] = r.Excluded[j]
+			}
+			cx, cy, ok := guide(pick(x, g.rows), pick(r.Fitted, g.rows), skip, xs)
+			if !ok {
+				continue
+			}
+			lines[k] = curve{cx, cy}
+			for _, v := range cy {
+				if !ya.Log || v > 0 {
+					ysp.add(v)
+				}
+			}
+		}
+	}
 	ys, err := newScale(ya, ysp, 6)
 	if err != nil {
 		return nil, err
@@ -62,7 +83,6 @@ func (d *Data) Fit() (*Figure, error) {
 
 	title := "Fit and residuals"
 	s := newSheet(wide, title, d.Record.Title)
-	groups := d.split(first)
 	left := marginX + math.Max(leftMargin(ys), leftMargin(rs))
 	var keys []key
 	for k, g := range groups {
@@ -70,7 +90,7 @@ func (d *Data) Fit() (*Figure, error) {
 		if n == "" {
 			n = "readings"
 		}
-		keys = append(keys, key{look: lookOf(k), name: n, point: true, line: true})
+		keys = append(keys, key{look: lookOf(k), name: n, point: true, line: lines[k].x != nil})
 	}
 	s.keys(keys, left)
 	top := &panel{c: s.c, xs: xs, ys: ys}
@@ -86,13 +106,13 @@ func (d *Data) Fit() (*Figure, error) {
 	var skip []bool
 	for k, g := range groups {
 		lk := lookOf(k)
-		gx, gy, gu, gf, gr := pick(x, g.rows), pick(r.Response, g.rows), pick(r.U, g.rows), pick(r.Fitted, g.rows), pick(r.Standardised, g.rows)
+		gx, gy, gu, gr := pick(x, g.rows), pick(r.Response, g.rows), pick(r.U, g.rows), pick(r.Standardised, g.rows)
 		skip = skip[:0]
 		for _, i := range g.rows {
 			skip = append(skip, r.Excluded[i])
 		}
-		if cx, cy, ok := guide(gx, gf, skip, xs); ok && first >= 0 {
-			top.curve(cx, cy, pen{stroke: lk.color, width: 1, dash: dashText(lk.dash)})
+		if l := lines[k]; l.x != nil {
+			top.curve(l.x, l.y, pen{stroke: lk.color, width: 1, dash: dashText(lk.dash)})
 		} else {
 			joined = false
 		}
@@ -127,8 +147,7 @@ func (d *Data) Fit() (*Figure, error) {
 	top.axes(frame{tag: "a", noX: true})
 	foot.axes(frame{tag: "b"})
 	s.y = foot.y + foot.h + below
-	_, lines := d.reasons()
-	if len(lines) > 0 {
+	if d.hollow() != "" {
 		s.note("Open markers: readings left out of the fit, see the residuals in order of acquisition.")
 	}
 	caption := fmt.Sprintf("a, %s against %s with error bars of one standard uncertainty (often smaller than the marker)", name, xName)
@@ -156,19 +175,4 @@ func (p *panel) edgeDots(x, y []float64, rows []int, m marker, r float64, color 
 		shape.mark(&q, cx, cy, r)
 		p.c.draw(q, shape.pen(color, true))
 	}
-}
-
-// leading is the predictor that spans the widest range of values relative to
-// its clusters: the first with more than one value, −1 when there is none.
-func (d *Data) leading() int {
-	for c, v := range d.Rows.Predictors {
-		var s spanner
-		for _, x := range v {
-			s.add(x)
-		}
-		if s.n == d.Rows.N && s.hi > s.lo && s.hi-s.lo > 1e-3*math.Max(math.Abs(s.lo), math.Abs(s.hi)) {
-			return c
-		}
-	}
-	return -1
 }

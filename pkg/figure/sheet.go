@@ -147,9 +147,17 @@ func wrap(s string, size, most float64) []string {
 	return out
 }
 
-// words makes a name of the bench readable: "contact_potential" is "contact
-// potential".
-func words(name string) string { return strings.ReplaceAll(OneLine(name), "_", " ") }
+// Words makes a key of the bench readable: "channels.voltage.gain" is "voltage
+// gain", "contact_potential" is "contact potential".
+func Words(key string) string {
+	s := OneLine(key)
+	for _, table := range []string{"channels.", "corrections.", "environment.", "quantities."} {
+		s = strings.TrimPrefix(s, table)
+	}
+	return strings.NewReplacer("_", " ", ".", " ").Replace(s)
+}
+
+func words(key string) string { return Words(key) }
 
 // number writes a value for a sentence, three significant digits.
 func number(x float64) string {

@@ -157,13 +157,15 @@ func because(reason string) string {
 	return ": " + strings.TrimSuffix(reason, ".")
 }
 
-func (d *document) parameters(rec *reduce.Record) {
+// Parameters is the table of the estimates with their uncertainties, starts and
+// what was known before; nil when nothing was estimated.
+func Parameters(rec *reduce.Record) *Table {
 	if len(rec.Fit.Parameters) == 0 {
-		return
+		return nil
 	}
 	t := &Table{Columns: []Column{{Name: "parameter"}, {Name: "unit"}, {Name: "estimate", Align: Decimal}, {Name: "u of the fit", Align: Decimal},
 		{Name: "u in all", Align: Decimal}, {Name: "start", Align: Decimal}, {Name: "known before", Align: Right}}}
-	missing, total := false, false
+	total := false
 	for i := range rec.Fit.Parameters {
 		p := &rec.Fit.Parameters[i]
 		u := p.U
@@ -171,14 +173,11 @@ func (d *document) parameters(rec *reduce.Record) {
 			u = p.UTotal
 		}
 		v, _, unit := measured(p.Value, u, p.Unit)
-		if !finite(p.U) {
-			missing = true
-		}
 		total = total || finite(p.UTotal)
 		prior := "–"
 		if p.Prior != nil {
 			pv, pu := si.Round(unit.FromSI(float64(p.Prior.Value)), unit.DeltaFromSI(float64(p.Prior.U)))
-			prior = minus(power(pv)) + " ± " + power(pu)
+			prior = rounded(pv) + " ± " + power(pu)
 		}
 		t.Rows = append(t.Rows, []string{words(p.Name), unitText(unit), v, uncertain(p.U, unit), uncertain(p.UTotal, unit),
 			minus(short(unit.FromSI(float64(p.Start)), 5)), prior})
@@ -188,6 +187,19 @@ func (d *document) parameters(rec *reduce.Record) {
 			t.Rows[i] = append(t.Rows[i][:4], t.Rows[i][5:]...)
 		}
 		t.Columns = append(t.Columns[:4], t.Columns[5:]...)
+	}
+	return t
+}
+
+func (d *document) parameters(rec *reduce.Record) {
+	t := Parameters(rec)
+	if t == nil {
+		return
+	}
+	missing, total := false, false
+	for i := range rec.Fit.Parameters {
+		missing = missing || !finite(rec.Fit.Parameters[i].U)
+		total = total || finite(rec.Fit.Parameters[i].UTotal)
 	}
 	d.head("Parameters")
 	d.show(t)
@@ -218,9 +230,19 @@ func finite(n reduce.Number) bool { return !math.IsNaN(float64(n)) && !math.IsIn
 const widestMatrix = 10
 
 func (d *document) correlations(rec *reduce.Record) {
+	if t := Correlations(rec); t != nil {
+		d.head("Correlations of the parameters")
+		d.show(t)
+	}
+}
+
+// Correlations is the table of all correlations of the parameters, statistical
+// part: a triangle, or a list of pairs when there are many; nil for fewer than
+// two parameters.
+func Correlations(rec *reduce.Record) *Table {
 	ps, cov := rec.Fit.Parameters, rec.Fit.Covariance
 	if len(ps) < 2 || len(cov) != len(ps) {
-		return
+		return nil
 	}
 	r := func(i, j int) string {
 		if len(cov[i]) != len(ps) || len(cov[j]) != len(ps) {
@@ -232,7 +254,6 @@ func (d *document) correlations(rec *reduce.Record) {
 		}
 		return minus(fmt.Sprintf("%+.3f", v))
 	}
-	d.head("Correlations of the parameters")
 	if len(ps) > widestMatrix {
 		t := &Table{Columns: []Column{{Name: "between"}, {Name: "and"}, {Name: "r", Align: Right}}}
 		for i := range ps {
@@ -240,8 +261,7 @@ func (d *document) correlations(rec *reduce.Record) {
 				t.Rows = append(t.Rows, []string{words(ps[j].Name), words(ps[i].Name), r(i, j)})
 			}
 		}
-		d.show(t)
-		return
+		return t
 	}
 	t := &Table{Columns: []Column{{Name: ""}, {Name: "parameter", Most: 30}}}
 	for i := range ps[:len(ps)-1] {
@@ -254,7 +274,7 @@ func (d *document) correlations(rec *reduce.Record) {
 		}
 		t.Rows = append(t.Rows, row)
 	}
-	d.show(t)
+	return t
 }
 
 func (d *document) goodness(rec *reduce.Record) {
@@ -288,8 +308,17 @@ func (d *document) goodness(rec *reduce.Record) {
 }
 
 func (d *document) tests(rec *reduce.Record) {
+	if t := Tests(rec); t != nil {
+		d.head("Residuals")
+		d.show(t)
+	}
+}
+
+// Tests is the table of the tests of the residuals with their verdicts at 1 %;
+// nil when none was made.
+func Tests(rec *reduce.Record) *Table {
 	if len(rec.Diagnosis.Tests) == 0 {
-		return
+		return nil
 	}
 	t := &Table{Columns: []Column{{Name: "test of the residuals", Most: 22}, {Name: "looks at", Most: 44}, {Name: "statistic", Align: Decimal},
 		{Name: "p", Align: Decimal}, {Name: "at 1 %"}}}
@@ -303,8 +332,7 @@ func (d *document) tests(rec *reduce.Record) {
 		}
 		t.Rows = append(t.Rows, []string{testName(x.Name), x.Doc, minus(digits(float64(x.Statistic), 3)), probability(x.PValue), verdict})
 	}
-	d.head("Residuals")
-	d.show(t)
+	return t
 }
 
 // testName gives a test the name that people know.
@@ -348,12 +376,28 @@ func (d *document) causes(rec *reduce.Record) {
 }
 
 func (d *document) corrections(rec *reduce.Record) {
-	if len(rec.Corrections) == 0 {
+	t := Corrections(rec)
+	if t == nil {
 		return
+	}
+	d.head("Corrections")
+	d.show(t)
+	for _, c := range rec.Corrections {
+		if c.Used && (c.Unit == "1" || c.Unit == "") {
+			d.say("Sizes are means over the readings in use; those in % and ppm are relative to the response.")
+			return
+		}
+	}
+}
+
+// Corrections is the table of every correction of the bench with its mean size
+// and what remains uncertain of it; nil when the bench has none.
+func Corrections(rec *reduce.Record) *Table {
+	if len(rec.Corrections) == 0 {
+		return nil
 	}
 	t := &Table{Columns: []Column{{Name: "correction", Most: 20}, {Name: "what it is", Most: 46}, {Name: "size", Align: Decimal},
 		{Name: "u", Align: Decimal}, {Name: "unit"}}}
-	relative := false
 	for _, c := range rec.Corrections {
 		if !c.Used {
 			t.Rows = append(t.Rows, []string{words(c.Name), c.Doc, "off", "", ""})
@@ -361,9 +405,8 @@ func (d *document) corrections(rec *reduce.Record) {
 		}
 		size, u, unit := float64(c.Size), float64(c.U), c.Unit
 		if unit == "1" || unit == "" {
-			relative = true
 			f, name := 1e6, "ppm"
-			if math.Max(math.Abs(size), u) >= 1e-3 {
+			if math.Max(math.Abs(size), u) >= 1e-4 {
 				f, name = 100, "%"
 			}
 			var v, du string
@@ -372,21 +415,17 @@ func (d *document) corrections(rec *reduce.Record) {
 			} else {
 				v, du = short(f*size, 3), short(f*u, 2)
 			}
-			t.Rows = append(t.Rows, []string{words(c.Name), c.Doc, minus(power(v)), power(du), name})
+			t.Rows = append(t.Rows, []string{words(c.Name), c.Doc, rounded(v), power(du), name})
 			continue
 		}
 		v, du, shown := measured(c.Size, c.U, unit)
 		t.Rows = append(t.Rows, []string{words(c.Name), c.Doc, v, du, unitText(shown)})
 	}
-	d.head("Corrections")
-	d.show(t)
-	if relative {
-		d.say("Sizes are means over the readings in use; those in % and ppm are relative to the response.")
-	}
+	return t
 }
 
 // sameShares is how far shares may differ for two measurands to have one budget.
-const sameShares = 5e-4
+const sameShares = 1e-3
 
 func (d *document) budgets(rec *reduce.Record) {
 	var first *reduce.Measurand
@@ -396,32 +435,42 @@ func (d *document) budgets(rec *reduce.Record) {
 			continue
 		}
 		if first != nil && alike(first, m) {
-			d.say(fmt.Sprintf("The inputs have the same shares in the variance of %s, whose standard uncertainty is %s.", words(m.Name), one(m.U, m.Unit, 2)))
+			d.say(fmt.Sprintf("The inputs have the same shares, to 0.1%s%%, in the variance of the %s, whose standard uncertainty is %s; the record holds its lines.",
+				nbsp, words(m.Name), one(m.U, m.Unit, 2)))
 			continue
 		}
 		if first == nil {
 			first = m
 		}
 		d.head("Uncertainty budget of the " + words(m.Name))
-		d.show(budget(m))
+		d.show(Budget(m))
 	}
 }
 
+// alike tells whether two budgets have the same shares, inputs that hardly
+// matter aside.
 func alike(a, b *reduce.Measurand) bool {
-	if len(a.Budget) != len(b.Budget) {
-		return false
+	share := map[string]float64{}
+	for _, l := range a.Budget {
+		share[l.Input] = float64(l.Share)
 	}
-	for i := range a.Budget {
-		if a.Budget[i].Input != b.Budget[i].Input || !(math.Abs(float64(a.Budget[i].Share-b.Budget[i].Share)) <= sameShares) {
+	for _, l := range b.Budget {
+		if !(math.Abs(float64(l.Share)-share[l.Input]) <= sameShares) {
+			return false
+		}
+		delete(share, l.Input)
+	}
+	for _, s := range share {
+		if !(math.Abs(s) <= sameShares) {
 			return false
 		}
 	}
 	return true
 }
 
-// budget is the table with the columns of EA-4/02 section 4, by parts of the
+// Budget is the table of a measurand with the columns of EA-4/02 section 4, by parts of the
 // bench, the weightiest first.
-func budget(m *reduce.Measurand) *Table {
+func Budget(m *reduce.Measurand) *Table {
 	mu := display(math.Max(math.Abs(float64(m.Value)), float64(m.U)), m.Unit)
 	cu := display(float64(m.U), m.Unit)
 	per := mu.String()
@@ -475,14 +524,14 @@ func budget(m *reduce.Measurand) *Table {
 				v, du, unitText(unit), b.Shape, freedom(b.DOF), sens, digits(cu.DeltaFromSI(float64(b.Contribution)), 2)})
 		}
 	}
-	t.Rows = append(t.Rows, []string{"combined", "", "100.0", minus(valueOnly(m, mu)), uncertain(m.U, mu), unitText(mu), "", freedom(m.DOF), "", digits(cu.DeltaFromSI(float64(m.U)), 2)})
+	t.Rows = append(t.Rows, []string{"combined", "", "100.0", valueOnly(m, mu), uncertain(m.U, mu), unitText(mu), "", freedom(m.DOF), "", digits(cu.DeltaFromSI(float64(m.U)), 2)})
 	t.Sum = 1
 	return t
 }
 
 func valueOnly(m *reduce.Measurand, u si.Unit) string {
 	v, _ := si.Round(u.FromSI(float64(m.Value)), u.DeltaFromSI(float64(m.U)))
-	return power(v)
+	return rounded(v)
 }
 
 func (d *document) monteCarlo(rec *reduce.Record) {

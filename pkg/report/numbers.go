@@ -53,7 +53,16 @@ func measured(value, u reduce.Number, symbol string) (v, du string, unit si.Unit
 		return minus(short(unit.FromSI(x), 12)), "0", unit
 	}
 	v, du = si.Round(unit.FromSI(x), unit.DeltaFromSI(ux))
-	return minus(power(v)), power(du), unit
+	return rounded(v), power(du), unit
+}
+
+// rounded sets a value that package si rounded: "0.0e-5" is 0.
+func rounded(v string) string {
+	mantissa, _, exponent := strings.Cut(v, "e")
+	if exponent && strings.Trim(mantissa, "-0.") == "" {
+		return "0"
+	}
+	return minus(power(v))
 }
 
 // power rewrites "1.2e-30" as "1.2×10⁻³⁰".
@@ -176,10 +185,4 @@ func plural(n int, one, many string) string {
 }
 
 // words makes a key of the bench readable.
-func words(key string) string {
-	s := figure.OneLine(key)
-	for _, table := range []string{"channels.", "corrections.", "environment.", "quantities."} {
-		s = strings.TrimPrefix(s, table)
-	}
-	return strings.NewReplacer("_", " ", ".", " ").Replace(s)
-}
+func words(key string) string { return figure.Words(key) }

@@ -132,7 +132,7 @@ func bar(s string) string {
 // layOut breaks texts that are wider than most, so that a row is as many lines
 // as its longest cell; it returns the lines of each cell, the widths of the
 // columns and that of the table.
-func (t *Table) layOut(rows [][]string, most []int) (broken [][][]string, widths []int, total int) {
+func (t *Table) layOut(rows [][]string, most []int, space int) (broken [][][]string, widths []int, total int) {
 	broken = make([][][]string, len(rows))
 	widths = make([]int, len(t.Columns))
 	grouped := len(t.Sections) > 0
@@ -166,7 +166,7 @@ func (t *Table) layOut(rows [][]string, most []int) (broken [][][]string, widths
 	for c, w := range widths {
 		total += w
 		if c > 0 {
-			total += t.gap(c)
+			total += t.gap(c, space)
 		}
 	}
 	return broken, widths, total
@@ -174,11 +174,11 @@ func (t *Table) layOut(rows [][]string, most []int) (broken [][][]string, widths
 
 // gap is the distance of column c from the one before: a unit stands close to
 // its number, a percentage to its bar.
-func (t *Table) gap(c int) int {
+func (t *Table) gap(c, space int) int {
 	if t.Columns[c].Close {
 		return 1
 	}
-	return 2
+	return space
 }
 
 func (p *printer) tableAt(t *Table, indent string) {
@@ -192,7 +192,8 @@ func (p *printer) tableAt(t *Table, indent string) {
 			most[c] = 36
 		}
 	}
-	broken, widths, total := t.layOut(rows, most)
+	space := 2
+	broken, widths, total := t.layOut(rows, most, space)
 	if total+cells(indent) > columns {
 		indent = ""
 	}
@@ -204,11 +205,14 @@ func (p *printer) tableAt(t *Table, indent string) {
 				widest = c
 			}
 		}
-		if widest < 0 {
+		if widest < 0 && space == 1 {
 			break
+		} else if widest < 0 {
+			space = 1
+		} else {
+			most[widest] = min(most[widest], widths[widest]) - 1
 		}
-		most[widest] = min(most[widest], widths[widest]) - 1
-		broken, widths, total = t.layOut(rows, most)
+		broken, widths, total = t.layOut(rows, most, space)
 	}
 	grouped := len(t.Sections) > 0
 	ruled := func(r string) { p.line(indent + strings.Repeat(r, total)) }
@@ -223,7 +227,7 @@ func (p *printer) tableAt(t *Table, indent string) {
 		l := indent
 		for c := range t.Columns {
 			if c > 0 {
-				l += strings.Repeat(" ", t.gap(c))
+				l += strings.Repeat(" ", t.gap(c, space))
 			}
 			l += set(c, get(c))
 		}
