@@ -171,7 +171,17 @@ func response(b *bench.Bench, m *model.Model, q [][]float64, of []int, x [][]flo
 		for p := range x {
 			xj[p] = jet.Const(x[p][i])
 		}
-		f := (m.Row(qj[of[i]], xj).V - offset) / gain
+		// A zero is read with the cause removed, a blank with everything but the
+		// cause: neither holds what the model predicts, not even for what is left
+		// at the settings of the row, such as a contact potential.
+		var truth float64
+		if k := b.Rows.Kind[i]; k == bench.Reading || k == bench.Overrange {
+			truth = m.Row(qj[of[i]], xj).V
+		}
+		f := (truth - offset) / gain
+		if b.Rows.Kind[i] != bench.Zero {
+			f += t.Blank
+		}
 		y[i] = f + t.ZeroStart + math.Hypot(noise, ch.RelativeNoise*f)*src.Normal()
 		if t.ZeroRate != 0 && b.Rows.HasTime {
 			y[i] += t.ZeroRate * (b.Rows.Time[i] - b.Rows.Time[0])
