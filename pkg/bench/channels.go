@@ -175,10 +175,12 @@ func (l *loader) groupedEffects(n *node, k *model.Channel, c *Channel) {
 			l.missing(t, "by", "one of "+strings.Join(roleKeys, ", "))
 		}
 		u, ok := l.positive(t, "u", wanted{like: k.Unit, interval: true})
-		if t.fields["u"] == nil {
-			l.missing(t, "u", "the standard uncertainty that the rows of one group share")
+		relative, okRelative := l.ratio(t, "relative_u")
+		if t.fields["u"] == nil && t.fields["relative_u"] == nil {
+			l.missing(t, "u", "the standard uncertainty that the rows of one group share, as u or relative_u")
 		}
-		g := Grouped{By: by, U: u, DOF: l.dof(t, "dof")}
+		ok = ok || okRelative
+		g := Grouped{By: by, U: u, Relative: relative, DOF: l.dof(t, "dof")}
 		l.text(t, "source")
 		if by == "" || !ok {
 			continue

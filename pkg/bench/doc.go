@@ -103,6 +103,7 @@
 //	  by                   one of the row columns: setting, polarity, direction, mount, range, phase,
 //	                       quality
 //	  u                    standard uncertainty
+//	  relative_u           the same as a part of the reading
 //	  dof                  degrees of freedom of u
 //	  source               where u comes from
 //

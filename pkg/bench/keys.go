@@ -96,6 +96,7 @@ var benchDoc = []tableDoc{
 	{"channels.*.grouped[]", "an error that rows with the same word in a row column share", []keyDoc{
 		{"by", "one of the row columns: setting, polarity, direction, mount, range, phase, quality", `"setting"`},
 		{"u", "standard uncertainty", `"3 um"`},
+		{"relative_u", "the same as a part of the reading", `"0.1 %"`},
 		{"dof", "degrees of freedom of u", `8`},
 		{"source", "where u comes from", `"repeated settings"`},
 	}},
@@ -284,7 +285,6 @@ type grammar struct {
 	array    bool     // an array of tables
 	leaf     bool     // a plain value, looked into no further
 	quantity bool     // a quantity: a value, or a table of these keys
-	named    string   // what the names of `each` are, for messages
 }
 
 func (g *grammar) child(name string) *grammar {

@@ -96,6 +96,7 @@ type Setup struct {
 	Options  map[string]string // every option of the kind, defaults filled in
 	Scalars  []float64         // stated or default values, SI, in the kind's order (Δ² for squared ones)
 	Given    map[string]bool   // scalars, by key, that the bench states itself
+	Adjusted map[string]bool   // scalars, by key, that the bench has estimated
 }
 
 // Hazard is what a bench holds at its highest setting, for the cautions.
@@ -141,8 +142,25 @@ type Model struct {
 	Factors map[string]func(q []jet.Jet) jet.Jet
 	// Measurands are those of the kind that this bench can state.
 	Measurands []Measurand
+	// Curve, when not nil, is a result that is stated at each level of the
+	// predictors and anywhere between: the factor of a meter against field.
+	Curve *Curve
 	// Causes are effects that leave a known signature in the residuals.
 	Causes []Cause
+}
+
+// Curve is a result as a function of the level at which it was found.
+type Curve struct {
+	Name, Doc string
+	Unit      si.Unit // of the result, for people
+	Level     string  // what the level is called
+	LevelUnit si.Unit
+	FullScale string // key of the scalar that holds the end of the range, "" when there is none
+	Value     func(q []jet.Jet, level jet.Jet) jet.Jet
+	LevelOf   func(q, x []float64) float64 // level of a row from true predictors, SI
+	// Inverse: the result falls as the response rises (a factor that multiplies
+	// the response), else it rises with it.
+	Inverse bool
 }
 
 // Cause is an effect that is not in the fit and would leave its mark in the

@@ -45,7 +45,7 @@ func Simulate(b *bench.Bench, t *Truth, seed uint64) ([]float64, error) {
 	if err != nil {
 		return nil, err
 	}
-	return response(b, m, q, of, x, t, seed)
+	return response(b, m, q, of, names, x, t, seed)
 }
 
 // Scalars returns the true scalars of a series of the bench ("" when it has only
@@ -78,7 +78,7 @@ func (t *Truth) Scalars(b *bench.Bench, series string) ([]float64, error) {
 // Model prepares the kind of a bench at true scalars q.
 func (t *Truth) Model(b *bench.Bench, q []float64) (*model.Model, error) {
 	k := b.Kind
-	setup := &model.Setup{Channels: map[string]bool{}, On: b.Corrections, Options: b.Options, Given: map[string]bool{}, Scalars: q}
+	setup := &model.Setup{Channels: map[string]bool{}, On: b.Corrections, Options: b.Options, Given: map[string]bool{}, Adjusted: map[string]bool{}, Scalars: q}
 	for i := range b.Channels {
 		setup.Channels[b.Channels[i].Name] = true
 	}
@@ -86,6 +86,7 @@ func (t *Truth) Model(b *bench.Bench, q []float64) (*model.Model, error) {
 		key := k.Scalars[i].Key()
 		_, ok := t.Values[key]
 		setup.Given[key] = b.Scalars[i].Given || ok
+		setup.Adjusted[key] = b.Scalars[i].Adjust
 	}
 	m, err := k.Prepare(k, setup)
 	if err != nil {
@@ -136,11 +137,7 @@ func trueValues(b *bench.Bench, m *model.Model, t *Truth, seed uint64) ([][]floa
 			v[i] = gain*(r+e) + offset
 		}
 		for _, g := range ch.Grouped {
-			errs := make([]float64, g.Count)
-			src.FillNormal(errs)
-			for i := range v {
-				v[i] += math.Hypot(g.U, g.Relative*ch.Readings[i]) * errs[g.Group[i]]
-			}
+			grouped(&src, &g, v, ch.Readings)
 		}
 		x = append(x, v)
 	}
@@ -151,7 +148,7 @@ func trueValues(b *bench.Bench, m *model.Model, t *Truth, seed uint64) ([][]floa
 }
 
 // response predicts the readings and disturbs them.
-func response(b *bench.Bench, m *model.Model, q [][]float64, of []int, x [][]float64, t *Truth, seed uint64) ([]float64, error) {
+func response(b *bench.Bench, m *model.Model, q [][]float64, of []int, names []string, x [][]float64, t *Truth, seed uint64) ([]float64, error) {
 	ch := &b.Channels[responseChannel(b)]
 	gain, offset := t.scale(ch)
 	src := random.New(seed, stream+" "+ch.Name, 0)
@@ -178,7 +175,7 @@ func response(b *bench.Bench, m *model.Model, q [][]float64, of []int, x [][]flo
 		if k := b.Rows.Kind[i]; k == bench.Reading || k == bench.Overrange {
 			truth = m.Row(qj[of[i]], xj).V
 		}
-		f := (truth - offset) / gain
+		f := (truth*(1+t.defect(b, i, names[of[i]])) - offset) / gain
 		if b.Rows.Kind[i] != bench.Zero {
 			f += t.Blank
 		}
@@ -191,11 +188,7 @@ func response(b *bench.Bench, m *model.Model, q [][]float64, of []int, x [][]flo
 		}
 	}
 	for _, g := range ch.Grouped {
-		errs := make([]float64, g.Count)
-		src.FillNormal(errs)
-		for i := range y {
-			y[i] += math.Hypot(g.U, g.Relative*y[i]) * errs[g.Group[i]]
-		}
+		grouped(&src, &g, y, append([]float64(nil), y...))
 	}
 	for _, f := range t.Faults {
 		y[f.Row-1] += f.Add
@@ -210,6 +203,41 @@ func response(b *bench.Bench, m *model.Model, q [][]float64, of []int, x [][]flo
 		}
 	}
 	return y, nil
+}
+
+// grouped adds the errors that the rows of a group share: fixed ones, and ones
+// relative to the values of, which change sign with them.
+func grouped(src *random.Source, g *bench.Grouped, v, of []float64) {
+	errs := make([]float64, g.Count)
+	if g.U > 0 {
+		src.FillNormal(errs)
+		for i := range v {
+			v[i] += g.U * errs[g.Group[i]]
+		}
+	}
+	if g.Relative > 0 {
+		src.FillNormal(errs)
+		for i := range v {
+			v[i] += g.Relative * of[i] * errs[g.Group[i]]
+		}
+	}
+}
+
+// defect is the relative change that the stated defects bring to record i.
+func (t *Truth) defect(b *bench.Bench, i int, series string) float64 {
+	var d float64
+	for _, x := range t.Defects {
+		if x.Series != "" && x.Series != series {
+			continue
+		}
+		switch b.Rows.Label(x.By, i) {
+		case "+", "positive", "up":
+			d += x.Size
+		case "-", "−", "negative", "down":
+			d -= x.Size
+		}
+	}
+	return d
 }
 
 // File is a file of a simulated bench, named relative to its folder.

@@ -33,6 +33,17 @@ type Truth struct {
 	Blank float64
 	// Faults are added to single readings of the response.
 	Faults []Fault
+	// Defects change the response in a way the model does not know.
+	Defects []Defect
+}
+
+// Defect changes the response f of the rows of a series to f(1 + Size·h), h being
+// +1 or −1 by the word of a row column: positive and negative polarity, rising
+// and falling direction.
+type Defect struct {
+	By     string // "polarity" or "direction"
+	Series string // "" for all
+	Size   float64
 }
 
 // Fault is a disturbance of one reading.
@@ -59,6 +70,11 @@ type truthFile struct {
 		Row int    `toml:"row"`
 		Add string `toml:"add"`
 	} `toml:"fault"`
+	Defect []struct {
+		By     string `toml:"by"`
+		Series string `toml:"series"`
+		Size   string `toml:"size"`
+	} `toml:"defect"`
 }
 
 // ReadTruth reads simulation.toml in the folder of a bench.
@@ -154,6 +170,19 @@ func ReadTruth(b *bench.Bench) (*Truth, error) {
 			return nil, fmt.Errorf("%s: fault.row: %d is not a data record; there are %d, counted from 1", path, x.Row, b.Rows.N)
 		}
 		t.Faults = append(t.Faults, Fault{Row: x.Row, Add: add})
+	}
+	for _, x := range f.Defect {
+		if x.By != "polarity" && x.By != "direction" {
+			return nil, fmt.Errorf("%s: defect.by: %q is not known; use polarity or direction", path, x.By)
+		}
+		if b.Rows.Labels[x.By] == nil {
+			return nil, fmt.Errorf("%s: defect.by: the bench names no column in [rows] %s", path, x.By)
+		}
+		size, err := quantity("defect.size", x.Size, si.MustUnit("1"))
+		if err != nil {
+			return nil, err
+		}
+		t.Defects = append(t.Defects, Defect{By: x.By, Series: x.Series, Size: size})
 	}
 	return t, nil
 }

@@ -21,6 +21,7 @@ type chain struct {
 	kind  *model.Kind  // as registered
 	setup *model.Setup
 	m     *model.Model
+	one   *model.Model // of one series
 
 	q     []float64 // scalars in the kind's order, as predictions take them
 	free  []int     // indices of the estimated ones
@@ -40,6 +41,7 @@ type chain struct {
 
 	inputs []input     // shared inputs and priors: what the budget lists by name
 	comps  []component // what varies between rows
+	fitted []float64   // predictions at the last weights, where components need them
 	scale  float64     // noise of the response when it is unknown: the current estimate
 
 	warnings []error
@@ -75,13 +77,14 @@ func newChain(b *bench.Bench) (*chain, error) {
 	c := &chain{b: b, scale: math.NaN()}
 	k := b.Kind
 	c.kind = k
-	c.setup = &model.Setup{Channels: map[string]bool{}, On: b.Corrections, Options: b.Options, Given: map[string]bool{}}
+	c.setup = &model.Setup{Channels: map[string]bool{}, On: b.Corrections, Options: b.Options, Given: map[string]bool{}, Adjusted: map[string]bool{}}
 	for _, ch := range b.Channels {
 		c.setup.Channels[ch.Name] = true
 	}
 	c.q = make([]float64, len(k.Scalars))
 	for i, s := range b.Scalars {
 		c.setup.Given[s.Name] = s.Given
+		c.setup.Adjusted[s.Name] = s.Adjust
 		c.q[i] = s.Dist.Value
 		if k.Scalars[i].Squared {
 			c.q[i], _ = squareMoments(s.Dist)
@@ -92,6 +95,7 @@ func newChain(b *bench.Bench) (*chain, error) {
 	if c.m, err = k.Prepare(k, c.setup); err != nil {
 		return nil, fmt.Errorf("%s/bench.toml: %w", b.Dir, err)
 	}
+	c.one = c.m
 	c.expandSeries()
 	k, b = c.b.Kind, c.b
 	if err := c.findChannels(); err != nil {

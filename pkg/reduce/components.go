@@ -29,12 +29,16 @@ type component struct {
 	unknown               bool  // noise of the response, from the residuals
 }
 
-// u is the standard uncertainty of row i.
+// u is the standard uncertainty of row i; for a relative error of a group it has
+// the sign of the reading.
 func (k *component) u(i int) float64 {
 	if k.relative == 0 {
 		return k.gain * k.fixed
 	}
 	r := k.relative * k.readings[i]
+	if k.group != nil {
+		return k.gain * r
+	}
 	return k.gain * math.Sqrt(k.fixed*k.fixed+r*r)
 }
 
@@ -77,10 +81,25 @@ func (c *chain) listComponents() error {
 			c.comps = append(c.comps, comp)
 		}
 		for _, g := range ch.Grouped {
-			comp := component{name: ch.Name + " per " + g.By, channel: ch.Name, unit: ch.Unit, on: on, dof: g.DOF,
-				gain: gain, fixed: g.U, relative: g.Relative, readings: readings}
+			comp := component{name: ch.Name + " per " + g.By, channel: ch.Name, unit: ch.Unit, on: on, dof: g.DOF, gain: gain}
 			comp.group, comp.count = compact(g.Group, c.record)
-			c.comps = append(c.comps, comp)
+			if g.U > 0 {
+				comp.fixed = g.U
+				c.comps = append(c.comps, comp)
+			}
+			if g.Relative > 0 {
+				// One relative error a group: it changes sign with the reading, and
+				// for the response it is built from fitted values, since readings
+				// would pull the fit down (weights that follow the noise).
+				comp.fixed, comp.relative, comp.readings = 0, g.Relative, readings
+				if on < 0 {
+					if c.fitted == nil {
+						c.fitted = append([]float64(nil), c.y...)
+					}
+					comp.readings = c.fitted
+				}
+				c.comps = append(c.comps, comp)
+			}
 		}
 	}
 	if c.zero != nil {
@@ -191,6 +210,9 @@ func (c *chain) wanted() []bool {
 // scalars q: the covariance of the readings there.
 func (c *chain) reweight(q []float64, u []float64, e *lsq.Effects) {
 	slope := c.slopes(q, c.wanted())
+	if c.fitted != nil {
+		c.indication(q, c.fitted, nil)
+	}
 	clear(u)
 	for k := range c.comps {
 		comp := &c.comps[k]

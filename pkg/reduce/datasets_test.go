@@ -4,6 +4,7 @@ import (
 	"math"
 	"os"
 	"path/filepath"
+	"strings"
 	"testing"
 
 	"example.org/guardring/pkg/bench"
@@ -74,6 +75,9 @@ func (w *world) trueScalar(i int) float64 {
 // of the first series, then those of the next.
 func (w *world) trueMeasurand(t testing.TB, n int) float64 {
 	each := len(w.model.Measurands)
+	if n >= each*len(w.series) {
+		return w.trueShift(t, n-each*len(w.series))
+	}
 	truth, err := w.truth.Scalars(w.b, w.series[n/each])
 	if err != nil {
 		t.Fatal(err)
@@ -83,6 +87,23 @@ func (w *world) trueMeasurand(t testing.TB, n int) float64 {
 		q[i] = jet.Const(v)
 	}
 	return w.model.Measurands[n%each].Value(q).V
+}
+
+// trueShift is the true value of the n-th shift by adjustment.
+func (w *world) trueShift(t testing.TB, n int) float64 {
+	each := len(w.model.Measurands)
+	for left, name := range w.series {
+		for found, other := range w.series {
+			if other != name && other == strings.Replace(name, reduce.AsLeft, reduce.AsFound, 1) {
+				if n == 0 {
+					return w.trueMeasurand(t, left*each) - w.trueMeasurand(t, found*each)
+				}
+				n--
+			}
+		}
+	}
+	t.Fatalf("%s: there is no shift %d", w.name, n)
+	return 0
 }
 
 // draw makes one laboratory's bench of the world: what is stated scatters about

@@ -54,7 +54,11 @@ func (p *predictor) rows(q []float64, x [][]float64, lo, hi int, f []float64, ja
 func (c *chain) indication(q []float64, f []float64, jac [][]float64) {
 	g, o := gainOffset(&c.b.Channels[c.resp])
 	parallel(len(f), chunkRows, func(lo, hi int) {
-		newPredictor(c.m, len(q), len(c.x), c.free).rows(q, c.x, lo, hi, f, jac)
+		own := q
+		if c.series != nil {
+			own = append([]float64(nil), q...) // a prediction of series moves scalars about
+		}
+		newPredictor(c.m, len(q), len(c.x), c.free).rows(own, c.x, lo, hi, f, jac)
 		toIndication(g, o, lo, hi, f, jac)
 	})
 }

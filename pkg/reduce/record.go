@@ -55,6 +55,7 @@ type Record struct {
 	Corrections []Correction `json:"corrections"`
 	Fit         Fit          `json:"fit"`
 	Measurands  []Measurand  `json:"measurands"`
+	Series      []Series     `json:"series,omitempty"`
 	Diagnosis   Diagnosis    `json:"diagnosis"`
 	Hazard      Hazard       `json:"hazard"`
 	Warnings    []string     `json:"warnings"`
@@ -179,6 +180,52 @@ type MonteCarlo struct {
 	DLow     Number    `json:"d_low"`
 	DHigh    Number    `json:"d_high"`
 	Agrees   bool      `json:"agrees"`
+}
+
+// Series is what a bench whose kind states a result at every level found for one
+// series of readings: the points, and what sets them apart from a straight line.
+type Series struct {
+	Name      string  `json:"name"`
+	Result    string  `json:"result"` // what is stated at each point
+	Unit      string  `json:"unit"`
+	Level     string  `json:"level"` // what it is stated against
+	LevelUnit string  `json:"level_unit"`
+	Points    []Point `json:"points"`
+	FullScale Number  `json:"full_scale"`
+	// NonLinearity is the largest departure of a point's mean indication from the
+	// fit, over full scale; Repeatability the pooled standard deviation of one
+	// reading about the mean of its point and mounting, relative to the reading;
+	// Reproducibility that of the mountings' means about their common mean.
+	NonLinearity     Number   `json:"non_linearity"`
+	Repeatability    Number   `json:"repeatability"`
+	RepeatabilityDOF int      `json:"repeatability_dof"`
+	Reproducibility  Number   `json:"reproducibility"`
+	Mountings        int      `json:"mountings"`
+	Effects          []Effect `json:"effects"`
+}
+
+// Point is one level of a series.
+type Point struct {
+	Level      Number `json:"level"`
+	Rows       int    `json:"rows"`
+	Indication Number `json:"indication"` // mean corrected reading of the response
+	Fitted     Number `json:"fitted"`     // mean prediction
+	Observed   Number `json:"observed"`   // the result from this point alone
+	Value      Number `json:"value"`      // the result of the fit at this level
+	U          Number `json:"u"`
+	K          Number `json:"k"`
+	Expanded   Number `json:"expanded"`
+}
+
+// Effect is a departure from the model that the readings could show: its
+// estimate, relative to the response, with a test of zero.
+type Effect struct {
+	Name     string `json:"name"`
+	Doc      string `json:"doc"`
+	Estimate Number `json:"estimate"`
+	U        Number `json:"u"`
+	PValue   Number `json:"p_value"`
+	Passed   bool   `json:"passed"` // at 1 %
 }
 
 // Diagnosis holds the tests of the residuals.

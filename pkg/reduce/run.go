@@ -114,13 +114,45 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 		return nil, err
 	}
 	res.Record.Hazard = c.hazard(k)
+	if res.Record.Series, err = c.seriesRecords(fit, k, p); err != nil {
+		return nil, err
+	}
 	res.Record.Diagnosis.Causes = c.causes(fit, k)
+	res.warn(judge(&res.Record)...)
 	if !s.LawOnly {
 		if err := c.check(ctx, fit, k, laws, s, p, res); err != nil {
 			return nil, err
 		}
 	}
 	return res.finish(s), nil
+}
+
+// judge turns what the residuals say into warnings, one sentence each.
+func judge(r *Record) []error {
+	var w []error
+	switch p := float64(r.Fit.PValue); {
+	case p < 0.001:
+		w = append(w, fmt.Errorf("the residuals are larger than the stated noise allows (chi-squared probability %.1g): an effect is missing from the model, or the noise is understated; the uncertainty does not cover it", p))
+	case p > 0.999:
+		w = append(w, fmt.Errorf("the residuals are smaller than the stated noise makes likely (chi-squared probability %.4f): the noise may be overstated", p))
+	}
+	for _, t := range r.Diagnosis.Tests {
+		if !t.Passed {
+			w = append(w, fmt.Errorf("the residuals fail the test of %s (p = %.1g)", t.Name, float64(t.PValue)))
+		}
+	}
+	for _, s := range r.Series {
+		for _, e := range s.Effects {
+			if !e.Passed {
+				w = append(w, fmt.Errorf("%s: %s of %.2g %% with u = %.1g %% (p = %.1g)", SeriesName(s.Result, s.Name), e.Name, 100*float64(e.Estimate), 100*float64(e.U), float64(e.PValue)))
+			}
+		}
+	}
+	if len(r.Diagnosis.Causes) > 0 {
+		c := r.Diagnosis.Causes[0]
+		w = append(w, fmt.Errorf("the residuals carry the signature of %s (p = %.1g); it has not been applied", c.Name, float64(c.PValue)))
+	}
+	return w
 }
 
 // check runs the Monte Carlo trials and compares them with the law.

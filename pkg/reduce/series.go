@@ -139,7 +139,7 @@ func (s *series) wrap(m *model.Model) *model.Model {
 		}
 		return f
 	}
-	w.Block = nil
+	w.Block = s.block(m)
 	w.Start = func(q []float64, free []int, x [][]float64, y []float64) ([]float64, error) {
 		start := make([]float64, len(free))
 		last := len(x) - 1
@@ -202,6 +202,7 @@ func (s *series) wrap(m *model.Model) *model.Model {
 		}
 	}
 	w.Measurands = append(w.Measurands, s.shifts(m)...)
+	w.Curve = nil // taken series by series
 	w.Causes = nil
 	for _, cause := range m.Causes {
 		signature := cause.Signature
@@ -212,6 +213,72 @@ func (s *series) wrap(m *model.Model) *model.Model {
 		w.Causes = append(w.Causes, cause)
 	}
 	return &w
+}
+
+// block predicts runs of rows of one series at a time.
+func (s *series) block(m *model.Model) func(q []float64, x [][]float64, lo, hi int, wrt []int, f []float64, jac [][]float64) bool {
+	if m.Block == nil {
+		return nil
+	}
+	return func(q []float64, x [][]float64, lo, hi int, wrt []int, f []float64, jac [][]float64) bool {
+		last := len(x) - 1
+		var wrtSpace [8]int
+		var jacSpace [8][]float64
+		for a := lo; a < hi; {
+			n := int(x[last][a])
+			b := a + 1
+			for b < hi && x[last][b] == x[last][a] {
+				b++
+			}
+			part, columns := wrtSpace[:0], jacSpace[:0]
+			for k, j := range wrt {
+				local := s.local(n, j)
+				if jac != nil {
+					if local < 0 {
+						clear(jac[k][a:b]) // another series' own
+						continue
+					}
+					columns = append(columns, jac[k])
+				}
+				if local >= 0 {
+					part = append(part, local)
+				}
+			}
+			if jac == nil {
+				columns = nil
+			}
+			own := s.own[n]
+			for _, j := range s.swap {
+				q[j], q[own[j]] = q[own[j]], q[j]
+			}
+			ok := m.Block(q[:s.base], x[:last], a, b, part, f, columns)
+			for _, j := range s.swap {
+				q[j], q[own[j]] = q[own[j]], q[j]
+			}
+			if !ok {
+				return false
+			}
+			a = b
+		}
+		return true
+	}
+}
+
+// local is the place in the kind of scalar i as series n sees it, or −1 when it
+// is another series' own.
+func (s *series) local(n, i int) int {
+	if i < s.base {
+		if s.own[n][i] == i {
+			return i
+		}
+		return -1
+	}
+	for _, j := range s.swap {
+		if s.own[n][j] == i {
+			return j
+		}
+	}
+	return -1
 }
 
 // The words of the row column "phase" for readings before and after adjustment.
