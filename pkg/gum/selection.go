@@ -51,7 +51,7 @@ func coverCount(n int, p float64) (int, error) {
 // selectionBins is the number of bins that sort trials roughly before the tails
 // are put in order, selectionSample how many trials lay them out.
 const (
-	selectionBins   = 1 << 12
+	selectionBins   = 1 << 13
 	selectionSample = 2000
 )
 
@@ -165,7 +165,12 @@ func segmentOf(y []float64, g *grid, inverse float64, counts []int32) segment {
 			s.undefined++
 			continue
 		}
-		s.lo, s.hi = min(s.lo, v), max(s.hi, v)
+		if v < s.lo {
+			s.lo = v
+		}
+		if v > s.hi {
+			s.hi = v
+		}
 		sum += v - g0.centre
 		c[binOf(&g0, inverse, v)]++
 	}
@@ -173,16 +178,20 @@ func segmentOf(y []float64, g *grid, inverse float64, counts []int32) segment {
 	if s.n == 0 {
 		return s
 	}
-	s.mean = g0.centre + sum/float64(s.n)
-	var d1, d2 float64
-	for _, v := range y {
-		if d := v - s.mean; d-d == 0 {
-			d1 += d
-			d2 += d * d
+	n := float64(s.n)
+	m := g0.centre + sum/n
+	d1, d2 := deviations(y, m)
+	if d2-d2 != 0 { // undefined trials, or squares that overflow
+		d1, d2 = 0, 0
+		for _, v := range y {
+			if d := v - m; d-d == 0 {
+				d1 += d
+				d2 += d * d
+			}
 		}
 	}
-	s.mean += d1 / float64(s.n)
-	s.m2 = d2 - d1*d1/float64(s.n)
+	s.mean = m + d1/n
+	s.m2 = d2 - d1*d1/n
 	return s
 }
 

@@ -64,8 +64,29 @@ func newTally(g grid) *tally {
 
 // add counts the trials y, at most a chunk of them.
 func (t *tally) add(y []float64) {
-	// Four running sums each keep the processor's adders busy; their order is fixed.
-	c := t.centre
+	a, b := deviations(y, t.centre)
+	if b-b != 0 {
+		t.addCarefully(y)
+	} else {
+		t.s1.add(a)
+		t.s2.add(b)
+		t.n += int64(len(y))
+	}
+	inverse := 1 / t.width
+	low := t.low
+	counts := (*[Bins]int64)(t.counts)
+	for _, v := range y {
+		if x := (v - low) * inverse; x >= 0 && x < Bins {
+			counts[int(x)&(Bins-1)]++
+		} else {
+			t.outside(v)
+		}
+	}
+}
+
+// deviations sums y − c and its square. Four running sums each keep the
+// processor's adders busy; their order is fixed.
+func deviations(y []float64, c float64) (sum, squares float64) {
 	var a0, a1, a2, a3, b0, b1, b2, b3 float64
 	i := 0
 	for ; i+4 <= len(y); i += 4 {
@@ -85,24 +106,7 @@ func (t *tally) add(y []float64) {
 		a0 += d
 		b0 += d * d
 	}
-	a, b := (a0+a1)+(a2+a3), (b0+b1)+(b2+b3)
-	if b-b != 0 {
-		t.addCarefully(y)
-	} else {
-		t.s1.add(a)
-		t.s2.add(b)
-		t.n += int64(len(y))
-	}
-	inverse := 1 / t.width
-	low := t.low
-	counts := (*[Bins]int64)(t.counts)
-	for _, v := range y {
-		if x := (v - low) * inverse; x >= 0 && x < Bins {
-			counts[int(x)&(Bins-1)]++
-		} else {
-			t.outside(v)
-		}
-	}
+	return (a0 + a1) + (a2 + a3), (b0 + b1) + (b2 + b3)
 }
 
 // addCarefully sums what is finite of y.
