@@ -27,7 +27,9 @@
 //
 //	Q(t) = (Q + Q_i) exp(−t/τ) + i t φ(t/τ),  φ(u) = (1 − exp(−u))/u,
 //
-// which is Q + Q_i + i t without leakage.
+// which is Q + Q_i + i t without leakage. A blank, the cycle at zero volts, shows
+// Q_i alone when it is read at once; blanks held as long as the readings take the
+// offset current off as well, and its own correction then stays off.
 //
 // # Sheet in the gap
 //

@@ -1,0 +1,269 @@
+package model
+
+import (
+	"fmt"
+	"math"
+
+	"example.org/guardring/pkg/field"
+	"example.org/guardring/pkg/jet"
+	"example.org/guardring/pkg/si"
+)
+
+// PlateCharge is the charge that a voltage puts on a guarded disc, read by an
+// electrometer, or its capacitance, read by a bridge, against the spacing of the
+// plates. The fit gives the permittivity of the gap.
+//
+//	Q = ε A_Q (V − V_c)/(d + δ) + C_s V
+//
+// (field.PlateCharge); what an electrometer makes of Q during the hold time is in
+// the package comment, "Charge readings". The charge is positive when the plate
+// is positive: an electrometer that shows the other sign has a negative gain.
+var PlateCharge = register(&Kind{
+	Name:  "plate-charge",
+	Title: "Charge or capacitance of guarded plates",
+	Doc: "A plate at a known voltage and spacing induces a charge on a guarded disc; the charge, read by an electrometer, " +
+		"or the capacitance, read by a bridge, gives the permittivity of the gap.",
+	Channels: []Channel{
+		{Name: "voltage", Doc: "voltage of the plate against disc and guard; not needed when the capacitance is read", Unit: si.MustUnit("kV"), Role: Predictor, Optional: true},
+		{Name: "gap", Doc: "spacing of plate and disc as read on the micrometer", Unit: si.MustUnit("mm"), Role: Predictor, Positive: true},
+		{Name: "hold", Doc: "time from the step of the voltage to the reading of the charge", Unit: si.MustUnit("s"), Role: Predictor, Optional: true},
+		{Name: "charge", Doc: "charge on the disc; the gain is that of the electrometer's feedback capacitor", Unit: si.MustUnit("nC"), Role: Response},
+		{Name: "capacitance", Doc: "capacitance between plate and disc", Unit: si.MustUnit("pF"), Role: Response},
+	},
+	Scalars: append(append([]Scalar{
+		{Table: "quantities", Name: "permittivity", Doc: "permittivity of the gap", Unit: si.MustUnit("pF/m"), Sought: true, Positive: true, Part: "result"},
+		{Table: "quantities", Name: "contact_potential", Doc: "contact potential, subtracted from the voltage", Unit: si.MustUnit("V"), Adjustable: true, Part: "electrodes"},
+		{Table: "quantities", Name: "gap_offset", Doc: "zero error of the spacing scale, added to the reading", Unit: si.MustUnit("um"), Adjustable: true, Part: "electrodes"},
+		{Table: "quantities", Name: "stray_capacitance", Doc: "capacitance between live plate and disc besides the gap", Unit: si.MustUnit("pF"), Adjustable: true, Part: "electrodes"},
+	}, guardedScalars...), electrometerScalars...),
+	Corrections: append([]Correction{
+		{Name: "guard_gap", Doc: "effective area of the disc with its guard gap", Default: true},
+		{Name: "wedge", Doc: "plates not parallel"},
+		{Name: "coplanarity", Doc: "disc proud of the guard plane"},
+		{Name: "air", Doc: "moist air of the gap, for the permittivity of vacuum"},
+	}, electrometerCorrections...),
+	Prepare: preparePlateCharge,
+})
+
+// chargeChannels sorts out the channels of a bench that reads a charge or a
+// capacitance: the response, and the places of voltage and hold time among the
+// predictors behind those listed (−1: none).
+func chargeChannels(s *Setup, predictors []string) (response string, all []string, voltage, hold int, err error) {
+	response, all, voltage, hold = "capacitance", predictors, -1, -1
+	if s.Channels["charge"] {
+		response = "charge"
+		if !s.Channels["voltage"] {
+			return "", nil, 0, 0, fmt.Errorf("channels.voltage: a charge needs the voltage that it belongs to; name its column, or give channels.capacitance instead of channels.charge")
+		}
+		voltage = len(all)
+		all = append(all, "voltage")
+	} else if s.Given["contact_potential"] {
+		return "", nil, 0, 0, fmt.Errorf("quantities.contact_potential: does not act on a capacitance; leave it out")
+	} else if s.Channels["voltage"] {
+		// Taken for the cautions; the capacitance does not depend on it.
+		voltage = len(all)
+		all = append(all, "voltage")
+	}
+	if s.Channels["hold"] {
+		if response == "capacitance" {
+			return "", nil, 0, 0, fmt.Errorf("channels.hold: a capacitance has no hold time; leave the channel out")
+		}
+		hold = len(all)
+		all = append(all, "hold")
+	}
+	return response, all, voltage, hold, nil
+}
+
+func preparePlateCharge(k *Kind, s *Setup) (*Model, error) {
+	iEps, iVc, iOff, iCs := k.Scalar("permittivity"), k.Scalar("contact_potential"), k.Scalar("gap_offset"), k.Scalar("stray_capacitance")
+	response, predictors, pV, pHold, err := chargeChannels(s, []string{"gap"})
+	if err != nil {
+		return nil, err
+	}
+	charge := response == "charge"
+	g, err := newGuarded(k, s)
+	if err != nil {
+		return nil, err
+	}
+	e, err := newElectrometer(k, s, charge, pHold)
+	if err != nil {
+		return nil, err
+	}
+	m := &Model{Response: response, Predictors: predictors}
+	m.Row = func(q, x []jet.Jet) jet.Jet {
+		c := q[iEps].Mul(g.over(q, x[0].Add(q[iOff])))
+		if !charge {
+			return c.Add(q[iCs])
+		}
+		return e.read(c.Mul(x[pV].Sub(q[iVc])).Add(q[iCs].Mul(x[pV])), q, x)
+	}
+	m.Block = func(q []float64, x [][]float64, lo, hi int, wrt []int, f []float64, jac [][]float64) bool {
+		for _, j := range wrt {
+			if j != iEps && j != iVc && j != iOff && j != iCs && j != e.iCurrent && j != e.iTau && j != e.iInj {
+				return false
+			}
+		}
+		p := g.prepared(q)
+		eps, vc, off, cs := q[iEps], q[iVc], q[iOff], q[iCs]
+		for i := lo; i < hi; i++ {
+			over, slope := p.overValue(x[0][i] + off)
+			v, lever, hold := 1.0, 1.0, 0.0
+			if charge {
+				v = x[pV][i]
+				lever = v - vc
+			}
+			if pHold >= 0 {
+				hold = x[pHold][i]
+			}
+			read, keep, byCurrent, byTau, byInj := eps*over*lever+cs*v, 1.0, 0.0, 0.0, 0.0
+			if charge {
+				read, keep, byCurrent, byTau, byInj = e.row(read, q, hold)
+			}
+			f[i] = read
+			if jac == nil {
+				continue
+			}
+			for n, j := range wrt {
+				var d float64
+				switch j {
+				case iEps:
+					d = over * lever * keep
+				case iVc:
+					if charge {
+						d = -eps * over * keep
+					}
+				case iOff:
+					d = eps * slope * lever * keep
+				case iCs:
+					d = v * keep
+				case e.iCurrent:
+					d = byCurrent
+				case e.iTau:
+					d = byTau
+				case e.iInj:
+					if e.injection {
+						d = byInj
+					}
+				}
+				jac[n][i] = d
+			}
+		}
+		return true
+	}
+	m.Start = func(q []float64, free []int, x [][]float64, y []float64) ([]float64, error) {
+		eps := m.proportional(q, iEps, x, y)
+		if !(eps > 0) {
+			return nil, fmt.Errorf("readings of %s: no charge of the sign of the voltage (rough permittivity %.3g F/m); check the sign and the zero of the channel", response, eps)
+		}
+		return startAt(q, free, iEps, eps), nil
+	}
+	m.Check = func(q []float64, x [][]float64, y []float64) ([]error, error) {
+		minGap := math.Inf(1)
+		for i, d := range x[0] {
+			if d+q[iOff] <= 0 {
+				return nil, &RowError{Row: i, Err: fmt.Errorf("gap %.6g mm: must be above zero", 1e3*(d+q[iOff]))}
+			}
+			if pHold >= 0 && x[pHold][i] < 0 {
+				return nil, &RowError{Row: i, Err: fmt.Errorf("hold %.6g s: a time from the step of the voltage to the reading can't be below zero", x[pHold][i])}
+			}
+			minGap = math.Min(minGap, d+q[iOff])
+		}
+		warn, err := g.check(q, minGap)
+		if err != nil {
+			return nil, err
+		}
+		if w := e.check(q, x); w != nil {
+			warn = append(warn, w)
+		}
+		if charge {
+			warn = append(warn, dampAir(q[g.iH])...)
+		}
+		return append(warn, breakdownWarning(m.Hazard(q, x))...), nil
+	}
+	m.Hazard = func(q []float64, x [][]float64) Hazard {
+		h, worst := Hazard{}, -1.0
+		if pV < 0 {
+			return h // the bench does not say at what voltage its bridge works
+		}
+		delta := airDensity(q[g.iT], q[g.iP])
+		for i, v := range x[pV] {
+			if d := x[0][i] + q[iOff]; d > 0 {
+				h.meet(i, v, v/d, d, math.Max(q[g.iCap], si.Eps0*math.Pi*q[g.iR]*q[g.iR]/d), delta, &worst)
+			}
+		}
+		return h
+	}
+	m.Measurands = gapMeasurands(iEps, g)
+	if s.On["air"] {
+		m.Factors = map[string]func(q []jet.Jet) jet.Jet{
+			"air": func(q []jet.Jet) jet.Jet { return field.AirPermittivityJet(q[g.iT], q[g.iP], q[g.iH]).Plus(-1) }}
+		m.Measurands = append(m.Measurands, Measurand{
+			Name: "vacuum_permittivity", Doc: "permittivity of the gap over that of its moist air relative to vacuum", Unit: si.MustUnit("pF/m"),
+			Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(field.AirPermittivityJet(q[g.iT], q[g.iP], q[g.iH])) }})
+	}
+	gap := func(q, x []float64) float64 { return x[0] + q[iOff] }
+	m.Causes = []Cause{
+		{Name: "wedge", Doc: "grows as 1/gap² relative to the charge: plates not parallel",
+			Signature: func(q, x []float64, f, t float64) float64 { d := gap(q, x); return f / (d * d) }},
+		{Name: "gap_offset", Doc: "grows as 1/gap relative to the charge: zero of the spacing scale",
+			Signature: func(q, x []float64, f, t float64) float64 { return f / gap(q, x) }},
+		{Name: "edge", Doc: "grows with the gap relative to the charge: field beyond the guard",
+			Signature: func(q, x []float64, f, t float64) float64 { return f * gap(q, x) }},
+		{Name: "drift", Doc: "proportional to time: drift of the zero",
+			Signature: func(q, x []float64, f, t float64) float64 { return t }},
+	}
+	if charge {
+		m.Causes = append(m.Causes, chargeCauses(pV, pHold, gap)...)
+	} else {
+		m.Causes = append(m.Causes, Cause{Name: "stray_capacitance", Doc: "the same at every gap: capacitance besides the gap",
+			Signature: func(q, x []float64, f, t float64) float64 { return 1 }})
+	}
+	return m, nil
+}
+
+// chargeCauses are the marks that a charge reading leaves; spacing is the
+// electric spacing of a row.
+func chargeCauses(pV, pHold int, spacing func(q, x []float64) float64) []Cause {
+	causes := []Cause{
+		{Name: "stray_capacitance", Doc: "proportional to the voltage, whatever the gap: capacitance besides the gap",
+			Signature: func(q, x []float64, f, t float64) float64 { return x[pV] }},
+		{Name: "contact_potential", Doc: "the same for both polarities and falls with the gap: contact potential",
+			Signature: func(q, x []float64, f, t float64) float64 { return 1 / spacing(q, x) }},
+		{Name: "injection", Doc: "the same at every voltage: charge injected by the electrometer, or its zero",
+			Signature: func(q, x []float64, f, t float64) float64 { return 1 }},
+	}
+	if pHold >= 0 {
+		causes = append(causes,
+			Cause{Name: "offset_current", Doc: "proportional to the hold time, whatever the voltage: offset current",
+				Signature: func(q, x []float64, f, t float64) float64 { return x[pHold] }},
+			Cause{Name: "leakage", Doc: "proportional to charge and hold time: leakage",
+				Signature: func(q, x []float64, f, t float64) float64 { return f * x[pHold] }})
+	}
+	return causes
+}
+
+// check warns when the hold time is long against the time constant, and returns
+// nil when all is well.
+func (e *electrometer) check(q []float64, x [][]float64) error {
+	if !e.leakage {
+		return nil
+	}
+	longest := 0.0
+	for _, t := range x[e.hold] {
+		longest = math.Max(longest, t)
+	}
+	if u := longest / q[e.iTau]; u > 1 {
+		return fmt.Errorf("corrections.leakage: a hold of %.3g s loses %.0f %% of the charge (time constant %.3g s); dry the insulators or read sooner", longest, -100*math.Expm1(-u), q[e.iTau])
+	}
+	return nil
+}
+
+// gapMeasurands are the permittivity of the gap, absolute and relative.
+func gapMeasurands(iEps int, g *guarded) []Measurand {
+	return []Measurand{
+		{Name: "permittivity", Doc: "permittivity of the gap", Unit: si.MustUnit("pF/m"),
+			Value: func(q []jet.Jet) jet.Jet { return q[iEps] }},
+		{Name: "relative_permittivity", Doc: "permittivity of the gap over the electric constant", Unit: si.MustUnit("1"),
+			Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(q[g.iE0]) }},
+	}
+}
