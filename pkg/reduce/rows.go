@@ -17,8 +17,8 @@ type Rows struct {
 	Response       []float64
 	Fitted         []float64
 	U              []float64
-	// Residual is Response − Fitted, SI; Standardised is whitened by the full
-	// covariance; Leverage and Studentised are those of the whitened fit (NaN for
+	// Residual is Response − Fitted, SI; Standardised is that over the standard
+	// uncertainty of the reading, shared errors included; Leverage and Studentised are those of the whitened fit (NaN for
 	// excluded rows).
 	Residual, Standardised, Leverage, Studentised []float64
 }
