@@ -136,60 +136,99 @@ func (t *Part) name() string {
 	return fmt.Sprintf("part %d of %d", t.Index, t.Of)
 }
 
-// Merge joins all parts of one run, in any order, into its result: the bytes do
-// not depend on how many parts there were. It leaves the parts as they are. A part
-// that is missing, there twice or from another run is an error that names it.
-func Merge(parts []*Part) (*Result, error) {
-	if len(parts) == 0 {
+// A Merger joins the parts of one run as they come, in any order, and keeps none
+// of them: memory does not grow with their number. The zero Merger is ready. It
+// takes the first part's run for the run.
+type Merger struct {
+	head *Part
+	all  *tallies
+	seen map[int]string // name by index
+}
+
+// Add takes in a part, which it leaves as it is. A part that is there twice or
+// belongs to another run is an error that names it, and is not taken in.
+func (m *Merger) Add(t *Part) error {
+	if t.tallies == nil {
+		return errors.New("an empty part: make parts with RunPart, or read them from JSON")
+	}
+	if m.head == nil {
+		m.lead(t)
+	}
+	if err := t.foreign(m.head); err != nil {
+		return err
+	}
+	if o, ok := m.seen[t.Index]; ok {
+		return fmt.Errorf("%s is there twice: also as %s", o, t.name())
+	}
+	m.seen[t.Index] = t.name()
+	m.all.merge(t.tallies)
+	return nil
+}
+
+// lead makes the run that of t, without taking t in.
+func (m *Merger) lead(t *Part) {
+	// Of the first part only what Result needs is kept.
+	head := *t
+	head.tallies = t.tallies.empty()
+	m.head, m.all, m.seen = &head, t.tallies.empty(), make(map[int]string)
+}
+
+// Result states what the run found, once all its parts were added. Missing parts
+// are an error that names them.
+func (m *Merger) Result() (*Result, error) {
+	if m.head == nil {
 		return nil, errors.New("no parts to merge")
 	}
-	ordered := slices.Clone(parts)
-	slices.SortStableFunc(ordered, func(a, b *Part) int { return a.Index - b.Index })
-	// The run is the one that most parts belong to, so that a stray one is named.
-	head := majority(ordered)
-	seen := make(map[int]*Part, len(parts))
-	for _, t := range ordered {
-		if err := t.foreign(head); err != nil {
-			return nil, err
-		}
-		if o, ok := seen[t.Index]; ok {
-			return nil, fmt.Errorf("%s is there twice: also as %s", o.name(), t.name())
-		}
-		seen[t.Index] = t
-	}
 	var missing []string
-	for i := 1; i <= head.Of && len(missing) < 20; i++ {
-		if seen[i] == nil {
+	for i := 1; i <= m.head.Of && len(missing) < 20; i++ {
+		if _, ok := m.seen[i]; !ok {
 			missing = append(missing, fmt.Sprint(i))
 		}
 	}
 	if len(missing) > 0 {
-		more := ""
-		if n := head.Of - len(seen); n > len(missing) {
-			more = fmt.Sprintf(" and %d more", n-len(missing))
+		more, verb := "", "is"
+		if n := m.head.Of - len(m.seen); n > 1 {
+			verb = "are"
+			if n > len(missing) {
+				more = fmt.Sprintf(" and %d more", n-len(missing))
+			}
 		}
-		return nil, fmt.Errorf("part %s%s of %d is missing", strings.Join(missing, ", "), more, head.Of)
+		return nil, fmt.Errorf("part %s%s of %d %s missing", strings.Join(missing, ", "), more, m.head.Of, verb)
 	}
-	all := ordered[0].tallies.empty()
-	for _, t := range ordered {
-		all.merge(t.tallies)
-	}
-	r := *head.result
+	r := *m.head.result
 	r.Outputs = slices.Clone(r.Outputs)
 	r.Warnings = slices.Clone(r.Warnings)
-	s := head.settings
-	if err := all.fill(&r, s); err != nil {
+	s := m.head.settings
+	if err := m.all.fill(&r, s); err != nil {
 		return nil, err
 	}
 	if r.Trials != s.Trials {
 		return nil, fmt.Errorf("the parts hold %d trials and the run has %d: a part is incomplete", r.Trials, s.Trials)
 	}
 	for o := range r.Outputs {
-		x := head.exists[o]
-		r.withdraw(o, x)
+		r.withdraw(o, m.head.exists[o])
 		r.compare(o, s.Digits)
 	}
 	return &r, nil
+}
+
+// Merge joins all parts of one run, in any order, into its result: the bytes do
+// not depend on how many parts there were. It leaves the parts as they are. A part
+// that is missing, there twice or from another run is an error that names it; the run
+// is that of most of the parts.
+func Merge(parts []*Part) (*Result, error) {
+	ordered := slices.Clone(parts)
+	slices.SortStableFunc(ordered, func(a, b *Part) int { return a.Index - b.Index })
+	var m Merger
+	if len(ordered) > 0 && majority(ordered).tallies != nil {
+		m.lead(majority(ordered))
+	}
+	for _, t := range ordered {
+		if err := m.Add(t); err != nil {
+			return nil, err
+		}
+	}
+	return m.Result()
 }
 
 // withdraw takes back the moments of output o that do not exist.

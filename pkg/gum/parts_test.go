@@ -136,6 +136,8 @@ func TestParts(t *testing.T) {
 	}{
 		{nil, []string{"no parts"}},
 		{[]*gum.Part{p1, p3}, []string{"part 2 of 3 is missing"}},
+		{[]*gum.Part{p2}, []string{"part 1, 3 of 3 are missing"}},
+		{[]*gum.Part{{Index: 1, Of: 3}}, []string{"empty part"}},
 		{[]*gum.Part{p1, p2, p3, p2}, []string{"part 2 of 3 (part2.json) is there twice"}},
 		{[]*gum.Part{p1, run(other, 2, 3, m), p3}, []string{"part 2 of 3", "another run", "seed is 1"}},
 		{[]*gum.Part{p1, run(more, 2, 3, m), p3}, []string{"part 2 of 3", "96000 trials"}},
