@@ -501,3 +501,31 @@ func TestHostileModels(t *testing.T) {
 		}
 	}
 }
+
+// Effects that overlap in a long chain are refused with the limit, not worked
+// on for ever.
+func TestTooManyOverlappingEffects(t *testing.T) {
+	const n = 2000
+	p, _ := decay(n, 1)
+	g := &Effects{Columns: n + 1, Start: []int{0}}
+	for i := 0; i < n; i++ {
+		g.Column = append(g.Column, i, i+1)
+		g.Load = append(g.Load, 1e-12, 1e-12)
+		g.Start = append(g.Start, len(g.Load))
+	}
+	p.Effects = g
+	if r, err := Fit(context.Background(), p, Settings{}); err == nil || r != nil || !strings.Contains(err.Error(), "at most 400") {
+		t.Errorf("%v, %v", r, err)
+	}
+	// as many groups as one likes, when no two share a reading
+	for i := 0; i < n; i++ {
+		g.Column[i] = i / 2
+	}
+	g.Column, g.Load = g.Column[:n], g.Load[:n]
+	for i := range g.Start {
+		g.Start[i] = i
+	}
+	if r, err := Fit(context.Background(), p, Settings{}); err != nil || r.Status != Converged {
+		t.Errorf("%v, %v", r, err)
+	}
+}
