@@ -31,6 +31,7 @@ type Bench struct {
 	Safety      Safety       // the laboratory's limits of stored energy and charge
 	Instruments []Instrument // in the order of the file
 	Environment []Condition  // conditions that the bench states, in the order of the file
+	Ambient     []Ambient    // columns of the readings that conditions were taken from
 	Drive       Drive
 	Mounting    Mounting
 	Spacing     Spacing
@@ -276,6 +277,9 @@ type Rows struct {
 	Labels   map[string]*Labels // by role: setting, polarity, direction, mount, range, phase, quality
 	Excluded []bool
 	Files    []string // names of the readings files
+	// Columns holds the header of each row column by role, time and kind
+	// included; roles that the bench does not name are missing.
+	Columns map[string]string
 	reasons  map[int]string
 	spans    []span
 }
@@ -304,6 +308,13 @@ func (k RowKind) String() string {
 		return "overrange"
 	}
 	return "unknown"
+}
+
+// Ambient is a column of the readings that holds a condition.
+type Ambient struct {
+	Column   string    // header in the CSV
+	Unit     si.Unit   // of the column
+	Readings []float64 // in Unit, one per data record; NaN where missing
 }
 
 // Labels is a column of words, each distinct word stored once.

@@ -217,7 +217,6 @@ type merger struct {
 	size  int64 // of the file; 0: not known
 	errs  errorList
 	ended bool // enough errors, or a failure to read
-	stop  error
 
 	number []partTimes
 }

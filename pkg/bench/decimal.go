@@ -86,19 +86,31 @@ func scanDecimal(b []byte, i int, point byte) (v float64, end int, ok bool) {
 	// W. D. Clinger, How to read floating point numbers accurately, PLDI 1990:
 	// both operands are exact, so that one operation rounds once.
 	if m < 1<<53 && -len(exactPow10) < exp && exp < len(exactPow10) {
-		v = float64(m)
-		if exp < 0 {
-			v /= exactPow10[-exp]
-		} else {
-			v *= exactPow10[exp]
-		}
+		v = byPow10(m, exp)
 	} else if v, ok = scaleDecimal(m, exp); !ok {
-		return 0, i, false
+		// Most of what 128 bits can't decide are doubles exactly, written with
+		// zeros at the end: 1.5000000000000000.
+		for m >= 1<<53 && m%10 == 0 {
+			m /= 10
+			exp++
+		}
+		if m >= 1<<53 || exp <= -len(exactPow10) || exp >= len(exactPow10) {
+			return 0, i, false
+		}
+		v = byPow10(m, exp)
 	}
 	if negative {
 		v = -v
 	}
 	return v, i, true
+}
+
+// byPow10 returns m × 10^exp where both are doubles exactly.
+func byPow10(m uint64, exp int) float64 {
+	if exp < 0 {
+		return float64(m) / exactPow10[-exp]
+	}
+	return float64(m) * exactPow10[exp]
 }
 
 // The range of powers of ten in the table of scaleDecimal. Bench readings stay

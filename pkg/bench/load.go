@@ -16,16 +16,16 @@ const defaultCoverage = 0.9545
 // loader turns the document of a bench into a Bench.
 type loader struct {
 	reader
-	folder *folder
-	kind   *model.Kind
-	b      *Bench
+	folder  *folder
+	instead *givenReadings // instead of the files that the bench names
+	kind    *model.Kind
+	b       *Bench
 
 	files    []readingsFile
 	columns  []columnUse // columns that the readings must have
 	roles    map[string]string
 	exclude  []exclusion
 	reject   []string // words of the quality column
-	grouped  []groupedKey
 	ambients []ambientColumn
 }
 
@@ -48,13 +48,6 @@ type exclusion struct {
 	node   *node
 	row    int
 	reason string
-}
-
-// groupedKey is a grouped effect whose groups wait for the readings.
-type groupedKey struct {
-	node    *node
-	channel int
-	effect  int
 }
 
 // kindGrammar is everything a bench of a kind may hold.
@@ -114,12 +107,12 @@ func channelGrammar() *grammar {
 }
 
 // load decodes bench.toml and reads the files it names.
-func (f *folder) load(kind *model.Kind, dir string, data []byte, sum string) (*Bench, error) {
+func (f *folder) load(kind *model.Kind, dir string, data []byte, sum string, given *givenReadings) (*Bench, error) {
 	root, err := document(benchFile, data)
 	if err != nil {
 		return nil, err
 	}
-	l := &loader{reader: reader{file: benchFile, root: root}, folder: f, roles: map[string]string{}}
+	l := &loader{reader: reader{file: benchFile, root: root}, folder: f, instead: given, roles: map[string]string{}}
 	l.b = &Bench{Dir: dir, Inputs: []Input{{File: benchFile, SHA256: sum}}, Options: map[string]string{}, Corrections: map[string]bool{}}
 	if l.kind, err = l.header(kind); err != nil {
 		return nil, err
@@ -266,6 +259,9 @@ func (l *loader) readings() {
 	}
 	if len(tables) == 0 && len(l.errs.list) == 0 {
 		l.fail(l.root.field("readings"), `no file is named; write [[readings]] and file = "readings.csv"`)
+	}
+	if l.instead != nil && len(l.files) > 0 {
+		l.files = []readingsFile{{node: l.files[0].node, name: l.instead.name}}
 	}
 }
 
@@ -474,15 +470,6 @@ func (l *loader) exclusions() {
 			l.exclude = append(l.exclude, exclusion{t, row, reason})
 		}
 	}
-}
-
-// scalarNames are the names by which messages and correlations call scalars.
-func scalarNames(kind *model.Kind) []string {
-	names := make([]string, len(kind.Scalars))
-	for i := range kind.Scalars {
-		names[i] = kind.Scalars[i].Key()
-	}
-	return names
 }
 
 // clone returns a copy of b that shares nothing which Exclude changes.

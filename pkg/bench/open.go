@@ -21,7 +21,7 @@ const benchFile = "bench.toml"
 // which must lie in the folder. Everything is checked before anything is
 // returned; errors are *Error, up to ten joined in the order of the file, each
 // with its place and what would be right.
-func Open(dir string) (*Bench, error) { return open(nil, dir) }
+func Open(dir string) (*Bench, error) { return open(nil, dir, nil) }
 
 // OpenWith is Open for a bench of the given kind, which need not be registered;
 // bench.toml must name it.
@@ -29,10 +29,10 @@ func OpenWith(kind *model.Kind, dir string) (*Bench, error) {
 	if kind == nil {
 		return nil, errors.New("bench: no kind given")
 	}
-	return open(kind, dir)
+	return open(kind, dir, nil)
 }
 
-func open(kind *model.Kind, dir string) (*Bench, error) {
+func open(kind *model.Kind, dir string, given *givenReadings) (*Bench, error) {
 	f, err := openFolder(dir, benchFile)
 	if err != nil {
 		return nil, err
@@ -42,7 +42,7 @@ func open(kind *model.Kind, dir string) (*Bench, error) {
 	if err != nil {
 		return nil, err
 	}
-	return f.load(kind, dir, data, sum)
+	return f.load(kind, dir, data, sum, given)
 }
 
 // folder is a dataset's folder; nothing outside it can be opened through it.

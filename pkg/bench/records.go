@@ -2,6 +2,7 @@ package bench
 
 import (
 	"fmt"
+	"maps"
 	"math"
 	"slices"
 	"strings"
@@ -57,6 +58,7 @@ func (l *loader) read() error {
 		b.Inputs = append(b.Inputs, Input{File: f.name, SHA256: t.SHA256, Rows: t.N})
 	}
 	b.Rows.Epoch = epoch
+	b.Rows.Columns = maps.Clone(l.roles)
 	for _, w := range b.Rows.Labels {
 		w.known = nil
 	}
@@ -97,7 +99,7 @@ func (l *Labels) join(more *Labels) *Labels {
 
 // file reads one readings file.
 func (l *loader) readFile(f *readingsFile, limit int) (*Table, error) {
-	file, size, err := l.folder.open(f.name)
+	file, size, err := l.openReadings(f)
 	if err != nil {
 		e, ok := err.(*Error)
 		if !ok {

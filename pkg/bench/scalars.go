@@ -3,6 +3,7 @@ package bench
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 
 	"example.org/guardring/pkg/gum"
@@ -242,6 +243,7 @@ func (l *loader) average(columns map[string][]float64) {
 	for i := range l.ambients {
 		a := &l.ambients[i]
 		xs := columns[a.header]
+		l.b.Ambient = append(l.b.Ambient, Ambient{a.header, a.unit, slices.Clone(xs)})
 		mean, s := meanAndScatter(xs)
 		if math.IsNaN(mean) {
 			l.fail(a.node.field("column"), "column %s holds no value", quoted(a.header))
