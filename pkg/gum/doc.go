@@ -30,7 +30,7 @@
 // Correlated normals are drawn as such, a set of inputs read together as a
 // multivariate t (JCGM 102:2011 5.3.2). For any other shapes the correlation is that
 // of the normals of a Gaussian copula (Nelsen, An Introduction to Copulas, 2nd ed.,
-// 2006, 2.3.6: the choice of this copula is an assumption), and a warning says so.
+// 2006: the choice of this copula is an assumption), and a warning says so.
 //
 // # Second order
 //

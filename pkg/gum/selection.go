@@ -34,7 +34,7 @@ func (s *Sample) checkUndefined() error {
 }
 
 // coverCount returns q, the number of trials that an interval for probability p of
-// n trials spans: the integer part of pn + 1/2 (JCGM 101:2008 7.7.1). Too few
+// n trials spans: the integer part of pn + 1/2 (JCGM 101:2008 7.7.2). Too few
 // trials for a p is an error.
 func coverCount(n int, p float64) (int, error) {
 	if n < 2 {
@@ -285,7 +285,7 @@ func orderBins(tail []float64, end []int) {
 
 // intervalsOf takes the lowest n−q order statistics and the highest n−q, each in
 // order, and returns the probabilistically symmetric interval (JCGM 101:2008 7.7.2,
-// with r the integer part of (n−q+1)/2) and the shortest (7.7.3).
+// with r the integer part of (n−q+1)/2) and the shortest (same clause).
 func intervalsOf(low, high []float64) (symmetric, shortest [2]float64) {
 	r := (len(low)+1)/2 - 1 // counted from 0
 	symmetric = [2]float64{low[r], high[r]}
