@@ -22,34 +22,29 @@ var balanceScalars = []Scalar{
 var balanceCorrection = Correction{Name: "balance", Doc: "conventional mass to force: air density at adjustment", Default: true}
 
 // forcePerMass returns the force (N) for each kilogram that the bench's balance
-// shows, or nil when the bench reads a force.
-func forcePerMass(k *Kind, s *Setup) (func(q []jet.Jet) jet.Jet, error) {
+// shows, as jets and as plain numbers, or nil when the bench reads a force.
+func forcePerMass(k *Kind, s *Setup) (jets func(q []jet.Jet) jet.Jet, plain func(q []float64) float64, err error) {
 	if !s.Channels["mass"] {
-		return nil, nil
+		return nil, nil, nil
 	}
 	surveyed := s.Given["environment.gravity"]
 	if !surveyed && !s.Given["environment.latitude"] {
-		return nil, fmt.Errorf("environment.gravity: a balance indication needs the local acceleration of free fall; state gravity, or latitude and height")
+		return nil, nil, fmt.Errorf("environment.gravity: a balance indication needs the local acceleration of free fall; state gravity, or latitude and height")
 	}
 	iGrav, iLat, iHeight, iAnomaly := k.Scalar("environment.gravity"), k.Scalar("environment.latitude"), k.Scalar("environment.height"), k.Scalar("environment.gravity_anomaly")
 	iRho, correct := k.Scalar("corrections.balance.air_density"), s.On["balance"]
-	return func(q []jet.Jet) jet.Jet {
-		g := q[iGrav]
+	from := func(grav, lat, height, anomaly, rho jet.Jet) jet.Jet {
 		if !surveyed {
-			g = field.GravityJet(q[iLat], q[iHeight]).Add(q[iAnomaly])
+			grav = field.GravityJet(lat, height).Add(anomaly)
 		}
 		if correct {
-			return field.BalanceForceJet(jet.Const(1), g, q[iRho])
+			return field.BalanceForceJet(jet.Const(1), grav, rho)
 		}
-		return g
-	}, nil
-}
-
-// valueAt evaluates a function of the scalars at plain numbers.
-func valueAt(f func(q []jet.Jet) jet.Jet, q []float64) float64 {
-	c := make([]jet.Jet, len(q))
-	for i, v := range q {
-		c[i] = jet.Const(v)
+		return grav
 	}
-	return f(c).V
+	jets = func(q []jet.Jet) jet.Jet { return from(q[iGrav], q[iLat], q[iHeight], q[iAnomaly], q[iRho]) }
+	plain = func(q []float64) float64 {
+		return from(jet.Const(q[iGrav]), jet.Const(q[iLat]), jet.Const(q[iHeight]), jet.Const(q[iAnomaly]), jet.Const(q[iRho])).V
+	}
+	return jets, plain, nil
 }

@@ -168,7 +168,12 @@ func prepareBeamDeflection(k *Kind, s *Setup) (*Model, error) {
 		if response == "angle" {
 			return slope.Atan()
 		}
-		return y.Add(q[iDrift].Mul(slope))
+		// The effective field ends half of its excess beyond the plates.
+		drift := q[iDrift]
+		if fringe {
+			drift = drift.Sub(q[iFringe].Scale(0.5))
+		}
+		return y.Add(drift.Mul(slope))
 	}
 	m.Block = func(q []float64, x [][]float64, lo, hi int, wrt []int, f []float64, jac [][]float64) bool {
 		for _, j := range wrt {
@@ -176,9 +181,10 @@ func prepareBeamDeflection(k *Kind, s *Setup) (*Model, error) {
 				return false
 			}
 		}
-		length, r := q[iLen], rest
+		length, drift, r := q[iLen], q[iDrift], rest
 		if fringe {
 			length += q[iFringe]
+			drift -= 0.5 * q[iFringe]
 		}
 		if rest == 0 {
 			r = q[iRest]
@@ -209,8 +215,8 @@ func prepareBeamDeflection(k *Kind, s *Setup) (*Model, error) {
 				slope /= root
 				dSlope /= root * root * root
 			}
-			d := dy + q[iDrift]*dSlope
-			f[i] = y + q[iDrift]*slope
+			d := dy + drift*dSlope
+			f[i] = y + drift*slope
 			if response == "angle" {
 				f[i] = math.Atan(slope)
 				d = dSlope / (1 + slope*slope)

@@ -93,7 +93,7 @@ func prepareBody(k *Kind, s *Setup, seekCharge bool) (*Model, error) {
 	iT, iP := k.Scalar("environment.temperature"), k.Scalar("environment.pressure")
 	image, body, leak := s.On["image"], s.On["body"], s.On["leakage"]
 
-	perMass, err := forcePerMass(k, s)
+	perMass, perMassValue, err := forcePerMass(k, s)
 	if err != nil {
 		return nil, err
 	}
@@ -180,7 +180,7 @@ func prepareBody(k *Kind, s *Setup, seekCharge bool) (*Model, error) {
 		}
 		unit := 1.0
 		if perMass != nil {
-			unit = 1 / valueAt(perMass, q)
+			unit = 1 / perMassValue(q)
 		}
 		var cube float64
 		if body {
@@ -317,7 +317,7 @@ func prepareBody(k *Kind, s *Setup, seekCharge bool) (*Model, error) {
 				charge = m.proportional(q, sought, x, y)
 			}
 			if perMass != nil {
-				unit = valueAt(perMass, q)
+				unit = perMassValue(q)
 			}
 			err := imageRefusal(q[iE0], func(i int) float64 {
 				if pQ >= 0 {
