@@ -1,7 +1,6 @@
 package figure
 
 import (
-	"bytes"
 	"fmt"
 	"io"
 )
@@ -53,18 +52,22 @@ func (f *Figure) String() string {
 
 func (f *Figure) alt() string { return f.String() }
 
-// SimpleRender gives the forms that a notebook can show: text, SVG and PNG.
+// SimpleRender gives the forms that a notebook can show: text, SVG and PNG, and
+// the SVG within HTML, because converters of notebooks clean an SVG of what they
+// don't know, which may be all of it.
 func (f *Figure) SimpleRender() map[string]any {
+	svg := f.SVG()
 	forms := map[string]any{
 		"text/plain":    f.String(),
-		"image/svg+xml": f.SVG(),
+		"image/svg+xml": svg,
+		"text/html":     `<div style="overflow-x:auto">` + svg + "</div>\n",
 	}
-	var b bytes.Buffer
-	if err := f.WritePNG(&b, screenDPI); err != nil {
+	png, err := f.screenPNG()
+	if err != nil {
 		// The page still has the drawing; the reason stands beside it.
 		forms["text/plain"] = fmt.Sprintf("%s (no PNG: %v)", f.String(), err)
 		return forms
 	}
-	forms["image/png"] = b.Bytes()
+	forms["image/png"] = png
 	return forms
 }

@@ -2,6 +2,7 @@ package figure
 
 import (
 	"fmt"
+	"image"
 	"image/color"
 	"image/png"
 	"io"
@@ -21,11 +22,20 @@ const (
 
 // writePNG draws the canvas on white paper.
 func (c *canvas) writePNG(w io.Writer, dpi int) error {
+	img, err := c.raster(dpi)
+	if err != nil {
+		return err
+	}
+	return png.Encode(w, img)
+}
+
+// raster is the picture that writePNG writes.
+func (c *canvas) raster(dpi int) (image.Image, error) {
 	if dpi < lowestDPI || dpi > highestDPI {
-		return fmt.Errorf("figure: %d dots per inch; a PNG takes %d to %d", dpi, lowestDPI, highestDPI)
+		return nil, fmt.Errorf("figure: %d dots per inch; a PNG takes %d to %d", dpi, lowestDPI, highestDPI)
 	}
 	if err := loadFonts(); err != nil {
-		return err
+		return nil, err
 	}
 	v := vgimg.NewWith(vgimg.UseWH(vg.Length(c.w), vg.Length(c.h)), vgimg.UseDPI(dpi))
 	at := func(x, y float64) vg.Point { return vg.Point{X: vg.Length(x), Y: vg.Length(c.h - y)} }
@@ -66,7 +76,7 @@ func (c *canvas) writePNG(w io.Writer, dpi int) error {
 			v.Stroke(p)
 		}
 	}
-	return png.Encode(w, v.Image())
+	return v.Image(), nil
 }
 
 func rasterText(v *vgimg.Canvas, l *label, at func(x, y float64) vg.Point) {
