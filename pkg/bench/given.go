@@ -3,7 +3,8 @@ package bench
 import (
 	"bytes"
 	"errors"
-	"io"
+	"io/fs"
+	"time"
 )
 
 // givenReadings stand in for the files that a bench names.
@@ -25,7 +26,7 @@ func OpenReadings(dir, name string, csv []byte) (*Bench, error) {
 }
 
 // openReadings opens a file of readings, or what stands in for it.
-func (l *loader) openReadings(f *readingsFile) (io.ReadCloser, int64, error) {
+func (l *loader) openReadings(f *readingsFile) (fs.File, int64, error) {
 	if l.instead == nil {
 		file, size, err := l.folder.open(f.name)
 		if err != nil {
@@ -33,5 +34,22 @@ func (l *loader) openReadings(f *readingsFile) (io.ReadCloser, int64, error) {
 		}
 		return file, size, nil
 	}
-	return io.NopCloser(bytes.NewReader(l.instead.data)), int64(len(l.instead.data)), nil
+	return &memoryFile{bytes.NewReader(l.instead.data), l.instead}, int64(len(l.instead.data)), nil
 }
+
+// memoryFile is given readings as a file.
+type memoryFile struct {
+	*bytes.Reader
+	of *givenReadings
+}
+
+func (m *memoryFile) Close() error               { return nil }
+func (m *memoryFile) Stat() (fs.FileInfo, error) { return m.of, nil }
+
+// The methods of fs.FileInfo.
+func (g *givenReadings) Name() string       { return g.name }
+func (g *givenReadings) Size() int64        { return int64(len(g.data)) }
+func (g *givenReadings) Mode() fs.FileMode  { return 0o444 }
+func (g *givenReadings) ModTime() time.Time { return time.Time{} }
+func (g *givenReadings) IsDir() bool        { return false }
+func (g *givenReadings) Sys() any           { return nil }
