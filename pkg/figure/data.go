@@ -3,6 +3,7 @@ package figure
 import (
 	"fmt"
 	"math"
+	"slices"
 	"sort"
 	"strconv"
 	"strings"
@@ -266,10 +267,7 @@ func (d *Data) choose() view {
 		for _, t := range tries {
 			n := 0
 			for _, g := range t {
-				var some []int // a few thousand rows tell as much as all
-				for i := 0; i < len(g.rows); i += 1 + len(g.rows)/4000 {
-					some = append(some, g.rows[i])
-				}
+				some := sparse(g.rows)
 				skip := make([]bool, len(some))
 				for i, k := range some {
 					skip[i] = r.Excluded[k]
@@ -353,44 +351,64 @@ func (d *Data) bySetting() []series {
 // clusters parts values that fall into two to seven heaps, each at least eight
 // times narrower than its distance to the next; nil when they don't.
 func clusters(v []float64) []series {
-	idx := make([]int, 0, len(v))
-	for i, x := range v {
+	for _, x := range v {
 		if !finite(x) {
 			return nil
 		}
-		idx = append(idx, i)
 	}
-	sort.SliceStable(idx, func(a, b int) bool { return v[idx[a]] < v[idx[b]] })
-	if len(idx) < 4 {
+	if len(v) < 4 {
 		return nil
 	}
-	span := v[idx[len(idx)-1]] - v[idx[0]]
+	sorted := append([]float64(nil), v...)
+	slices.Sort(sorted)
+	span := sorted[len(sorted)-1] - sorted[0]
 	if span <= 0 {
 		return nil
 	}
 	// A step between heaps is one of at least 1/60 of the whole range.
-	var out []series
-	from := 0
+	var ends []float64 // largest value of each heap
 	least, widest := math.Inf(1), 0.0
-	for k := 1; k <= len(idx); k++ {
-		if k < len(idx) {
-			if gap := v[idx[k]] - v[idx[k-1]]; gap <= span/60 {
+	from := sorted[0]
+	for k := 1; k <= len(sorted); k++ {
+		if k < len(sorted) {
+			gap := sorted[k] - sorted[k-1]
+			if gap <= span/60 {
 				continue
-			} else {
-				least = math.Min(least, gap)
 			}
+			least = math.Min(least, gap)
 		}
-		widest = math.Max(widest, v[idx[k-1]]-v[idx[from]])
-		rows := append([]int(nil), idx[from:k]...)
-		sort.Ints(rows)
-		out = append(out, series{rows: rows})
-		from = k
-		if len(out) > mostSeries {
+		widest = math.Max(widest, sorted[k-1]-from)
+		if ends = append(ends, sorted[k-1]); len(ends) > mostSeries {
 			return nil
 		}
+		if k < len(sorted) {
+			from = sorted[k]
+		}
 	}
-	if len(out) < 2 || widest > least/8 {
+	if len(ends) < 2 || widest > least/8 {
 		return nil
+	}
+	out := make([]series, len(ends))
+	for i, x := range v {
+		k := sort.SearchFloat64s(ends, x)
+		out[k].rows = append(out[k].rows, i)
+	}
+	return out
+}
+
+// sparse returns a few thousand of the rows, which show a line as well as all
+// do. They are chosen by the fractional parts of multiples of the golden ratio,
+// which no rhythm of the readings can fall into step with.
+func sparse(rows []int) []int {
+	const most = 4000
+	if len(rows) <= most {
+		return rows
+	}
+	var out []int
+	for i, r := range rows {
+		if _, f := math.Modf(float64(i) * math.Phi); f < most/float64(len(rows)) {
+			out = append(out, r)
+		}
 	}
 	return out
 }

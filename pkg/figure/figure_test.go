@@ -11,6 +11,7 @@ import (
 	"os"
 	"path/filepath"
 	"runtime"
+	"slices"
 	"strings"
 	"testing"
 
@@ -414,7 +415,7 @@ func TestErrorBars(t *testing.T) {
 
 func TestStrangeData(t *testing.T) {
 	nan, inf := math.NaN(), math.Inf(1)
-	for _, v := range [][]float64{{0}, {1}, {-0.0, 0}, {5e-324, 1e-323}, {1e307, 1.0000001e307}, {1, nan, inf, 2}, {1e15, 1e15 + 1}, {-1e-300, 1e-300},
+	for _, v := range [][]float64{{0}, {1}, {math.Copysign(0, -1), 0}, {5e-324, 1e-323}, {1e307, 1.0000001e307}, {1, nan, inf, 2}, {1e15, 1e15 + 1}, {-1e-300, 1e-300},
 		{1, 1 + 1e-15}, {1e-30, 1e30}, {0, 1e308}} {
 		for _, log := range []bool{false, true} {
 			x := make([]float64, len(v))
@@ -557,5 +558,41 @@ func BenchmarkResiduals(b *testing.B) {
 			b.Fatal(err)
 		}
 		_ = f.SVG()
+	}
+}
+
+// Of many readings in a rhythm, enough of each kind are looked at to find the
+// lines they lie on.
+func TestLinesOfManyReadings(t *testing.T) {
+	d := fixture(t)
+	r := d.Rows
+	grow := func(v []float64) []float64 {
+		out := make([]float64, 0, 500*len(v))
+		for range 500 {
+			out = append(out, v...)
+		}
+		return out
+	}
+	for c := range r.Predictors {
+		r.Predictors[c] = grow(r.Predictors[c])
+	}
+	r.Response, r.Fitted, r.U, r.Residual = grow(r.Response), grow(r.Fitted), grow(r.U), grow(r.Residual)
+	r.Standardised, r.Leverage, r.Studentised = grow(r.Standardised), grow(r.Leverage), grow(r.Studentised)
+	r.N = len(r.Response)
+	r.Excluded = make([]bool, r.N)
+	d.Number, d.Groups = nil, nil
+	v := d.choose()
+	if v.x != 0 || len(v.series) != 4 || v.joined != 4 {
+		t.Fatalf("axis %d with %d series, %d of them lines", v.x, len(v.series), v.joined)
+	}
+	for _, s := range v.series {
+		rows := sparse(s.rows)
+		x, y, ok := guide(pick(r.Predictors[0], rows), pick(r.Fitted, rows), make([]bool, len(rows)), &scale{})
+		if !ok {
+			t.Fatalf("no line for %s", s.name)
+		}
+		if low, high := slices.Min(x), slices.Max(x); high < 5.9e3 || low > -5.9e3 || math.Abs(y[0]-y[len(y)-1]) > 0.02*y[0] {
+			t.Errorf("%s: a line from %g to %g, %g to %g", s.name, low, high, y[0], y[len(y)-1])
+		}
 	}
 }

@@ -55,11 +55,12 @@ func (d *Data) Fit() (*Figure, error) {
 	lines := make([]curve, len(groups))
 	if first >= 0 {
 		for k, g := range groups {
-			skip := make([]bool, len(g.rows))
-			for i, j := range g.rows {
+			some := sparse(g.rows)
+			skip := make([]bool, len(some))
+			for i, j := range some {
 				skip[i] = r.Excluded[j]
 			}
-			cx, cy, ok := guide(pick(x, g.rows), pick(r.Fitted, g.rows), skip, xs)
+			cx, cy, ok := guide(pick(x, some), pick(r.Fitted, some), skip, xs)
 			if !ok {
 				continue
 			}
@@ -141,6 +142,12 @@ func (d *Data) Fit() (*Figure, error) {
 			}
 		}
 		s.count(len(rk), len(g.rows))
+		if len(rk) < len(g.rows) {
+			foot.extent(gx, gr, rk, pale(lk.color))
+			if k == len(groups)-1 {
+				foot.over()
+			}
+		}
 		foot.dots(gx, gr, in, lk.marker, size, lk.marker.pen(lk.color, false))
 		foot.edgeDots(gx, gr, out, lk.marker, size, lk.color)
 	}

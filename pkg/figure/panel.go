@@ -68,7 +68,8 @@ func (p *panel) axes(f frame) {
 		majors.move(x, bottom)
 		majors.line(x, bottom-long)
 		if half := width(t.label, tickSize, false) / 2; !f.noX && x-half > end+3 {
-			p.c.write(label{x: x, y: bottom + 4 + tickSize, size: tickSize, anchor: 0.5, s: t.label})
+			at := math.Min(x, p.c.w-2-half) // stays on the page
+			p.c.write(label{x: at, y: bottom + 4 + tickSize, size: tickSize, anchor: 0.5, s: t.label})
 			end = x + half
 		}
 	}

@@ -45,6 +45,15 @@ func (p *panel) ground() {
 	p.level(0, zeroPen)
 }
 
+// over draws the zero line and the ends of the band again where thinned points
+// have filled the panel.
+func (p *panel) over() {
+	p.level(0, zeroPen)
+	for _, v := range []float64{-bandHalf, bandHalf} {
+		p.level(v, pen{stroke: slate, width: 0.5, dash: "2,2"})
+	}
+}
+
 // residualDots draws standardised residuals at x, those left out hollow with
 // the number of their reason; it returns how many were drawn.
 func (d *Data) residualDots(p *panel, x []float64, r float64, lk look) int {
@@ -53,6 +62,8 @@ func (d *Data) residualDots(p *panel, x []float64, r float64, lk look) int {
 	keep := thin(x, rows.Standardised, p.xs, p.ys, rows.Excluded, thinAbove)
 	if len(x) > thinAbove {
 		p.extent(x, rows.Standardised, keep, pale(lk.color))
+		p.over()
+		r = math.Min(r, 0.9)
 	}
 	for _, i := range keep {
 		if rows.Excluded[i] {

@@ -101,7 +101,7 @@ func (s *sheet) count(drawn, given int) {
 // finish writes the notes and closes the page.
 func (s *sheet) finish(name, title, caption, summary string) *Figure {
 	if s.given > s.drawn {
-		s.note("%s of %s points drawn: the lowest and the highest of each column of the page are kept.", count(s.drawn), count(s.given))
+		s.note("%s of %s points drawn, all panels counted: the lowest and the highest of each column of the page are kept.", count(s.drawn), count(s.given))
 	}
 	for _, n := range s.notes {
 		for _, l := range wrap(OneLine(n), noteSize, s.c.w-2*marginX) {

@@ -147,7 +147,7 @@ func freedom(d reduce.Number) string {
 	if x == math.Trunc(x) || x >= 100 {
 		return strconv.FormatFloat(math.Floor(x), 'f', 0, 64)
 	}
-	return strconv.FormatFloat(math.Floor(x*10)/10, 'f', 1, 64)
+	return strconv.FormatFloat(math.Floor(x*10)/10, 'f', -1, 64)
 }
 
 // percent writes a share with one decimal.

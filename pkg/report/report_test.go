@@ -324,3 +324,29 @@ func BenchmarkHTML(b *testing.B) {
 		}
 	}
 }
+
+// FuzzEscapes puts any text wherever text comes from outside: the page stays a
+// page of our elements, LaTeX keeps its braces, the text form its lines.
+func FuzzEscapes(f *testing.F) {
+	for _, s := range []string{"<script>", `\input{x}`, "]]>", "=cmd()", "a|b", "\x1b[0m", "\xff", "日本", "1×10⁻³ µΩ·m²"} {
+		f.Add(s)
+	}
+	f.Fuzz(func(t *testing.T, s string) {
+		if len(s) > 200 {
+			return
+		}
+		rec := hostile(t, s)
+		rec.Rows = nil // package figure has its own checks
+		checkHTML(t, s, render(t, HTMLRecord, rec))
+		l := render(t, LaTeXRecord, rec)
+		if braces(l) != 0 || strings.Count(l, `\end{document}`) != 1 {
+			t.Errorf("LaTeX is broken by %q", s)
+		}
+		x := render(t, TextRecord, rec)
+		for _, r := range x {
+			if r < 0x20 && r != '\n' || r == 0x7f {
+				t.Errorf("text has a control character for %q", s)
+			}
+		}
+	})
+}
