@@ -280,8 +280,8 @@ type Rows struct {
 	// Columns holds the header of each row column by role, time and kind
 	// included; roles that the bench does not name are missing.
 	Columns map[string]string
-	reasons  map[int]string
-	spans    []span
+	reasons map[int]string
+	spans   []span
 }
 
 // RowKind says what a record is.
