@@ -332,6 +332,10 @@ func (t *eivState) call(theta, f []float64, jac, cols [][]float64) error {
 func (t *eivState) move(theta []float64) {
 	s, p := t.s, t.p
 	e := t.e
+	if p.Covariance == nil && s.q == 3 && t.m == 2 && t.vx[0] != nil && t.vx[1] != nil {
+		t.move3(theta)
+		return
+	}
 	for i, y := range s.y {
 		e[i] = y - s.f[i]
 	}
@@ -361,6 +365,32 @@ func (t *eivState) move(theta []float64) {
 		for i, q := range e {
 			xt[i] = x[i] + v[i]*dx[i]*q
 		}
+	}
+}
+
+// settle moves the points to where the last step takes them.
+func (t *eivState) settle() {
+	// s.f has already been moved along with the parameters, from s.theta to theta
+	t.move(t.s.theta)
+	t.xi, t.xt = t.xt, t.xi
+}
+
+// move3 is the same in one pass for three parameters and two predictors.
+func (t *eivState) move3(theta []float64) {
+	s, n := t.s, t.n
+	var d [3]float64
+	for k, j := range s.free {
+		d[k] = theta[j] - s.theta[j]
+	}
+	a, b, c := d[0], d[1], d[2]
+	y, f, j0, j1, j2, w := s.y[:n], s.f[:n], s.cols[0][:n], s.cols[1][:n], s.cols[2][:n], t.w[:n]
+	x0, x1, v0, v1 := t.p.X[0][:n], t.p.X[1][:n], t.vx[0][:n], t.vx[1][:n]
+	d0, d1, z0, z1 := t.dx[0][:n], t.dx[1][:n], t.xt[0][:n], t.xt[1][:n]
+	for i := range y {
+		q := w[i]
+		e := (y[i] - f[i] - (j0[i]*a + j1[i]*b + j2[i]*c)) * q * q
+		z0[i] = x0[i] + v0[i]*d0[i]*e
+		z1[i] = x1[i] + v1[i]*d1[i]*e
 	}
 }
 

@@ -275,7 +275,7 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	// what later questions need
 	white := f.white
 	r.white, r.factor = &white, sp.factor
-	r.jac = append([][]float64(nil), s.columns()...)
+	r.jac = s.columns()
 	r.problem, r.settings = p, f.set
 	r.priorW = f.take(len(s.priorW))
 	copy(r.priorW, s.priorW)

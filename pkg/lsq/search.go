@@ -37,7 +37,6 @@ type search struct {
 	d, x, rx      []float64
 	heads         [][]float64 // memory of jac, jtrial, cols, ctrial
 	slab          *[]float64  // pooled scratch
-	own           []float64   // what leaves with the result
 	wcols         [][]float64 // whitened copies when the covariance is not diagonal
 	wres          []float64
 	trust         trust
@@ -63,7 +62,7 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 	s.p, s.y, s.free, s.q, s.white, s.eval = p, y, free, q, white, p.Eval
 	m := blockRows(n)
 	tri := (q + 1) * (q + 1)
-	s.slab = takeSlab(2*n + n*q + 4*np + 3*q + 2*tri + (q+1)*(m+1) + q*q + 3*q)
+	s.slab = takeSlab(2*n + 2*n*q + 4*np + 3*q + 2*tri + (q+1)*(m+1) + q*q + 3*q)
 	at := 0
 	take := func(k int) []float64 {
 		v := (*s.slab)[at : at+k : at+k]
@@ -77,9 +76,8 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 	heads := s.heads[:2*np+2*q]
 	clear(heads)
 	s.jac, s.jtrial, s.cols, s.ctrial = heads[:np:np], heads[np:2*np:2*np], heads[2*np:2*np+q:2*np+q], heads[2*np+q:]
-	s.own = make([]float64, n*q) // leaves with the result
 	for k, j := range free {
-		s.cols[k], s.ctrial[k] = s.own[k*n:k*n+n:k*n+n], take(n)
+		s.cols[k], s.ctrial[k] = take(n), take(n)
 		s.jac[j], s.jtrial[j] = s.cols[k], s.ctrial[k]
 	}
 	s.theta, s.trial = take(np), take(np)
@@ -119,16 +117,13 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 	s.prepareWhite()
 }
 
-// columns returns the free columns of the Jacobian in memory of their own.
+// columns returns a copy of the free columns of the Jacobian.
 func (s *search) columns() [][]float64 {
-	n := len(s.y)
+	out := make([][]float64, s.q)
 	for k, c := range s.cols {
-		if dst := s.own[k*n : k*n+n : k*n+n]; n > 0 && &c[0] != &dst[0] {
-			copy(dst, c)
-			s.cols[k] = dst
-		}
+		out[k] = append([]float64(nil), c...)
 	}
-	return s.cols
+	return out
 }
 
 // release gives the scratch memory back; the search is then of no further use.
@@ -389,9 +384,7 @@ func (s *search) run(ctx context.Context) error {
 		if first {
 			delta, first = math.Min(delta, norm), false
 		}
-		for k, j := range s.free {
-			s.trial[j] = s.theta[j] + s.x[k]
-		}
+		s.aim()
 		if norm == 0 {
 			s.finish("no step lowers chi-squared")
 			return nil
@@ -554,18 +547,18 @@ func (s *search) polish(ctx context.Context, norm float64) error {
 		s.step(s.now.r, ld, s.now.r[s.q*ld:s.q*ld+s.q], math.Inf(1))
 		norm = scaledNorm(s.d, s.x)
 		rate := norm / before
-		left := 1.0
-		if rate < 1 {
-			left = 1 / (1 - rate)
+		left := 1.0 // of the error after the next step, as a multiple of it
+		if rate < 0.5 {
+			left = rate / (1 - rate)
 		}
 		for k, j := range s.free {
 			scale := math.Abs(s.theta[j]) + sd/s.d[k]
-			if math.Abs(s.x[k])*left > s.tol*scale {
+			if x := math.Abs(s.x[k]); x*left > s.tol*scale || x > staleLimit*scale {
 				small = false
 			}
 		}
 		if small || norm == 0 {
-			// the remaining step is below the tolerance and costs nothing
+			s.last()
 			s.status, s.reason = Converged, "the remaining step is below the tolerance"
 			return nil
 		}
@@ -577,9 +570,7 @@ func (s *search) polish(ctx context.Context, norm float64) error {
 			s.finish("rounding stops the steps from shrinking")
 			return nil
 		}
-		for k, j := range s.free {
-			s.trial[j] = s.theta[j] + s.x[k]
-		}
+		s.aim()
 	}
 }
 
@@ -589,6 +580,42 @@ func (s *search) polish(ctx context.Context, norm float64) error {
 // residuals.
 func (s *search) silent(k int, c float64) bool {
 	return c < 1e-7*s.d[k] && c*math.Abs(s.theta[s.free[k]]) < 1e-6*math.Sqrt(s.chi2/float64(len(s.y)))
+}
+
+// staleLimit bounds the last step: the Jacobian and with it the covariance are
+// those of the point before it.
+const staleLimit = 3e-9
+
+// last takes the last step without another evaluation: what it leaves out of the
+// model's values is of the order of its square, below their rounding.
+func (s *search) last() {
+	s.aim()
+	for k, c := range s.cols {
+		x := s.trial[s.free[k]] - s.theta[s.free[k]]
+		if x == 0 {
+			continue
+		}
+		f := s.f[:len(c)]
+		for i, a := range c {
+			f[i] += a * x
+		}
+	}
+	if s.eiv != nil {
+		s.eiv.settle()
+	}
+	copy(s.theta, s.trial)
+}
+
+// aim sets the trial point to the present one plus the step, kept within the
+// bounds in spite of rounding.
+func (s *search) aim() {
+	for k, j := range s.free {
+		t := s.theta[j] + s.x[k]
+		if s.lo != nil {
+			t = math.Min(math.Max(t, s.lo[k]), s.hi[k])
+		}
+		s.trial[j] = t
+	}
 }
 
 // accept makes the trial point the current one.
