@@ -36,7 +36,10 @@ type BudgetInput struct {
 	Unit       si.Unit
 	Instrument string
 	Source     string
+	Together   string // inputs with the same word, not empty, were read together
 	Line       int
+
+	readings []float64 // SI
 }
 
 // BudgetOutput is one output quantity.
@@ -115,6 +118,7 @@ func (f *folder) budget(name string, data []byte, sum string) (*Budget, error) {
 		r.missing(root, "inputs", `write [inputs.NAME] with value and u`)
 	}
 	b.Correlations = r.correlationTables(known)
+	pairs := r.joint(b)
 	names := make([]string, len(b.Instruments))
 	for i := range b.Instruments {
 		names[i] = b.Instruments[i].Name
@@ -128,7 +132,7 @@ func (f *folder) budget(name string, data []byte, sum string) (*Budget, error) {
 	if err := r.errs.err(); err != nil {
 		return nil, err
 	}
-	b.model()
+	b.model(pairs)
 	b.Warnings = append(r.warn, b.idle()...)
 	return b, nil
 }
@@ -179,6 +183,10 @@ func (f *folder) budgetInputs(r *reader, b *Budget) {
 		}
 		if n.shape == isTable {
 			in.Group = r.text(n, "group")
+			in.Together, in.readings = r.text(n, "together"), q.readings
+			if in.Together != "" && len(q.readings) == 0 {
+				r.fail(n.field("together"), "only inputs with readings can have been read together")
+			}
 		}
 		in.Dist, in.Unit, in.Instrument, in.Source = q.dist, q.unit, q.instrument, q.source
 		b.Quantities = append(b.Quantities, in)
@@ -205,7 +213,7 @@ func (r *reader) name(n *node, name string) bool {
 // repeats reads an input whose readings stand in a column of a file.
 func (f *folder) repeats(r *reader, b *Budget, n *node) (q stated, ok bool) {
 	before := len(r.errs.list)
-	allowed := []string{"file", "column", "unit", "sha256", "decimal", "group", "instrument", "source"}
+	allowed := []string{"file", "column", "unit", "sha256", "decimal", "together", "group", "instrument", "source"}
 	for _, k := range n.keys {
 		if indexOf(allowed, k) < 0 {
 			r.fail(n.field(k), "%s does not go with file and column", k)
@@ -261,6 +269,10 @@ func (f *folder) repeats(r *reader, b *Budget, n *node) (q stated, ok bool) {
 		}
 	}
 	if missing := t.N - len(xs); missing > 0 {
+		if n.fields["together"] != nil {
+			r.fail(n.field("together"), "%s of column %s has no value; inputs that were read together need all", plural(missing, "reading"), quoted(column))
+			return q, false
+		}
 		r.warnf(n, "%s of column %s without a value left out", plural(missing, "reading"), quoted(column))
 	}
 	q.unit = unit
@@ -273,6 +285,49 @@ func (f *folder) repeats(r *reader, b *Budget, n *node) (q stated, ok bool) {
 	}
 	r.fromReadings(n.field("column"), xs, &q)
 	return q, len(r.errs.list) == before
+}
+
+// joint evaluates the inputs that were read together, and returns the
+// correlations that their readings give.
+func (r *reader) joint(b *Budget) []gum.Pair {
+	var pairs []gum.Pair
+	done := map[string]bool{}
+	for i := range b.Quantities {
+		word := b.Quantities[i].Together
+		if word == "" || done[word] {
+			continue
+		}
+		done[word] = true
+		var names []string
+		var columns [][]float64
+		var members []int
+		for j := range b.Quantities {
+			if q := &b.Quantities[j]; q.Together == word {
+				names, columns, members = append(names, q.Name), append(columns, q.readings), append(members, j)
+			}
+		}
+		at := r.root.fields["inputs"].fields[b.Quantities[i].Name].field("together")
+		if len(names) == 1 {
+			r.fail(at, "no other input was read together with this one")
+			continue
+		}
+		for _, c := range b.Correlations {
+			if indexOf(names, c.A) >= 0 && indexOf(names, c.B) >= 0 {
+				r.errs.add(&Error{File: r.file, Line: c.Line, Key: "correlations",
+					Problem: fmt.Sprintf("%s and %s were read together; their correlation follows from the readings", c.A, c.B)})
+			}
+		}
+		inputs, more, err := gum.JointReadings(names, columns)
+		if err != nil {
+			r.fail(at, "%v", err)
+			continue
+		}
+		for k, j := range members {
+			b.Quantities[j].Dist = inputs[k].Dist
+		}
+		pairs = append(pairs, more...)
+	}
+	return pairs
 }
 
 // addFile notes a file once.
@@ -349,10 +404,10 @@ func (r *reader) formulaError(n *node, err error) {
 }
 
 // model makes what package gum propagates.
-func (b *Budget) model() {
-	m := &gum.Model{}
+func (b *Budget) model(pairs []gum.Pair) {
+	m := &gum.Model{Correlations: pairs}
 	for _, q := range b.Quantities {
-		m.Inputs = append(m.Inputs, gum.Input{Name: q.Name, Group: q.Group, Unit: q.Unit.Symbol, Dist: q.Dist})
+		m.Inputs = append(m.Inputs, gum.Input{Name: q.Name, Group: q.Group, Unit: q.Unit.Symbol, Dist: q.Dist, Block: q.Together})
 	}
 	for _, c := range b.Correlations {
 		m.Correlations = append(m.Correlations, gum.Pair{A: c.A, B: c.B, R: c.R})

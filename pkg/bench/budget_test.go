@@ -3,6 +3,7 @@ package bench
 import (
 	"context"
 	"math"
+	"os"
 	"path/filepath"
 	"strings"
 	"testing"
@@ -155,5 +156,65 @@ func TestBudgetWarnings(t *testing.T) {
 	}
 	if b.Outputs[0].Unit.Symbol != "V/m" {
 		t.Errorf("unit %q where none is stated", b.Outputs[0].Unit.Symbol)
+	}
+}
+
+// TestReadTogether is the worked example of simultaneous resistance and
+// reactance: JCGM 100:2008 H.2, readings of table H.2, results of table H.4
+// (published).
+func TestReadTogether(t *testing.T) {
+	dir := dataset(t, map[string]string{"h2.toml": `format = 1
+[inputs.V]
+readings = [5.007, 4.994, 5.005, 4.990, 4.999]
+unit = "V"
+together = "run"
+[inputs.I]
+file = "run.csv"
+column = "I/mA"
+unit = "mA"
+together = "run"
+[inputs.phi]
+readings = ["1.0456", "1.0438", "1.0468", "1.0428", "1.0433"]
+together = "run"
+[outputs.R]
+formula = "V/I*cos(phi)"
+unit = "ohm"
+[outputs.X]
+formula = "V/I*sin(phi)"
+unit = "ohm"
+`, "run.csv": "I/mA\n19.663\n19.639\n19.640\n19.685\n19.678\n"})
+	b, err := OpenBudget(filepath.Join(dir, "h2.toml"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	r, err := gum.Propagate(context.Background(), b.Model, gum.Settings{LawOnly: true})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i, want := range []struct{ value, u float64 }{{127.732, 0.071}, {219.847, 0.295}} {
+		l := r.Outputs[i].Law
+		if l == nil || math.Abs(l.Value-want.value) > 0.0005 || math.Abs(l.U-want.u) > 0.001 { // 0.2956 computed
+			t.Errorf("%s: %+v, want %v", r.Outputs[i].Name, l, want)
+		}
+	}
+	if got := r.Correlation[0][1]; math.Abs(got+0.588) > 0.0005 {
+		t.Errorf("r(R, X) = %v, want -0.588", got)
+	}
+	for _, c := range []struct{ old, new, want string }{
+		{`readings = ["1.0456", "1.0438", "1.0468", "1.0428", "1.0433"]`, `readings = ["1.0456", "1.0438"]`, `joint readings come together`},
+		{`readings = ["1.0456", "1.0438", "1.0468", "1.0428", "1.0433"]`, `value = 1.04`, `inputs.phi.together: only inputs with readings`},
+		{`[outputs.R]`, "[[correlations]]\nbetween = [\"V\", \"I\"]\nr = 0.1\n[outputs.R]", `V and I were read together; their correlation follows from the readings`},
+		{`together = "run"`, `together = "walk"`, `inputs.V.together: no other input was read together`},
+	} {
+		text, err := os.ReadFile(filepath.Join(dir, "h2.toml"))
+		if err != nil {
+			t.Fatal(err)
+		}
+		if err := os.WriteFile(filepath.Join(dir, "bad.toml"), []byte(strings.Replace(string(text), c.old, c.new, 1)), 0o644); err != nil {
+			t.Fatal(err)
+		}
+		if _, err := OpenBudget(filepath.Join(dir, "bad.toml")); err == nil || !strings.Contains(err.Error(), c.want) {
+			t.Errorf("%q: %v, want %q", c.new, err, c.want)
+		}
 	}
 }

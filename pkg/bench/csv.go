@@ -86,7 +86,24 @@ const (
 	number
 	wordy
 	timely
+	both // numbers and words
 )
+
+// numeric reports whether a column is kept as numbers, worded whether as words.
+func (m mode) numeric() bool { return m == number || m == both }
+func (m mode) worded() bool  { return m == wordy || m == both }
+
+// also is the mode of a column that is read as m and as x; ok is false when that
+// can't be.
+func (m mode) also(x mode) (_ mode, ok bool) {
+	switch {
+	case m == skip || m == x:
+		return x, true
+	case m == timely || x == timely:
+		return m, false
+	}
+	return both, true
+}
 
 // layout is a header understood: what is read from each column, and how.
 type layout struct {

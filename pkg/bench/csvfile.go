@@ -41,7 +41,7 @@ func ReadCSV(r io.Reader, name string, s CSVSettings) (*Table, error) {
 		set := func(list []string, m mode) {
 			for _, h := range list {
 				if c := indexOf(l.header, h); c >= 0 {
-					l.modes[c] = m
+					l.modes[c], _ = l.modes[c].also(m)
 				} else {
 					errs.add(&Error{File: name, Line: 1, Problem: missingColumn(l.header, h)})
 				}
@@ -62,7 +62,8 @@ type source struct {
 		io.Writer
 		Sum([]byte) []byte
 	}
-	size  int64
+	size  int64  // read so far
+	known int64  // size of the file; 0: not known
 	carry []byte // read, but not yet handed out
 	eof   bool
 }
@@ -91,7 +92,11 @@ func (s *source) fill(b []byte) (int, error) {
 // It returns false when the file is at its end.
 func (s *source) next(p *part) (bool, error) {
 	if cap(p.buf) < partSize {
-		p.buf = make([]byte, partSize)
+		room := partSize
+		if s.known > 0 && s.known < partSize/2 { // a small file needs no more than itself
+			room = int(s.known) + 512
+		}
+		p.buf = make([]byte, room)
 	}
 	p.buf = p.buf[:cap(p.buf)]
 	n := copy(p.buf, s.carry)
@@ -140,7 +145,7 @@ func lastRecordEnd(b []byte) int {
 // readCSV is ReadCSV with the caller's choice of columns. size is the size of
 // the file, 0 when it is not known; limit the greatest number of records.
 func readCSV(r io.Reader, name string, size int64, s CSVSettings, wanted []string, plan func(*layout) error, limit int) (*Table, error) {
-	src := &source{r: r, name: name, sum: sha256.New()}
+	src := &source{r: r, name: name, sum: sha256.New(), known: size}
 	first := newPart(&layout{})
 	if more, err := src.next(first); err != nil {
 		return nil, err
@@ -322,13 +327,14 @@ func (m *merger) add(p *part) {
 		t.starts = append(t.starts, s)
 	}
 	for c, md := range m.l.modes {
-		switch md {
-		case number:
+		if md.numeric() {
 			t.Number[c] = m.grow(t.Number[c], p, p.number[c])
-		case timely:
-			m.addTimes(c, p)
-		case wordy:
+		}
+		if md.worded() {
 			m.addWords(c, p)
+		}
+		if md == timely {
+			m.addTimes(c, p)
 		}
 	}
 	t.N += p.rows

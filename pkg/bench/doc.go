@@ -285,6 +285,8 @@
 //	  unit                 unit of the column, or of plain numbers in readings
 //	  sha256               pin of the file
 //	  decimal              point (default) or comma
+//	  together             inputs with the same word were read together, reading by reading: their
+//	                       correlation follows from the readings
 //	  group                part of the bench, for grouping the budget
 //
 //	[outputs.NAME] an output

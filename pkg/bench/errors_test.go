@@ -70,7 +70,7 @@ func TestBenchErrors(t *testing.T) {
 		{`kind    = "kind"`, `kind = "gap_no"`, `readings.csv:2: column gap_no: "1" is no kind of row; known: reading, zero, blank, overrange`},
 		{`setting = "gap_no"`, `quality_reject = ["bad"]`, `rows.quality_reject: words that reject a row need the column that holds them`},
 		{`setting = "gap_no"`, ``, `channels.gap.grouped[1].by: no column says which setting a row belongs to`},
-		{`setting = "gap_no"`, `setting = "gap/mm"`, `column "gap/mm" is used as numbers and as words`},
+		{`setting = "gap_no"`, `setting = "t"`, `column "t" is used as times and as something else`},
 
 		// Channels.
 		{`unit   = "kV"`, `unit = "mm"`, `bench.toml:15:8: channels.voltage.unit: "mm" is a length; a voltage is due (for example kV)`},
@@ -233,6 +233,7 @@ func TestReadingsErrors(t *testing.T) {
 		{"2.0001,4.000", "2.0001", `readings.csv:3: the record has 5 cells, the header 6`},
 		{"2.0001,4.000", "2.0001,4.000,5,6", `readings.csv:3: the record has 8 cells, the header 6`},
 		{"-2.0002,4.000", "-2.0002,0", ``}, // row 3 is excluded
+		{"reading,2,4.0001", "reading,,4.0001", `readings.csv:5: column gap_no: the cell is empty, but errors are grouped by setting`},
 		{"4.0001,8.000", "4.0001,0", `readings.csv:5: column gap/mm: 0 mm: spacing must be above zero`},
 		{"4.0001,8.000", "4.0001,-8", `-8 mm: spacing must be above zero`},
 		{"4.0001,8.000", "4.0001,1e310", `beyond the range of numbers`},

@@ -243,6 +243,7 @@ var budgetDoc = []tableDoc{
 		{"unit", "unit of the column, or of plain numbers in readings", `"mm"`},
 		{"sha256", "pin of the file", `"0000000000000000000000000000000000000000000000000000000000000000"`},
 		{"decimal", "point (default) or comma", `"point"`},
+		{"together", "inputs with the same word were read together, reading by reading: their correlation follows from the readings", `"run"`},
 		{"group", "part of the bench, for grouping the budget", `"geometry"`},
 	}},
 	{"outputs.*", "an output", []keyDoc{

@@ -20,6 +20,7 @@ type stated struct {
 	hasStart   bool
 	instrument string
 	source     string
+	readings   []float64 // of a Type A evaluation, SI
 }
 
 // quantity reads n in any of its forms; the dimension is that of want.like
@@ -354,7 +355,7 @@ func (r *reader) fromReadings(n *node, xs []float64, q *stated) {
 		r.fail(n, "%v", err)
 		return
 	}
-	q.dist = d
+	q.dist, q.readings = d, xs
 	q.hasValue, q.hasU = true, true
 	if q.source == "" {
 		q.source = fmt.Sprintf("mean of %d readings", len(xs))

@@ -85,7 +85,9 @@ func appendColumn(dst, src []float64) []float64 {
 // join appends the words of more to l, which may be nil.
 func (l *Labels) join(more *Labels) *Labels {
 	if l == nil {
-		return more
+		// Clipped: the next file must not grow into the slices of another role
+		// that reads the same column.
+		return &Labels{Column: more.Column, Words: slices.Clip(more.Words), Index: slices.Clip(more.Index)}
 	}
 	into := make([]int32, len(more.Words))
 	for i, w := range more.Words {
@@ -113,6 +115,10 @@ func (l *loader) readFile(f *readingsFile, limit int) (*Table, error) {
 	for i, u := range l.columns {
 		wanted[i] = u.header
 	}
+	before, err := file.Stat()
+	if err != nil {
+		return nil, &Error{File: f.name, Problem: cause(err), Err: err}
+	}
 	t, err := readCSV(file, f.name, size, f.settings, wanted, func(lay *layout) error {
 		var errs errorList
 		for _, u := range l.columns {
@@ -122,16 +128,22 @@ func (l *loader) readFile(f *readingsFile, limit int) (*Table, error) {
 				errs.add(e)
 				continue
 			}
-			if was := lay.modes[c]; was != skip && was != u.as {
-				errs.add(l.errorf(u.node, "column %s is used as numbers and as words", quoted(u.header)))
+			m, ok := lay.modes[c].also(u.as)
+			if !ok {
+				errs.add(l.errorf(u.node, "column %s is used as times and as something else", quoted(u.header)))
 				continue
 			}
-			lay.modes[c] = u.as
+			lay.modes[c] = m
 		}
 		return errs.err()
 	}, limit)
 	if err != nil {
 		return nil, err
+	}
+	// What was parsed is what was hashed; but a file that grows under our hands
+	// is no record of a measurement that has ended.
+	if after, err := file.Stat(); err != nil || after.Size() != before.Size() || !after.ModTime().Equal(before.ModTime()) {
+		return nil, &Error{File: f.name, Problem: "the file changed while it was read; run again when it is complete"}
 	}
 	if f.pin != "" && f.pin != t.SHA256 {
 		return nil, l.errorf(f.node.field("sha256"), "the pin does not match: %s has SHA-256 %s; restore the file, or put in the new sum if the change is meant", f.name, t.SHA256)
@@ -226,6 +238,7 @@ func (l *loader) fill(columns map[string][]float64) {
 				continue
 			}
 			words := b.Rows.Labels[g.By]
+			l.unlabelled(words, g.By)
 			g.Labels, g.Count = words.Words, len(words.Words)
 			g.Group = make([]int, b.Rows.N)
 			for r, k := range words.Index {
@@ -237,6 +250,25 @@ func (l *loader) fill(columns map[string][]float64) {
 	b.count()
 	if !slices.ContainsFunc(b.Rows.Excluded, func(x bool) bool { return !x }) {
 		l.errs.add(&Error{File: l.file, Problem: "every data record is excluded"})
+	}
+}
+
+// unlabelled refuses readings whose group is not said: all of them would share
+// one error.
+func (l *loader) unlabelled(words *Labels, role string) {
+	r := &l.b.Rows
+	empty := int32(indexOf(words.Words, ""))
+	if empty < 0 {
+		return
+	}
+	n := 0
+	for i, k := range words.Index {
+		if k == empty && r.Kind[i] == Reading && !r.Excluded[i] {
+			l.rowError(i, words.Column, "the cell is empty, but errors are grouped by "+role)
+			if n++; n == maxErrors {
+				return
+			}
+		}
 	}
 }
 

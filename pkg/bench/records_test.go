@@ -245,3 +245,24 @@ func TestWarnings(t *testing.T) {
 		}
 	}
 }
+
+// TestOneColumnForSeveralUses: the spacing as read also says which setting and
+// which mounting a row belongs to.
+func TestOneColumnForSeveralUses(t *testing.T) {
+	text := strings.Replace(goodBench, `setting = "gap_no"`, "setting = \"gap/mm\"\nmount = \"gap/mm\"", 1)
+	text = strings.Replace(text, `file = "readings.csv"`, "file = \"readings.csv\"\n[[readings]]\nfile = \"second.csv\"", 1)
+	second := "t,kind,V/kV,gap/mm,F/mN\n50,reading,4,8.000,1\n60,reading,4,12.000,1\n"
+	b, err := OpenWith(testKind(), dataset(t, map[string]string{"bench.toml": text, "readings.csv": goodReadings, "second.csv": second}))
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, role := range []string{"setting", "mount"} {
+		l := b.Rows.Labels[role]
+		if fmt.Sprint(l.Words, l.Index) != "[4.000 8.000 12.000] [0 0 0 1 1 1 2]" {
+			t.Errorf("%s: %v %v", role, l.Words, l.Index)
+		}
+	}
+	if got := fmt.Sprint(b.Channels[1].Readings); got != "[0.004 0.004 0.004 0.008 0.008 0.008 0.012]" {
+		t.Errorf("gaps %s", got)
+	}
+}

@@ -46,11 +46,11 @@ func newPart(l *layout) *part {
 func (p *part) reset(l *layout) {
 	p.rows, p.starts, p.errs = 0, p.starts[:0], nil
 	for c, m := range l.modes {
-		switch m {
-		case number, timely:
+		if m != skip && m != wordy {
 			p.number[c] = p.number[c][:0]
 			p.times[c] = partTimes{}
-		case wordy:
+		}
+		if m.worded() {
 			w := &p.word[c]
 			w.list, w.index, w.last = nil, w.index[:0], -1
 			w.known = map[string]int32{}
@@ -100,7 +100,15 @@ func (p *part) scan(l *layout) {
 					_, end, bad = p.raw(l, c, i, line, &lines)
 				}
 			default:
-				_, end, bad = p.special(l, c, i, line, &lines)
+				if l.modes[c] == both {
+					v, _, ok := p.cell(l, c, i, line, new(int))
+					if !ok {
+						bad = true
+						break
+					}
+					p.number[c] = append(p.number[c], v)
+				}
+				end, bad = p.special(l, c, i, line, &lines)
 			}
 			if bad {
 				break
@@ -141,10 +149,10 @@ func (p *part) scan(l *layout) {
 // truncate cuts all columns to the records finished.
 func (p *part) truncate(l *layout) {
 	for c, m := range l.modes {
-		switch m {
-		case number, timely:
+		if m != skip && m != wordy {
 			p.number[c] = p.number[c][:min(p.rows, len(p.number[c]))]
-		case wordy:
+		}
+		if m.worded() {
 			p.word[c].index = p.word[c].index[:min(p.rows, len(p.word[c].index))]
 		}
 	}
@@ -274,22 +282,22 @@ func onlyDecimal(s string) bool {
 }
 
 // special reads a cell of words or of times.
-func (p *part) special(l *layout, c, i, line int, lines *int) (cell []byte, end int, bad bool) {
-	cell, end, bad = p.raw(l, c, i, line, lines)
+func (p *part) special(l *layout, c, i, line int, lines *int) (end int, bad bool) {
+	cell, end, bad := p.raw(l, c, i, line, lines)
 	if bad {
-		return cell, end, true
+		return end, true
 	}
 	cell = bytes.TrimSpace(cell)
 	if l.modes[c] == timely {
 		if l.isMissing(cell) {
 			p.number[c] = append(p.number[c], math.NaN())
-			return cell, end, false
+			return end, false
 		}
 		at, nanos, stamped, ok := stamp(cell, l.point)
 		if !ok {
 			p.fail(&Error{File: l.file, Line: line, Key: columnKey(l, c),
 				Problem: quoted(string(cell)) + " is not a time; write seconds or RFC 3339 like 2026-03-04T10:15:00Z"})
-			return cell, end, true
+			return end, true
 		}
 		t := &p.times[c]
 		if stamped {
@@ -301,23 +309,23 @@ func (p *part) special(l *layout, c, i, line int, lines *int) (cell []byte, end 
 			t.numberLine = line
 		}
 		p.number[c] = append(p.number[c], at)
-		return cell, end, false
+		return end, false
 	}
 	w := &p.word[c]
 	if w.last >= 0 && string(cell) == w.list[w.last] {
 		w.index = append(w.index, w.last)
-		return cell, end, false
+		return end, false
 	}
 	k, found := w.known[unsafe.String(unsafe.SliceData(cell), len(cell))]
 	if !found {
 		if len(cell) > 256 {
 			p.fail(&Error{File: l.file, Line: line, Key: columnKey(l, c), Problem: fmt.Sprintf("the word has %d bytes; at most 256 are read", len(cell))})
-			return cell, end, true
+			return end, true
 		}
 		s := strings.ToValidUTF8(string(cell), "\uFFFD")
 		if s != string(cell) {
 			p.fail(&Error{File: l.file, Line: line, Key: columnKey(l, c), Problem: quoted(s) + " is not UTF-8 text; save the file as UTF-8"})
-			return cell, end, true
+			return end, true
 		}
 		k = int32(len(w.list))
 		w.list = append(w.list, s)
@@ -325,5 +333,5 @@ func (p *part) special(l *layout, c, i, line int, lines *int) (cell []byte, end 
 	}
 	w.last = k
 	w.index = append(w.index, k)
-	return cell, end, false
+	return end, false
 }
