@@ -150,7 +150,7 @@ func (s *Server) run(c Cell) (res *Result, err error) {
 			res = &Result{}
 		}
 	}()
-	return s.in.Run(ctx, c)
+	return s.runCell(ctx, c)
 }
 
 // expressions evaluates the user expressions of an execute request.

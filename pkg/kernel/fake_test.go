@@ -130,7 +130,6 @@ type bench struct {
 	sign                                    *signer
 	server                                  *Server
 	ended                                   chan error
-	log                                     strings.Builder
 }
 
 var testKey = []byte("a key for tests")

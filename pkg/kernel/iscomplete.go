@@ -5,6 +5,7 @@ import "strings"
 // IsComplete judges whether code can be run as it stands: "complete", "incomplete" with the indent of the next line,
 // or "invalid".
 func IsComplete(in Interpreter, code string) (status, indent string) {
+	_, code = splitSpecial(code)
 	bad := false
 	var stack []byte
 	open := scanCode(code, func(_ int, c byte) {

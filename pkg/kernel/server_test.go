@@ -1,6 +1,8 @@
 package kernel
 
 import (
+	"os"
+	"path/filepath"
 	"reflect"
 	"strings"
 	"testing"
@@ -194,5 +196,35 @@ func TestQueueIsBounded(t *testing.T) {
 func TestNoKeyNoServer(t *testing.T) {
 	if _, err := NewServer(newFake(), Config{}); err == nil {
 		t.Error("a server without a signing key")
+	}
+}
+
+func TestSpecialLines(t *testing.T) {
+	f := newFake()
+	f.described = map[string]*Description{"r": {Kind: "var", Type: "float64"}}
+	b := serve(t, f)
+	dir := t.TempDir()
+	t.Chdir(dir)
+	b.send(b.shell, "execute_request", run("\n%doc r\n%cd ..\nfail here"))
+	if c := content(t, b.next(b.shell)); c["evalue"] != "here" || !strings.Contains(c["traceback"].([]any)[1].(string), "line 4") {
+		t.Errorf("lines for the kernel shift those of the code: %v", c)
+	}
+	if wd, err := os.Getwd(); err != nil || wd != filepath.Dir(dir) {
+		t.Errorf("%%cd leads to %s, %v", wd, err)
+	}
+	b.send(b.shell, "execute_request", run("%doc r"))
+	payload, _ := content(t, b.next(b.shell))["payload"].([]any)
+	if len(payload) != 1 || payload[0].(map[string]any)["source"] != "page" {
+		t.Errorf("%%doc pages %v", payload)
+	}
+	for _, code := range []string{"%doc unknown", "%cd /no/such/folder", "%nothing"} {
+		b.send(b.shell, "execute_request", run(code))
+		if c := content(t, b.next(b.shell)); c["status"] != "error" {
+			t.Errorf("%s: %v", code, c)
+		}
+	}
+	b.send(b.shell, "is_complete_request", run("%help"))
+	if c := content(t, b.next(b.shell)); c["status"] != "complete" {
+		t.Errorf("%%help is %v", c)
 	}
 }

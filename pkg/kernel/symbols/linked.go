@@ -13,6 +13,7 @@ var Linked = []string{
 	"example.org/guardring/pkg/formula",
 	"example.org/guardring/pkg/gum",
 	"example.org/guardring/pkg/jet",
+	"example.org/guardring/pkg/lab",
 	"example.org/guardring/pkg/lsq",
 	"example.org/guardring/pkg/model",
 	"example.org/guardring/pkg/plan",

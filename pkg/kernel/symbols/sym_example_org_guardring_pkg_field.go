@@ -47,6 +47,7 @@ func init() {
 			"DiscCapacitanceJet":         r.ValueOf(p0_field.DiscCapacitanceJet),
 			"DiscCharge":                 r.ValueOf(p0_field.DiscCharge),
 			"DiscChargeJet":              r.ValueOf(p0_field.DiscChargeJet),
+			"DiscCoefficient":            r.ValueOf(p0_field.DiscCoefficient),
 			"DiscForce":                  r.ValueOf(p0_field.DiscForce),
 			"DiscForceJet":               r.ValueOf(p0_field.DiscForceJet),
 			"DiscLimit":                  r.ValueOf(p0_field.DiscLimit),
@@ -96,6 +97,7 @@ func init() {
 			"PlateForceJet":              r.ValueOf(p0_field.PlateForceJet),
 			"PlateImageForce":            r.ValueOf(p0_field.PlateImageForce),
 			"PlateImageForceJet":         r.ValueOf(p0_field.PlateImageForceJet),
+			"PlateImageForceSlope":       r.ValueOf(p0_field.PlateImageForceSlope),
 			"PointFieldJet":              r.ValueOf(p0_field.PointFieldJet),
 			"PointForce":                 r.ValueOf(p0_field.PointForce),
 			"PointForceJet":              r.ValueOf(p0_field.PointForceJet),
@@ -157,6 +159,7 @@ func init() {
 			"WedgeMean":                  r.ValueOf(p0_field.WedgeMean),
 		},
 		Types: map[string]r.Type{
+			"Contribution": r.TypeOf((*p0_field.Contribution)(nil)).Elem(),
 			"Drive":        r.TypeOf((*p0_field.Drive)(nil)).Elem(),
 			"Effect":       r.TypeOf((*p0_field.Effect)(nil)).Elem(),
 			"Ellipsoid":    r.TypeOf((*p0_field.Ellipsoid)(nil)).Elem(),

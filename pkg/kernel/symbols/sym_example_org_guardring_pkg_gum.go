@@ -65,6 +65,7 @@ func init() {
 			"Correlation":  r.TypeOf((*p0_gum.Correlation)(nil)).Elem(),
 			"Distribution": r.TypeOf((*p0_gum.Distribution)(nil)).Elem(),
 			"Evaluator":    r.TypeOf((*p0_gum.Evaluator)(nil)).Elem(),
+			"GroupShare":   r.TypeOf((*p0_gum.GroupShare)(nil)).Elem(),
 			"Histogram":    r.TypeOf((*p0_gum.Histogram)(nil)).Elem(),
 			"Input":        r.TypeOf((*p0_gum.Input)(nil)).Elem(),
 			"Joint":        r.TypeOf((*p0_gum.Joint)(nil)).Elem(),

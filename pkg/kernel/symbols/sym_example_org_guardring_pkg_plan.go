@@ -19,9 +19,10 @@ func init() {
 			"TruthFile": r.ValueOf(p0_plan.TruthFile),
 		},
 		Types: map[string]r.Type{
-			"Fault": r.TypeOf((*p0_plan.Fault)(nil)).Elem(),
-			"File":  r.TypeOf((*p0_plan.File)(nil)).Elem(),
-			"Truth": r.TypeOf((*p0_plan.Truth)(nil)).Elem(),
+			"Defect": r.TypeOf((*p0_plan.Defect)(nil)).Elem(),
+			"Fault":  r.TypeOf((*p0_plan.Fault)(nil)).Elem(),
+			"File":   r.TypeOf((*p0_plan.File)(nil)).Elem(),
+			"Truth":  r.TypeOf((*p0_plan.Truth)(nil)).Elem(),
 		},
 		Proxies: map[string]r.Type{},
 		Untypeds: map[string]string{

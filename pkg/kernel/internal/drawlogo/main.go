@@ -74,7 +74,7 @@ func drawing() []shape {
 		solid(32, 45, 27, 9, sea),
 	}
 	for _, x := range []float64{20, 26, 32, 38, 44} { // field lines from the disc to the plate
-		s = append(s, bar(x-1, 20, 2, 26, paper))
+		s = append(s, bar(x-1, 24, 2, 18+(1-math.Abs(x-32)/16)*4, ink))
 	}
 	return append(s,
 		band(32, 21, 27, 9.5, 18, 6.2, ink), // guard ring: rim, then face
