@@ -1,0 +1,158 @@
+package main
+
+import (
+	"bytes"
+	"fmt"
+	"math"
+	"path/filepath"
+	"sort"
+	"strconv"
+	"strings"
+
+	"github.com/spf13/cobra"
+
+	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/figure"
+	"example.org/guardring/pkg/plan"
+	"example.org/guardring/pkg/reduce"
+	"example.org/guardring/pkg/report"
+	"example.org/guardring/pkg/si"
+)
+
+func planCommand() *cobra.Command {
+	var asJSON bool
+	var figures string
+	cmd := &cobra.Command{
+		Use:   "plan DIR",
+		Short: "Say before measuring what uncertainty a design gives",
+		Long: `Plan takes the settings of DIR/bench.toml and its readings file, the truth of
+DIR/simulation.toml, and states what uncertainty the first measurand would have,
+what dominates it, and how more readings, more settings, other voltages or
+spacings, or better known inputs would change it; whether the design stays below
+the breakdown of air and the laboratory's limits of stored energy and charge.`,
+		Example: "  guardring plan datasets/attracted-disc",
+		Args:    cobra.ExactArgs(1),
+		RunE: func(cmd *cobra.Command, args []string) error {
+			b, err := bench.Open(args[0])
+			if err != nil {
+				return err
+			}
+			truth, err := plan.ReadTruth(b)
+			if err != nil {
+				return err
+			}
+			p, err := plan.Predict(cmd.Context(), b, truth)
+			if err != nil {
+				return err
+			}
+			var files []outFile
+			if figures != "" {
+				f, err := figure.Design(p)
+				if err != nil {
+					return err
+				}
+				var svg bytes.Buffer
+				if err := f.WriteSVG(&svg); err != nil {
+					return err
+				}
+				files = append(files, outFile{filepath.Join(figures, f.Name+".svg"), svg.Bytes()})
+			}
+			var out bytes.Buffer
+			if asJSON {
+				err = writeJSON(&out, p)
+			} else {
+				err = planText(&out, p)
+			}
+			if err != nil {
+				return err
+			}
+			if err := writeFiles(files); err != nil {
+				return err
+			}
+			_, err = cmd.OutOrStdout().Write(out.Bytes())
+			return err
+		},
+	}
+	cmd.Flags().BoolVar(&asJSON, "json", false, "print the prediction as JSON and nothing else")
+	cmd.Flags().StringVar(&figures, "figures", "", "write the figure as SVG into folder `DIR`")
+	return cmd
+}
+
+// planText prints a prediction as tables.
+func planText(w *bytes.Buffer, p *plan.Prediction) error {
+	m := &p.Measurand
+	unit, err := si.ParseUnit(m.Unit)
+	if err != nil {
+		return err
+	}
+	_, unit = si.Prefixed(float64(m.Value), unit)
+	fmt.Fprintf(w, "%s\nmodel %s, before measuring\n\n", p.Title, p.Model)
+	fmt.Fprintf(w, "The design gives %s: %s\n", figure.Words(m.Name), si.Expanded(float64(m.Value), float64(m.K)*float64(m.U), unit, float64(m.K), float64(m.Probability)))
+	h := &p.Hazard
+	fmt.Fprintf(w, "At %.3g kV it stores %.3g mJ (limit %.3g mJ) and holds %.3g µC (limit %.3g µC).\n",
+		float64(h.Voltage)/1e3, float64(h.Energy)*1e3, float64(h.EnergyLimit)*1e3, float64(h.Charge)*1e6, float64(h.ChargeLimit)*1e6)
+	fmt.Fprintf(w, "High voltage: interlock or barrier, discharge rod and earth before touching; local codes and licensed practice prevail.\n\n")
+	budget := report.Table{Caption: "What dominates", Columns: []report.Column{{Name: "input"}, {Name: "share", Unit: "%", Align: report.Decimal}}}
+	for _, l := range dominant(m.Budget, 6) {
+		budget.Rows = append(budget.Rows, []string{figure.Words(l.input), fmt.Sprintf("%.1f", 100*l.share)})
+	}
+	if err := budget.Text(w); err != nil {
+		return err
+	}
+	fmt.Fprintln(w)
+	table := report.Table{Caption: "One change at a time", Columns: []report.Column{
+		{Name: "change", Most: 44}, {Name: "u", Unit: unit.String(), Align: report.Decimal}, {Name: "ratio", Align: report.Decimal},
+		{Name: "energy", Unit: "mJ", Align: report.Decimal}, {Name: "breakdown / field", Align: report.Decimal}, {Name: "note"}}}
+	number := func(x float64, digits int) string {
+		if math.IsNaN(x) {
+			return "–"
+		}
+		// Two significant digits are meaningful in an uncertainty (GUM 7.2.6).
+		return strconv.FormatFloat(x, 'f', max(0, digits-1-int(math.Floor(math.Log10(math.Max(math.Abs(x), 1e-9))))), 64)
+	}
+	var notes []string
+	for _, s := range p.Scenarios {
+		note := ""
+		if s.Refused != "" {
+			notes = append(notes, s.Refused)
+			note = fmt.Sprintf("not possible (%d)", len(notes))
+		}
+		table.Rows = append(table.Rows, []string{planName(s.Name), number(unit.DeltaFromSI(float64(s.U)), 2), number(float64(s.Ratio), 3),
+			number(1e3*float64(s.Energy), 2), number(float64(s.Margin), 2), note})
+	}
+	if err := table.Text(w); err != nil {
+		return err
+	}
+	for i, note := range notes {
+		fmt.Fprintf(w, "(%d) %s\n", i+1, note)
+	}
+	for _, warning := range p.Warnings {
+		fmt.Fprintf(w, "! %s\n", warning)
+	}
+	return nil
+}
+
+// planName is the name of a change in words; its numbers keep their points.
+func planName(name string) string {
+	first, rest, ok := strings.Cut(name, " ")
+	if _, err := strconv.ParseFloat(first, 64); ok && err == nil {
+		return first + " " + figure.Words(rest)
+	}
+	return figure.Words(name)
+}
+
+// share is a budget line for the summary.
+type share struct {
+	input string
+	share float64
+}
+
+// dominant returns the n largest shares of a budget.
+func dominant(budget []reduce.BudgetLine, n int) []share {
+	var out []share
+	for _, l := range budget {
+		out = append(out, share{l.Input, float64(l.Share)})
+	}
+	sort.SliceStable(out, func(a, b int) bool { return out[a].share > out[b].share })
+	return out[:min(n, len(out))]
+}
