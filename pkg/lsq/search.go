@@ -120,8 +120,11 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 // columns returns a copy of the free columns of the Jacobian.
 func (s *search) columns() [][]float64 {
 	out := make([][]float64, s.q)
+	n := len(s.y)
+	slab := make([]float64, n*s.q)
 	for k, c := range s.cols {
-		out[k] = append([]float64(nil), c...)
+		out[k] = slab[k*n : k*n+n : k*n+n]
+		copy(out[k], c)
 	}
 	return out
 }
