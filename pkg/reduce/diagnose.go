@@ -48,6 +48,7 @@ func (c *chain) rows(r *lsq.Result, out *Rows) {
 	for p := range x {
 		x[p] = make([]float64, 1)
 	}
+	whitened := r.Whitened()
 	one := newPredictor(c.m, len(q), len(c.x), nil)
 	g, o := gainOffset(&b.Channels[c.resp])
 	f := make([]float64, 1)
@@ -58,7 +59,7 @@ func (c *chain) rows(r *lsq.Result, out *Rows) {
 			}
 			out.Response[n], out.Fitted[n], out.Residual[n] = c.y[i], r.Fitted[i], r.Residuals[i]
 			out.U[n] = 1 / math.Sqrt(r.Weights[i])
-			out.Standardised[n], out.Leverage[n], out.Studentised[n] = r.Standardised[i], r.Leverage[i], r.Studentised[i]
+			out.Standardised[n], out.Leverage[n], out.Studentised[n] = whitened[i], r.Leverage[i], r.Studentised[i]
 			continue
 		}
 		out.Excluded[n] = true

@@ -17,8 +17,9 @@ type Rows struct {
 	Response       []float64
 	Fitted         []float64
 	U              []float64
-	// Residual is Response − Fitted, SI; Standardised is that over the standard
-	// uncertainty of the reading, shared errors included; Leverage and Studentised are those of the whitened fit (NaN for
+	// Residual is Response − Fitted, SI; Standardised is that in units of
+	// its standard uncertainty, freed of what readings share (W(y − f) with
+	// WᵀW = Σ⁻¹; for excluded rows over the marginal uncertainty); Leverage and Studentised are those of the whitened fit (NaN for
 	// excluded rows).
 	Residual, Standardised, Leverage, Studentised []float64
 }
