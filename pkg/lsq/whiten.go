@@ -49,7 +49,6 @@ type plan struct {
 	slot []int // of each column: −1−k for dense column k, or k ≥ 0 among the disjoint
 	nd   int   // disjoint
 	nk   int   // dense
-	pos  []int // of each row: index into Load of its disjoint effect, −1 none
 }
 
 func (w *whitener) diagonal() bool { return w.full == nil && w.plan == nil }
@@ -78,7 +77,7 @@ func newPlan(n int, g *Effects) (*plan, error) {
 	}
 	// effects of few rows first: the most effects then go the cheap way
 	sort.SliceStable(order, func(a, b int) bool { return count[order[a]] < count[order[b]] })
-	p := &plan{slot: make([]int, g.Columns), pos: make([]int, n)}
+	p := &plan{slot: make([]int, g.Columns)}
 	taken := make([]bool, n)
 	for _, c := range order {
 		free := true
@@ -101,14 +100,6 @@ func newPlan(n int, g *Effects) (*plan, error) {
 	}
 	if limit := min(denseLimit, denseFloats/n); p.nk > limit {
 		return nil, fmt.Errorf("lsq: %d effects overlap others in the same rows; at most %d can be handled at this number of rows; give the covariance in full, or merge effects that always occur together", p.nk, limit)
-	}
-	for i := range p.pos {
-		p.pos[i] = -1
-		for k := g.Start[i]; k < g.Start[i+1]; k++ {
-			if p.slot[g.Column[k]] >= 0 {
-				p.pos[i] = k
-			}
-		}
 	}
 	return p, nil
 }

@@ -1,0 +1,120 @@
+package lsq
+
+import (
+	"math"
+	"sync"
+)
+
+// init prepares for the readings y and the parameters of p. Scratch memory
+// comes from a pool; release gives it back.
+func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
+	n, np, q := len(y), len(p.Parameters), len(free)
+	s.p, s.y, s.free, s.q, s.white, s.eval = p, y, free, q, white, p.Eval
+	m := blockRows(n)
+	tri := (q + 1) * (q + 1)
+	s.slab = takeSlab(2*n + 2*n*q + 4*np + 3*q + 2*tri + (q+1)*(m+1) + q*q + 3*q)
+	at := 0
+	take := func(k int) []float64 {
+		v := (*s.slab)[at : at+k : at+k]
+		at += k
+		return v
+	}
+	s.f, s.ftrial = take(n), take(n)
+	if cap(s.heads) < 2*np+2*q {
+		s.heads = make([][]float64, 2*np+2*q)
+	}
+	heads := s.heads[:2*np+2*q]
+	clear(heads)
+	s.jac, s.jtrial, s.cols, s.ctrial = heads[:np:np], heads[np:2*np:2*np], heads[2*np:2*np+q:2*np+q], heads[2*np+q:]
+	for k, j := range free {
+		s.cols[k], s.ctrial[k] = take(n), take(n)
+		s.jac[j], s.jtrial[j] = s.cols[k], s.ctrial[k]
+	}
+	s.theta, s.trial = take(np), take(np)
+	s.priorV, s.priorW = take(np), take(np)
+	s.d, s.x, s.rx = take(q), take(q), take(q)
+	s.now = fold{q: q, r: take(tri), stride: m, buf: take((q + 1) * m), dots: take(q + 1)}
+	s.next = fold{q: q, r: take(tri), stride: m, buf: s.now.buf, dots: s.now.dots}
+	s.trust = trust{q: q, s: take(q * q), x: take(q), w: take(q), b: take(q)}
+	for j := range p.Parameters {
+		s.priorV[j], s.priorW[j] = math.NaN(), 0
+	}
+	for k, j := range free {
+		q := &p.Parameters[j]
+		if q.Prior != nil {
+			s.priorV[j], s.priorW[j] = q.Prior.Value, 1/q.Prior.U
+			s.hasPrior = true
+		}
+		if (q.Lower != nil || q.Upper != nil) && s.lo == nil {
+			s.lo, s.hi = make([]float64, s.q), make([]float64, s.q)
+			s.held = make([]bool, s.q)
+			for l := range s.lo {
+				s.lo[l], s.hi[l] = math.Inf(-1), math.Inf(1)
+			}
+			s.sub = newSubspace(s.q)
+		}
+		if q.Lower != nil {
+			s.lo[k] = *q.Lower
+		}
+		if q.Upper != nil {
+			s.hi[k] = *q.Upper
+		}
+	}
+	if p.Numeric {
+		s.numeric = true
+		s.diff = newDifference(s)
+	}
+	s.prepareWhite()
+}
+
+// columns returns a copy of the free columns of the Jacobian.
+func (s *search) columns() [][]float64 {
+	out := make([][]float64, s.q)
+	n := len(s.y)
+	slab := make([]float64, n*s.q)
+	for k, c := range s.cols {
+		out[k] = slab[k*n : k*n+n : k*n+n]
+		copy(out[k], c)
+	}
+	return out
+}
+
+// release gives the scratch memory back; the search is then of no further use.
+func (s *search) release() {
+	giveSlab(s.slab)
+	s.slab = nil
+}
+
+// slabs keeps scratch memory between fits: they come in series of one size.
+var slabs sync.Pool
+
+func takeSlab(n int) *[]float64 {
+	if p, ok := slabs.Get().(*[]float64); ok {
+		if cap(*p) >= n && cap(*p) <= 8*n+4096 {
+			*p = (*p)[:n]
+			return p
+		}
+	}
+	v := make([]float64, n)
+	return &v
+}
+
+func giveSlab(p *[]float64) {
+	if p != nil {
+		slabs.Put(p)
+	}
+}
+
+// prepareWhite allocates what correlated readings need.
+func (s *search) prepareWhite() {
+	if s.white.diagonal() || s.wres != nil {
+		return
+	}
+	n := len(s.y)
+	s.wres = make([]float64, n)
+	s.wcols = make([][]float64, s.q)
+	slab := make([]float64, n*s.q)
+	for k := range s.wcols {
+		s.wcols[k] = slab[k*n : k*n+n]
+	}
+}
