@@ -9,8 +9,8 @@ import (
 	"slices"
 )
 
-// paletteSize is the most colours a PNG with a palette holds.
-const paletteSize = 256
+// paletteSize is the number of colours kept: more cost bytes that nobody sees.
+const paletteSize = 64
 
 // paletted redraws an opaque picture with a palette of its most frequent colours;
 // a rarer one, from the edges of strokes, takes the nearest of them. Line drawings

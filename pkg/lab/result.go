@@ -5,6 +5,8 @@ import (
 	"fmt"
 	"strings"
 
+	"github.com/go-gota/gota/dataframe"
+
 	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/cell"
 	"example.org/guardring/pkg/figure"
@@ -33,12 +35,13 @@ type Result struct {
 	json  json.RawMessage
 }
 
-// Reduce turns readings into a result. What it reduces is a *Bench from Open, a
-// *Result (its bench is reduced again), or the folder of a dataset. Settings may
-// follow.
+// Reduce turns readings into a result. What it reduces is a *Bench from Open, the
+// folder of a dataset, a *Result (its bench is reduced again), or a gota frame
+// with the bench or folder that says what its columns are. Settings may follow.
 //
 //	lab.Reduce(b)
 //	lab.Reduce("../datasets/attracted-disc", lab.Settings{Seed: 7, Trials: 100000})
+//	lab.Reduce(df, b)
 func Reduce(what any, more ...any) *Result {
 	var s Settings
 	stated := false
@@ -72,14 +75,19 @@ func Reduce(what any, more ...any) *Result {
 	switch w := what.(type) {
 	case *Bench, string, *Result:
 		if with != nil {
-			failf("a second bench is given; only a frame or a matrix needs one beside it")
+			failf("a second bench is given; only a frame needs one beside it")
 		}
 		if r, ok := w.(*Result); ok && r != nil && !stated {
 			s = r.Result.Settings
 		}
 		b, told = benchOf(w)
+	case dataframe.DataFrame:
+		if with == nil {
+			failf("a frame needs the bench that says what its columns are: lab.Reduce(frame, bench)")
+		}
+		b = with.withFrame(w)
 	default:
-		failf("a %T can't be reduced: a *lab.Bench from lab.Open, a *lab.Result or the folder of a dataset is due", what)
+		failf("a %T can't be reduced: a *lab.Bench from lab.Open, the folder of a dataset, a *lab.Result, or a frame with its bench is due", what)
 	}
 	return run(b.Bench, s, told)
 }
