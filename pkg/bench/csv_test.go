@@ -200,3 +200,16 @@ func TestTimeStamps(t *testing.T) {
 		t.Errorf("epoch %s", got)
 	}
 }
+
+// TestMillionRows: more than a million records load, on lines that are right to
+// the last.
+func TestMillionRows(t *testing.T) {
+	const rows = 1_100_000
+	tab, err := ReadCSV(strings.NewReader("x\n"+strings.Repeat("2.5\n", rows)), "x.csv", CSVSettings{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if tab.N != rows || tab.Line(rows-1) != rows+1 || len(tab.Number[0]) != rows || tab.Number[0][rows-1] != 2.5 {
+		t.Errorf("%d records, last on line %d", tab.N, tab.Line(rows-1))
+	}
+}

@@ -6,8 +6,6 @@ import (
 	"errors"
 	"fmt"
 	"math"
-	"os"
-	"path/filepath"
 	"slices"
 	"strconv"
 	"strings"
@@ -20,22 +18,19 @@ import (
 // error, or no bench with an error of ours.
 func FuzzBench(f *testing.F) {
 	f.Add([]byte(goodBench))
-	text, _ := Starter(testKind())
-	f.Add(text)
 	f.Add([]byte("format = 1\ntitle = \"x\"\nmodel = \"test-disc\"\nreadings = [{ file = \"readings.csv\" }]\n"))
 	f.Add([]byte("format = 1\ntitle = \"x\"\nmodel = \"test-disc\"\nchannels.force = 1\nquantities = []\n"))
 	f.Add([]byte("format = 1\nmodel = \"test-disc\"\n[[channels]]\n[[channels.force]]\n[exclude]\nrow = 1"))
 	f.Add([]byte("\xef\xbb\xbfformat = 0x1\n'' = 1\n\"\\u0000\" = {a.b.c = 1}\n"))
 	kind := testKind()
+	dir := dataset(f, map[string]string{"bench.toml": "", "readings.csv": goodReadings})
+	folder, err := openFolder(dir, benchFile)
+	if err != nil {
+		f.Fatal(err)
+	}
+	defer folder.root.Close()
 	f.Fuzz(func(t *testing.T, data []byte) {
-		dir := t.TempDir()
-		if err := os.WriteFile(filepath.Join(dir, "bench.toml"), data, 0o644); err != nil {
-			t.Fatal(err)
-		}
-		if err := os.WriteFile(filepath.Join(dir, "readings.csv"), []byte(goodReadings), 0o644); err != nil {
-			t.Fatal(err)
-		}
-		b, err := OpenWith(kind, dir)
+		b, err := folder.load(kind, dir, data, "", nil)
 		if (b == nil) == (err == nil) {
 			t.Fatalf("bench %v, error %v", b, err)
 		}
@@ -199,15 +194,13 @@ func FuzzBudget(f *testing.F) {
 	f.Add([]byte("format = 1\n[inputs]\na = 1\nb = \"2 mm\"\n[outputs.y]\nformula = \"a*b\"\nunit = \"m\"\n"))
 	f.Add([]byte("format = 1\n[inputs.a]\nreadings = [1, 2]\n[outputs]\ny = 3\n"))
 	f.Add([]byte("format = 1\n[outputs.y]\nformula = \"1\"\n[inputs]\n"))
+	folder, err := openFolder(dataset(f, map[string]string{"budget.toml": "", "repeats.csv": goodRepeats}), "budget.toml")
+	if err != nil {
+		f.Fatal(err)
+	}
+	defer folder.root.Close()
 	f.Fuzz(func(t *testing.T, data []byte) {
-		dir := t.TempDir()
-		if err := os.WriteFile(filepath.Join(dir, "budget.toml"), data, 0o644); err != nil {
-			t.Fatal(err)
-		}
-		if err := os.WriteFile(filepath.Join(dir, "repeats.csv"), []byte(goodRepeats), 0o644); err != nil {
-			t.Fatal(err)
-		}
-		b, err := OpenBudget(filepath.Join(dir, "budget.toml"))
+		b, err := folder.budget("budget.toml", data, "")
 		if (b == nil) == (err == nil) {
 			t.Fatalf("budget %v, error %v", b, err)
 		}
