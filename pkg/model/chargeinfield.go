@@ -65,7 +65,7 @@ func bodyScalars(first Scalar) []Scalar {
 		electricConstant,
 		{Table: "corrections.image", Name: "height_offset", Doc: "added to the height; without a height channel, height of the body over the mid-plane", Unit: si.MustUnit("mm"), Required: true, Adjustable: true, Part: "body"},
 		{Table: "corrections.body", Name: "radius", Doc: "radius of the conducting sphere", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "body"},
-		{Table: "corrections.body", Name: "model", Doc: "relative error of the factor less one", Unit: si.MustUnit("1"), Default: gum.Rectangular(0, 0.05), Part: "body"},
+		{Table: "corrections.body", Name: "model", Doc: "relative error of the factor less one", Unit: si.MustUnit("1"), Default: gum.Rectangular(0, 0.02), Part: "body"},
 		{Table: "corrections.leakage", Name: "time_constant", Doc: "time constant with which the body loses its charge", Unit: si.MustUnit("s"), Required: true, Adjustable: true, Positive: true, Part: "body"},
 		temperature, pressure}, balanceScalars...)
 }
@@ -83,7 +83,7 @@ var bodyCorrections = []Correction{
 const sphereBetweenPlates = 7 * 1.2020569031595942
 
 // bodyLimit is the largest a/d for which that first term is offered: it leaves
-// less than 5 % of itself out.
+// less than 2 % of itself out (a test compares it with a numerical solution).
 const bodyLimit = 0.15
 
 func prepareBody(k *Kind, s *Setup, seekCharge bool) (*Model, error) {

@@ -236,15 +236,7 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 	}
 	m.Check = func(q []float64, x [][]float64, y []float64) ([]error, error) {
 		row := make([]float64, len(predictors))
-		rough := q[iEr]
-		if start, err := m.Start(q, []int{iEr}, x, y); err != nil {
-			return nil, err
-		} else if rough = start[0]; rough < 1 {
-			return nil, fmt.Errorf("readings of %s: a rough relative permittivity of %.3g for the sheet, below that of vacuum; check the thickness, the stray capacitance and the spacing", response, rough)
-		}
-		ea := medium(q)
-		minFilm, minSpacing, sheets := math.Inf(1), math.Inf(1), false
-		share := 0.0 // the sheet's largest part of the voltage
+		sheets := false
 		for i := range y {
 			for p := range row {
 				row[p] = x[p][i]
@@ -255,24 +247,39 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 				return nil, &RowError{Row: i, Err: fmt.Errorf("thickness %.6g mm: can't be below zero; write 0 for a gap without sheet", 1e3*t)}
 			case contact && t == 0:
 				return nil, &RowError{Row: i, Err: fmt.Errorf("thickness 0: electrodes on the sheet need a sheet; exclude the reading")}
-			case !contact && f < 0:
-				return nil, &RowError{Row: i, Err: fmt.Errorf("gap %.6g mm is thinner than the sample, %.6g mm; the gap must be at least the thickness of the sheet", 1e3*(f+t), 1e3*t)}
 			case contact && f < 0:
 				return nil, fmt.Errorf("quantities.film_thickness: %.3g um: a film can't be thinner than nothing", 1e6*f)
+			case f < 0:
+				return nil, &RowError{Row: i, Err: fmt.Errorf("gap %.6g mm is thinner than the sample, %.6g mm; the gap must be at least the thickness of the sheet", 1e3*(f+t), 1e3*t)}
 			case pHold >= 0 && row[pHold] < 0:
 				return nil, &RowError{Row: i, Err: fmt.Errorf("hold %.6g s: a time from the step of the voltage to the reading can't be below zero", row[pHold])}
 			}
-			if t > 0 {
-				sheets = true
-				minFilm = math.Min(minFilm, f)
-				share = math.Max(share, t/rough/(f/ea+t/rough))
-			}
-			if s := f + t*ea/rough; s < minSpacing {
-				minSpacing = s
-			}
+			sheets = sheets || t > 0
 		}
 		if !sheets {
 			return nil, fmt.Errorf("channels.thickness: no reading has a sheet in the gap; there is nothing to find its permittivity from")
+		}
+		start, err := m.Start(q, []int{iEr}, x, y)
+		if err != nil {
+			return nil, err
+		}
+		rough := start[0]
+		if rough < 1 {
+			return nil, fmt.Errorf("readings of %s: a rough relative permittivity of %.3g for the sheet, below that of vacuum; check the thickness, the stray capacitance and the spacing", response, rough)
+		}
+		ea := medium(q)
+		minFilm, minSpacing := math.Inf(1), math.Inf(1)
+		share := 0.0 // the sheet's largest part of the voltage
+		for i := range y {
+			for p := range row {
+				row[p] = x[p][i]
+			}
+			t, f := thick(q, row), film(q, row)
+			if t > 0 {
+				minFilm = math.Min(minFilm, f)
+				share = math.Max(share, t/rough/(f/ea+t/rough))
+			}
+			minSpacing = math.Min(minSpacing, f+t*ea/rough)
 		}
 		var warn []error
 		if !contact {

@@ -61,8 +61,10 @@
 //
 //	y = ((M + U)/E)(cosh w − 1),  dy/dx = ((M + U)/(p₀c/e)) sinh w,  w = E x/(p₀c/e),
 //
-// y = E x²/4U for U ≪ M. On leaving balanced plates off the axis it gives back to
-// the edge field the energy eEy that it took, and leaves with its first momentum
-// p₀: the slope inside, p_y/p_x with p_x = p₀, becomes sin θ = p_y/p₀ (derived for
-// a field that ends within a length small against that of the plates).
+// y = E x²/4U for U ≪ M. On leaving balanced plates off the axis the particle gives
+// back to the edge field the energy eEy that it took; the edge lowers both parts of
+// its momentum by the same ratio, so the slope stays (derived to third order in
+// deflection: ∂E/∂x takes eEy/v from the longitudinal momentum, and −½y²∂²E/∂x²,
+// integrated by parts, eEy·(dy/dx)/v from the transverse one). The field that leaks
+// beyond the plates lengthens them by ∫E dx/E₀ less their length, half at each end.
 package model
