@@ -107,8 +107,10 @@ func BenchmarkRefitter(b *testing.B) {
 }
 
 // discEIV is disc with errors in both predictors too.
-func discEIV(n int) *EIVProblem {
-	src := random.New(7, "discEIV", 0)
+func discEIV(n int) *EIVProblem { return discEIVSeed(n, 7) }
+
+func discEIVSeed(n int, seed uint64) *EIVProblem {
+	src := random.New(seed, "discEIV", 0)
 	v, d := make([]float64, n), make([]float64, n)
 	y, uy, uv, ud := make([]float64, n), make([]float64, n), make([]float64, n), make([]float64, n)
 	for i := range v {

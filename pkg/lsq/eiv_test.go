@@ -5,7 +5,10 @@ import (
 	"encoding/json"
 	"math"
 	"os"
+	"strings"
 	"testing"
+
+	"example.org/guardring/pkg/random"
 )
 
 // eivRefs reads the published errors-in-variables cases.
@@ -312,4 +315,94 @@ func TestEIVRowCovariance(t *testing.T) {
 	near(t, "line b", line.Slope, s.Values[1], 1e-9)
 	near(t, "line u(a)", line.UIntercept, s.U[0], 1e-8)
 	near(t, "line u(b)", line.USlope, s.U[1], 1e-8)
+}
+
+// Pulls of the errors-in-variables fit of the benchmark, with a prior.
+func TestEIVPulls(t *testing.T) {
+	const runs, n = 1000, 30
+	var sum, square [3]float64
+	for run := 0; run < runs; run++ {
+		p := discEIVSeed(n, uint64(run))
+		src := random.New(43, "eiv pulls", uint64(run))
+		p.Parameters[1].Prior = &Prior{Value: discTruth[1] + 0.2*src.Normal(), U: 0.2}
+		r := fitEIV(t, p)
+		if r.DOF != n-2 {
+			t.Fatalf("dof %d", r.DOF)
+		}
+		for j := range sum {
+			pull := (r.Values[j] - discTruth[j]) / r.U[j]
+			sum[j] += pull
+			square[j] += pull * pull
+		}
+	}
+	for j := range sum {
+		mean := sum[j] / runs
+		sd := math.Sqrt(square[j]/runs - mean*mean)
+		if math.Abs(mean) > 0.1 || sd < 0.94 || sd > 1.06 {
+			t.Errorf("pulls of parameter %d: mean %.3f, standard deviation %.3f", j, mean, sd)
+		}
+	}
+}
+
+// Bad input gets one message that says what would be right.
+func TestEIVBadInput(t *testing.T) {
+	for _, c := range []struct {
+		change func(p *EIVProblem)
+		want   string
+	}{
+		{func(p *EIVProblem) { p.X[1] = p.X[1][:3] }, "predictor 2 has 3 readings"},
+		{func(p *EIVProblem) { p.X[0][2] = math.NaN() }, "reading 3 of predictor 1 is NaN"},
+		{func(p *EIVProblem) { p.UX[0][1] = -1 }, "reading 2 of predictor 1 is -1"},
+		{func(p *EIVProblem) { p.UY = nil; p.UX = nil }, "row 1 has no uncertainty"},
+		{func(p *EIVProblem) { p.X = nil }, "use Fit"},
+		{func(p *EIVProblem) { p.Eval = nil }, "Eval is nil"},
+		{func(p *EIVProblem) { p.Covariance = make([]float64, 7) }, "either Covariance or UX"},
+		{func(p *EIVProblem) { p.UX, p.UY, p.Covariance = nil, nil, make([]float64, 7) }, "need 90"},
+	} {
+		p := discEIV(10)
+		c.change(p)
+		r, err := FitEIV(context.Background(), p, Settings{})
+		if err == nil || r != nil || !strings.Contains(err.Error(), c.want) {
+			t.Errorf("want %q, got %v", c.want, err)
+		}
+	}
+	ctx, cancel := context.WithCancel(context.Background())
+	p := discEIV(40)
+	inner, calls := p.Eval, 0
+	p.Eval = func(th []float64, x [][]float64, f []float64, jac, dx [][]float64) error {
+		if calls++; calls == 3 {
+			cancel()
+		}
+		return inner(th, x, f, jac, dx)
+	}
+	if r, err := FitEIV(ctx, p, Settings{}); err == nil || r != nil || calls > 4 {
+		t.Errorf("cancelled fit returned %v, %v after %d calls", r, err, calls)
+	}
+}
+
+// Bounds and fixed parameters work as in Fit.
+func TestEIVBounds(t *testing.T) {
+	p := discEIV(60)
+	free := fitEIV(t, p)
+	limit := free.Values[1] - 0.5*free.U[1]
+	p.Parameters[1].Upper = &limit
+	b := fitEIV(t, p)
+	if b.Values[1] != limit || len(b.AtBound) != 1 || !math.IsNaN(b.U[1]) {
+		t.Errorf("%v ± %v at bound %v", b.Values, b.U, b.AtBound)
+	}
+	q := discEIV(60)
+	inner := q.Eval
+	scratch := make([]float64, 60)
+	q.Eval = func(th []float64, x [][]float64, f []float64, jac, dx [][]float64) error {
+		if jac != nil && jac[1] == nil {
+			jac = [][]float64{jac[0], scratch, jac[2]}
+		}
+		return inner(th, x, f, jac, dx)
+	}
+	q.Parameters[1].Start, q.Parameters[1].Fixed = limit, true
+	c := fitEIV(t, q)
+	for _, j := range []int{0, 2} {
+		near(t, "value", b.Values[j], c.Values[j], 1e-9)
+		near(t, "uncertainty", b.U[j], c.U[j], 1e-7)
+	}
 }

@@ -1,6 +1,9 @@
 package lsq
 
-import "math"
+import (
+	"context"
+	"math"
+)
 
 // wide is an unevaluated sum hi + lo of about 106 bits (Dekker, Numer. Math. 18
 // (1971) 224; Knuth, The Art of Computer Programming 2, section 4.2.2).
@@ -67,9 +70,10 @@ type extended struct {
 	chi2      float64
 }
 
-// solveWide finds min ‖rhs − cols·θ‖; cols and rhs are overwritten. It reports
-// nil when a column depends on those before it.
-func solveWide(cols [][]wide, rhs []wide) *extended {
+// solveWide finds min ‖rhs − cols·θ‖; cols and rhs are overwritten. It gives
+// nil when a column depends on those before it, and the context's error when it
+// is cancelled.
+func solveWide(ctx context.Context, cols [][]wide, rhs []wide) (*extended, error) {
 	q, n := len(cols), len(rhs)
 	heads := make([]wide, q) // first element of each reflection vector
 	gains := make([]wide, q)
@@ -81,7 +85,7 @@ func solveWide(cols [][]wide, rhs []wide) *extended {
 			nn = nn.add(v.mul(v))
 		}
 		if nn.hi == 0 {
-			return nil
+			return nil, nil
 		}
 		alpha := nn.sqrt()
 		if x[k].hi > 0 {
@@ -95,6 +99,9 @@ func solveWide(cols [][]wide, rhs []wide) *extended {
 			if j < q {
 				c = cols[j]
 			}
+			if err := ctx.Err(); err != nil {
+				return nil, err
+			}
 			reflectWide(x, c, k, v0, gains[k])
 		}
 		e.r[k] = make([]wide, k+1)
@@ -104,7 +111,7 @@ func solveWide(cols [][]wide, rhs []wide) *extended {
 	copy(e.theta, rhs[:q])
 	for k := q - 1; k >= 0; k-- {
 		if math.Abs(e.r[k][k].hi) == 0 {
-			return nil
+			return nil, nil
 		}
 		e.theta[k] = e.theta[k].div(e.r[k][k])
 		for i := 0; i < k; i++ {
@@ -127,7 +134,7 @@ func solveWide(cols [][]wide, rhs []wide) *extended {
 	for i, v := range rhs {
 		e.residuals[i] = v.float()
 	}
-	return e
+	return e, nil
 }
 
 // reflectWide applies I − 2vvᵀ/vᵀv, v = (v0, x[k+1:]), to c[k:].

@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"math"
+	"sort"
 	"strings"
 	"testing"
 
@@ -527,5 +528,55 @@ func TestTooManyOverlappingEffects(t *testing.T) {
 	}
 	if r, err := Fit(context.Background(), p, Settings{}); err != nil || r.Status != Converged {
 		t.Errorf("%v, %v", r, err)
+	}
+}
+
+// Stated uncertainties must be the scatter of the estimates: the truth is fixed
+// and readings, group errors and priors are drawn about it. Pulls have mean 0
+// and standard deviation 1, chi-squared probabilities are uniform.
+func TestPulls(t *testing.T) {
+	const runs, n = 2000, 24
+	g := &Effects{Columns: n/4 + 1, Start: []int{0}}
+	for i := 0; i < n; i++ {
+		g.Column = append(g.Column, i/4, n/4)
+		g.Load = append(g.Load, 2e-11, 1e-11)
+		g.Start = append(g.Start, len(g.Load))
+	}
+	var sum, square [3]float64
+	var probabilities []float64
+	for run := 0; run < runs; run++ {
+		p, truth := decay(n, uint64(1000+run))
+		src := random.New(42, "pulls", uint64(run))
+		e := make([]float64, g.Columns)
+		src.FillNormal(e)
+		for i := range p.Y {
+			for k := g.Start[i]; k < g.Start[i+1]; k++ {
+				p.Y[i] += g.Load[k] * e[g.Column[k]]
+			}
+		}
+		p.Effects = g
+		p.Parameters[1].Prior = &Prior{Value: truth[1] + 4*src.Normal(), U: 4}
+		r := fit(t, p)
+		for j := range sum {
+			pull := (r.Values[j] - truth[j]) / r.U[j]
+			sum[j] += pull
+			square[j] += pull * pull
+		}
+		probabilities = append(probabilities, r.PValue)
+	}
+	for j := range sum {
+		mean := sum[j] / runs
+		sd := math.Sqrt(square[j]/runs - mean*mean)
+		if math.Abs(mean) > 0.08 || sd < 0.95 || sd > 1.05 {
+			t.Errorf("pulls of parameter %d: mean %.3f, standard deviation %.3f", j, mean, sd)
+		}
+	}
+	sort.Float64s(probabilities)
+	d := 0.0
+	for i, p := range probabilities {
+		d = math.Max(d, math.Max(p-float64(i)/runs, float64(i+1)/runs-p))
+	}
+	if d > 1.95/math.Sqrt(runs) { // Kolmogorov's 0.001 point
+		t.Errorf("chi-squared probabilities are not uniform: distance %.4f", d)
 	}
 }

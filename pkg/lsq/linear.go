@@ -31,7 +31,8 @@ func (f *fitter) refine(ctx context.Context) error {
 	if err := ctx.Err(); err != nil {
 		return fmt.Errorf("lsq: fit cancelled: %w", err)
 	}
-	if s.numeric || float64(n)*float64(s.q*s.q) > wideWork {
+	large := float64(n)*float64(s.q*s.q) > wideWork
+	if s.numeric || (large && !s.white.diagonal()) {
 		s.settleLinear(cond)
 		return nil
 	}
@@ -47,6 +48,9 @@ func (f *fitter) refine(ctx context.Context) error {
 		if err := s.call(origin, s.ftrial, s.jtrial, s.ctrial); err != nil {
 			return fmt.Errorf("lsq: the model can't be evaluated: %w", err)
 		}
+	}
+	if large {
+		return f.correct(ctx, origin)
 	}
 	rows := n
 	for _, j := range f.free {
@@ -96,7 +100,10 @@ func (f *fitter) refine(ctx context.Context) error {
 			at++
 		}
 	}
-	e := solveWide(cols, rhs)
+	e, err := solveWide(ctx, cols, rhs)
+	if err != nil {
+		return fmt.Errorf("lsq: fit cancelled: %w", err)
+	}
 	if e == nil {
 		s.settleLinear(cond)
 		return nil
@@ -139,6 +146,71 @@ func (s *search) settleLinear(cond float64) {
 	if s.status == Converged && cond < 1e12 {
 		s.reason = "the model is linear; solved directly"
 	}
+}
+
+// correct improves the solution of a large linear problem of independent
+// readings: residuals and their products with the derivatives are summed in
+// extended precision, and the correction solves RᵀRδ = Jᵀr with the triangle
+// that is there. The model's values and derivatives at origin stand in the trial
+// arrays.
+func (f *fitter) correct(ctx context.Context, origin []float64) error {
+	s := &f.search
+	theta := make([]wide, s.q)
+	for k, j := range s.free {
+		theta[k] = twoSum(s.theta[j], -origin[j])
+	}
+	sums := make([]wide, s.q)
+	step := make([]float64, s.q)
+	before := math.Inf(1)
+	for round := 0; round < 5; round++ {
+		clear(sums)
+		for i, w := range s.white.w {
+			if i&0xfff == 0 {
+				if err := ctx.Err(); err != nil {
+					return fmt.Errorf("lsq: fit cancelled: %w", err)
+				}
+			}
+			r := twoSum(s.y[i], -s.ftrial[i])
+			for k, c := range s.ctrial {
+				r = r.sub(theta[k].mul(wide{c[i], 0}))
+			}
+			r = r.mul(twoProd(w, w))
+			for k, c := range s.ctrial {
+				sums[k] = sums[k].add(r.mul(wide{c[i], 0}))
+			}
+		}
+		for k, j := range s.free {
+			if w := s.priorW[j]; w > 0 {
+				r := twoSum(s.priorV[j], -origin[j]).sub(theta[k])
+				sums[k] = sums[k].add(r.mul(twoProd(w, w)))
+			}
+			step[k] = sums[k].float()
+		}
+		if !solveUpperT(s.q, s.q+1, s.now.r, step) || !solveUpper(s.q, s.q+1, s.now.r, step) {
+			return nil
+		}
+		size := scaledNorm(s.d, step)
+		if !(size < before) {
+			break
+		}
+		before = size
+		for k := range theta {
+			theta[k] = theta[k].add(wide{step[k], 0})
+		}
+	}
+	for k, j := range s.free {
+		s.theta[j] = wide{origin[j], 0}.add(theta[k]).float()
+		if s.lo != nil {
+			s.theta[j] = math.Min(math.Max(s.theta[j], s.lo[k]), s.hi[k])
+		}
+	}
+	if err := s.call(s.theta, s.f, s.jac, s.cols); err != nil {
+		return fmt.Errorf("lsq: the model can't be evaluated at the solution: %w", err)
+	}
+	s.reduce(&s.now, s.theta, s.f, s.cols)
+	s.chi2 = s.now.chi2()
+	s.status, s.reason = Converged, "the model is linear; solved directly and corrected in extended precision"
+	return nil
 }
 
 // roughCondition estimates the condition number of the column-scaled triangle.

@@ -189,3 +189,29 @@ func TestNISTUnivariate(t *testing.T) {
 		near(t, name+" lag-1", s.Autocorrelation, ref.Expected.Lag1, ref.Tolerance.Lag1)
 	}
 }
+
+// Wampler1 repeated until it is too large for extended precision throughout: the
+// corrections recover the digits (the set's y is an exact polynomial).
+func TestLargeLinear(t *testing.T) {
+	d := linearSets(t)["Wampler1"]
+	var x, y []float64
+	for k := 0; k < 6000; k++ {
+		for i := range d.Y {
+			x, y = append(x, d.X[i][0]), append(y, d.Y[i])
+		}
+	}
+	cols := make([][]float64, 6)
+	for k := range cols {
+		cols[k] = make([]float64, len(x))
+		for i, v := range x {
+			cols[k][i] = math.Pow(v, float64(k))
+		}
+	}
+	r := fit(t, linearProblem(cols, y, true))
+	for _, v := range r.Values {
+		near(t, "value", v, 1, 1e-13)
+	}
+	if !strings.Contains(r.Reason, "corrected") {
+		t.Errorf("%s", r.Reason)
+	}
+}
