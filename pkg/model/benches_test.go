@@ -521,3 +521,66 @@ func TestBeamDeflectionRefuses(t *testing.T) {
 	refuses(t, "no energy", bench(t, "beam-deflection", map[string][]float64{"voltage": {150}, "angle": nil}).with("plate_length", 0.06).check(0.1), "accelerating_voltage")
 	refuses(t, "drift of an angle", beam(t, "angle").with("drift_length", 0.1).check(0.1, -0.1), "leave it out")
 }
+
+// TestBlocks compares the fast predictions with the jets, value and derivatives,
+// for benches with every correction on.
+func TestBlocks(t *testing.T) {
+	charged := []string{"guard_gap", "wedge", "coplanarity", "air", "leakage", "offset_current", "injection"}
+	electrometer := func(j *job) *job {
+		return j.with("corrections.leakage.time_constant", 250).with("corrections.offset_current.current", 3e-12).with("corrections.injection.charge", 2e-12).
+			with("contact_potential", 0.4).with("stray_capacitance", 2e-13).with("electric_constant", si.Eps0).with("corrections.guard_gap.model", 1e-4)
+	}
+	tilted := func(j *job) *job {
+		return j.with("gap_offset", 1e-5).with("corrections.wedge.half_difference", 1e-10).with("corrections.coplanarity.step", 2e-6).with("corrections.coplanarity.edge", 0.5)
+	}
+	contact := bench(t, "dielectric-sample", map[string][]float64{"voltage": {500, -700}, "thickness": {2e-3, 1e-3}, "hold": {5, 30}, "charge": nil}).
+		option("electrodes", "contact").with("sample_relative_permittivity", 3.1).with("disc_radius", 0.025).with("guard_gap", 1e-3).with("film_thickness", 3e-6)
+	laid := sheet(t)
+	laid.columns = map[string][]float64{"voltage": {500, -700}, "gap": {6e-3, 3e-3}, "thickness": {4e-3, 1e-3}, "hold": {5, 30}, "charge": nil}
+	laid.s.Channels = map[string]bool{"voltage": true, "gap": true, "thickness": true, "hold": true, "charge": true}
+	jobs := map[string]*job{
+		"plate-charge":      tilted(electrometer(plates(t))).on(charged...),
+		"sheet, spaced":     tilted(electrometer(laid)).on(charged...),
+		"sheet, contact":    electrometer(contact).on("guard_gap", "air", "leakage", "offset_current", "injection"),
+		"charge-in-field":   sphere(t, 0.028).on("image", "body", "leakage").with("corrections.image.height_offset", 5e-4).with("corrections.body.radius", 3e-3).with("corrections.leakage.time_constant", 900).with("contact_potential", 0.7).with("gap_offset", 1e-4),
+		"charge, mid-plane": bench(t, "charge-in-field", map[string][]float64{"voltage": {3e3, -2e3}, "gap": {0.06, 0.08}, "mass": nil}).on("image", "balance").with("charge", 2e-9).with("corrections.image.height_offset", 5e-4).with("environment.latitude", 0.9).with("environment.height", 200),
+		"field-from-charge": bench(t, "field-from-charge", map[string][]float64{"voltage": {3e3, -2e3}, "gap": {0.06, 0.08}, "charge": {2e-9, -1e-9}, "force": nil}).on("image", "body").with("field_per_volt", 14).with("corrections.image.height_offset", 5e-4).with("corrections.body.radius", 3e-3),
+		"beam, screen":      beam(t, "displacement").on("relativity", "fringe").with("corrections.fringe.length", 0.01).with("drift_length", 0.2).with("contact_potential", 0.3),
+		"beam, angle":       beam(t, "angle").on("relativity").with("contact_potential", 0.3),
+		"beam, slow":        beam(t, "displacement").with("contact_potential", 0.3),
+	}
+	for name, j := range jobs {
+		m := j.model()
+		x := j.x(m)
+		if m.TimeDependent {
+			x = append(x, []float64{30, 200})
+		}
+		tried := 0
+		for n := range j.q {
+			f, jac := make([]float64, 2), [][]float64{make([]float64, 2)}
+			if !m.Block(j.q, x, 0, 2, []int{n}, f, jac) {
+				continue
+			}
+			tried++
+			for i := range f {
+				space := jet.NewSpace(1, 0)
+				q, xj := make([]jet.Jet, len(j.q)), make([]jet.Jet, len(x))
+				for k, v := range j.q {
+					q[k] = jet.Const(v)
+				}
+				q[n] = space.Var(0, j.q[n])
+				for p := range x {
+					xj[p] = jet.Const(x[p][i])
+				}
+				want := m.Row(q, xj)
+				near(t, name, f[i], want.V, 1e-12)
+				if math.Abs(jac[0][i]-want.Grad(0)) > 1e-11*math.Abs(want.Grad(0)) {
+					t.Errorf("%s: derivative by %s: block %g, jets %g", name, j.k.Scalars[n].Key(), jac[0][i], want.Grad(0))
+				}
+			}
+		}
+		if tried < 2 {
+			t.Errorf("%s: the block gives %d derivatives", name, tried)
+		}
+	}
+}

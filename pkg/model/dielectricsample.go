@@ -140,66 +140,81 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 		}
 		return e.read(c.Mul(x[pV].Sub(q[iVc])).Add(q[iCs].Mul(x[pV])), q, x)
 	}
-	if !contact {
-		m.Block = func(q []float64, x [][]float64, lo, hi int, wrt []int, f []float64, jac [][]float64) bool {
-			for _, j := range wrt {
-				if j != iEr && j != iVc && j != iOff && j != iCs && j != e.iCurrent && j != e.iTau && j != e.iInj {
-					return false
-				}
+	m.Block = func(q []float64, x [][]float64, lo, hi int, wrt []int, f []float64, jac [][]float64) bool {
+		for _, j := range wrt {
+			if j != iEr && j != iVc && j != iOff && j != iFilm && j != iCs && j != e.iCurrent && j != e.iTau && j != e.iInj {
+				return false
 			}
-			p := g.prepared(q)
-			ea := medium(q)
-			eps := q[g.iE0] * ea
-			ratio := ea / q[iEr]
-			vc, off, cs, t := q[iVc], q[iOff], q[iCs], q[iThick]
-			for i := lo; i < hi; i++ {
-				if pThick >= 0 {
-					t = x[pThick][i]
-				}
-				over, slope := p.overValue(x[pGap][i] + off - t + t*ratio)
-				v, lever, hold := 1.0, 1.0, 0.0
-				if charge {
-					v = x[pV][i]
-					lever = v - vc
-				}
-				if pHold >= 0 {
-					hold = x[pHold][i]
-				}
-				read, keep, byCurrent, byTau, byInj := eps*over*lever+cs*v, 1.0, 0.0, 0.0, 0.0
-				if charge {
-					read, keep, byCurrent, byTau, byInj = e.row(read, q, hold)
-				}
-				f[i] = read
-				if jac == nil {
-					continue
-				}
-				for n, j := range wrt {
-					var d float64
-					switch j {
-					case iEr:
-						d = -eps * slope * t * ratio / q[iEr] * lever * keep
-					case iVc:
-						if charge {
-							d = -eps * over * keep
-						}
-					case iOff:
-						d = eps * slope * lever * keep
-					case iCs:
-						d = v * keep
-					case e.iCurrent:
-						d = byCurrent
-					case e.iTau:
-						d = byTau
-					case e.iInj:
-						if e.injection {
-							d = byInj
-						}
-					}
-					jac[n][i] = d
-				}
-			}
-			return true
 		}
+		p := g.prepared(q)
+		ea := medium(q)
+		eps := q[g.iE0] * ea
+		ratio := ea / q[iEr]
+		vc, off, cs, t := q[iVc], q[iOff], q[iCs], q[iThick]
+		for i := lo; i < hi; i++ {
+			if pThick >= 0 {
+				t = x[pThick][i]
+			}
+			// Area over electric spacing, and its derivative by that spacing.
+			var over, slope float64
+			if contact {
+				area := p.radius
+				if g.guard {
+					area = field.GuardedElectrodeAreaJet(jet.Const(2*q[g.iR]), jet.Const(q[g.iG]), jet.Const(t)).V * (1 + q[g.iModel])
+				}
+				over = area / (q[iFilm] + t*ratio)
+				slope = -over / (q[iFilm] + t*ratio)
+			} else {
+				over, slope = p.overValue(x[pGap][i] + off - t + t*ratio)
+			}
+			v, lever, hold := 1.0, 1.0, 0.0
+			if charge {
+				v = x[pV][i]
+				lever = v - vc
+			}
+			if pHold >= 0 {
+				hold = x[pHold][i]
+			}
+			read, keep, byCurrent, byTau, byInj := eps*over*lever+cs*v, 1.0, 0.0, 0.0, 0.0
+			if charge {
+				read, keep, byCurrent, byTau, byInj = e.row(read, q, hold)
+			}
+			f[i] = read
+			if jac == nil {
+				continue
+			}
+			for n, j := range wrt {
+				var d float64
+				switch j {
+				case iEr:
+					d = -eps * slope * t * ratio / q[iEr] * lever * keep
+				case iVc:
+					if charge {
+						d = -eps * over * keep
+					}
+				case iOff:
+					if !contact {
+						d = eps * slope * lever * keep
+					}
+				case iFilm:
+					if contact {
+						d = eps * slope * lever * keep
+					}
+				case iCs:
+					d = v * keep
+				case e.iCurrent:
+					d = byCurrent
+				case e.iTau:
+					d = byTau
+				case e.iInj:
+					if e.injection {
+						d = byInj
+					}
+				}
+				jac[n][i] = d
+			}
+		}
+		return true
 	}
 	m.Start = func(q []float64, free []int, x [][]float64, y []float64) ([]float64, error) {
 		// The response grows steadily with ε_r: bisect on the readings' projection
