@@ -14,8 +14,7 @@ type repeat struct {
 }
 
 // repeat prepares a search for readings y with the given free parameters.
-// factors, when not nil, multiply the square roots of the weights. Release it
-// after use.
+// factors, when not nil, multiply the square roots of the weights.
 func (r *Result) repeat(y []float64, free []int, factors []float64) (*repeat, error) {
 	if factors != nil && !r.white.diagonal() {
 		return nil, fmt.Errorf("lsq: the readings are correlated; they can't be weighed one by one")

@@ -60,7 +60,6 @@ func (r *Result) Bootstrap(ctx context.Context, set BootstrapSettings) (*Bootstr
 		if err != nil {
 			return nil, err
 		}
-		defer a.s.release()
 		fit = func(src *random.Source, theta []float64) error {
 			clear(factors)
 			for i := 0; i < n; i++ {

@@ -92,7 +92,8 @@ type eivState struct {
 	e       []float64   // scratch
 	hi, lo  []float64   // for differences
 	scale   []float64   // size of each predictor, for differences near zero
-	slab    *[]float64
+	heads   [][]float64 // memory of the columns
+	slab    []float64
 	own     []float64
 	bad     int // a row whose condition no uncertain reading moves, −1 none
 }
@@ -100,7 +101,10 @@ type eivState struct {
 // FitEIV adjusts the free parameters of p, and the true places of its points,
 // to the readings. See Fit for what an error and a Status mean.
 func FitEIV(ctx context.Context, p *EIVProblem, set Settings) (*EIVResult, error) {
-	inner, free, priors, err := p.check()
+	f := takeFitter()
+	defer f.release()
+	inner := &f.inner
+	free, priors, err := p.check(inner)
 	if err != nil {
 		return nil, err
 	}
@@ -110,16 +114,14 @@ func FitEIV(ctx context.Context, p *EIVProblem, set Settings) (*EIVResult, error
 	if err := set.defaults(); err != nil {
 		return nil, err
 	}
-	f := takeFitter()
-	defer f.release()
 	f.p, f.set, f.free, f.priors = inner, set, free, priors
 	s := &f.search
 	s.init(inner, inner.Y, free, &f.white)
 	s.tol, s.maxIter = set.Tolerance, set.MaxIterations
-	st := newEIV(p, s)
-	defer giveSlab(st.slab)
+	st := &f.eiv
+	st.init(p, s)
 	s.eiv = st
-	start := make([]float64, len(p.Parameters))
+	start := f.take(len(p.Parameters))
 	for j := range start {
 		start[j] = p.Parameters[j].Start
 	}
@@ -149,10 +151,11 @@ func (set *Settings) defaults() error {
 	return nil
 }
 
-// check validates p and casts it as a Problem whose readings are Y, or zeros.
-func (p *EIVProblem) check() (*Problem, []int, int, error) {
-	fail := func(format string, a ...any) (*Problem, []int, int, error) {
-		return nil, nil, 0, fmt.Errorf("lsq: "+format, a...)
+// check validates p and casts it as the problem inner, whose readings are Y or
+// zeros. It returns the free parameters and the number of their priors.
+func (p *EIVProblem) check(inner *Problem) ([]int, int, error) {
+	fail := func(format string, a ...any) ([]int, int, error) {
+		return nil, 0, fmt.Errorf("lsq: "+format, a...)
 	}
 	if p.Eval == nil {
 		return fail("EIVProblem.Eval is nil; it must compute the model's values")
@@ -228,23 +231,30 @@ func (p *EIVProblem) check() (*Problem, []int, int, error) {
 			}
 		}
 	}
-	inner := &Problem{Parameters: p.Parameters, Y: y, Numeric: p.Numeric}
-	inner.Eval = func([]float64, []float64, [][]float64) error { return nil }
-	free, priors, err := inner.validate()
-	return inner, free, priors, err
+	*inner = Problem{Parameters: p.Parameters, Y: y, Numeric: p.Numeric, Eval: nothing}
+	return inner.validate()
 }
 
-func newEIV(p *EIVProblem, s *search) *eivState {
+// nothing stands for the model of a problem whose points are handled here.
+func nothing([]float64, []float64, [][]float64) error { return nil }
+
+func (t *eivState) init(p *EIVProblem, s *search) {
 	n, m := len(s.y), len(p.X)
-	t := &eivState{p: p, s: s, n: n, m: m, bad: -1}
-	t.slab = takeSlab(n * (4*m + 4))
-	slab := *t.slab
+	t.p, t.s, t.n, t.m, t.bad = p, s, n, m, -1
+	if cap(t.slab) < n*(4*m+4) {
+		t.slab = make([]float64, n*(4*m+4))
+	}
+	if cap(t.heads) < 5*m {
+		t.heads = make([][]float64, 5*m)
+	}
+	slab := t.slab[:n*(4*m+4)]
 	take := func() []float64 {
 		v := slab[:n:n]
 		slab = slab[n:]
 		return v
 	}
-	heads := make([][]float64, 5*m)
+	heads := t.heads[:5*m]
+	clear(heads)
 	t.xi, t.xt, t.dx, t.dt, t.vx = heads[:m:m], heads[m:2*m:2*m], heads[2*m:3*m:3*m], heads[3*m:4*m:4*m], heads[4*m:]
 	t.w = take()
 	t.wt, t.e = take(), take()
@@ -276,7 +286,6 @@ func newEIV(p *EIVProblem, s *search) *eivState {
 		}
 		s.eval = func(theta, f []float64, jac [][]float64) error { return p.Eval(theta, t.xt, f, nil, nil) }
 	}
-	return t
 }
 
 // weights is 1/s that belongs to the values f.
@@ -545,7 +554,7 @@ func (f *fitter) resultEIV(p *EIVProblem, t *eivState) (*EIVResult, error) {
 		Status: inner.Status, Reason: inner.Reason, Values: inner.Values, U: inner.U, Covariance: inner.Covariance, Free: f.free,
 		ChiSquared: s.chi2, PValue: pv, BirgeRatio: birge, DOF: inner.DOF, Iterations: s.iterations, Evaluations: s.evaluations,
 		Condition: sp.cond, Confounded: inner.Confounded, AtBound: inner.AtBound, ScaledByResiduals: p.Relative,
-		X: t.xi, Warnings: inner.Warnings,
+		X: make([][]float64, t.m), Warnings: inner.Warnings,
 	}
 	rows := make([]float64, 2*n)
 	r.Standardised = rows[:n:n]
@@ -564,9 +573,9 @@ func (f *fitter) resultEIV(p *EIVProblem, t *eivState) (*EIVResult, error) {
 		}
 	}
 	for k, c := range t.xi {
-		if dst := t.own[k*n : k*n+n : k*n+n]; &c[0] != &dst[0] {
-			copy(dst, c)
-			t.xi[k] = dst
+		r.X[k] = t.own[k*n : k*n+n : k*n+n]
+		if &c[0] != &r.X[k][0] { // it stands in the other set: exchange
+			copy(r.X[k], c)
 		}
 	}
 	return r, nil

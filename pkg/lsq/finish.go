@@ -275,7 +275,9 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	// what later questions need
 	white := f.white
 	r.white, r.factor = &white, sp.factor
-	r.jac = s.columns()
+	if !f.set.SkipDiagnostics {
+		r.jac = s.columns()
+	}
 	r.problem, r.settings = p, f.set
 	r.priorW = f.take(len(s.priorW))
 	copy(r.priorW, s.priorW)
@@ -378,7 +380,11 @@ func (r *Result) warn(format string, a ...any) {
 
 // Jacobian returns ∂f_i/∂θ_j at the estimates: one column per free parameter
 // (in the order of Free), each with one entry per reading. The caller owns it.
+// Nil with SkipDiagnostics.
 func (r *Result) Jacobian() [][]float64 {
+	if r.jac == nil {
+		return nil
+	}
 	out := make([][]float64, len(r.jac))
 	for k, c := range r.jac {
 		out[k] = append([]float64(nil), c...)
@@ -404,8 +410,11 @@ func (r *Result) SolveCovariance(v, dst []float64) {
 // priors, at frozen weights and to first order (Gauss–Newton): one row per free
 // parameter, each with one entry per reading. Rows of parameters held at a
 // bound are zero; where parameters can't be told apart the least change is
-// taken.
+// taken. Nil with SkipDiagnostics.
 func (r *Result) Sensitivity() [][]float64 {
+	if r.jac == nil {
+		return nil
+	}
 	q, n := len(r.jac), len(r.Fitted)
 	cols := make([][]float64, q)
 	for k, c := range r.jac {

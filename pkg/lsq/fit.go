@@ -54,6 +54,8 @@ type fitter struct {
 	priors int
 	white  whitener
 	search search
+	eiv    eivState
+	inner  Problem // of an errors-in-variables fit
 
 	u        []float64 // current uncertainties, ours to rewrite
 	g        *Effects  // current loads, ours to rewrite
@@ -80,11 +82,13 @@ func takeFitter() *fitter {
 
 // release forgets everything but memory that can be used again.
 func (f *fitter) release() {
-	f.search.release()
-	heads := f.search.heads
-	*f = fitter{}
-	f.search.heads = heads
+	heads, slab := f.search.heads, f.search.slab
+	points, pointHeads := f.eiv.slab, f.eiv.heads
 	clear(heads)
+	clear(pointHeads)
+	*f = fitter{}
+	f.search.heads, f.search.slab = heads, slab
+	f.eiv.slab, f.eiv.heads = points, pointHeads
 	fitters.Put(f)
 }
 

@@ -87,8 +87,12 @@ type Effects struct {
 
 // Settings adjusts how a fit is done. The zero value is the default.
 type Settings struct {
-	MaxIterations   int     // of one search; 0: 1000
-	Tolerance       float64 // relative error left in the parameters; 0: 1e-11
-	NoRestarts      bool    // do not try scaled starts when the first search stalls
-	SkipDiagnostics bool    // leave Standardised, Leverage, Studentised, CooksDistance and Weights nil: for fits in series
+	MaxIterations int     // of one search; 0: 1000
+	Tolerance     float64 // relative error left in the parameters; 0: 1e-11
+	NoRestarts    bool    // do not try scaled starts when the first search stalls
+
+	// SkipDiagnostics gives estimates, covariance, chi-squared and residuals
+	// only, for fits in series: Standardised, Leverage, Studentised,
+	// CooksDistance, Weights and the Jacobian stay nil.
+	SkipDiagnostics bool
 }

@@ -50,7 +50,6 @@ func (r *Result) Profile(ctx context.Context, j int, p float64) (*Profile, error
 	if err != nil {
 		return nil, err
 	}
-	defer a.s.release()
 	if pr := r.problem.Parameters[j].Prior; pr != nil { // held now, but its prior still counts
 		a.s.priorW[j], a.s.priorV[j] = 0, math.NaN()
 	}

@@ -148,6 +148,9 @@ func andersonDarlingP(a float64) (p float64) {
 // Biometrika 38 (1951) 159, sections 3 and 4). For correlated readings the
 // residuals are whitened first.
 func (r *Result) DurbinWatson() (Test, error) {
+	if r.jac == nil {
+		return Test{}, fmt.Errorf("lsq: the Durbin–Watson test needs the Jacobian; fit without SkipDiagnostics")
+	}
 	n, q := len(r.Fitted), len(r.factor)
 	if n-q < 3 {
 		return Test{}, fmt.Errorf("lsq: %d readings and %d parameters leave too few residuals for the Durbin–Watson test", n, q)

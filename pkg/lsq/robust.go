@@ -50,7 +50,6 @@ func (r *Result) Robust(ctx context.Context, kind RobustKind) (*Robust, error) {
 	if err != nil {
 		return nil, err
 	}
-	defer a.s.release()
 	o := &Robust{Kind: kind, Factors: factors}
 	theta := append([]float64(nil), r.Values...)
 	resid := append([]float64(nil), r.Residuals...)

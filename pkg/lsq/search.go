@@ -35,7 +35,7 @@ type search struct {
 	chi2          float64
 	d, x, rx      []float64
 	heads         [][]float64 // memory of jac, jtrial, cols, ctrial
-	slab          *[]float64  // pooled scratch
+	slab          []float64   // memory of what follows from n
 	wcols         [][]float64 // whitened copies when the covariance is not diagonal
 	wres          []float64
 	trust         trust

@@ -50,19 +50,11 @@ func (p *Problem) validate() (free []int, priors int, err error) {
 		if len(p.U) != n {
 			return nil, 0, fmt.Errorf("lsq: %d uncertainties for %d readings", len(p.U), n)
 		}
-		least := math.Inf(1)
-		for _, u := range p.U {
-			if u < least {
-				least = u
-			}
-		}
 		for i, u := range p.U {
-			if least > 0 && notFinite(p.U) < 0 {
-				break
+			if u > 0 && u <= math.MaxFloat64 || (u == 0 && p.Reweight != nil) {
+				continue
 			}
-			if !(u >= 0) || math.IsInf(u, 0) || (u == 0 && p.Reweight == nil) {
-				return nil, 0, fmt.Errorf("lsq: standard uncertainty of reading %d is %v; it must be positive and finite", i+1, u)
-			}
+			return nil, 0, fmt.Errorf("lsq: standard uncertainty of reading %d is %v; it must be positive and finite", i+1, u)
 		}
 	}
 	if p.Effects != nil {

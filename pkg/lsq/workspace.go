@@ -1,21 +1,22 @@
 package lsq
 
-import (
-	"math"
-	"sync"
-)
+import "math"
 
-// init prepares for the readings y and the parameters of p. Scratch memory
-// comes from a pool; release gives it back.
+// init prepares for the readings y and the parameters of p. It uses again what
+// memory the search already has.
 func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 	n, np, q := len(y), len(p.Parameters), len(free)
 	s.p, s.y, s.free, s.q, s.white, s.eval = p, y, free, q, white, p.Eval
 	m := blockRows(n)
 	tri := (q + 1) * (q + 1)
-	s.slab = takeSlab(2*n + 2*n*q + 4*np + 3*q + 2*tri + (q+1)*(m+1) + q*q + 3*q)
+	need := 2*n + 2*n*q + 4*np + 3*q + 2*tri + (q+1)*(m+1) + q*q + 3*q
+	if cap(s.slab) < need {
+		s.slab = make([]float64, need)
+	}
+	slab := s.slab[:need]
 	at := 0
 	take := func(k int) []float64 {
-		v := (*s.slab)[at : at+k : at+k]
+		v := slab[at : at+k : at+k]
 		at += k
 		return v
 	}
@@ -77,32 +78,6 @@ func (s *search) columns() [][]float64 {
 		copy(out[k], c)
 	}
 	return out
-}
-
-// release gives the scratch memory back; the search is then of no further use.
-func (s *search) release() {
-	giveSlab(s.slab)
-	s.slab = nil
-}
-
-// slabs keeps scratch memory between fits: they come in series of one size.
-var slabs sync.Pool
-
-func takeSlab(n int) *[]float64 {
-	if p, ok := slabs.Get().(*[]float64); ok {
-		if cap(*p) >= n && cap(*p) <= 8*n+4096 {
-			*p = (*p)[:n]
-			return p
-		}
-	}
-	v := make([]float64, n)
-	return &v
-}
-
-func giveSlab(p *[]float64) {
-	if p != nil {
-		slabs.Put(p)
-	}
 }
 
 // prepareWhite allocates what correlated readings need.
