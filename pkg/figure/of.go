@@ -65,7 +65,10 @@ func (d *Data) All() ([]*Figure, error) {
 			draw = append(draw, func() (*Figure, error) { return named(d.Histogram(m.Name))("histogram-" + m.Name) })
 		}
 	}
-	var out []*Figure
+	out, err := d.Curves()
+	if err != nil {
+		return nil, err
+	}
 	for _, f := range draw {
 		g, err := f()
 		if err != nil {

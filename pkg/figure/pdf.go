@@ -6,6 +6,7 @@ import (
 	"time"
 
 	"codeberg.org/go-pdf/fpdf"
+	"golang.org/x/image/font/sfnt"
 )
 
 // writePDF writes one page of the size of the figure, with its fonts embedded
@@ -34,6 +35,15 @@ func (c *canvas) writePDF(w io.Writer, title string) error {
 	d.AddUTF8FontFromBytes("sans", "B", fonts.boldTT)
 	d.AddPage()
 	d.SetLineJoinStyle("round")
+	c.paint(d)
+	if err := d.Error(); err != nil {
+		return err
+	}
+	return d.Output(w)
+}
+
+// paint puts the strokes and texts on the page that d is at.
+func (c *canvas) paint(d *fpdf.Fpdf) {
 	for i := range c.ops {
 		o := &c.ops[i]
 		if o.text != nil {
@@ -42,10 +52,60 @@ func (c *canvas) writePDF(w io.Writer, title string) error {
 		}
 		pdfPath(d, o)
 	}
-	if err := d.Error(); err != nil {
+}
+
+// AddFonts gives a PDF document in points the two faces that figures and PlacePDF
+// use, as family "sans", regular and bold.
+func AddFonts(d *fpdf.Fpdf) error {
+	if err := loadFonts(); err != nil {
 		return err
 	}
-	return d.Output(w)
+	d.AddUTF8FontFromBytes("sans", "", fonts.regularTT)
+	d.AddUTF8FontFromBytes("sans", "B", fonts.boldTT)
+	return d.Error()
+}
+
+// PlacePDF draws the figure on the page of somebody else's PDF document, in
+// points, with its upper left corner at x, y and as wide as width; the document
+// must have the fonts of AddFonts.
+func (f *Figure) PlacePDF(d *fpdf.Fpdf, x, y, width float64) error {
+	scale := 100 * width / f.c.w
+	d.TransformBegin()
+	d.TransformTranslate(x, y)
+	d.TransformScale(scale, scale, 0, 0)
+	d.SetLineJoinStyle("round")
+	f.c.paint(d)
+	d.TransformEnd()
+	return d.Error()
+}
+
+// PlaceText sets one line of text on the page of a PDF document in points, with
+// the fonts of AddFonts: x is its left end, y its baseline, size in points.
+// Superscripts are raised figures, which the fonts lack.
+func PlaceText(d *fpdf.Fpdf, x, y, size float64, bold bool, color, text string) {
+	pdfText(d, &label{s: text, x: x, y: y, size: size, bold: bold, color: color})
+}
+
+// TextWidth is the width in points of a text as PlaceText sets it.
+func TextWidth(text string, size float64, bold bool) float64 { return width(text, size, bold) }
+
+// Missing returns the first character of a text that the fonts can't show; ok is
+// false when there is none.
+func Missing(text string) (r rune, ok bool) {
+	if loadFonts() != nil {
+		return 0, false
+	}
+	var b sfnt.Buffer
+	for _, r := range text {
+		set, up := raised[r]
+		if !up {
+			set = r
+		}
+		if i, err := fonts.regular.Face.GlyphIndex(&b, set); err != nil || i == 0 {
+			return r, true
+		}
+	}
+	return 0, false
 }
 
 func pdfPath(d *fpdf.Fpdf, o *op) {

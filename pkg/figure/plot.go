@@ -305,7 +305,7 @@ func (p *Plot) keys() []key {
 func (p *Plot) draw(s *sheet, q *panel) {
 	for i, b := range p.Bands {
 		fill := shade2
-		if i > 0 {
+		if i > 0 && b.Name != "" {
 			fill = shade
 		}
 		q.band(b.X, b.Low, b.High, pen{fill: fill})

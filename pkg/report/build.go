@@ -27,6 +27,7 @@ func build(rec *reduce.Record, figures *figure.Data) *document {
 		d.head("Warnings")
 		d.notice(rec.Warnings)
 	}
+	d.series(rec, figures)
 	d.parameters(rec)
 	d.correlations(rec)
 	d.goodness(rec)
