@@ -39,6 +39,11 @@ type chain struct {
 	zero   *zeroModel  // nil when there is none
 	series *series     // nil when all rows are one
 
+	// What was read, when errors in variables have moved x, xr and y to where the
+	// fit linearises; nil otherwise.
+	readX [][]float64
+	readY []float64
+
 	inputs []input     // shared inputs and priors: what the budget lists by name
 	comps  []component // what varies between rows
 	fitted []float64   // predictions at the last weights, where components need them

@@ -58,6 +58,12 @@ func (c *chain) rows(r *lsq.Result, out *Rows) {
 				out.Predictors[p][n] = c.x[p][i]
 			}
 			out.Response[n], out.Fitted[n], out.Residual[n] = c.y[i], r.Fitted[i], r.Residuals[i]
+			if c.readY != nil {
+				for p := range c.pred {
+					out.Predictors[p][n] = c.readX[p][i]
+				}
+				out.Response[n], out.Fitted[n] = c.readY[i], c.readY[i]-r.Residuals[i]
+			}
 			out.U[n] = 1 / math.Sqrt(r.Weights[i])
 			out.Standardised[n], out.Leverage[n], out.Studentised[n] = whitened[i], r.Leverage[i], r.Studentised[i]
 			continue

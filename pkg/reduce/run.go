@@ -67,14 +67,20 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 	if !(p > 0 && p < 1) {
 		return nil, fmt.Errorf("coverage probability %g: must lie between 0 and 1", p)
 	}
-	if b.Method != "" && b.Method != "least-squares" {
-		return nil, fmt.Errorf("%s/bench.toml: method: %q is not known; use \"least-squares\"", b.Dir, b.Method)
+	switch b.Method {
+	case "", leastSquares, errorsInVariables:
+	default:
+		return nil, fmt.Errorf("%s/bench.toml: method: %q is not known; use %q or %q", b.Dir, b.Method, leastSquares, errorsInVariables)
 	}
 	c, err := newChain(b)
 	if err != nil {
 		return nil, err
 	}
-	fit, err := c.estimate(ctx)
+	estimate := c.estimate
+	if b.Method == errorsInVariables {
+		estimate = c.estimateInVariables
+	}
+	fit, err := estimate(ctx)
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", b.Dir, err)
 	}
@@ -255,7 +261,7 @@ func (c *chain) header(s Settings) Record {
 
 // fitRecord turns the estimator's result into its record.
 func (c *chain) fitRecord(r *lsq.Result) Fit {
-	f := Fit{Method: "least-squares", Status: r.Status.String(), Reason: r.Reason,
+	f := Fit{Method: c.method(), Status: r.Status.String(), Reason: r.Reason,
 		ChiSquared: Number(r.ChiSquared), DOF: r.DOF, PValue: Number(r.PValue), BirgeRatio: Number(r.BirgeRatio),
 		ResidualSumOfSquares: Number(r.RSS), ResidualStandardDeviation: Number(r.ResidualSD),
 		ResponseUnit: siSymbol(c.b.Channels[c.resp].Unit), Condition: Number(r.Condition), Iterations: r.Iterations,
