@@ -241,6 +241,7 @@ type Item struct {
 // Work is the job as the certificate tells it. Dates are ISO 8601.
 type Work struct {
 	Laboratory, Address, Place    string
+	Country                       string // two capitals, ISO 3166-1
 	Title                         string
 	Certificate                   string // unique identification
 	Received, Performed, Finished string

@@ -185,6 +185,7 @@
 //	[work] the job, for the certificate
 //	  laboratory           name
 //	  address              of the laboratory
+//	  country              of the laboratory, two capitals as in ISO 3166-1
 //	  place                where the work was done
 //	  title                of the certificate
 //	  certificate          its unique identification

@@ -65,10 +65,17 @@ func (l *loader) work() {
 		}
 		last = d.day
 	}
+	if w.Country = l.text(t, "country"); w.Country != "" && !twoCapitals(w.Country) {
+		l.fail(t.field("country"), "%s is no country code of ISO 3166-1; two capital letters are due", shown(t.field("country")))
+	}
 	if (w.Replaces == "") != (w.Reason == "") {
 		l.fail(t, "an amendment names both what it replaces and the reason")
 	}
 	l.b.Work = w
+}
+
+func twoCapitals(s string) bool {
+	return len(s) == 2 && s[0] >= 'A' && s[0] <= 'Z' && s[1] >= 'A' && s[1] <= 'Z'
 }
 
 // report reads how results are stated.

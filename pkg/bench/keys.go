@@ -177,6 +177,7 @@ var benchDoc = []tableDoc{
 	{"work", "the job, for the certificate", []keyDoc{
 		{"laboratory", "name", `"(laboratory)"`},
 		{"address", "of the laboratory", `"(address)"`},
+		{"country", "of the laboratory, two capitals as in ISO 3166-1", `"ZZ"`},
 		{"place", "where the work was done", `"in the laboratory"`},
 		{"title", "of the certificate", `"Calibration certificate"`},
 		{"certificate", "its unique identification", `"(number)"`},
