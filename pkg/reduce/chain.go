@@ -39,6 +39,8 @@ type chain struct {
 	zero   *zeroModel  // nil when there is none
 	series *series     // nil when all rows are one
 
+	fitU []float64 // standard uncertainties of the estimates, from the fit
+
 	// What was read, when errors in variables have moved x, xr and y to where the
 	// fit linearises; nil otherwise.
 	readX [][]float64
@@ -108,6 +110,9 @@ func newChain(b *bench.Bench) (*chain, error) {
 	}
 	for i, s := range b.Scalars {
 		if s.Adjust || k.Scalars[i].Sought {
+			if !c.active(i) {
+				return nil, fmt.Errorf("%s/bench.toml:%d: %s: adjust = true, but its correction is off; switch the correction on, or leave adjust out", b.Dir, s.Line, s.Key)
+			}
 			c.free = append(c.free, i)
 		}
 	}

@@ -54,45 +54,55 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 	if without.Response != c.m.Response {
 		return 0, 0, fmt.Errorf("corrections.%s changes the response of the model", name)
 	}
-	table := "corrections." + name
-	var own []int
-	for s, in := range c.inputs {
-		if in.kind == scalarInput && c.b.Kind.Scalars[in.index].Table == table {
-			own = append(own, s)
+	// Whatever moves the ratio counts, inputs and estimates alike; what only
+	// scales the response drops out of it.
+	type source struct {
+		scalar int
+		u      float64
+	}
+	var sources []source
+	for _, in := range c.inputs {
+		if in.kind == scalarInput {
+			sources = append(sources, source{in.index, in.u})
+		}
+	}
+	for k, f := range c.free {
+		if u := c.fitU[k]; u > 0 && !math.IsInf(u, 0) {
+			sources = append(sources, source{f, u})
 		}
 	}
 	// A bench with very many rows is sampled evenly: the size is for people.
-	step := 1 + len(c.record)/10000
-	space := jet.NewSpace(len(own), 0)
-	grad := make([]float64, len(own))
+	step := 1 + len(c.record)/1000
+	space := jet.NewSpace(len(sources), 0)
+	grad := make([]float64, len(sources))
 	rows := 0.0
-	plain, qj := constants(k.q), constants(k.q)
+	qj := constants(k.q)
 	xj := make([]jet.Jet, len(c.x))
 	for i := 0; i < len(c.record); i += step {
 		space.Reset()
 		for p := range c.x {
 			xj[p] = jet.Const(c.x[p][i])
 		}
-		f0 := without.Row(plain, xj).V
-		for n, s := range own {
-			qj[c.inputs[s].index] = space.Var(n, k.q[c.inputs[s].index])
+		for n, s := range sources {
+			qj[s.scalar] = space.Var(n, k.q[s.scalar])
 		}
-		f := c.m.Row(qj, xj)
-		if f0 == 0 {
+		f0 := without.Row(qj, xj)
+		if f0.V == 0 {
 			continue
 		}
+		f := c.m.Row(qj, xj).Div(f0)
 		rows++
-		size += f.V/f0 - 1
-		for n := range own {
-			grad[n] += f.Grad(n) / f0
+		size += f.V - 1
+		for n := range sources {
+			grad[n] += f.Grad(n)
 		}
 	}
 	if rows == 0 {
 		return 0, 0, nil
 	}
 	var v float64
-	for n, s := range own {
-		d := grad[n] / rows * c.inputs[s].u
+	for n, s := range sources {
+		d := grad[n] / rows * s.u
 		v += d * d
 	}
 	return size / rows, math.Sqrt(v), nil

@@ -96,6 +96,7 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 		res.warn(fmt.Errorf("no measurand is stated: the fit is singular"))
 		return res.finish(s), nil
 	}
+	c.fitU = fit.U
 	k, err := c.carry(fit)
 	if err != nil {
 		res.warn(fmt.Errorf("no measurand is stated: %w", err))
