@@ -52,9 +52,13 @@ func (c *chain) law(k *carried, value float64, byTheta, bySh []float64, p float6
 			Value: in.value, U: in.u, DOF: in.dof, Sensitivity: sens})
 	}
 	w := make([]float64, len(c.record))
-	for j, b := range byTheta {
-		for i, d := range k.byY[j] {
-			w[i] += b * d
+	for b := range byTheta {
+		var f float64
+		for a, v := range byTheta {
+			f += v * k.inverse.At(a, b)
+		}
+		for i, d := range k.weighed[b] {
+			w[i] += f * d
 		}
 	}
 	for n := range c.comps {

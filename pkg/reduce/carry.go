@@ -16,7 +16,7 @@ type carried struct {
 	q       []float64   // scalars with the estimates in place
 	inverse *mat.Dense  // H⁻¹, full Hessian
 	bySh    [][]float64 // dθ/d(input): [input][parameter]; priors included
-	byY     [][]float64 // dθ/dy: [parameter][row]
+	weighed [][]float64 // Σ⁻¹J: [parameter][row]; dθ/dy = H⁻¹(Σ⁻¹J)ᵀ
 	slope   [][]float64 // ∂f/∂x at the estimates, of predictors with errors
 }
 
@@ -51,17 +51,7 @@ func (c *chain) carry(r *lsq.Result) (*carried, error) {
 	if k.inverse, err = invertScaled(h); err != nil {
 		return nil, err
 	}
-	k.byY = make([][]float64, np)
-	for a := range np {
-		row := make([]float64, n)
-		for b := range np {
-			f := k.inverse.At(a, b)
-			for i, w := range wj[b] {
-				row[i] += f * w
-			}
-		}
-		k.byY[a] = row
-	}
+	k.weighed = wj
 	k.bySh = make([][]float64, ni)
 	for s, in := range c.inputs {
 		rhs := make([]float64, np)

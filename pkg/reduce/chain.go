@@ -248,6 +248,10 @@ func gainOffset(ch *bench.Channel) (gain, offset float64) {
 func (c *chain) correctReadings() {
 	for p, ci := range c.pred {
 		g, o := gainOffset(&c.b.Channels[ci])
+		if g == 1 && o == 0 {
+			c.x = append(c.x, c.xr[p])
+			continue
+		}
 		v := make([]float64, len(c.xr[p]))
 		for i, r := range c.xr[p] {
 			v[i] = g*r + o

@@ -167,6 +167,16 @@ func (c *chain) effects() *lsq.Effects {
 	if e.Columns == 0 {
 		return nil
 	}
+	entries := 0
+	for k := range c.comps {
+		switch {
+		case c.comps[k].channel == zeroComponent:
+			entries += len(c.zero.column)
+		case c.comps[k].group != nil:
+			entries += len(c.record)
+		}
+	}
+	e.Start, e.Column = make([]int, 0, len(c.record)+1), make([]int, 0, entries)
 	for i := range c.record {
 		e.Start = append(e.Start, len(e.Column))
 		for k := range c.comps {
@@ -174,7 +184,7 @@ func (c *chain) effects() *lsq.Effects {
 			switch {
 			case comp.channel == zeroComponent:
 				for j := c.zero.start[i]; j < c.zero.start[i+1]; j++ {
-					e.Column = append(e.Column, comp.column+c.zero.column[j])
+					e.Column = append(e.Column, comp.column+int(c.zero.column[j]))
 				}
 			case comp.group != nil:
 				e.Column = append(e.Column, comp.column+comp.group[i])

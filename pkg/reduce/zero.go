@@ -22,19 +22,19 @@ import (
 // blanks does not average out over the rows they serve.
 type zeroModel struct {
 	value  []float64
-	start  []int
-	column []int
+	start  []int32
+	column []int32
 	weight []float64
 	unit   []float64
 	coef   []float64 // one entry a column; the coefficients that have noise
 	parts  []zeroPart
 }
 
-// zeroPart is the share of one correction: its value in each row, and its standard
-// uncertainty in units of the noise of one reading.
+// zeroPart is the share of one correction: the sums over the rows of its square,
+// and of its variance in units of that of one reading.
 type zeroPart struct {
-	name     string
-	value, u []float64
+	name              string
+	squares, variance float64
 }
 
 // baseline is a zero or blank as a function of time, found from readings of it. At
@@ -70,16 +70,17 @@ func (c *chain) fitZero() (*zeroModel, error) {
 	if zero == nil && blank == nil {
 		return nil, nil
 	}
-	z := &zeroModel{value: make([]float64, len(rows))}
+	z := &zeroModel{value: make([]float64, len(rows)), start: make([]int32, 0, len(rows)+1),
+		column: make([]int32, 0, 2*len(rows)), weight: make([]float64, 0, 2*len(rows))}
 	nz := 0
 	if zero != nil {
 		z.unit = append(z.unit, zero.unit...)
 		nz = len(zero.unit)
-		z.parts = append(z.parts, zeroPart{name: "zero", value: make([]float64, len(rows)), u: make([]float64, len(rows))})
+		z.parts = append(z.parts, zeroPart{name: "zero"})
 	}
 	if blank != nil {
 		z.unit = append(z.unit, blank.unit...)
-		z.parts = append(z.parts, zeroPart{name: "blank", value: make([]float64, len(rows)), u: make([]float64, len(rows))})
+		z.parts = append(z.parts, zeroPart{name: "blank"})
 	}
 	z.coef = make([]float64, len(z.unit))
 	through := blankThroughZero(blank, zero, blankTimes)
@@ -109,10 +110,10 @@ func (c *chain) fitZero() (*zeroModel, error) {
 			}
 			z.take(p, i, v, part)
 		}
-		z.start = append(z.start, len(z.column))
+		z.start = append(z.start, int32(len(z.column)))
 		z.column, z.weight = sum.flush(z.column, z.weight)
 	}
-	z.start = append(z.start, len(z.column))
+	z.start = append(z.start, int32(len(z.column)))
 	return z, nil
 }
 
@@ -120,13 +121,13 @@ func (c *chain) fitZero() (*zeroModel, error) {
 // gathered in w, which is emptied.
 func (z *zeroModel) take(part, i int, v float64, w *sparse) {
 	z.value[i] += v
-	z.parts[part].value[i] = v
+	z.parts[part].squares += v * v
 	var s float64
 	for _, col := range w.used {
 		f := w.sum[col] * z.unit[col]
 		s += f * f
 	}
-	z.parts[part].u[i] = math.Sqrt(s)
+	z.parts[part].variance += s
 	w.clear()
 }
 
@@ -398,10 +399,10 @@ func (s *sparse) clear() {
 }
 
 // flush appends columns and sums, in order of column, and empties the sums.
-func (s *sparse) flush(column []int, weight []float64) ([]int, []float64) {
+func (s *sparse) flush(column []int32, weight []float64) ([]int32, []float64) {
 	sort.Ints(s.used)
 	for _, c := range s.used {
-		column, weight = append(column, c), append(weight, s.sum[c])
+		column, weight = append(column, int32(c)), append(weight, s.sum[c])
 	}
 	s.clear()
 	return column, weight
@@ -428,18 +429,19 @@ func (z *zeroModel) subtracted(name string, noise float64) (size, u Number) {
 		if p.name != name {
 			continue
 		}
-		n := float64(len(p.value))
-		return Number(math.Sqrt(dot(p.value, p.value) / n)), Number(noise * math.Sqrt(dot(p.u, p.u)/n))
+		n := float64(len(z.value))
+		return Number(math.Sqrt(p.squares / n)), Number(noise * math.Sqrt(p.variance/n))
 	}
 	return 0, 0
 }
 
 // applyZero subtracts zero and blank from the response readings.
 func (c *chain) applyZero() {
-	c.y = append([]float64(nil), c.yr...)
+	c.y = c.yr
 	if c.zero == nil {
 		return
 	}
+	c.y = append([]float64(nil), c.yr...)
 	for i := range c.y {
 		c.y[i] -= c.zero.at(i)
 	}
