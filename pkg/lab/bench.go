@@ -95,6 +95,25 @@ func (b *Bench) Quantities() *report.Table {
 	return t
 }
 
+// Value is the stated value of a quantity of the bench, SI.
+func (b *Bench) Value(name string) float64 { return b.scalar(name).Dist.Value }
+
+// U is the stated standard uncertainty of a quantity of the bench, SI.
+func (b *Bench) U(name string) float64 { return b.scalar(name).Dist.U }
+
+func (b *Bench) scalar(name string) *bench.Scalar {
+	var known []string
+	for i := range b.Bench.Scalars {
+		s := &b.Bench.Scalars[i]
+		if s.Name == name {
+			return s
+		}
+		known = append(known, s.Name)
+	}
+	fail(unknown("quantity", name, known))
+	return nil
+}
+
 // instrument tells an instrument of the bench by its certificate.
 func (b *Bench) instrument(name string) string {
 	for i := range b.Bench.Instruments {

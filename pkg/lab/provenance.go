@@ -10,18 +10,38 @@ import (
 )
 
 // Provenance says what another laboratory needs to get the same numbers: the
-// versions of the tool, of Go and of every module linked in with its sum, and
-// for each result its inputs with their SHA-256, its seed and trials.
-func Provenance(results ...*Result) *report.Sheet {
+// versions of the tool, of Go and of every module linked in with its sum, and for
+// each result (a *Result, a *Propagation or a *FormulaFit) its inputs with their
+// SHA-256, its seed and trials.
+func Provenance(of ...any) *report.Sheet {
 	s := report.New("", "")
 	s.Fact("guardring", reduce.Version)
 	s.Fact("Go", fmt.Sprintf("%s for %s/%s", runtime.Version(), runtime.GOOS, runtime.GOARCH))
-	for i, r := range results {
-		if r == nil || r.Result == nil {
+	for i, x := range of {
+		var rec *reduce.Record
+		switch x := x.(type) {
+		case *Result:
+			if x != nil && x.Result != nil {
+				rec = &x.Result.Record
+			}
+		case *Propagation:
+			if x != nil && x.Propagation != nil {
+				p := &x.Propagation.Record
+				rec = &reduce.Record{Title: p.Title, Guardring: p.Guardring, Run: p.Run, Inputs: p.Inputs}
+			}
+		case *FormulaFit:
+			if x != nil && x.Fit != nil {
+				rec = x.record
+			}
+		case nil:
+		default:
+			failf("a %T has no record; a *lab.Result, *lab.Propagation or *lab.FormulaFit is due", x)
+		}
+		if rec == nil {
 			failf("result %d is nil", i+1)
 		}
-		s.Head(r.Result.Record.Title)
-		s.Part(report.Inputs(&r.Result.Record))
+		s.Head(rec.Title)
+		s.Part(report.Inputs(rec))
 	}
 	info, ok := debug.ReadBuildInfo()
 	if !ok || len(info.Deps) == 0 {

@@ -1,8 +1,11 @@
 package lab
 
 import (
+	"bytes"
 	"encoding/json"
 	"fmt"
+	"io"
+	"path/filepath"
 	"strings"
 
 	"github.com/go-gota/gota/dataframe"
@@ -12,6 +15,7 @@ import (
 	"example.org/guardring/pkg/figure"
 	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/report"
+	"example.org/guardring/pkg/safefile"
 	"example.org/guardring/pkg/si"
 )
 
@@ -117,11 +121,42 @@ func benchOf(x any) (b *Bench, told bool) {
 func run(b *bench.Bench, s Settings, told bool) *Result {
 	r, err := reduce.Run(cell.Context(), b, s)
 	fail(err)
-	out := &Result{Result: r, told: told}
-	out.sheet = report.Summary(&r.Record, !told)
+	return laidOut(r, told)
+}
+
+// laidOut makes everything that a cell shows of a reduction.
+func laidOut(r *reduce.Result, told bool) *Result {
+	out := &Result{Result: r, told: told, sheet: report.Summary(&r.Record, !told)}
+	var err error
 	out.json, err = json.Marshal(&r.Record)
 	fail(err)
 	return out
+}
+
+// Save writes the result to a file in the form that the end of its name asks for:
+// .json the record, .html the report as one page with its figures, .md, .tex and
+// .txt the report without. It returns the path.
+func (r *Result) Save(path string) string {
+	write := map[string]func(io.Writer) error{
+		".json": func(w io.Writer) error {
+			var b bytes.Buffer
+			if err := json.Indent(&b, r.json, "", "  "); err != nil {
+				return err
+			}
+			b.WriteByte('\n')
+			_, err := w.Write(b.Bytes())
+			return err
+		},
+		".html": func(w io.Writer) error { return report.HTML(w, r.Result) },
+		".md":   func(w io.Writer) error { return report.Markdown(w, r.Result) },
+		".tex":  func(w io.Writer) error { return report.LaTeX(w, r.Result) },
+		".txt":  func(w io.Writer) error { return report.Text(w, r.Result) },
+	}[filepath.Ext(path)]
+	if write == nil {
+		failf("%s: the name of a result ends in .json, .html, .md, .tex or .txt", path)
+	}
+	fail(safefile.Write(path, write))
+	return path
 }
 
 // String returns the text form.

@@ -2,6 +2,7 @@ package report
 
 import (
 	"fmt"
+	"math"
 	"strings"
 
 	"example.org/guardring/pkg/figure"
@@ -49,6 +50,21 @@ func Summary(rec *reduce.Record, withCautions bool) *Sheet {
 		s.d.show(Budget(&rec.Measurands[0]))
 	}
 	s.d.monteCarlo(rec)
+	return s
+}
+
+// Formula tells the fit of a formula at a glance: parameters, goodness of the
+// fit, correlations, tests of the residuals, warnings.
+func Formula(rec *reduce.Record) *Sheet {
+	s := New(rec.Title, subtitle(rec))
+	if rec.Fit.Status != "converged" {
+		s.Notice("The fit has not converged (" + rec.Fit.Status + because(rec.Fit.Reason) + "); these numbers are where it stopped.")
+	}
+	s.Notice(rec.Warnings...)
+	s.d.parameters(rec)
+	s.d.correlations(rec)
+	s.d.goodness(rec)
+	s.d.tests(rec)
 	return s
 }
 
@@ -223,4 +239,33 @@ func fixed(x float64, n int) string {
 		s = strings.TrimPrefix(s, "-")
 	}
 	return minus(s)
+}
+
+// Results adds measurands as they are stated, each with its value in short and
+// with its expanded uncertainty.
+func (s *Sheet) Results(ms []reduce.Measurand) *Sheet {
+	var rs []result
+	for i := range ms {
+		rs = append(rs, stated(&ms[i]))
+	}
+	if len(rs) > 0 {
+		s.d.blocks = append(s.d.blocks, block{results: rs})
+	}
+	return s
+}
+
+// In writes x, SI, in a unit with exactly n significant digits; an unknown
+// number is a dash.
+func In(x float64, unit si.Unit, n int) string {
+	if math.IsNaN(x) {
+		return "–"
+	}
+	return minus(digits(unit.DeltaFromSI(x), n))
+}
+
+// Unit is the unit in which people read x, SI, of the dimension of symbol, and
+// its name: nothing for pure numbers.
+func Unit(x float64, symbol string) (si.Unit, string) {
+	u := display(math.Abs(x), symbol)
+	return u, unitText(u)
 }

@@ -4,7 +4,6 @@ package symbols
 
 // Linked are the import paths of the packages whose tables stand in this package, sorted.
 var Linked = []string{
-	"example.org/guardring/pkg",
 	"example.org/guardring/pkg/assess",
 	"example.org/guardring/pkg/bench",
 	"example.org/guardring/pkg/cell",

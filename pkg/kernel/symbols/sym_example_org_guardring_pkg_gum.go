@@ -70,6 +70,7 @@ func init() {
 			"Input":        r.TypeOf((*p0_gum.Input)(nil)).Elem(),
 			"Joint":        r.TypeOf((*p0_gum.Joint)(nil)).Elem(),
 			"Law":          r.TypeOf((*p0_gum.Law)(nil)).Elem(),
+			"Merger":       r.TypeOf((*p0_gum.Merger)(nil)).Elem(),
 			"Model":        r.TypeOf((*p0_gum.Model)(nil)).Elem(),
 			"Nested":       r.TypeOf((*p0_gum.Nested)(nil)).Elem(),
 			"Output":       r.TypeOf((*p0_gum.Output)(nil)).Elem(),

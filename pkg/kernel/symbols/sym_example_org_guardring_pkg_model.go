@@ -16,6 +16,7 @@ func init() {
 			"AttractedDisc":    r.ValueOf(&p0_model.AttractedDisc).Elem(),
 			"BeamDeflection":   r.ValueOf(&p0_model.BeamDeflection).Elem(),
 			"ChargeInField":    r.ValueOf(&p0_model.ChargeInField).Elem(),
+			"CoulombPoint":     r.ValueOf(&p0_model.CoulombPoint).Elem(),
 			"DielectricSample": r.ValueOf(&p0_model.DielectricSample).Elem(),
 			"FieldFromCharge":  r.ValueOf(&p0_model.FieldFromCharge).Elem(),
 			"FieldMeter":       r.ValueOf(&p0_model.FieldMeter).Elem(),
@@ -24,6 +25,8 @@ func init() {
 			"PlateCharge":      r.ValueOf(&p0_model.PlateCharge).Elem(),
 			"Predictor":        r.ValueOf(p0_model.Predictor),
 			"Response":         r.ValueOf(p0_model.Response),
+			"SpherePair":       r.ValueOf(&p0_model.SpherePair).Elem(),
+			"SpherePlane":      r.ValueOf(&p0_model.SpherePlane).Elem(),
 		},
 		Types: map[string]r.Type{
 			"Cause":      r.TypeOf((*p0_model.Cause)(nil)).Elem(),

@@ -14,15 +14,18 @@ func init() {
 		Name: "plan",
 		Binds: map[string]r.Value{
 			"Files":     r.ValueOf(p0_plan.Files),
+			"Predict":   r.ValueOf(p0_plan.Predict),
 			"ReadTruth": r.ValueOf(p0_plan.ReadTruth),
 			"Simulate":  r.ValueOf(p0_plan.Simulate),
 			"TruthFile": r.ValueOf(p0_plan.TruthFile),
 		},
 		Types: map[string]r.Type{
-			"Defect": r.TypeOf((*p0_plan.Defect)(nil)).Elem(),
-			"Fault":  r.TypeOf((*p0_plan.Fault)(nil)).Elem(),
-			"File":   r.TypeOf((*p0_plan.File)(nil)).Elem(),
-			"Truth":  r.TypeOf((*p0_plan.Truth)(nil)).Elem(),
+			"Defect":     r.TypeOf((*p0_plan.Defect)(nil)).Elem(),
+			"Fault":      r.TypeOf((*p0_plan.Fault)(nil)).Elem(),
+			"File":       r.TypeOf((*p0_plan.File)(nil)).Elem(),
+			"Prediction": r.TypeOf((*p0_plan.Prediction)(nil)).Elem(),
+			"Scenario":   r.TypeOf((*p0_plan.Scenario)(nil)).Elem(),
+			"Truth":      r.TypeOf((*p0_plan.Truth)(nil)).Elem(),
 		},
 		Proxies: map[string]r.Type{},
 		Untypeds: map[string]string{
