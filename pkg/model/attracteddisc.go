@@ -10,14 +10,16 @@ import (
 	"example.org/guardring/pkg/si"
 )
 
-// AttractedDisc is the guarded attracted disc: the force on a disc that lies
-// in the plane of its guard ring, opposite a plate at a known voltage and
-// spacing, weighed on a balance (Maxwell, Treatise, arts. 216–218). The fit
-// gives the permittivity of the gap.
+// AttractedDisc is the attracted disc: the force on a disc opposite a plate at a
+// known voltage and spacing, weighed on a balance (Maxwell, Treatise, arts.
+// 216–218). The fit gives the permittivity of the gap. Guarded, the disc lies in
+// the plane of its guard ring; unguarded, two thin equal discs face each other,
+// and the field at their edges is that of Love's equation (field.DiscForce) for
+// the drive that the bench states.
 var AttractedDisc = register(&Kind{
 	Name:  "attracted-disc",
-	Title: "Guarded attracted-disc balance",
-	Doc: "A disc within a guard ring is attracted by a parallel plate at a known voltage and spacing; " +
+	Title: "Attracted-disc balance",
+	Doc: "A disc, within a guard ring or without, is attracted by a parallel plate at a known voltage and spacing; " +
 		"the force, read in newtons or as the indication of a balance, gives the permittivity of the gap.",
 	Channels: []Channel{
 		{Name: "voltage", Doc: "voltage of the plate against disc and guard", Unit: si.MustUnit("kV"), Role: Predictor},
@@ -25,31 +27,32 @@ var AttractedDisc = register(&Kind{
 		{Name: "force", Doc: "force of attraction on the disc", Unit: si.MustUnit("mN"), Role: Response},
 		{Name: "mass", Doc: "indication of the balance, conventional mass", Unit: si.MustUnit("g"), Role: Response},
 	},
-	Scalars: []Scalar{
+	Scalars: append([]Scalar{
 		{Table: "quantities", Name: "permittivity", Doc: "permittivity of the gap", Unit: si.MustUnit("pF/m"), Sought: true, Positive: true, Part: "result"},
 		{Table: "quantities", Name: "contact_potential", Doc: "contact potential, subtracted from the voltage", Unit: si.MustUnit("V"), Adjustable: true, Part: "electrodes"},
 		{Table: "quantities", Name: "gap_offset", Doc: "zero error of the spacing scale, added to the reading", Unit: si.MustUnit("um"), Adjustable: true, Part: "electrodes"},
 		{Table: "quantities", Name: "disc_radius", Doc: "radius of the disc", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "electrodes"},
-		{Table: "quantities", Name: "guard_gap", Doc: "width of the gap between disc and guard ring", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "electrodes"},
+		{Table: "quantities", Name: "guard_gap", Doc: "width of the gap between disc and guard ring; a guarded disc needs it", Unit: si.MustUnit("mm"), Positive: true, Part: "electrodes"},
 		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy (default: the disc alone)", Unit: si.MustUnit("pF"), Part: "safety"},
 		electricConstant,
 		{Table: "corrections.guard_gap", Name: "model", Doc: "relative error of the deep-slot formula of the guard gap", Unit: si.MustUnit("1"), Default: gum.Normal(0, 5e-5), Part: "electrodes"},
 		{Table: "corrections.wedge", Name: "half_difference", Doc: "plates not parallel: half the difference of spacing across the disc", Unit: si.MustUnit("um"), Required: true, Squared: true, Part: "electrodes"},
 		{Table: "corrections.coplanarity", Name: "step", Doc: "height of the disc above the plane of the guard", Unit: si.MustUnit("um"), Required: true, Part: "electrodes"},
 		{Table: "corrections.coplanarity", Name: "edge", Doc: "coefficient of the edge term, in step/radius", Unit: si.MustUnit("1"), Default: gum.Rectangular(0, 2), Part: "electrodes"},
+		{Table: "corrections.edge", Name: "model", Doc: "relative error of the edge's part of the force: thickness and rounding of the edges, surroundings", Unit: si.MustUnit("1"), Default: gum.Exactly(0), Part: "electrodes"},
 		temperature, pressure, humidity,
-		{Table: "environment", Name: "gravity", Doc: "acceleration of free fall at the balance (surveyed)", Unit: si.MustUnit("m/s2"), Positive: true, Part: "balance"},
-		{Table: "environment", Name: "latitude", Doc: "geographic latitude, for normal gravity when none is surveyed", Unit: si.MustUnit("deg"), Part: "balance"},
-		{Table: "environment", Name: "height", Doc: "height above the ellipsoid, for normal gravity", Unit: si.MustUnit("m"), Part: "balance"},
-		{Table: "environment", Name: "gravity_anomaly", Doc: "local departure from normal gravity", Unit: si.MustUnit("m/s2"), Default: gum.Normal(0, 3e-4), Part: "balance"},
-		{Table: "corrections.balance", Name: "air_density", Doc: "density of air when the balance was adjusted", Unit: si.MustUnit("kg/m3"), Default: gum.Exactly(1.2), Part: "balance"},
-	},
+	}, balanceScalars...),
 	Corrections: []Correction{
 		{Name: "guard_gap", Doc: "effective area of the disc with its guard gap", Default: true},
 		{Name: "wedge", Doc: "plates not parallel"},
 		{Name: "coplanarity", Doc: "disc proud of the guard plane"},
+		{Name: "edge", Doc: "field at the edge of unguarded discs, exact for two thin equal ones with earthed surroundings far away"},
 		{Name: "air", Doc: "moist air of the gap, for the permittivity of vacuum"},
-		{Name: "balance", Doc: "conventional mass to force: air density at adjustment", Default: true},
+		balanceCorrection,
+	},
+	Options: []Option{
+		{Key: "electrodes", Doc: "disc within a guard ring at its potential, or two equal discs without", Values: []string{"guarded", "unguarded"}, Default: "guarded"},
+		{Key: "drive.kind", Doc: "how the voltage stands against earth; matters to unguarded discs", Values: []string{driveBalanced, driveOneEarthed}, Default: driveBalanced},
 	},
 	Prepare: prepareAttractedDisc,
 })
@@ -73,45 +76,27 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 	iModel, iWedge := at("corrections.guard_gap.model"), at("corrections.wedge.half_difference")
 	iStep, iEdge := at("corrections.coplanarity.step"), at("corrections.coplanarity.edge")
 	iT, iP, iH := at("environment.temperature"), at("environment.pressure"), at("environment.humidity")
-	iGrav, iLat, iHeight, iAnomaly := at("environment.gravity"), at("environment.latitude"), at("environment.height"), at("environment.gravity_anomaly")
-	iRho := at("corrections.balance.air_density")
+	iEdgeModel := at("corrections.edge.model")
 
-	response := "force"
-	if s.Channels["mass"] {
-		response = "mass"
-		if !s.Given["environment.gravity"] && !s.Given["environment.latitude"] {
-			return nil, fmt.Errorf("environment.gravity: a balance indication needs the local acceleration of free fall; state gravity, or latitude and height")
-		}
+	perMass, perMassValue, err := forcePerMass(k, s)
+	if err != nil {
+		return nil, err
 	}
+	response := "force"
+	if perMass != nil {
+		response = "mass"
+	}
+	edge, drive, err := discEdge(s)
+	if err != nil {
+		return nil, err
+	}
+	unguarded := s.Options["electrodes"] == "unguarded"
 	guard, wedge, coplanar := s.On["guard_gap"], s.On["wedge"], s.On["coplanarity"]
-	surveyed := s.Given["environment.gravity"]
 	wedgeC, err := field.WedgeCoefficient(field.Disc, field.OnForce)
 	if err != nil {
 		return nil, err
 	}
 
-	// newton per kilogram of conventional mass indicated
-	perMass := func(q []jet.Jet) jet.Jet {
-		g := q[iGrav]
-		if !surveyed {
-			g = field.GravityJet(q[iLat], q[iHeight]).Add(q[iAnomaly])
-		}
-		if s.On["balance"] {
-			return field.BalanceForceJet(jet.Const(1), g, q[iRho])
-		}
-		return g
-	}
-	// The same without jets: BalanceForce written out.
-	perMassValue := func(q []float64) float64 {
-		g := q[iGrav]
-		if !surveyed {
-			g = field.GravityJet(jet.Const(q[iLat]), jet.Const(q[iHeight])).V + q[iAnomaly]
-		}
-		if s.On["balance"] {
-			g *= 1 - q[iRho]/field.ConventionalDensity
-		}
-		return g
-	}
 	m := &Model{Response: response, Predictors: []string{"voltage", "gap"}}
 	m.Row = func(q, x []jet.Jet) jet.Jet {
 		d := x[1].Add(q[iOff])
@@ -124,6 +109,10 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 			area = r.Sqr().Scale(math.Pi)
 		}
 		f := q[iEps].Mul(area).Mul(v.Div(d).Sqr()).Scale(0.5)
+		if edge {
+			more := field.DiscForceJet(drive, q[iEps], r, d, v).Sub(f)
+			f = f.Add(more.Mul(q[iEdgeModel].Plus(1)))
+		}
 		if wedge {
 			f = f.Mul(q[iWedge].Div(d.Sqr()).Scale(wedgeC).Plus(1))
 		}
@@ -152,13 +141,13 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 			alpha = field.SlotLength(r, rg)
 			scale *= 1 + q[iModel]
 		}
-		tilt, step, edge := 0.0, 0.0, 1.0
+		tilt, step, rim := 0.0, 0.0, 1.0
 		if wedge {
 			tilt = wedgeC * q[iWedge]
 		}
 		if coplanar {
 			step = q[iStep]
-			edge = 1 + q[iEdge]*step/r
+			rim = 1 + q[iEdge]*step/r
 		}
 		if response == "mass" {
 			scale /= perMassValue(q)
@@ -173,9 +162,19 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 			e := v * inv
 			u := d * s
 			area := a + b*u*u
+			dArea := 2 * b * d * alpha * s * s * s
+			if edge {
+				// Love's force over εv²/2d² in the place of an area, −κ²R²c′(κ),
+				// with its derivative by d.
+				kappa := d / r
+				love := field.DiscCoefficient(drive, kappa)
+				m := 1 + q[iEdgeModel]
+				area += m * (-d*d*love[1] - area)
+				dArea = -m * (2*d*love[1] + d*kappa*love[2])
+			}
 			t := 1 + tilt*inv*inv
 			p := d / (d - step)
-			c := p * p * edge
+			c := p * p * rim
 			g := scale * e * e
 			h := g * area * t * c
 			f[i] = h
@@ -189,7 +188,6 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 				case iVc:
 					jac[k][i] = -2 * scale * e * inv * area * t * c
 				case iOff:
-					dArea := 2 * b * d * alpha * s * s * s
 					jac[k][i] = g * c * (dArea*t - 2*area*(t*inv+tilt*inv*inv*inv+t*(p-1)*inv))
 				}
 			}
@@ -222,12 +220,21 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 	}
 	m.Check = func(q []float64, x [][]float64, y []float64) ([]error, error) {
 		var warn []error
-		minGap := math.Inf(1)
+		minGap, maxGap := math.Inf(1), 0.0
 		for i, d := range x[1] {
 			if d+q[iOff] <= 0 {
 				return nil, &RowError{Row: i, Err: fmt.Errorf("gap %.6g mm: must be above zero", 1e3*(d+q[iOff]))}
 			}
-			minGap = math.Min(minGap, d+q[iOff])
+			minGap, maxGap = math.Min(minGap, d+q[iOff]), math.Max(maxGap, d+q[iOff])
+		}
+		if edge && maxGap > field.DiscLimit*q[iR] {
+			return nil, fmt.Errorf("corrections.edge: the solution is tabulated up to a gap of %g radii; the largest gap is %.4g mm", field.DiscLimit, 1e3*maxGap)
+		}
+		if unguarded && !edge {
+			if f, err := field.DiscForce(field.Balanced, 1, q[iR], maxGap, 1); err == nil {
+				part := f/(0.5*math.Pi*q[iR]*q[iR]/(maxGap*maxGap)) - 1
+				warn = append(warn, fmt.Errorf("corrections.edge is off: at the edges of unguarded discs the field adds %.2g %% to the force at the largest gap", 100*part))
+			}
 		}
 		if guard && minGap < 5*q[iG] {
 			return nil, fmt.Errorf("corrections.guard_gap: the deep-slot formula holds for gaps of at least 5 × guard_gap (%.4g mm); the smallest gap is %.4g mm; exclude those rows or switch the correction off and state its uncertainty",
@@ -303,4 +310,30 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 			Signature: func(q, x []float64, f, t float64) float64 { return f * (x[1] + q[iOff]) }},
 	}
 	return m, nil
+}
+
+// discEdge checks the corrections of an attracted disc against its electrodes and
+// returns whether the edge field of unguarded discs is corrected, and its drive.
+func discEdge(s *Setup) (edge bool, drive field.Drive, err error) {
+	if s.Options["drive.kind"] == driveOneEarthed {
+		drive = field.OneSideEarthed
+	}
+	if s.Options["electrodes"] != "unguarded" {
+		switch {
+		case s.On["edge"]:
+			return false, 0, fmt.Errorf("corrections.edge: is for unguarded discs; a guard ring carries the edge away: switch it off, or say electrodes = %q", "unguarded")
+		case s.On["guard_gap"] && !s.Given["guard_gap"]:
+			return false, 0, fmt.Errorf("quantities.guard_gap: is missing; the effective area of a guarded disc needs the width of the gap to its guard ring")
+		}
+		return false, drive, nil
+	}
+	for _, name := range []string{"guard_gap", "coplanarity"} {
+		if s.On[name] {
+			return false, 0, fmt.Errorf("corrections.%s: unguarded discs have no guard; write [corrections.%s] use = false", name, name)
+		}
+	}
+	if s.Given["guard_gap"] {
+		return false, 0, fmt.Errorf("quantities.guard_gap: unguarded discs have no guard; take it out, or say electrodes = %q", "guarded")
+	}
+	return s.On["edge"], drive, nil
 }
