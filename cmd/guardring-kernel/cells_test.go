@@ -28,6 +28,12 @@ math.Sqrt(2)`, "1.4142135623730951")
 	s.value("var w strings.Builder\nw.WriteString(\"abc\")", "")
 	s.value("import \"gonum.org/v1/gonum/floats\"\nfloats.Sum([]float64{1, 2, 3.5})", "6.5")
 	s.value("for i := 0; i < 3; i++ { }", "")
+	s.value("type E struct{ code int }\nfunc (e E) Error() string { return fmt.Sprint(\"code \", e.code) }\nfunc fail(n int) error { if n > 0 { return E{n} }; return nil }\nferr := fail(3)\nferr", "code 3")
+	s.value("type Ring struct{ w float64 }\nfunc (r *Ring) String() string { return fmt.Sprintf(\"ring of %g mm\", r.w) }\n&Ring{2}", "ring of 2 mm")
+	s.value("Ring{3}", "{w:3}")
+	s.value("type rendering struct{ n int }\n[]rendering{{1}, {2}}", "[{n:1} {n:2}]")
+	s.value("nil", "")
+	s.value("m := map[string]int{\"a\": 1}\nm[\"a\"]", "1")
 	s.value("", "")
 	s.value("// only a comment", "")
 	e := s.ok("import \"gonum.org/v1/gonum/mat\"\nmat.NewDense(2, 2, []float64{1, 2, 3, 4})")
@@ -81,6 +87,14 @@ func TestErrors(t *testing.T) {
 		{"log.Fatal(\"the end\")", x, "log.Fatal", "line 1"},
 		{"runtime.Goexit()", x, "runtime.Goexit", "line 1"},
 		{"type Bad struct{}\nfunc (Bad) String() string { panic(\"no text\") }\nBad{}", p, "while the value was drawn", "line 3"},
+		{"func endless(n int) int { return endless(n+1) + 1 }\nendless(0)", p, "recursion without an end", "line 1"},
+		{"func Map[T any](x []T) []T { return x }", c, "can't declare generic", "line 1"},
+		{"for i := range 3 { }", c, "can't range over integers", "line 1"},
+		{"max(1, 2)", c, "does not have this builtin", "line 1"},
+		{"mat.NewDense(1, 1, nil)", c, "import \"gonum.org/v1/gonum/mat\" first", "line 1"},
+		{"fmt.Printn(1)", c, "undefined: fmt.Printn", "line 1"},
+		{"keep = \"text\"", c, "", "line 1"},
+		{"type Q struct{}\nfunc (q *Q) Error() string { return \"q\" }\nfunc e() error { return &Q{} }", c, "receiver is no pointer", "line 3"},
 		{"1/0", c, "divide by zero", "line 1"},
 	} {
 		s.fails(test.code, test.kind, test.message, test.place)

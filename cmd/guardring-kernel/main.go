@@ -90,7 +90,7 @@ func serve(path string) error {
 	ctx, stop := signal.NotifyContext(context.Background(), syscall.SIGTERM)
 	defer stop()
 	go kernel.ExitWithParent(func() { os.Exit(0) })
-	debug.SetGCPercent(100)
+	debug.SetMaxStack(4 << 30) // room for gointerp to notice a recursion without an end
 	if err := server.Serve(ctx); err != nil {
 		return err
 	}

@@ -13,6 +13,7 @@ const (
 	guardName  = "guardring_guard__"
 	reportName = "guardring_report__"
 	tempName   = "guardring_temp__"
+	valueName  = "guardring_value__"
 )
 
 // prepareGuard declares the function that every goroutine of a cell defers.

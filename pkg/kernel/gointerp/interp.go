@@ -20,6 +20,7 @@ import (
 	basereflect "github.com/cosmos72/gomacro/base/reflect"
 	"github.com/cosmos72/gomacro/fast"
 	mp "github.com/cosmos72/gomacro/go/parser"
+	"github.com/cosmos72/gomacro/imports"
 	"github.com/cosmos72/gomacro/xreflect"
 
 	"example.org/guardring/pkg/cell"
@@ -104,6 +105,9 @@ func (in *Interp) Run(ctx context.Context, c kernel.Cell) (res *kernel.Result, e
 		in.ir.Comp.Code.Clear()
 		return nil, err
 	}
+	if expr == nil {
+		return &kernel.Result{}, nil
+	}
 	vals, typs, err := in.exec(ctx, expr, nodes)
 	if err != nil {
 		in.forget(err, nodes, binds)
@@ -112,13 +116,14 @@ func (in *Interp) Run(ctx context.Context, c kernel.Cell) (res *kernel.Result, e
 	return in.result(nodes, vals, typs)
 }
 
-// compile parses and compiles a cell. All that the compiler objects to becomes an error with its place.
+// compile parses and compiles a cell. All that the compiler objects to becomes an error with its place. The expression
+// is nil when the cell holds nothing to run.
 func (in *Interp) compile(code string) (nodes []ast.Node, expr *fast.Expr, err error) {
 	in.warnings.text.Reset()
 	in.warnings.pos = nil
 	defer func() {
 		if fault := recover(); fault != nil {
-			err = in.compileError(fault)
+			nodes, expr, err = nil, nil, in.compileError(fault)
 		}
 	}()
 	c := in.ir.Comp
@@ -160,9 +165,6 @@ var errInterrupted = &kernel.CellError{Kind: kernel.Interrupted, Message: "the c
 
 // exec runs compiled code.
 func (in *Interp) exec(ctx context.Context, expr *fast.Expr, nodes []ast.Node) (vals []xreflect.Value, types []xreflect.Type, err error) {
-	if expr == nil {
-		return nil, nil, nil
-	}
 	env := in.ir.PrepareEnv()
 	run := env.Run
 	if expr.Untyped() {
@@ -172,10 +174,17 @@ func (in *Interp) exec(ctx context.Context, expr *fast.Expr, nodes []ast.Node) (
 	env.IP, env.DebugPos, env.Code = 0, nil, nil
 	outer := run.CurrEnv
 	run.CurrEnv = env
+	watch := in.watchDepth(run)
 	defer func() {
 		fault := recover()
+		watch.stop()
 		if fault != nil {
 			err = in.runError(fault, in.places(run.CurrEnv, nodes))
+			if _, ok := fault.(base.Signal); ok && watch.tooDeep.Load() {
+				e := err.(*kernel.CellError)
+				e.Kind, e.Message = kernel.Panicked, fmt.Sprintf("functions call each other more than %d deep: a recursion without an end?", maxDepth)
+				e.Places = e.Places[:min(len(e.Places), 5)]
+			}
 		}
 		// A late interrupt, or a panic that left its marks, must not reach the next cell.
 		run.CurrEnv = outer
@@ -207,7 +216,7 @@ func (in *Interp) places(env *fast.Env, nodes []ast.Node) []kernel.Place {
 		if at == token.NoPos && caller == nil && len(nodes) > 0 {
 			at = nodes[len(nodes)-1].Pos() // all statements are done: it was the last expression
 		}
-		if at != token.NoPos {
+		if at != token.NoPos && (len(out) < 100 || caller == nil) {
 			out = append(out, in.place(in.ir.Comp.Fileset.Position(at), false))
 		}
 		if caller == nil {
@@ -268,6 +277,7 @@ func (in *Interp) compileError(fault any) error {
 		if errors.As(f, &list) && len(list) > 0 {
 			e.Message = list[0].Msg
 			e.Places = []kernel.Place{in.place(list[0].Pos, true)}
+			e.Message = in.explain(e.Message)
 			if len(list) > 1 {
 				e.Message += fmt.Sprintf(" (and %d more errors)", len(list)-1)
 			}
@@ -285,17 +295,49 @@ func (in *Interp) compileError(fault any) error {
 	} else if p := in.position(); p.IsValid() {
 		e.Places = []kernel.Place{in.place(p, false)}
 	}
-	e.Message = explain(e.Message)
+	e.Message = in.explain(e.Message)
 	return e
 }
 
-// explain says in the words of the language what the interpreter says in its own.
-func explain(msg string) string {
+var (
+	noSelector = regexp.MustCompile(`^not a type: ([\pL_][\pL\d_]*\.[\pL_][\pL\d_]*) <`)
+	noPackage  = regexp.MustCompile(`^undefined "([^"]+)" in `)
+	assignment = regexp.MustCompile(`(?s)^error compiling assignment: .*\n\t`)
+)
+
+// explain says in the words of the language what the interpreter says in its own, with a hint where there is one.
+func (in *Interp) explain(msg string) string {
+	msg = assignment.ReplaceAllString(msg, "")
+	if m := noSelector.FindStringSubmatch(msg); m != nil {
+		return "undefined: " + m[1]
+	}
+	name, undefined := strings.CutPrefix(msg, "undefined identifier: ")
+	if m := noPackage.FindStringSubmatch(msg); m != nil {
+		name, undefined = m[1], true
+	}
+	if undefined {
+		msg = "undefined: " + name
+		switch name {
+		case "min", "max", "clear":
+			return msg + " (the interpreter does not have this builtin function; declare one, or use package math)"
+		}
+		for _, path := range in.linked {
+			if path[strings.LastIndexByte(path, '/')+1:] == name {
+				return msg + fmt.Sprintf(" (import %q first)", path)
+			}
+		}
+		if _, ok := imports.Packages[name]; ok {
+			return msg + fmt.Sprintf(" (import %q first)", name)
+		}
+		return msg
+	}
 	switch {
-	case strings.HasPrefix(msg, "undefined identifier: "):
-		return "undefined: " + strings.TrimPrefix(msg, "undefined identifier: ")
-	case strings.Contains(msg, "returns 2 values") || strings.Contains(msg, "multi-valued"):
-		return msg + " (give each value a variable, and look at the error)"
+	case strings.HasPrefix(msg, "cannot range over") && strings.Contains(msg, "int>"):
+		return msg + " (the interpreter can't range over integers: write for i := 0; i < n; i++)"
+	case strings.Contains(msg, "missing method"):
+		return strings.Join(strings.Fields(msg), " ") + " (the interpreter finds methods of a cell's type for an interface only when their receiver is no pointer)"
+	case msg == "expected '(', found '['":
+		return msg + " (cells can't declare generic functions or types)"
 	}
 	return msg
 }

@@ -12,6 +12,9 @@ import (
 	"example.org/guardring/pkg/kernel"
 )
 
+// privatePrefix stands before the names of fields that a cell's type does not export.
+const privatePrefix = "𒀸"
+
 const maxText = 100 << 10 // bytes of a value's plain text
 
 // result turns the values of a cell's last expression into forms. An error among them that is not nil fails the
@@ -45,7 +48,10 @@ func (in *Interp) forms(x ast.Expr, vals []xreflect.Value, types []xreflect.Type
 		if fault := recover(); fault != nil {
 			at := in.place(in.ir.Comp.Fileset.Position(x.Pos()), false)
 			e := in.runError(fault, []kernel.Place{at}).(*kernel.CellError)
-			e.Message = "while the value was drawn: " + e.Message
+			if m := positioned.FindString(e.Message); m != "" {
+				e.Message = e.Message[len(m):]
+			}
+			e.Message = "while the value was drawn: " + in.explain(e.Message)
 			res, err = nil, e
 		}
 	}()
@@ -53,6 +59,9 @@ func (in *Interp) forms(x ast.Expr, vals []xreflect.Value, types []xreflect.Type
 	var values []any
 	some := false
 	for i, v := range vals {
+		if i >= len(types) { // an untyped nil has no type
+			return &kernel.Result{}, nil
+		}
 		value := basereflect.ValueInterface(v)
 		some = some || value != nil
 		values = append(values, value)
@@ -128,6 +137,7 @@ func (in *Interp) text(value any, v xreflect.Value, t xreflect.Type) string {
 			s = fmt.Sprintf("%v", value)
 		}
 	}
+	s = strings.ReplaceAll(s, privatePrefix, "")
 	if len(s) > maxText {
 		s = strings.ToValidUTF8(s[:maxText], "") + fmt.Sprintf("… (%d bytes more)", len(s)-maxText)
 	}
@@ -147,13 +157,11 @@ func (in *Interp) emulated(v xreflect.Value, t xreflect.Type) (string, bool) {
 	if t == nil || t.Kind() == reflect.Interface || !t.Implements(in.stringer) {
 		return "", false
 	}
-	conv := in.ir.Comp.Converter(t, in.stringer)
-	if conv == nil {
-		return "", false
+	if t.Kind() == reflect.Pointer && v.IsNil() {
+		return "<nil>", true
 	}
-	s, ok := basereflect.ValueInterface(conv(v)).(fmt.Stringer)
-	if !ok {
-		return "", false
-	}
-	return s.String(), true
+	in.ir.DeclVar(valueName, t, v.Interface())
+	s, _ := in.ir.Eval1(valueName + ".String()")
+	text, ok := basereflect.ValueInterface(s).(string)
+	return text, ok
 }
