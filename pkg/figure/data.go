@@ -30,6 +30,16 @@ type Data struct {
 	// Units of the channels by name; channels without one are shown in SI base
 	// units of the record's model.
 	Units map[string]si.Unit
+
+	verbatim bool // names of inputs stand as they are written, because a formula has them
+}
+
+// called is how a figure calls an input or a measurand.
+func (d *Data) called(key string) string {
+	if d.verbatim {
+		return OneLine(key)
+	}
+	return words(key)
 }
 
 // FromRecord takes apart a record that was written with its rows, as

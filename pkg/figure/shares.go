@@ -73,7 +73,7 @@ func (d *Data) Shares(name string) (*Figure, error) {
 	}
 	sort.SliceStable(parts, func(a, b int) bool { return weight[parts[a]] > weight[parts[b]] })
 
-	title := "Share of the variance of " + words(m.Name)
+	title := "Share of the variance of " + d.called(m.Name)
 	s := newSheet(wide, title, d.Record.Title)
 	var sp spanner
 	sp.add(0)
@@ -84,7 +84,7 @@ func (d *Data) Shares(name string) (*Figure, error) {
 	// Names, then the bar, then the figure in percent.
 	nameW, partW := 0.0, 0.0
 	for _, b := range lines {
-		nameW = math.Max(nameW, width(fitted(words(b.Input), tickSize, false, 170), tickSize, false))
+		nameW = math.Max(nameW, width(fitted(d.called(b.Input), tickSize, false, 170), tickSize, false))
 	}
 	for _, p := range parts {
 		partW = math.Max(partW, width(fitted(words(p), tickSize, true, 90), tickSize, true))
@@ -124,7 +124,7 @@ func (d *Data) Shares(name string) (*Figure, error) {
 			if b.Share < 0 {
 				color = vermilion
 			}
-			draw(words(b.Input), percent(float64(b.Share)), float64(b.Share), color)
+			draw(d.called(b.Input), percent(float64(b.Share)), float64(b.Share), color)
 		}
 	}
 	if rest > 0 {
@@ -155,11 +155,11 @@ func (d *Data) Shares(name string) (*Figure, error) {
 	if sp.lo < 0 {
 		s.note("A negative share lowers the variance through a correlation.")
 	}
-	summary := fmt.Sprintf("Of the variance of %s, %s comes from %s", words(m.Name), percent(float64(lines[0].Share)), words(lines[0].Input))
+	summary := fmt.Sprintf("Of the variance of %s, %s comes from %s", d.called(m.Name), percent(float64(lines[0].Share)), d.called(lines[0].Input))
 	if len(lines) > 1 {
-		summary += fmt.Sprintf(" and %s from %s", percent(float64(lines[1].Share)), words(lines[1].Input))
+		summary += fmt.Sprintf(" and %s from %s", percent(float64(lines[1].Share)), d.called(lines[1].Input))
 	}
-	return s.finish("shares", title, "Share of the variance of "+words(m.Name)+" from each input, by part of the bench.", summary+"."), nil
+	return s.finish("shares", title, "Share of the variance of "+d.called(m.Name)+" from each input, by part of the bench.", summary+"."), nil
 }
 
 // percent writes a share with two significant digits, not below 0.01 %.

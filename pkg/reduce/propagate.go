@@ -61,11 +61,27 @@ type BudgetResult struct {
 	MonteCarlo *MonteCarlo `json:"monte_carlo,omitempty"`
 }
 
+// Measurand is the output in the form of a reduction's, for what reads those; its
+// budget is empty where the law can't be applied.
+func (o *BudgetResult) Measurand() Measurand {
+	unknown := Number(math.NaN())
+	m := Measurand{Name: o.Name, Doc: o.Formula, Unit: o.Unit, Value: unknown, U: unknown, DOF: unknown, K: unknown, Probability: unknown,
+		Interval: [2]Number{unknown, unknown}, Budget: []BudgetLine{}, MonteCarlo: o.MonteCarlo}
+	if l := o.Law; l != nil {
+		m.Value, m.U, m.DOF, m.K, m.Probability, m.Interval = l.Value, l.U, l.DOF, l.K, l.Probability, l.Interval
+		for _, b := range l.Budget {
+			m.Budget = append(m.Budget, b.BudgetLine)
+		}
+	}
+	return m
+}
+
 // LawRecord is the result of the law of propagation for one output.
 type LawRecord struct {
 	Value       Number       `json:"value"`
 	U           Number       `json:"u"`
-	DOF         Number       `json:"dof"`
+	DOF         Number       `json:"dof"`                   // null: infinite
+	DOFUnknown  bool         `json:"dof_unknown,omitempty"` // dof is null because none can be stated; a warning says why
 	K           Number       `json:"k"`
 	Probability Number       `json:"probability"`
 	Interval    [2]Number    `json:"interval"`
@@ -277,7 +293,7 @@ func (r *PropagationRecord) warn(output string, w error, outputs int) {
 
 func (h *propagationHead) law(l *gum.Law) *LawRecord {
 	out := &LawRecord{Value: Number(l.Value), U: Number(l.U), DOF: Number(l.DOF), K: Number(l.K), Probability: Number(l.Probability),
-		Interval: [2]Number{Number(l.Interval[0]), Number(l.Interval[1])}, Budget: []StatedLine{}}
+		Interval: [2]Number{Number(l.Interval[0]), Number(l.Interval[1])}, Budget: []StatedLine{}, DOFUnknown: math.IsNaN(l.DOF)}
 	if h.Second {
 		out.SecondOrder = &HigherTerm{FirstOrderU: Number(l.FirstOrderU), Shift: Number(l.Shift)}
 	}
