@@ -1,6 +1,7 @@
 package kernel
 
 import (
+	"bytes"
 	"context"
 	"encoding/json"
 	"fmt"
@@ -208,7 +209,9 @@ func (c *Client) collect(e *Execution, m *Message, clearLater *bool) (idle bool,
 			ID string `json:"display_id"`
 		} `json:"transient"`
 	}
-	if err := json.Unmarshal(m.Content, &b); err != nil {
+	d := json.NewDecoder(bytes.NewReader(m.Content))
+	d.UseNumber() // numbers in Data keep their spelling, and seeds all their digits
+	if err := d.Decode(&b); err != nil {
 		return false, fmt.Errorf("%s: %w", m.Header.Type, err)
 	}
 	add := func(o *Output) {
