@@ -208,7 +208,7 @@ func (c *Comparison) layOut() *report.Sheet {
 	if !m.Consistent {
 		consistent = "NOT consistent"
 	}
-	s.Fact("at "+report.Plain(100*m.Level, 2)+" %", consistent)
+	s.Fact("test at "+report.Plain(100*m.Level, 2)+" %", consistent)
 	if a.Subset != nil {
 		var out []string
 		for _, i := range a.Subset.Excluded {

@@ -14,6 +14,7 @@ import (
 	"gonum.org/v1/gonum/mat"
 
 	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/report"
 	"example.org/guardring/pkg/si"
 )
 
@@ -141,10 +142,19 @@ func frameColumns(b *bench.Bench) []frameColumn {
 
 // baseName is NAME of a header NAME/UNIT.
 func baseName(header string) string {
-	if k := strings.LastIndexByte(header, '/'); k > 0 {
+	if k := strings.IndexByte(header, '/'); k > 0 {
 		return header[:k]
 	}
 	return header
+}
+
+// unitText is UNIT of a header NAME/UNIT or NAME/(UNIT).
+func unitText(header string) string {
+	_, u, _ := strings.Cut(header, "/")
+	if in, ok := strings.CutPrefix(u, "("); ok && strings.HasSuffix(in, ")") && strings.Count(in, "(") == 0 {
+		return strings.TrimSuffix(in, ")")
+	}
+	return u
 }
 
 // find tells which column of a frame holds c, and the unit its header states.
@@ -160,7 +170,7 @@ func (c *frameColumn) find(names []string) (name string, unit si.Unit, err error
 			continue
 		}
 		if base := baseName(n); base != n && slices.Contains(c.names, base) {
-			u, err := si.ParseUnit(n[len(base)+1:])
+			u, err := si.ParseUnit(unitText(n))
 			if err != nil {
 				return "", u, fmt.Errorf("%s: column %q: %w", frameName, n, err)
 			}
@@ -241,6 +251,53 @@ func seriesText(s series.Series, convert func(float64) float64) []string {
 		}
 	}
 	return out
+}
+
+// Table shows a gota frame as tables of results look: the units of its headers
+// NAME/UNIT in a second row, numbers aligned at the point. It shows at most rows of
+// them, all without.
+func Table(df dataframe.DataFrame, rows ...int) *report.Table {
+	if df.Err != nil {
+		failf("the frame holds an error: %v", df.Err)
+	}
+	n := df.Nrow()
+	t := &report.Table{Columns: []report.Column{{Name: "row", Align: report.Right}}}
+	if len(rows) > 1 || len(rows) == 1 && rows[0] < 0 {
+		failf("one number of rows is due, not below zero")
+	}
+	if len(rows) == 1 && rows[0] < n {
+		t.Caption = fmt.Sprintf("The first %d of %d rows", rows[0], n)
+		n = rows[0]
+	}
+	var cells [][]string
+	for _, h := range df.Names() {
+		c := report.Column{Name: h}
+		if base := baseName(h); base != h {
+			if u, err := si.ParseUnit(unitText(h)); err == nil {
+				c.Name, c.Unit = base, unitName(u)
+			}
+		}
+		s := df.Col(h)
+		if s.Type() == series.Float || s.Type() == series.Int {
+			c.Align = report.Decimal
+		}
+		t.Columns = append(t.Columns, c)
+		cells = append(cells, seriesText(s, func(x float64) float64 { return x }))
+	}
+	for i := range n {
+		row := []string{strconv.Itoa(i + 1)}
+		for k := range cells {
+			x := cells[k][i]
+			if t.Columns[k+1].Align == report.Decimal {
+				if f, err := strconv.ParseFloat(x, 64); err == nil {
+					x = report.Plain(f, 8)
+				}
+			}
+			row = append(row, x)
+		}
+		t.Rows = append(t.Rows, row)
+	}
+	return t
 }
 
 // ReadFrame reads a CSV file into a gota frame: a column whose cells are all

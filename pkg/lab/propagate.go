@@ -3,6 +3,7 @@ package lab
 import (
 	"encoding/json"
 	"math"
+	"strings"
 
 	"gonum.org/v1/gonum/stat/distuv"
 
@@ -161,23 +162,39 @@ func (p *Propagation) histogram(o *gum.OutputResult, symbol string) (*figure.Fig
 	if o.Law != nil {
 		scale = o.Law.U
 	}
-	n := float64(mc.Trials - mc.Undefined)
-	var x, low, high []float64
-	for k, c := range h.Counts {
-		y := float64(c) / (n * h.Width) * scale
-		left := h.Low + float64(k)*h.Width
-		x = append(x, left, left+h.Width)
-		low, high = append(low, 0, 0), append(high, y, y)
-	}
+	x, y, most := steps(h, float64(mc.Trials-mc.Undefined), scale)
 	plot := figure.Plot{Name: "histogram-" + o.Name, Title: "Distribution of " + report.Words(o.Name), From: p.Propagation.Record.Title,
-		Caption: "Monte Carlo values as a histogram with the ends of their coverage interval, and the distribution that the law of propagation assumes.",
+		Caption: "Monte Carlo values as a histogram, their coverage interval as a band, and the distribution that the law of propagation assumes.",
 		X:       figure.Axis{Name: report.Words(o.Name), Unit: unit}, Y: figure.Axis{Name: "probability density × standard uncertainty", Unit: si.MustUnit("1"), Zero: true},
-		Bands:  []figure.Band{{Name: "Monte Carlo", X: x, Low: low, High: high}},
-		Levels: []figure.Level{{Name: "interval, Monte Carlo", At: mc.Interval[0], Upright: true}, {At: mc.Interval[1], Upright: true}}}
+		Series: []figure.Series{{Name: "Monte Carlo", X: x, Y: y, Line: true}},
+		Bands: []figure.Band{{Name: strings.ReplaceAll(si.Percent(mc.Probability), " ", "\u00a0") + " of the trials", X: mc.Interval[:], Low: []float64{0, 0},
+			High: []float64{1.05 * most, 1.05 * most}}}}
 	if l := o.Law; l != nil && l.U > 0 {
-		plot.Series = []figure.Series{lawCurve(l, x[0], x[len(x)-1])}
+		plot.Series = append(plot.Series, lawCurve(l, x[0], x[len(x)-1]))
 	}
 	return plot.Draw()
+}
+
+// mostBins is how many bins of a histogram are drawn.
+const mostBins = 80
+
+// steps is the outline of a histogram of n trials as densities times scale, its
+// bins joined until at most mostBins are left, and the highest density.
+func steps(h *gum.Histogram, n, scale float64) (x, y []float64, most float64) {
+	join := max(1, (len(h.Counts)+mostBins-1)/mostBins)
+	x, y = append(x, h.Low), append(y, 0)
+	for k := 0; k < len(h.Counts); k += join {
+		end := min(k+join, len(h.Counts))
+		sum := int64(0)
+		for _, c := range h.Counts[k:end] {
+			sum += c
+		}
+		d := float64(sum) / (n * h.Width * float64(end-k)) * scale
+		x = append(x, h.Low+float64(k)*h.Width, h.Low+float64(end)*h.Width)
+		y = append(y, d, d)
+		most = max(most, d)
+	}
+	return append(x, x[len(x)-1]), append(y, 0), most
 }
 
 // lawCurve is the density of the law, times u: a t scaled by u with the effective

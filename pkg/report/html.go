@@ -114,6 +114,10 @@ const (
 	barColour = "#3d8fc4" // between the light and the dark ground
 )
 
+// longTable is the number of rows from which a table in somebody else's page
+// scrolls by itself.
+const longTable = 40
+
 func (p *pager) table(t *Table) {
 	rows := t.cells()
 	b := &p.b
@@ -124,7 +128,11 @@ func (p *pager) table(t *Table) {
 		return ` style="` + s + `"`
 	}
 	if p.inline {
-		b.WriteString(`<div style="overflow-x:auto"><table style="border-collapse:collapse;border:0;border-top:` + heavyRule + `;border-bottom:` + heavyRule +
+		scroll := "overflow-x:auto"
+		if len(rows) > longTable {
+			scroll = "overflow:auto;max-height:36em"
+		}
+		b.WriteString(`<div style="` + scroll + `"><table style="border-collapse:collapse;border:0;border-top:` + heavyRule + `;border-bottom:` + heavyRule +
 			`;font-variant-numeric:tabular-nums lining-nums;margin:.4em 0;color:inherit;background:none">` + "\n")
 	} else {
 		b.WriteString("<div class=\"wide\"><table>\n")

@@ -22,6 +22,7 @@ func init() {
 			"ReadFrame":  r.ValueOf(p0_lab.ReadFrame),
 			"Reduce":     r.ValueOf(p0_lab.Reduce),
 			"ResultMIME": r.ValueOf(p0_lab.ResultMIME),
+			"Table":      r.ValueOf(p0_lab.Table),
 			"WithFrame":  r.ValueOf(p0_lab.WithFrame),
 		},
 		Types: map[string]r.Type{

@@ -25,6 +25,8 @@ func init() {
 			"PlateCharge":      r.ValueOf(&p0_model.PlateCharge).Elem(),
 			"Predictor":        r.ValueOf(p0_model.Predictor),
 			"Response":         r.ValueOf(p0_model.Response),
+			"SphereCharge":     r.ValueOf(&p0_model.SphereCharge).Elem(),
+			"SphereField":      r.ValueOf(&p0_model.SphereField).Elem(),
 			"SpherePair":       r.ValueOf(&p0_model.SpherePair).Elem(),
 			"SpherePlane":      r.ValueOf(&p0_model.SpherePlane).Elem(),
 		},
