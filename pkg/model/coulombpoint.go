@@ -23,7 +23,7 @@ var CoulombPoint = register(&Kind{
 	Title: "Coulomb's law with point charges",
 	Doc: "Two small charged bodies at a distance that is large against their size; the force, read in newtons, on a balance or by a torsion " +
 		"balance, gives the permittivity of the medium and Coulomb's constant. The exponent of the law can be tested.",
-	Channels: append(append(twoChargeChannels("", "centre distance of the bodies as read on the scale, at rest"),
+	Channels: append(append(twoChargeChannels(""),
 		forceChannels("repulsion positive")...), angleChannel),
 	Scalars: join(mediumScalars, chargeScalars, []Scalar{
 		{Table: "quantities", Name: "exponent", Doc: "exponent of the law; adjust = true tests it", Unit: si.MustUnit("1"), Default: gum.Exactly(2), Adjustable: true, Part: "law"},
@@ -51,13 +51,19 @@ func join(lists ...[]Scalar) []Scalar {
 	return all
 }
 
-// twoChargeChannels are the channels of a bench with two charges.
-func twoChargeChannels(only, distance string) []Channel {
+// Channels that the benches with two charges share.
+var (
+	distanceChannel = Channel{Name: "distance", Doc: "centre distance of the bodies as read on the scale, at rest", Unit: si.MustUnit("mm"), Role: Predictor, Positive: true}
+	elapsedChannel  = Channel{Name: "elapsed", Doc: "time from the measurement of the charges to the reading; without it they are those at time zero of the rows", Unit: si.MustUnit("s"), Role: Predictor, Optional: true}
+)
+
+// twoChargeChannels are the predictors of a bench with two charges.
+func twoChargeChannels(only string) []Channel {
 	return []Channel{
-		{Name: "distance", Doc: distance, Unit: si.MustUnit("mm"), Role: Predictor, Positive: true},
+		distanceChannel,
 		{Name: "charge_1", Doc: "charge of the first body with its sign" + only + "; not needed when quantities.charge_1 is stated", Unit: si.MustUnit("nC"), Role: Predictor, Optional: true},
 		{Name: "charge_2", Doc: "charge of the second body with its sign" + only + "; not needed when quantities.charge_2 is stated", Unit: si.MustUnit("nC"), Role: Predictor, Optional: true},
-		{Name: "elapsed", Doc: "time from the measurement of the charges to the reading; without it they are those at time zero of the rows", Unit: si.MustUnit("s"), Role: Predictor, Optional: true},
+		elapsedChannel,
 	}
 }
 
@@ -75,13 +81,16 @@ type twoCharges struct {
 	pTime        int
 	leak, byRow  bool // leakage; in the time of the row
 	iTau, iRatio int
+	share        bool // the second charge is iShare times the first
+	iShare       int
 }
 
 // newTwoCharges resolves where the charges of a bench come from; the predictors
-// begin with the distance.
-func newTwoCharges(k *Kind, s *Setup) (*twoCharges, error) {
+// begin with the distance. When the first charge is sought, the second may follow
+// from it.
+func newTwoCharges(k *Kind, s *Setup, seekFirst bool) (*twoCharges, error) {
 	c := &twoCharges{predictors: []string{"distance"}, leak: s.On["leakage"],
-		iTau: k.Scalar("corrections.leakage.time_constant"), iRatio: k.Scalar("corrections.leakage.rate_ratio")}
+		iTau: k.Scalar("corrections.leakage.time_constant"), iRatio: k.Scalar("corrections.leakage.rate_ratio"), iShare: k.Scalar("charge_ratio")}
 	for i, name := range []string{"charge_1", "charge_2"} {
 		c.pQ[i], c.iQ[i] = -1, k.Scalar(name)
 		switch given, channel := s.Given[name], s.Channels[name]; {
@@ -90,6 +99,9 @@ func newTwoCharges(k *Kind, s *Setup) (*twoCharges, error) {
 		case channel:
 			c.pQ[i] = len(c.predictors)
 			c.predictors = append(c.predictors, name)
+		case seekFirst && i == 0:
+		case seekFirst && !given:
+			c.share = true
 		case !given:
 			return nil, fmt.Errorf("quantities.%s: is missing; state the charge, or name its column in channels.%s", name, name)
 		case s.Scalars[c.iQ[i]] == 0:
@@ -109,9 +121,12 @@ func newTwoCharges(k *Kind, s *Setup) (*twoCharges, error) {
 func (c *twoCharges) jets(q, x []jet.Jet) (q1, q2 jet.Jet) {
 	v := [2]jet.Jet{}
 	for i := range v {
-		if c.pQ[i] >= 0 {
+		switch {
+		case c.pQ[i] >= 0:
 			v[i] = x[c.pQ[i]]
-		} else {
+		case i == 1 && c.share:
+			v[i] = v[0].Mul(q[c.iShare])
+		default:
 			v[i] = q[c.iQ[i]]
 		}
 	}
@@ -127,9 +142,12 @@ func (c *twoCharges) jets(q, x []jet.Jet) (q1, q2 jet.Jet) {
 func (c *twoCharges) values(q []float64, x [][]float64, i int) (q1, q2 float64) {
 	v := [2]float64{}
 	for n := range v {
-		if c.pQ[n] >= 0 {
+		switch {
+		case c.pQ[n] >= 0:
 			v[n] = x[c.pQ[n]][i]
-		} else {
+		case n == 1 && c.share:
+			v[n] = v[0] * q[c.iShare]
+		default:
 			v[n] = q[c.iQ[n]]
 		}
 	}
@@ -196,7 +214,7 @@ func prepareCoulombPoint(k *Kind, s *Setup) (*Model, error) {
 	if err != nil {
 		return nil, err
 	}
-	charges, err := newTwoCharges(k, s)
+	charges, err := newTwoCharges(k, s, false)
 	if err != nil {
 		return nil, err
 	}
@@ -322,7 +340,7 @@ func prepareCoulombPoint(k *Kind, s *Setup) (*Model, error) {
 		if err != nil {
 			return nil, err
 		}
-		if err := m.checkSigns(q, iEps, reading, x, y, func(i int) string {
+		if err := m.checkSigns(q, iEps, si.Eps0, reading, x, y, func(i int) string {
 			p, w := charges.values(q, x, i)
 			return likeness(p * w)
 		}); err != nil {
@@ -346,7 +364,7 @@ func prepareCoulombPoint(k *Kind, s *Setup) (*Model, error) {
 		return h
 	}
 	newAirMedium(k).measurands(m, s.On["air"])
-	if free {
+	if s.Adjusted["exponent"] {
 		m.Measurands = append(m.Measurands, Measurand{Name: "exponent", Doc: "exponent of the law", Unit: si.MustUnit("1"),
 			Value: func(q []jet.Jet) jet.Jet { return q[iN] }})
 	}
@@ -374,8 +392,11 @@ func likeness(product float64) string {
 // pairCauses are the marks in the residuals of a force between two charges.
 func pairCauses(iOff int, c *twoCharges) []Cause {
 	charge := func(q, x []float64, n int) float64 {
-		if c.pQ[n] >= 0 {
+		switch {
+		case c.pQ[n] >= 0:
 			return x[c.pQ[n]]
+		case n == 1 && c.share:
+			return q[c.iQ[0]] * q[c.iShare]
 		}
 		return q[c.iQ[n]]
 	}

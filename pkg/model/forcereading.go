@@ -233,7 +233,9 @@ func wrongSign(f, y []float64, factor, rest float64) int {
 // proportional to it (bodies at fixed potentials) or to its inverse (fixed
 // charges).
 func (m *Model) startPermittivity(q []float64, iEps int, proportional bool, r *forceReading, x [][]float64, y []float64) (float64, error) {
-	k := m.strengthAt(q, iEps, r, x, y)
+	w := append([]float64(nil), q...)
+	w[iEps] = si.Eps0
+	k := strength(m.predictAll(w, x, len(y)), y, r.at(q).rest)
 	if !(k > 0) || math.IsInf(k, 0) {
 		return 0, fmt.Errorf("readings of %s: on the whole they have not the sign that charges and potentials demand, or there is no force; check the signs of all channels, and the zero", r.response)
 	}
@@ -243,18 +245,12 @@ func (m *Model) startPermittivity(q []float64, iEps int, proportional bool, r *f
 	return si.Eps0 / k, nil
 }
 
-// strengthAt is strength with the electric constant for the permittivity.
-func (m *Model) strengthAt(q []float64, iEps int, r *forceReading, x [][]float64, y []float64) float64 {
-	w := append([]float64(nil), q...)
-	w[iEps] = si.Eps0
-	return strength(m.predictAll(w, x, len(y)), y, r.at(q).rest)
-}
-
 // checkSigns refuses a row at which a torsion balance has no equilibrium, or whose
-// force has clearly the wrong sign; what says what the row has.
-func (m *Model) checkSigns(q []float64, iEps int, r *forceReading, x [][]float64, y []float64, what func(i int) string) error {
+// force has clearly the wrong sign; predictions are made with scalar j at the
+// value v, and what says what the row has.
+func (m *Model) checkSigns(q []float64, j int, v float64, r *forceReading, x [][]float64, y []float64, what func(i int) string) error {
 	w := append([]float64(nil), q...)
-	w[iEps] = si.Eps0
+	w[j] = v
 	f := m.predictAll(w, x, len(y))
 	for i := range f {
 		if err := r.check(i, f[i]); err != nil {

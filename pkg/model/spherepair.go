@@ -5,6 +5,7 @@ import (
 	"math"
 
 	"example.org/guardring/pkg/field"
+	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/jet"
 	"example.org/guardring/pkg/si"
 )
@@ -24,7 +25,7 @@ var SpherePair = register(&Kind{
 	Title: "Force between two conducting spheres",
 	Doc: "Two conducting spheres, isolated with known charges or connected to known potentials; the force at various distances, read in newtons, " +
 		"on a balance or by a torsion balance, gives the permittivity of the medium and Coulomb's constant. Induced charge is part of the formula, however near the spheres.",
-	Channels: append(append(twoChargeChannels(" (isolated)", "centre distance of the spheres as read on the scale, at rest"),
+	Channels: append(append(twoChargeChannels(" (isolated)"),
 		Channel{Name: "voltage_1", Doc: "potential of the first sphere (connected)", Unit: si.MustUnit("kV"), Role: Predictor, Optional: true},
 		Channel{Name: "voltage_2", Doc: "potential of the second sphere (connected); without it both have that of the first", Unit: si.MustUnit("kV"), Role: Predictor, Optional: true}),
 		append(forceChannels("repulsion positive"), angleChannel)...),
@@ -32,7 +33,34 @@ var SpherePair = register(&Kind{
 	Corrections: append([]Correction{}, append(pairCorrections, Correction{Name: "air", Doc: "moist air of the medium, for the permittivity of vacuum"})...),
 	Options: []Option{torsionOption,
 		{Key: "connection", Doc: "isolated: the spheres keep their charges; connected: to sources that keep their potentials", Values: []string{isolated, connected}}},
-	Prepare: prepareSpherePair,
+	Prepare: func(k *Kind, s *Setup) (*Model, error) { return prepareSpherePair(k, s, false) },
+})
+
+// SphereCharge is the same bench of isolated spheres turned round: with the
+// permittivity known, the force gives their charge.
+var SphereCharge = register(&Kind{
+	Name:  "sphere-charge",
+	Title: "Charge from the force between two spheres",
+	Doc: "Two isolated conducting spheres in a medium of known permittivity; the force at various distances, read in newtons, on a balance or by a torsion " +
+		"balance, gives the charge of the first. The charge of the second is known, or a known multiple of the first's, as after a touch. For the permittivity from known charges see sphere-pair.",
+	Channels: []Channel{
+		distanceChannel,
+		{Name: "charge_2", Doc: "charge of the second sphere with its sign, when it is measured with each reading", Unit: si.MustUnit("nC"), Role: Predictor, Optional: true},
+		elapsedChannel,
+		{Name: "force", Doc: "force, repulsion positive", Unit: si.MustUnit("uN"), Role: Response},
+		{Name: "mass", Doc: "indication of the balance, conventional mass, of the sign of the force; turn it round by a gain of -1", Unit: si.MustUnit("mg"), Role: Response},
+		angleChannel,
+	},
+	Scalars: join([]Scalar{
+		{Table: "quantities", Name: "charge_1", Doc: "charge of the first sphere", Unit: si.MustUnit("nC"), Sought: true, Part: "result"},
+		{Table: "quantities", Name: "charge_2", Doc: "charge of the second sphere, when it is known and has no channel", Unit: si.MustUnit("nC"), Part: "charges"},
+		{Table: "quantities", Name: "charge_ratio", Doc: "charge of the second sphere over that of the first, when charge_2 is not stated: 1 after equal spheres have touched", Unit: si.MustUnit("1"), Default: gum.Exactly(1), Part: "charges"},
+		chargeScalars[2], electricConstant, temperature, pressure, humidity,
+		{Table: "quantities", Name: "relative_permittivity", Doc: "of the medium, in the place of the correction for air", Unit: si.MustUnit("1"), Default: gum.Exactly(1), Positive: true, Part: "medium"},
+	}, radiiScalars, leakScalars, torsionScalars, balanceScalars),
+	Corrections: append([]Correction{}, append(pairCorrections, Correction{Name: "air", Doc: "permittivity of moist air", Default: true})...),
+	Options:     []Option{torsionOption},
+	Prepare:     func(k *Kind, s *Setup) (*Model, error) { return prepareSpherePair(k, s, true) },
 })
 
 // radiiScalars are the radii of two spheres.
@@ -73,13 +101,38 @@ func newHeld(s *Setup) (predictors []string, h held, err error) {
 	return predictors, h, nil
 }
 
-func prepareSpherePair(k *Kind, s *Setup) (*Model, error) {
+// knownMedium is the permittivity of a medium that is not sought, as jets and as
+// plain numbers.
+func knownMedium(k *Kind, s *Setup) (jets func(q []jet.Jet) jet.Jet, plain func(q []float64) float64, err error) {
+	iE0, iRel := k.Scalar("electric_constant"), k.Scalar("relative_permittivity")
+	iT, iP, iH := k.Scalar("environment.temperature"), k.Scalar("environment.pressure"), k.Scalar("environment.humidity")
+	if !s.On["air"] {
+		return func(q []jet.Jet) jet.Jet { return q[iE0].Mul(q[iRel]) }, func(q []float64) float64 { return q[iE0] * q[iRel] }, nil
+	}
+	if s.Given["relative_permittivity"] {
+		return nil, nil, fmt.Errorf("quantities.relative_permittivity: the correction for air gives it already; take one of the two out")
+	}
+	jets = func(q []jet.Jet) jet.Jet { return q[iE0].Mul(field.AirPermittivityJet(q[iT], q[iP], q[iH])) }
+	plain = func(q []float64) float64 {
+		return q[iE0] * field.AirPermittivityJet(jet.Const(q[iT]), jet.Const(q[iP]), jet.Const(q[iH])).V
+	}
+	return jets, plain, nil
+}
+
+func prepareSpherePair(k *Kind, s *Setup, seekCharge bool) (*Model, error) {
 	iEps, iOff, iA, iB := k.Scalar("permittivity"), k.Scalar("distance_offset"), k.Scalar("radius_1"), k.Scalar("radius_2")
 	iT, iP, iH := k.Scalar("environment.temperature"), k.Scalar("environment.pressure"), k.Scalar("environment.humidity")
 	induction, fixedV := s.On["induction"], s.Options["connection"] == connected
 	out, err := newForceReading(k, s)
 	if err != nil {
 		return nil, err
+	}
+	iQ := k.Scalar("charge_1")
+	epsJet, epsValue := func(q []jet.Jet) jet.Jet { return q[iEps] }, func(q []float64) float64 { return q[iEps] }
+	if seekCharge {
+		if epsJet, epsValue, err = knownMedium(k, s); err != nil {
+			return nil, err
+		}
 	}
 	m := &Model{Response: out.response}
 	var charges *twoCharges
@@ -94,7 +147,7 @@ func prepareSpherePair(k *Kind, s *Setup) (*Model, error) {
 				return nil, fmt.Errorf("channels.%s: isolated spheres keep their charges, not their potentials; name the charges, or say connection = %q", name, connected)
 			}
 		}
-		if charges, err = newTwoCharges(k, s); err != nil {
+		if charges, err = newTwoCharges(k, s, seekCharge); err != nil {
 			return nil, err
 		}
 		m.Predictors, m.TimeDependent = charges.predictors, charges.byRow
@@ -106,9 +159,9 @@ func prepareSpherePair(k *Kind, s *Setup) (*Model, error) {
 		}
 		return charges.values(q, x, i)
 	}
-	valueLaw := func(q []float64, p, w, r float64) (f, df float64) {
+	valueLaw := func(q []float64, eps, p, w, r float64) (f, df float64) {
 		a, b := q[iA], q[iB]
-		k := 4 * math.Pi * q[iEps]
+		k := 4 * math.Pi * eps
 		if !fixedV {
 			k = 1 / k
 		}
@@ -133,11 +186,11 @@ func prepareSpherePair(k *Kind, s *Setup) (*Model, error) {
 		} else {
 			p, w = charges.jets(q, x)
 		}
+		a, b, eps := q[iA], q[iB], epsJet(q)
 		var plain []float64
 		if out.deflecting {
 			plain = values(q)
 		}
-		a, b, eps := q[iA], q[iB], q[iEps]
 		return out.row(q, x[0].Add(q[iOff]), func(r jet.Jet) jet.Jet {
 			switch {
 			case !induction && fixedV:
@@ -148,20 +201,22 @@ func prepareSpherePair(k *Kind, s *Setup) (*Model, error) {
 				return field.SphereForcePotentialsJet(eps, a, b, r.Sub(a).Sub(b), p, w)
 			}
 			return field.SphereForceChargesJet(eps, a, b, r.Sub(a).Sub(b), p, w)
-		}, func(r float64) (float64, float64) { return valueLaw(plain, p.V, w.V, r) })
+		}, func(r float64) (float64, float64) { return valueLaw(plain, eps.V, p.V, w.V, r) })
 	}
 	m.Block = func(q []float64, x [][]float64, lo, hi int, wrt []int, f []float64, jac [][]float64) bool {
 		for _, j := range wrt {
 			switch {
-			case j == iEps || j == iOff || j == out.iRest:
+			case j >= 0 && (j == iEps || j == iOff || j == out.iRest):
+			case seekCharge && j == iQ:
 			case charges != nil && j == charges.iTau && q[charges.iRatio] == 1:
 			default:
 				return false
 			}
 		}
 		v := out.at(q)
+		eps := epsValue(q)
 		var p, w float64
-		law := func(r float64) (float64, float64) { return valueLaw(q, p, w, r) }
+		law := func(r float64) (float64, float64) { return valueLaw(q, eps, p, w, r) }
 		for i := lo; i < hi; i++ {
 			p, w = source(q, x, i)
 			y := v.read(x[0][i]+q[iOff], law)
@@ -173,9 +228,17 @@ func prepareSpherePair(k *Kind, s *Setup) (*Model, error) {
 				var d float64
 				switch {
 				case j == iEps && fixedV:
-					d = y.byF * y.f / q[iEps]
+					d = y.byF * y.f / eps
 				case j == iEps:
-					d = -y.byF * y.f / q[iEps]
+					d = -y.byF * y.f / eps
+				case seekCharge && j == iQ && charges.share:
+					d = 2 * y.byF * y.f / q[iQ]
+				case seekCharge && j == iQ:
+					// A force of second degree in this charge: its slope is the exact
+					// difference of twice the charge and none.
+					f2, _ := valueLaw(q, eps, 2*p, w, y.dist)
+					f0, _ := valueLaw(q, eps, 0, w, y.dist)
+					d = y.byF * (f2 - f0) / (2 * q[iQ])
 				case j == iOff:
 					d = y.byDist
 				case j == out.iRest:
@@ -191,6 +254,13 @@ func prepareSpherePair(k *Kind, s *Setup) (*Model, error) {
 		return true
 	}
 	m.Start = func(q []float64, free []int, x [][]float64, y []float64) ([]float64, error) {
+		if seekCharge {
+			charge, err := startCharge(q, epsValue(q), charges, out, x, iOff, y)
+			if err != nil {
+				return nil, err
+			}
+			return startAt(q, free, iQ, charge), nil
+		}
 		eps, err := m.startPermittivity(q, iEps, fixedV, out, x, y)
 		if err != nil {
 			return nil, err
@@ -217,7 +287,17 @@ func prepareSpherePair(k *Kind, s *Setup) (*Model, error) {
 			}
 			warn = append(warn, more...)
 		}
-		if err := m.checkSigns(q, iEps, out, x, y, func(i int) string {
+		scaled, at := iEps, si.Eps0
+		if seekCharge {
+			charge, err := startCharge(q, epsValue(q), charges, out, x, iOff, y)
+			if err != nil {
+				return nil, err
+			}
+			q = append([]float64(nil), q...)
+			q[iQ] = charge
+			scaled, at = iQ, charge
+		}
+		if err := m.checkSigns(q, scaled, at, out, x, y, func(i int) string {
 			p, w := source(q, x, i)
 			if fixedV {
 				return fmt.Sprintf("spheres at %.4g V and %.4g V", p, w)
@@ -234,13 +314,43 @@ func prepareSpherePair(k *Kind, s *Setup) (*Model, error) {
 	m.Hazard = func(q []float64, x [][]float64) Hazard {
 		return pairHazard(q[iA], q[iB], airDensity(q[iT], q[iP]), x[0], q[iOff], fixedV, func(i int) (p, w float64) { return source(q, x, i) })
 	}
-	newAirMedium(k).measurands(m, s.On["air"])
+	if seekCharge {
+		m.Measurands = []Measurand{{Name: "charge_1", Doc: "charge of the first sphere, at the time of its measurement", Unit: si.MustUnit("nC"),
+			Value: func(q []jet.Jet) jet.Jet { return q[iQ] }}}
+	} else {
+		newAirMedium(k).measurands(m, s.On["air"])
+	}
 	if fixedV {
 		m.Causes = heldCauses(iOff, volts)
 	} else {
 		m.Causes = pairCauses(iOff, charges)
 	}
 	return m, nil
+}
+
+// startCharge is the first charge with which point charges come nearest to the
+// readings y.
+func startCharge(q []float64, eps float64, c *twoCharges, r *forceReading, x [][]float64, iOff int, y []float64) (float64, error) {
+	const unit = 1e-9
+	w := append([]float64(nil), q...)
+	w[c.iQ[0]] = unit
+	v := r.at(q)
+	f := make([]float64, len(y))
+	for i := range f {
+		p, s := c.values(w, x, i)
+		d := x[0][i] + q[iOff]
+		f[i] = v.rest + v.unit*p*s/(4*math.Pi*eps*d*d)
+	}
+	k := strength(f, y, v.rest)
+	switch {
+	case c.share && !(k > 0):
+		return 0, fmt.Errorf("readings of %s: on the whole they have not the sign that charges in the ratio charge_ratio demand (repulsion is positive); check the signs of the ratio and of the channel, and the zero", r.response)
+	case c.share:
+		return unit * math.Sqrt(k), nil
+	case k == 0 || math.IsNaN(k) || math.IsInf(k, 0):
+		return 0, fmt.Errorf("readings of %s: no force at any distance; there is nothing to find the charge from", r.response)
+	}
+	return unit * k, nil
 }
 
 // pairHazard is what two spheres at readings distance + offset hold, from their

@@ -194,7 +194,7 @@ func prepareSpherePlane(k *Kind, s *Setup) (*Model, error) {
 		if r := q[iReach]; r > 0 && r < planeReach*highest {
 			warn = append(warn, fmt.Errorf("quantities.plane_radius: the plane reaches %.3g heights of the sphere's centre (%.4g mm at the most); the image formula is for a wide plane, want %g or a stated uncertainty", r/highest, 1e3*highest, planeReach))
 		}
-		if err := m.checkSigns(q, iEps, out, x, y, func(int) string { return "a sphere and an earthed plane" }); err != nil {
+		if err := m.checkSigns(q, iEps, si.Eps0, out, x, y, func(int) string { return "a sphere and an earthed plane" }); err != nil {
 			return nil, err
 		}
 		if !fixedV {
