@@ -54,6 +54,15 @@
 // matters, searches from starts scaled by powers of ten follow in a fixed order,
 // and a warning says so.
 //
+// # Errors in the predictors
+//
+// FitEIV eliminates the true places of the points: with the condition of each
+// row linearised at its present place, w + Aδ against the variance s² = BVBᵀ of
+// the row, the step of the parameters solves a weighted problem of their number
+// alone, and the points follow (Britt and Luecke 1973; see eivState). Time and
+// memory are proportional to the rows, covariances of a row may be singular, and
+// explicit and implicit models are treated alike.
+//
 // # What can't be told
 //
 // The singular values of the whitened Jacobian with columns scaled to unit

@@ -62,7 +62,7 @@ type Result struct {
 	Standardised  []float64 // residual over the standard uncertainty of its reading
 	Leverage      []float64 // diagonal of the hat matrix of the whitened problem
 	Studentised   []float64 // residual over the standard uncertainty of the residual
-	CooksDistance []float64
+	CooksDistance []float64 // what leaving the reading out would move the estimates by, in their uncertainties squared per parameter
 	Weights       []float64 // 1/Σ_ii, the final weights, unit of Y to the power −2
 
 	Warnings []error // shown with the result, never hidden
