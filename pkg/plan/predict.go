@@ -81,6 +81,7 @@ func Predict(ctx context.Context, b *bench.Bench, t *Truth) (*Prediction, error)
 		}
 		p.Scenarios = append(p.Scenarios, out)
 	}
+	cell.Report(ctx, "plan", int64(len(scenarios)), int64(len(scenarios)))
 	return p, nil
 }
 
