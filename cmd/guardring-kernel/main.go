@@ -49,7 +49,7 @@ func serve(path string) error {
 		return err
 	}
 	stderr := os.Stderr // before cells get a stream of their own
-	if err := kernel.RegisterGuardedTransport(stderr); err != nil {
+	if err := kernel.RegisterGuardedTransport(conn, stderr); err != nil {
 		return err
 	}
 	sockets, err := prepareSockets(ConnectionInfo{

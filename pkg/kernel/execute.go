@@ -111,7 +111,7 @@ func (s *Server) begin(m *Message, stdin bool) {
 	if stdin {
 		s.askStdin = m
 	}
-	s.stopCell = false
+	s.stopCell, s.told = false, false
 }
 
 func (s *Server) end() {

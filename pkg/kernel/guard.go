@@ -7,6 +7,9 @@ import (
 	"fmt"
 	"io"
 	"net"
+	"slices"
+	"strconv"
+	"strings"
 	"sync"
 	"sync/atomic"
 	"time"
@@ -31,11 +34,16 @@ const (
 
 var registerOnce sync.Once
 
-// RegisterGuardedTransport makes GuardedTransport known to the socket library. Drops are counted on w.
-func RegisterGuardedTransport(w io.Writer) error {
-	var err error
+// RegisterGuardedTransport makes GuardedTransport known to the socket library for a kernel that listens at conn.
+// Drops are counted on w.
+func RegisterGuardedTransport(conn *Connection, w io.Writer) error {
+	err := errors.New("kernel: the guarded transport is registered already")
 	registerOnce.Do(func() {
-		err = zmq4.RegisterTransport(GuardedTransport, guardedTransport{tcp: transport.New("tcp"), drops: newDrops(w)})
+		routers := []string{"DEALER", "REQ", "ROUTER"}
+		err = zmq4.RegisterTransport(GuardedTransport, guardedTransport{tcp: transport.New("tcp"), drops: newDrops(w), peers: map[string][]string{
+			strconv.Itoa(conn.ShellPort): routers, strconv.Itoa(conn.ControlPort): routers, strconv.Itoa(conn.StdinPort): routers,
+			strconv.Itoa(conn.IOPubPort): {"SUB", "XSUB"}, strconv.Itoa(conn.HBPort): {"REQ", "DEALER"},
+		}})
 	})
 	return err
 }
@@ -43,6 +51,7 @@ func RegisterGuardedTransport(w io.Writer) error {
 type guardedTransport struct {
 	tcp   transport.Transport
 	drops *drops
+	peers map[string][]string // by port: the socket types that may connect
 }
 
 func (t guardedTransport) Dial(ctx context.Context, d transport.Dialer, addr string) (net.Conn, error) {
@@ -52,7 +61,7 @@ func (t guardedTransport) Dial(ctx context.Context, d transport.Dialer, addr str
 func (t guardedTransport) Addr(ep string) (string, error) { return t.tcp.Addr(ep) }
 
 func (t guardedTransport) Listen(ctx context.Context, addr string) (net.Listener, error) {
-	host, _, err := net.SplitHostPort(addr)
+	host, port, err := net.SplitHostPort(addr)
 	if err != nil {
 		return nil, err
 	}
@@ -63,7 +72,7 @@ func (t guardedTransport) Listen(ctx context.Context, addr string) (net.Listener
 	if err != nil {
 		return nil, err
 	}
-	g := &guardedListener{Listener: l, drops: t.drops, ready: make(chan net.Conn), done: make(chan struct{})}
+	g := &guardedListener{Listener: l, drops: t.drops, peers: t.peers[port], ready: make(chan net.Conn), done: make(chan struct{})}
 	go g.run()
 	return g, nil
 }
@@ -72,6 +81,7 @@ func (t guardedTransport) Listen(ctx context.Context, addr string) (net.Listener
 type guardedListener struct {
 	net.Listener
 	drops *drops
+	peers []string
 	ready chan net.Conn
 	done  chan struct{}
 	close sync.Once
@@ -111,7 +121,7 @@ func (l *guardedListener) run() {
 			continue
 		}
 		go func() {
-			g, err := guard(c, func() { l.open.Add(-1) }, func(reason error) { l.drops.add(where, reason) })
+			g, err := guard(c, l.peers, func() { l.open.Add(-1) }, func(reason error) { l.drops.add(where, reason) })
 			if err != nil {
 				l.drops.add(where, err)
 				return
@@ -128,7 +138,7 @@ func (l *guardedListener) run() {
 // guard shakes hands with the peer of c as far as a ZMTP server with NULL security does, checks what it says, and
 // returns a connection on which the library can do the same again without waiting: it reads the recorded bytes, and
 // its own greeting is not sent a second time.
-func guard(c net.Conn, onClose func(), drop func(error)) (net.Conn, error) {
+func guard(c net.Conn, peers []string, onClose func(), drop func(error)) (net.Conn, error) {
 	g := &guardedConn{Conn: c, onClose: onClose, drop: drop}
 	g.sent = sync.NewCond(&g.mu)
 	fail := func(err error) (net.Conn, error) {
@@ -161,9 +171,12 @@ func guard(c net.Conn, onClose func(), drop func(error)) (net.Conn, error) {
 	if string(record[12:17]) != "NULL\x00" || record[32] > 1 {
 		return fail(errors.New("handshake: a security mechanism other than NULL"))
 	}
-	ready, err := readReady(c)
+	ready, peer, err := readReady(c)
 	if err != nil {
 		return fail(fmt.Errorf("handshake: %w", err))
+	}
+	if !slices.Contains(peers, peer) {
+		return fail(fmt.Errorf("handshake: a socket of type %.20q, expected %s", peer, strings.Join(peers, ", ")))
 	}
 	if err := c.SetDeadline(time.Time{}); err != nil {
 		return fail(err)
@@ -173,11 +186,12 @@ func guard(c net.Conn, onClose func(), drop func(error)) (net.Conn, error) {
 	return g, nil
 }
 
-// readReady reads the peer's READY command and checks its properties, lengths above all.
-func readReady(r io.Reader) ([]byte, error) {
+// readReady reads the peer's READY command, checks its properties, lengths above all, and returns it with the peer's
+// socket type.
+func readReady(r io.Reader) (command []byte, socketType string, err error) {
 	head := make([]byte, 2, 9)
 	if _, err := io.ReadFull(r, head); err != nil {
-		return nil, err
+		return nil, "", err
 	}
 	size := uint64(head[1])
 	switch head[0] {
@@ -185,35 +199,39 @@ func readReady(r io.Reader) ([]byte, error) {
 	case 0x06:
 		head = head[:9]
 		if _, err := io.ReadFull(r, head[2:]); err != nil {
-			return nil, err
+			return nil, "", err
 		}
 		size = binary.BigEndian.Uint64(head[1:])
 	default:
-		return nil, errors.New("no command follows the greeting")
+		return nil, "", errors.New("no command follows the greeting")
 	}
 	if size > maxCommand {
-		return nil, fmt.Errorf("a command of %d bytes, at most %d are taken", size, maxCommand)
+		return nil, "", fmt.Errorf("a command of %d bytes, at most %d are taken", size, maxCommand)
 	}
 	body := make([]byte, size)
 	if _, err := io.ReadFull(r, body); err != nil {
-		return nil, err
+		return nil, "", err
 	}
 	if len(body) < 6 || body[0] != 5 || string(body[1:6]) != "READY" {
-		return nil, errors.New("the command is not READY")
+		return nil, "", errors.New("the command is not READY")
 	}
 	for p := body[6:]; len(p) > 0; {
 		n := int(p[0])
 		if n == 0 || len(p) < 1+n+4 {
-			return nil, errors.New("READY has a property that is cut off")
+			return nil, "", errors.New("READY has a property that is cut off")
 		}
+		name := string(p[1 : 1+n])
 		p = p[1+n:]
 		v := binary.BigEndian.Uint32(p)
 		if uint64(v) > uint64(len(p)-4) {
-			return nil, errors.New("READY has a value that is cut off")
+			return nil, "", errors.New("READY has a value that is cut off")
+		}
+		if strings.EqualFold(name, "Socket-Type") {
+			socketType = string(p[4 : 4+v])
 		}
 		p = p[4+v:]
 	}
-	return append(head, body...), nil
+	return append(head, body...), socketType, nil
 }
 
 // guardedConn checks frames as they pass.

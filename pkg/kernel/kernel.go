@@ -40,7 +40,10 @@ type Config struct {
 	AbandonAfter time.Duration
 }
 
-const maxQueue = 10000 // shell requests waiting
+const (
+	maxQueue = 10000           // shell requests waiting
+	stubborn = 5 * time.Second // after that long a cell that does not stop on an interrupt is told about
+)
 
 // Server is a running kernel.
 type Server struct {
@@ -62,6 +65,7 @@ type Server struct {
 	cellCtx   context.Context
 	running   bool
 	stopCell  bool // the running cell was interrupted
+	told      bool // that it does not stop was said
 	askStdin  *Message
 	cellCount int
 
@@ -309,6 +313,16 @@ func (s *Server) Interrupt() bool {
 	s.stopCell = true
 	s.cancel()
 	s.in.Interrupt()
+	run := s.cellCtx
+	time.AfterFunc(stubborn, func() {
+		s.mu.Lock()
+		goesOn := s.running && s.cellCtx == run && !s.told
+		s.told = s.told || goesOn
+		s.mu.Unlock()
+		if goesOn {
+			s.publishStream("stderr", "the cell goes on: it waits for a channel or a lock, or is in compiled code that can't be interrupted; only a restart of the kernel ends it\n")
+		}
+	})
 	return true
 }
 
