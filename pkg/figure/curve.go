@@ -2,6 +2,7 @@ package figure
 
 import (
 	"fmt"
+	"math"
 
 	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/si"
@@ -24,6 +25,9 @@ func OfFit(f *reduce.FormulaFit) *Data {
 // bandFactor is the half-width of the band about a fitted curve, in standard
 // uncertainties.
 const bandFactor = 2
+
+// bandFill is the colour of that band.
+const bandFill = "#f6d9c4"
 
 // Curve draws the fit of a formula. With one predictor: the readings with error bars
 // of one standard uncertainty in both directions, the fitted curve with a band of
@@ -64,46 +68,78 @@ func Curve(f *reduce.FormulaFit) (*Figure, error) {
 		lo[i], hi[i] = c.F[i]-bandFactor*c.U[i], c.F[i]+bandFactor*c.U[i]
 		band = band && finite(lo[i], hi[i]) && !(ya.Log && lo[i] <= 0)
 	}
-	// The error bars are those of the response alone where predictors have their own.
-	uy := make([]float64, r.N)
-	var ux []float64
-	if len(f.UX) == 1 && f.UX[0] != nil {
-		ux = f.UX[0]
-	}
-	for i := range uy {
-		uy[i] = r.U[i]
-		if !finite(uy[i]) {
-			uy = nil
-			break
+	var ux, uy []float64
+	if r.N <= 1000 {
+		if len(f.UX) == 1 {
+			ux = f.UX[0]
+		}
+		uy = r.U
+		for i := range x {
+			for _, v := range []float64{r.Response[i] - uy[i], r.Response[i] + uy[i]} {
+				if !ya.Log || v > 0 {
+					ys.add(v)
+				}
+			}
 		}
 	}
-	if r.N > 1000 {
-		uy, ux = nil, nil
-	}
-	top := Plot{X: xa, Y: ya, Series: []Series{
-		{Name: "readings", X: x, Y: r.Response, UX: ux, UY: uy, Points: true},
-		{Name: "fitted formula", X: c.X, Y: c.F, Line: true},
-	}, Caption: fmt.Sprintf("%s against %s with error bars of one standard uncertainty (often smaller than the marker), and the fitted formula", words(r.ResponseName), words(r.PredictorNames[0]))}
-	if band {
-		top.Bands = []Band{{Name: fmt.Sprintf("± %d standard uncertainties of the formula", bandFactor), X: c.X, Low: lo, High: hi}}
-		top.Caption += fmt.Sprintf(" with a band of ±%d standard uncertainties from those of its parameters", bandFactor)
-	}
-	top.Caption += "."
-	if ux != nil {
-		top.Caption += " Bars along the response hold the part of the predictor's uncertainty."
-	}
-	span := xs
-	flat := []float64{span.lo, span.hi}
-	foot := Plot{X: xa, Y: Axis{Name: residualName}, Height: 92,
-		Bands:   []Band{{X: flat, Low: []float64{-bandHalf, -bandHalf}, High: []float64{bandHalf, bandHalf}}},
-		Series:  []Series{{X: x, Y: r.Standardised, Points: true}},
-		Caption: "standardised residuals; the grey band is ±2."}
-	g, err := Stack("fit", "Fit and residuals", f.Record.Response+" = "+f.Record.Formula, []Plot{top, foot})
+	d := OfFit(f)
+	sx, err := newScale(xa, xs, 9)
 	if err != nil {
 		return nil, err
 	}
-	g.Summary = OfFit(f).residualSummary(r.N)
-	return g, nil
+	sy, err := newScale(ya, ys, 6)
+	if err != nil {
+		return nil, err
+	}
+	ra, rsp := d.residualAxis()
+	sr, err := newScale(ra, rsp, 5)
+	if err != nil {
+		return nil, err
+	}
+	title := "Fit and residuals"
+	s := newSheet(wide, title, d.Record.Title)
+	left := marginX + math.Max(leftMargin(sy), leftMargin(sr))
+	keys := []key{{look: lookOf(0), name: "readings, bars of one standard uncertainty", point: true}, {look: look{color: vermilion}, name: "fitted formula", line: true}}
+	if band {
+		keys = append(keys, key{name: fmt.Sprintf("±%d standard uncertainties of the formula", bandFactor), fill: bandFill})
+	}
+	s.keys(keys, left)
+	top := &panel{c: s.c, xs: sx, ys: sy}
+	top.at(left, s.y+8+labelSize+6, wide-marginX-left, 210)
+	foot := &panel{c: s.c, xs: again(sx), ys: sr}
+	foot.at(left, top.y+top.h+14+labelSize+6, top.w, 92)
+	foot.ground()
+	size := 2.6
+	if r.N > crowded {
+		size = 1.5
+	}
+	if band {
+		top.band(c.X, lo, hi, pen{fill: bandFill})
+	}
+	keep := thin(x, r.Response, sx, sy, nil, thinAbove)
+	s.count(len(keep), r.N)
+	top.bars(x, r.Response, ux, uy, keep, blue)
+	top.dots(x, r.Response, keep, circle, size, circle.pen(blue, false))
+	top.curve(c.X, c.F, pen{stroke: vermilion, width: 1.1})
+	rk := thin(x, r.Standardised, sx, sr, nil, thinAbove)
+	s.count(len(rk), r.N)
+	if len(rk) < r.N {
+		foot.extent(x, r.Standardised, rk, pale(blue))
+		foot.over()
+	}
+	foot.dots(x, r.Standardised, rk, circle, size, circle.pen(blue, false))
+	top.axes(frame{tag: "a", noX: true})
+	foot.axes(frame{tag: "b"})
+	s.y = foot.y + foot.h + below
+	caption := fmt.Sprintf("a, %s against %s with error bars of one standard uncertainty (often smaller than the marker), and the fitted formula", words(r.ResponseName), words(r.PredictorNames[0]))
+	if band {
+		caption += fmt.Sprintf(" with a band of ±%d standard uncertainties that come from its parameters", bandFactor)
+	}
+	caption += "."
+	if ux != nil {
+		caption += " Bars along the response hold the predictor's part too."
+	}
+	return s.finish("fit", title, caption+" b, standardised residuals; the grey band is ±2.", d.residualSummary(r.N)), nil
 }
 
 // AllOfFit draws every figure of a formula's fit.

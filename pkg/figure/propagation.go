@@ -236,6 +236,9 @@ func coarser(h gum.Histogram, most int) gum.Histogram {
 // mostJoint is the number of outputs that a scatter matrix shows.
 const mostJoint = 6
 
+// mostPoints is the number of trials drawn in each of its panels.
+const mostPoints = 2000
+
 // Joint draws the outputs of a propagation against each other, one panel for each
 // pair, with the joint coverage regions of JCGM 102:2011 7.7: the ellipse and the
 // rectangle that hold all outputs together with the coverage probability, seen along
@@ -301,11 +304,13 @@ func Joint(p *reduce.Propagation) (*Figure, error) {
 	w := math.Min((wide-marginX-left-gap*(m-1))/m, 300)
 	h := math.Min(0.8*w, 220)
 	y := s.y + 8 + labelSize + 6
+	drawn := 0
 	for i := 1; i < n; i++ {
 		for j := range i {
 			q := &panel{c: s.c, xs: again(scales[j]), ys: again(scales[i])}
 			q.at(left+float64(j)*(w+gap), y, w, h)
-			keep := thinCloud(r.Points[j], r.Points[i], 1500)
+			keep := thinCloud(r.Points[j], r.Points[i], mostPoints)
+			drawn = max(drawn, len(keep))
 			keep = slices.DeleteFunc(keep, func(t int) bool { return !q.inside(q.xs.pos(r.Points[j][t]), q.ys.pos(r.Points[i][t])) })
 			q.dots(r.Points[j], r.Points[i], keep, circle, 0.9, pen{fill: "#8fb8d4"})
 			for _, g := range r.Regions {
@@ -324,7 +329,7 @@ func Joint(p *reduce.Propagation) (*Figure, error) {
 		y += h + 8 + labelSize + 8
 	}
 	s.y = y - (8 + labelSize + 8) + below
-	s.note("%s of %s trials are drawn.", count(min(len(r.Points[0]), 1500)), count(int(r.Trials)))
+	s.note("%s of %s trials are drawn.", count(drawn), count(int(r.Trials)))
 	if n < all {
 		s.note("The first %d of %d outputs are drawn; the regions hold all of them together.", n, all)
 	}

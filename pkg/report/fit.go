@@ -55,16 +55,7 @@ func buildFit(rec *reduce.FitRecord, drawn *reduce.FormulaFit) *document {
 		d.show(t)
 	}
 	as := rec.Reduction()
-	d.goodness(as)
-	facts := []fact{{"noise of the readings", rec.Noise}}
-	if finite(rec.AICc) {
-		facts = append(facts, fact{"Akaike's criterion", minus(digits(float64(rec.AICc), 5)) + " (corrected for the number of readings; smaller is better, for the same readings)"})
-	}
-	for i := range d.blocks {
-		if b := &d.blocks[i]; b.facts != nil {
-			b.facts = append(b.facts, facts...)
-		}
-	}
+	d.fitGoodness(rec)
 	if drawn != nil && drawn.Rows.N > 1 {
 		d.head("Fit and residuals")
 		d.picture(figure.Curve(drawn))
@@ -74,6 +65,34 @@ func buildFit(rec *reduce.FitRecord, drawn *reduce.FormulaFit) *document {
 	d.secondOpinion(rec)
 	d.fitProvenance(rec.Inputs, rec.Guardring, rec.Run)
 	return d
+}
+
+// fitGoodness tells how well the formula describes the readings.
+func (d *document) fitGoodness(rec *reduce.FitRecord) {
+	f := &rec.Fit
+	d.head("Goodness of the fit")
+	facts := []fact{{"noise of the readings", rec.Noise}}
+	if f.ScaledByResiduals {
+		facts = append(facts, fact{"chi-squared", plural(f.DOF, "degree of freedom", "degrees of freedom") + "; it can't be tested, since the noise comes from the residuals"})
+	} else {
+		chi := fmt.Sprintf("%s with %s", digits(float64(f.ChiSquared), 4), plural(f.DOF, "degree of freedom", "degrees of freedom"))
+		if finite(f.PValue) {
+			chi += ", p = " + probability(f.PValue)
+			chi = strings.ReplaceAll(chi, "p = <", "p <")
+		}
+		facts = append(facts, fact{"chi-squared", chi}, fact{"Birge ratio", digits(float64(f.BirgeRatio), 3) + " (nothing has been rescaled by it)"})
+	}
+	if finite(f.ResidualStandardDeviation) {
+		facts = append(facts, fact{"residual standard deviation", one(f.ResidualStandardDeviation, f.ResponseUnit, 3)})
+	}
+	if finite(f.Condition) && f.Condition > 0 {
+		facts = append(facts, fact{"condition number", digits(float64(f.Condition), 2)})
+	}
+	if finite(rec.AICc) {
+		facts = append(facts, fact{"Akaike's criterion", minus(digits(float64(rec.AICc), 5)) + " (corrected for few readings; of formulas for the same readings the smaller is better)"})
+	}
+	facts = append(facts, fact{"search", f.Status + " after " + plural(f.Iterations, "step", "steps") + because(f.Reason)})
+	d.list(facts)
 }
 
 func fitSubtitle(rec *reduce.FitRecord) string {

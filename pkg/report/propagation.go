@@ -361,6 +361,12 @@ func (d *document) jointly(rec *reduce.PropagationRecord, drawn *reduce.Propagat
 	}
 	t.Caption = "Correlation of the outputs"
 	d.show(t)
+	for i := range n {
+		if !finite(rec.Correlation[i][i]) {
+			d.say("An unknown correlation is that of trials without a standard deviation; without trials the law's is stated.")
+			break
+		}
+	}
 	for _, g := range rec.Regions {
 		prob := strings.ReplaceAll(si.Percent(float64(g.Probability)), " ", nbsp)
 		switch g.Kind {
