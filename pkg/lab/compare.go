@@ -62,7 +62,7 @@ func Compare(results ...any) *Comparison {
 			fail(err)
 			records = append(records, r)
 		default:
-			failf("a %T can't be compared: a *lab.Result or the file of a record is due", x)
+			failf("a value of type %T can't be compared: a *lab.Result or the file of a record is due", x)
 		}
 	}
 	a, err := assess.Compare(cell.Context(), records, s)

@@ -23,11 +23,11 @@ type FitSettings = reduce.FitSettings
 // parameters, the goodness of the fit, the tests of the residuals and the
 // warnings.
 type FormulaFit struct {
-	Fit *reduce.FormulaFit
+	// FormulaFit is the fit itself: its Record and its Rows.
+	FormulaFit *reduce.FormulaFit
 
-	record *reduce.Record // as tables and figures of results take it
-	sheet  *report.Sheet
-	json   json.RawMessage
+	sheet *report.Sheet
+	json  json.RawMessage
 }
 
 // Fit fits a formula to columns of a CSV file (its path) or of a gota frame. A
@@ -50,16 +50,12 @@ func Fit(what any, s FitSettings) *FormulaFit {
 		fail(err)
 		from, name = strings.NewReader(text), frameName
 	default:
-		failf("a %T can't be fitted: the path of a CSV file or a frame is due", what)
+		failf("a value of type %T can't be fitted: the path of a CSV file or a frame is due", what)
 	}
 	r, err := reduce.FitCSV(cell.Context(), from, name, s)
 	fail(err)
-	f := &FormulaFit{Fit: r}
-	rec := &r.Record
-	f.record = &reduce.Record{Format: rec.Format, Guardring: rec.Guardring, Title: rec.Response + " = " + rec.Formula, Run: rec.Run, Inputs: rec.Inputs,
-		Fit: rec.Fit, Diagnosis: rec.Diagnosis, Warnings: rec.Warnings}
-	f.sheet = report.Formula(f.record)
-	f.json, err = json.Marshal(rec)
+	f := &FormulaFit{FormulaFit: r, sheet: report.FitSheet(r, false)}
+	f.json, err = json.Marshal(&r.Record)
 	fail(err)
 	return f
 }
@@ -99,16 +95,17 @@ func (f *FormulaFit) SimpleRender() map[string]any {
 }
 
 // Record is the fit as it is written and compared.
-func (f *FormulaFit) Record() *reduce.FitRecord { return &f.Fit.Record }
+func (f *FormulaFit) Record() *reduce.FitRecord { return &f.FormulaFit.Record }
 
 // parameter finds a parameter by name.
 func (f *FormulaFit) parameter(name string) *reduce.Parameter {
 	var known []string
-	for i := range f.record.Fit.Parameters {
-		if p := &f.record.Fit.Parameters[i]; p.Name == name {
-			return p
+	ps := f.FormulaFit.Record.Fit.Parameters
+	for i := range ps {
+		if ps[i].Name == name {
+			return &ps[i]
 		}
-		known = append(known, f.record.Fit.Parameters[i].Name)
+		known = append(known, ps[i].Name)
 	}
 	fail(unknown("parameter", name, known))
 	return nil
@@ -120,24 +117,25 @@ func (f *FormulaFit) Value(name string) float64 { return float64(f.parameter(nam
 // U is the standard uncertainty of a parameter, SI.
 func (f *FormulaFit) U(name string) float64 { return float64(f.parameter(name).U) }
 
+// Parameters is the table of the estimates with their uncertainties.
+func (f *FormulaFit) Parameters() *report.Table { return report.FitParameters(f.Record()) }
+
 // Correlations tells the correlation coefficients of the parameters.
-func (f *FormulaFit) Correlations() *report.Sheet { return report.CorrelationSheet(f.record) }
+func (f *FormulaFit) Correlations() *report.Sheet {
+	return report.CorrelationSheet(f.Record().Reduction())
+}
 
 // Diagnosis tells the goodness of the fit and the tests of the residuals.
-func (f *FormulaFit) Diagnosis() *report.Sheet { return report.Diagnosis(f.record) }
+func (f *FormulaFit) Diagnosis() *report.Sheet { return report.Diagnosis(f.Record().Reduction()) }
 
-// data is what figures are drawn from.
-func (f *FormulaFit) data() *figure.Data {
-	d := &figure.Data{Record: f.record, Rows: &f.Fit.Rows, Units: f.Fit.Units}
-	for _, k := range f.Fit.Rows.Record {
-		d.Number = append(d.Number, k+1)
-	}
-	return d
-}
+// Warnings tells what a reader of the fit must know.
+func (f *FormulaFit) Warnings() *report.Sheet { return report.Warnings(f.Record().Reduction()) }
 
 // Curve draws the columns with the fitted formula over the standardised
 // residuals.
-func (f *FormulaFit) Curve() *figure.Figure { return figureOf(f.data().Fit()) }
+func (f *FormulaFit) Curve() *figure.Figure { return figureOf(figure.Curve(f.FormulaFit)) }
 
 // Residuals draws the standardised residuals four ways on one scale.
-func (f *FormulaFit) Residuals() *figure.Figure { return figureOf(f.data().Residuals()) }
+func (f *FormulaFit) Residuals() *figure.Figure {
+	return figureOf(figure.OfFit(f.FormulaFit).Residuals())
+}

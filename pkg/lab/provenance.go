@@ -30,12 +30,12 @@ func Provenance(of ...any) *report.Sheet {
 				rec = &reduce.Record{Title: p.Title, Guardring: p.Guardring, Run: p.Run, Inputs: p.Inputs}
 			}
 		case *FormulaFit:
-			if x != nil && x.Fit != nil {
-				rec = x.record
+			if x != nil && x.FormulaFit != nil {
+				rec = x.Record().Reduction()
 			}
 		case nil:
 		default:
-			failf("a %T has no record; a *lab.Result, *lab.Propagation or *lab.FormulaFit is due", x)
+			failf("a value of type %T has no record; a *lab.Result, *lab.Propagation or *lab.FormulaFit is due", x)
 		}
 		if rec == nil {
 			failf("result %d is nil", i+1)

@@ -72,7 +72,7 @@ func Reduce(what any, more ...any) *Result {
 			}
 			with, told = benchOf(m)
 		default:
-			failf("a %T is neither settings nor a bench", m)
+			failf("a value of type %T is neither settings nor a bench", m)
 		}
 	}
 	var b *Bench
@@ -91,7 +91,7 @@ func Reduce(what any, more ...any) *Result {
 		}
 		b = with.withFrame(w)
 	default:
-		failf("a %T can't be reduced: a *lab.Bench from lab.Open, the folder of a dataset, a *lab.Result, or a frame with its bench is due", what)
+		failf("a value of type %T can't be reduced: a *lab.Bench from lab.Open, the folder of a dataset, a *lab.Result, or a frame with its bench is due", what)
 	}
 	return run(b.Bench, s, told)
 }
@@ -113,7 +113,7 @@ func benchOf(x any) (b *Bench, told bool) {
 	case string:
 		return Open(x), false
 	}
-	failf("a %T is no bench", x)
+	failf("a value of type %T is no bench", x)
 	return nil, false
 }
 
@@ -285,6 +285,31 @@ func (r *Result) Corrections() *report.Sheet { return report.CorrectionSheet(&r.
 // Diagnosis tells the goodness of the fit, the tests of the residuals and what
 // the residuals point at.
 func (r *Result) Diagnosis() *report.Sheet { return report.Diagnosis(&r.Result.Record) }
+
+// Series tells what the bench states point by point, with what sets the points
+// apart from a straight line.
+func (r *Result) Series() *report.Sheet { return report.Series(&r.Result.Record) }
+
+// Curve draws what the bench states at every level, a correction factor against
+// the field, in its band of expanded uncertainty. A bench with several ranges has
+// a figure for each: Curve(1), Curve(2) …; without a number, the first.
+func (r *Result) Curve(number ...int) *figure.Figure {
+	all, err := figure.Curves(r.Result)
+	fail(err)
+	n := 1
+	if len(number) > 0 {
+		n = number[0]
+	}
+	switch {
+	case len(number) > 1:
+		failf("%d numbers are given; one is due", len(number))
+	case len(all) == 0:
+		failf("a bench of kind %s states no result point by point", r.Result.Record.Model)
+	case n < 1 || n > len(all):
+		failf("there is no curve %d; they are numbered from 1 to %d", n, len(all))
+	}
+	return all[n-1]
+}
 
 // Warnings tells what a reader of the result must know.
 func (r *Result) Warnings() *report.Sheet { return report.Warnings(&r.Result.Record) }

@@ -49,23 +49,43 @@ func Summary(rec *reduce.Record, withCautions bool) *Sheet {
 		s.d.head("Uncertainty budget of the " + words(rec.Measurands[0].Name))
 		s.d.show(Budget(&rec.Measurands[0]))
 	}
-	s.d.monteCarlo(rec)
+	if t := MonteCarlo(rec.Measurands); t != nil {
+		s.d.head("Monte Carlo check of the whole chain")
+		s.d.show(t)
+	} else {
+		s.d.monteCarlo(rec)
+	}
 	return s
 }
 
-// Formula tells the fit of a formula at a glance: parameters, goodness of the
-// fit, correlations, tests of the residuals, warnings.
-func Formula(rec *reduce.Record) *Sheet {
-	s := New(rec.Title, subtitle(rec))
-	if rec.Fit.Status != "converged" {
-		s.Notice("The fit has not converged (" + rec.Fit.Status + because(rec.Fit.Reason) + "); these numbers are where it stopped.")
+// MonteCarlo is the table of measurands by trials of the whole chain: value,
+// standard uncertainty, coverage interval, how far its ends lie from those of the
+// law, and how far they may (JCGM 101 clause 8); nil without trials.
+func MonteCarlo(ms []reduce.Measurand) *Table {
+	t := &Table{Columns: []Column{{Name: "measurand", Most: 44}, {Name: "trials", Align: Right}, {Name: "value", Align: Decimal}, {Name: "u", Align: Decimal},
+		{Name: "from", Align: Decimal}, {Name: "to", Align: Decimal}, {Name: "unit", Close: true}, {Name: "ends off by", Align: Right}, {Name: "and", Align: Right}, {Name: "allowed", Align: Right}, {Name: "the law is"}}}
+	for i := range ms {
+		m := &ms[i]
+		mc := m.MonteCarlo
+		if mc == nil {
+			continue
+		}
+		u := display(math.Max(math.Abs(float64(m.Value)), float64(m.U)), m.Unit)
+		end := func(x reduce.Number) string {
+			v, _ := si.Round(u.FromSI(float64(x)), u.DeltaFromSI(float64(mc.U)))
+			return rounded(v)
+		}
+		verdict := "confirmed"
+		if !mc.Agrees {
+			verdict = "NOT confirmed"
+		}
+		t.Rows = append(t.Rows, []string{words(m.Name), whole(mc.Trials - mc.Failed), end(mc.Value), uncertain(mc.U, u), end(mc.Interval[0]), end(mc.Interval[1]), unitText(u),
+			digits(u.DeltaFromSI(float64(mc.DLow)), 2), digits(u.DeltaFromSI(float64(mc.DHigh)), 2), digits(u.DeltaFromSI(float64(mc.Delta)), 2), verdict})
 	}
-	s.Notice(rec.Warnings...)
-	s.d.parameters(rec)
-	s.d.correlations(rec)
-	s.d.goodness(rec)
-	s.d.tests(rec)
-	return s
+	if len(t.Rows) == 0 {
+		return nil
+	}
+	return t
 }
 
 // Cautions adds the usual cautions of high-voltage work with what the bench
