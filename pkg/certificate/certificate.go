@@ -597,7 +597,11 @@ func spacings(b *bench.Bench) string {
 	if p := b.Spacing.Points; len(p) > 0 {
 		var at []string
 		for _, x := range p {
-			at = append(at, significant(ch.Unit.FromSI(x), 6))
+			t := significant(ch.Unit.FromSI(x), 6)
+			if strings.Contains(t, ".") {
+				t = strings.TrimRight(strings.TrimRight(t, "0"), ".")
+			}
+			at = append(at, t)
 		}
 		text += "; measured at " + strings.Join(at, ", ") + " " + unitText(ch.Unit)
 	}
@@ -614,10 +618,26 @@ func deviations(w bench.Work) []string {
 	return out
 }
 
-// draw makes the figures: the result against the level, as found and as left
-// together, and the residuals.
+// draw makes the figures: the result against the level with the uncertainties
+// that the certificate states, as found and as left together, and the residuals.
 func (c *Certificate) draw(r *reduce.Result) error {
-	curves, err := figure.Curves(r)
+	data := figure.Of(r)
+	rec := r.Record
+	rec.Series = append([]reduce.Series(nil), rec.Series...)
+	for i := range rec.Series {
+		s := &rec.Series[i]
+		s.Points = append([]reduce.Point(nil), s.Points...)
+		for j := range s.Points {
+			p, q := &s.Points[j], &c.Results[i].Points[j].Value
+			if figure.Words(s.Result) != q.Name { // the other definition of the factor
+				p.Observed = 1 / p.Observed
+			}
+			p.Value, p.Expanded, p.K = reduce.Number(q.value), reduce.Number(q.expanded), reduce.Number(q.k)
+		}
+		s.Result = c.Definition.Label
+	}
+	data.Record = &rec
+	curves, err := data.Curves()
 	if err != nil {
 		return err
 	}

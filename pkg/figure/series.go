@@ -76,7 +76,7 @@ func (d *Data) curve(name string, series []*reduce.Series) (*Figure, error) {
 		phase, _ := phaseOf(s.Name)
 		label := phase
 		if label == "" {
-			label = "fit"
+			label = "points"
 		}
 		points := Series{Name: words(label), Look: i + 1}
 		// A level of zero has no factor: each side has its own line and band.

@@ -1,0 +1,178 @@
+package main
+
+import (
+	"bytes"
+	"crypto/sha256"
+	"encoding/hex"
+	"encoding/json"
+	"errors"
+	"fmt"
+	"io"
+	"os"
+	"path/filepath"
+
+	"github.com/spf13/cobra"
+
+	"example.org/guardring/pkg/assess"
+	"example.org/guardring/pkg/figure"
+	"example.org/guardring/pkg/reduce"
+	"example.org/guardring/pkg/report"
+)
+
+// assessOptions are the flags of the output of compare and history.
+type assessOptions struct {
+	html, figures string
+	json          bool
+}
+
+func (o *assessOptions) flags(cmd *cobra.Command) {
+	f := cmd.Flags()
+	f.StringVar(&o.html, "html", "", "write the report as one HTML `FILE`")
+	f.StringVar(&o.figures, "figures", "", "write the figure as SVG into folder `DIR`")
+	f.BoolVar(&o.json, "json", false, "print the assessment as JSON and nothing else")
+}
+
+// write makes every form before it writes any.
+func (o *assessOptions) write(stdout io.Writer, sheet *report.Sheet, fig *figure.Figure, doc any) error {
+	var files []outFile
+	var out bytes.Buffer
+	if o.json {
+		if err := writeJSON(&out, doc); err != nil {
+			return err
+		}
+	} else {
+		out.WriteString(sheet.String())
+	}
+	if o.figures != "" {
+		var svg bytes.Buffer
+		if err := fig.WriteSVG(&svg); err != nil {
+			return err
+		}
+		files = append(files, outFile{filepath.Join(o.figures, fig.Name+".svg"), svg.Bytes()})
+	}
+	if o.html != "" {
+		var page bytes.Buffer
+		if err := sheet.Head("Figure").Figure(fig).Page(&page); err != nil {
+			return err
+		}
+		files = append(files, outFile{o.html, page.Bytes()})
+	}
+	if err := writeFiles(files); err != nil {
+		return err
+	}
+	_, err := stdout.Write(out.Bytes())
+	return err
+}
+
+// comparison is the document of compare --json.
+type comparison struct {
+	Format     int               `json:"format"`
+	Guardring  string            `json:"guardring"`
+	Run        reduce.RunRecord  `json:"run"`
+	Inputs     []reduce.Input    `json:"inputs"`
+	Measurand  string            `json:"measurand"`
+	Agreement  *assess.Agreement `json:"agreement"`
+	Covariance [][]reduce.Number `json:"covariance"` // of the results, unit squared
+	Warnings   []string          `json:"warnings"`
+}
+
+func compareCommand() *cobra.Command {
+	var o assessOptions
+	var s assess.AgreementSettings
+	cmd := &cobra.Command{
+		Use:   "compare RESULT.json RESULT.json...",
+		Short: "Say whether the results of several laboratories agree",
+		Long: `Compare reads records that reduce --json wrote, finds the inputs that they have in
+common (the same input with the same source, such as one divider's certificate),
+and states the weighted mean with its consistency, the degrees of equivalence and
+E_n of each result and each pair, all with the covariance of what is common.
+
+Exit code 1 says that the results do not agree.`,
+		Example: "  guardring compare one.json two.json three.json --html comparison.html",
+		Args:    cobra.MinimumNArgs(2),
+		RunE: func(cmd *cobra.Command, paths []string) error {
+			var records []*reduce.Record
+			doc := comparison{Format: 1, Guardring: reduce.Version, Run: reduce.RunRecord{Command: "compare", Options: map[string]string{}}, Warnings: []string{}}
+			for _, p := range paths {
+				rec, in, err := readRecord(p)
+				if err != nil {
+					return err
+				}
+				for i := range doc.Inputs {
+					if doc.Inputs[i].SHA256 == in.SHA256 {
+						return fmt.Errorf("%s and %s are the same record; a laboratory is compared with others", doc.Inputs[i].File, p)
+					}
+				}
+				records, doc.Inputs = append(records, rec), append(doc.Inputs, in)
+			}
+			a, err := assess.Compare(cmd.Context(), records, s)
+			if err != nil {
+				return err
+			}
+			doc.Measurand = s.Measurand
+			if doc.Measurand == "" {
+				doc.Measurand = records[0].Measurands[0].Name
+			}
+			doc.Agreement = a
+			n := len(records)
+			for i := range n {
+				row := make([]reduce.Number, n)
+				for j := range n {
+					row[j] = reduce.Number(a.Shared.Covariance.At(i, j))
+				}
+				doc.Covariance = append(doc.Covariance, row)
+			}
+			for _, w := range a.Warnings {
+				doc.Warnings = append(doc.Warnings, w.Error())
+			}
+			fig, err := figure.Agreement(a, doc.Measurand)
+			if err != nil {
+				return err
+			}
+			if err := o.write(cmd.OutOrStdout(), report.Agreement(a, doc.Measurand), fig, &doc); err != nil {
+				return err
+			}
+			if !a.Agrees {
+				return differs{errors.New("the results do not agree")}
+			}
+			return nil
+		},
+	}
+	o.flags(cmd)
+	f := cmd.Flags()
+	f.StringVar(&s.Measurand, "measurand", "", "compare the measurand `NAME`; the first when not given")
+	f.StringArrayVar(&s.Shared, "shared", nil, "take the input or source `NAME` as common; repeatable; found in the budgets when not given")
+	f.BoolVar(&s.Independent, "independent", false, "take nothing as common")
+	return cmd
+}
+
+// largestRecord bounds a record that is read, in bytes.
+const largestRecord = 1 << 30
+
+// readRecord reads a record with its hash.
+func readRecord(path string) (*reduce.Record, reduce.Input, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, reduce.Input{}, err
+	}
+	defer f.Close()
+	data, err := io.ReadAll(io.LimitReader(f, largestRecord+1))
+	if err != nil {
+		return nil, reduce.Input{}, err
+	}
+	if len(data) > largestRecord {
+		return nil, reduce.Input{}, fmt.Errorf("%s: larger than 1 GiB", path)
+	}
+	rec := new(reduce.Record)
+	if err := json.Unmarshal(data, rec); err != nil {
+		return nil, reduce.Input{}, fmt.Errorf("%s: no record of reduce --json: %w", path, err)
+	}
+	if rec.Format != 1 {
+		return nil, reduce.Input{}, fmt.Errorf("%s: no record of reduce --json: format %d where 1 is due", path, rec.Format)
+	}
+	if len(rec.Measurands) == 0 {
+		return nil, reduce.Input{}, fmt.Errorf("%s: the record states no measurand (its fit is %s)", path, rec.Fit.Status)
+	}
+	sum := sha256.Sum256(data)
+	return rec, reduce.Input{File: filepath.ToSlash(path), SHA256: hex.EncodeToString(sum[:])}, nil
+}
