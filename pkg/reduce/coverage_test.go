@@ -46,6 +46,10 @@ func TestCoverageLaw(t *testing.T) {
 			continue
 		}
 		t.Run(w.name, func(t *testing.T) {
+			t.Parallel()
+			if testing.Short() && w.name != "attracted-disc" {
+				t.Skip("-short: one kind stands for all")
+			}
 			truth := w.trueMeasurand(t, 0)
 			const runs = 2000
 			in := 0
@@ -95,6 +99,10 @@ func TestCoverageLaw(t *testing.T) {
 func TestCoverageMonteCarlo(t *testing.T) {
 	for _, w := range worlds(t) {
 		t.Run(w.name, func(t *testing.T) {
+			t.Parallel()
+			if testing.Short() && w.name != "attracted-disc" {
+				t.Skip("-short: one kind stands for all")
+			}
 			truth := w.trueMeasurand(t, 0)
 			const runs = 400
 			in := 0

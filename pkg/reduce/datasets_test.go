@@ -114,7 +114,7 @@ func (w *world) draw(t testing.TB, seed uint64) *bench.Bench {
 	b.Scalars = append([]bench.Scalar(nil), w.b.Scalars...)
 	b.Channels = append([]bench.Channel(nil), w.b.Channels...)
 	truth := *w.truth
-	truth.Values, truth.Faults = map[string]float64{}, nil
+	truth.Values, truth.Faults, truth.Defects = map[string]float64{}, nil, nil
 	for k, v := range w.truth.Values {
 		truth.Values[k] = v
 	}
