@@ -161,6 +161,15 @@ func (p *fitPlan) variables(t *bench.Table, columns []string) error {
 		if slices.Contains(columns, n) && slices.Contains(names, n) {
 			return fmt.Errorf("%s is a column of %s, not a parameter: it takes no start, bounds or prior", n, t.File)
 		}
+		if !slices.Contains(columns, n) && !slices.Contains(names, n) {
+			var free []string
+			for _, m := range names {
+				if !slices.Contains(columns, m) {
+					free = append(free, m)
+				}
+			}
+			return fmt.Errorf("%s is no parameter of the formula%s", n, perhaps(n, free))
+		}
 	}
 	// Compiling with all names that are known first tells of the others, with
 	// their place in the formula.
@@ -176,7 +185,10 @@ func (p *fitPlan) variables(t *bench.Table, columns []string) error {
 			for _, n := range names {
 				if !slices.Contains(known, n) {
 					more := fmt.Sprintf("if it is a parameter, give it a start (%s=1)", n)
-					if e.Hint != "" {
+					switch {
+					case strings.HasSuffix(e.Hint, "?"):
+						more = e.Hint + " I" + more[1:]
+					case e.Hint != "":
 						more = e.Hint + "; " + more
 					}
 					return &formula.Error{Source: e.Source, Column: e.Column, Reason: e.Reason, Hint: more}
