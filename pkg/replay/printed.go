@@ -20,7 +20,7 @@ type wordOf struct {
 // printedNumber is a number as people and programs print it: sign (also U+2212),
 // decimal digits, the uncertainty of the last digits in brackets (GUM 7.2.2,
 // example 2), exponent.
-var printedNumber = regexp.MustCompile(`^([+\-−]?)(\d+(?:\.\d*)?|\.\d+)(?:\((\d+)\))?([eE][+\-]?\d+)?`)
+var printedNumber = regexp.MustCompile(`^([+\-−]?)(\d+(?:\.\d+)?|\.\d+)(?:\((\d+)\))?([eE][+\-]?\d+)?`)
 
 // superPower is a power of ten in superscripts after a number: ×10⁻¹².
 var superPower = regexp.MustCompile(`^\s?[×·]\s?10([⁺⁻]?[⁰¹²³⁴⁵⁶⁷⁸⁹]+)`)
@@ -164,7 +164,7 @@ func (p *printedLine) label(k int) string {
 	if len(words) > 6 {
 		words = words[len(words)-6:]
 	}
-	name := strings.TrimRight(strings.Join(words, " "), " =:(")
+	name := strings.Trim(strings.Join(words, " "), " =:;,.(")
 	n := 0
 	for _, w := range p.words[:k+1] {
 		if w.num {
