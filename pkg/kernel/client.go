@@ -64,8 +64,47 @@ type Client struct {
 	heardOne sync.Once
 }
 
-// Start starts a kernel and waits until it answers. The kernel ends when Shutdown or Kill is called.
+// Start starts a kernel and waits until it answers. The kernel ends when Shutdown or Kill is called. The ports are
+// free when they are chosen; when another program takes one before the kernel does, others are tried.
 func Start(ctx context.Context, l Launch) (*Client, error) {
+	for attempt := 0; ; attempt++ {
+		said := &tail{next: l.Stderr}
+		c, err := start(ctx, l, said)
+		if err == nil || attempt == 3 || ctx.Err() != nil || !said.contains("address already in use") {
+			if text := said.String(); err != nil && text != "" {
+				err = fmt.Errorf("%w; it said: %s", err, text)
+			}
+			return c, err
+		}
+	}
+}
+
+// tail passes on what a kernel says and keeps the beginning of it.
+type tail struct {
+	mu   sync.Mutex
+	next io.Writer
+	kept []byte
+}
+
+func (t *tail) Write(p []byte) (int, error) {
+	t.mu.Lock()
+	defer t.mu.Unlock()
+	t.kept = append(t.kept, p[:min(len(p), 4<<10-min(len(t.kept), 4<<10))]...)
+	if t.next == nil {
+		return len(p), nil
+	}
+	return t.next.Write(p)
+}
+
+func (t *tail) String() string {
+	t.mu.Lock()
+	defer t.mu.Unlock()
+	return strings.TrimSpace(string(t.kept))
+}
+
+func (t *tail) contains(text string) bool { return strings.Contains(t.String(), text) }
+
+func start(ctx context.Context, l Launch, stderr io.Writer) (*Client, error) {
 	if len(l.Argv) == 0 {
 		return nil, errors.New("kernel: an empty command")
 	}
@@ -94,7 +133,7 @@ func Start(ctx context.Context, l Launch) (*Client, error) {
 	cmd := exec.Command(argv[0], argv[1:]...)
 	cmd.Dir = l.Dir
 	cmd.Env = append(os.Environ(), l.Env...)
-	cmd.Stderr = l.Stderr
+	cmd.Stderr = stderr
 	if err := cmd.Start(); err != nil {
 		_ = os.RemoveAll(dir)
 		return nil, err

@@ -7,6 +7,7 @@ var Linked = []string{
 	"example.org/guardring/pkg/assess",
 	"example.org/guardring/pkg/bench",
 	"example.org/guardring/pkg/cell",
+	"example.org/guardring/pkg/certificate",
 	"example.org/guardring/pkg/field",
 	"example.org/guardring/pkg/figure",
 	"example.org/guardring/pkg/formula",

@@ -250,7 +250,8 @@ func (t *tabler) alias(p *types.Package) string {
 
 func (t *tabler) source() ([]byte, error) {
 	var b bytes.Buffer
-	b.WriteString(header + "package symbols\n\nimport (\n\tr \"reflect\"\n\n")
+	// Cells may use what a package has marked as deprecated, as any Go program may.
+	b.WriteString(header + "//lint:file-ignore SA1019 a table lists deprecated names too\n\npackage symbols\n\nimport (\n\tr \"reflect\"\n\n")
 	b.WriteString("\t\"github.com/gopherdata/gophernotes/imports\"\n")
 	paths := make([]string, 0, len(t.imports))
 	for path := range t.imports {

@@ -1,0 +1,50 @@
+package kernel
+
+import (
+	"context"
+	"encoding/json"
+	"os"
+	"path/filepath"
+	"runtime"
+	"strings"
+	"testing"
+	"time"
+)
+
+func TestStartFailures(t *testing.T) {
+	if runtime.GOOS == "windows" {
+		t.Skip("the stand-ins for a kernel are shell scripts")
+	}
+	ctx, cancel := context.WithTimeout(context.Background(), 20*time.Second)
+	defer cancel()
+	count := filepath.Join(t.TempDir(), "count")
+	for name, c := range map[string]struct {
+		argv []string
+		want string
+	}{
+		"nothing to run":   {nil, "empty command"},
+		"no such program":  {[]string{"/no/such/kernel"}, "no such file"},
+		"ends at once":     {[]string{"sh", "-c", "echo no licence >&2; exit 3"}, "exit status 3; it said: no licence"},
+		"port always used": {[]string{"sh", "-c", "echo x >> " + count + "; echo listen: address already in use >&2; exit 2"}, "address already in use"},
+	} {
+		if client, err := Start(ctx, Launch{Argv: c.argv}); client != nil || err == nil || !strings.Contains(err.Error(), c.want) {
+			t.Errorf("%s: %v, want an error with %q", name, err, c.want)
+		}
+	}
+	if data, err := os.ReadFile(count); err != nil || strings.Count(string(data), "x") != 4 {
+		t.Errorf("a used port was tried %d times, %v, want 4", strings.Count(string(data), "x"), err)
+	}
+}
+
+func TestOutputsAsNotebooksHoldThem(t *testing.T) {
+	for want, o := range map[string]Output{
+		`{"name":"stdout","output_type":"stream","text":"a"}`:                                          {Type: "stream", Name: "stdout", Text: "a"},
+		`{"ename":"E","evalue":"v","output_type":"error","traceback":["t"]}`:                           {Type: "error", EName: "E", EValue: "v", Traceback: []string{"t"}},
+		`{"data":{"text/plain":"1"},"execution_count":3,"metadata":{},"output_type":"execute_result"}`: {Type: "execute_result", Data: map[string]any{"text/plain": "1"}, ExecutionCount: 3},
+		`{"data":{"text/plain":"1"},"metadata":{"isolated":true},"output_type":"display_data"}`:        {Type: "display_data", Data: map[string]any{"text/plain": "1"}, Metadata: map[string]any{"isolated": true}},
+	} {
+		if got, err := json.Marshal(o); err != nil || string(got) != want {
+			t.Errorf("%s, %v, want %s", got, err, want)
+		}
+	}
+}
