@@ -159,7 +159,7 @@ func (r *FitRecord) Reduction() *Record {
 const longestHeader = 2 << 20
 
 // FitCSV reads the columns that s names from a CSV file and fits. name stands for
-// the file in messages and in the record.
+// the file in messages; the record holds its last element.
 func FitCSV(ctx context.Context, r io.Reader, name string, s FitSettings) (*FormulaFit, error) {
 	in := bufio.NewReaderSize(r, longestHeader)
 	// The header says which columns there are; it is read with the first record.

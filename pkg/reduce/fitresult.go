@@ -4,6 +4,8 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"path"
+	"path/filepath"
 	"slices"
 	"strconv"
 	"strings"
@@ -34,7 +36,7 @@ func (d *fitData) outcome(o *formulaOutcome, rows *Rows) *FormulaFit {
 	f := &FormulaFit{Units: map[string]si.Unit{}, UX: d.ux, Line: d.t.Line}
 	excluded := d.left
 	f.Record = FitRecord{Format: 1, Guardring: Version, Run: d.run(), Formula: d.prog.Source(), Response: d.response.name, Noise: d.noiseWords(),
-		Inputs: []Input{{File: d.t.File, SHA256: d.t.SHA256, Rows: d.t.N, Excluded: excluded}}, Warnings: []string{}}
+		Inputs: []Input{{File: d.recordName(), SHA256: d.t.SHA256, Rows: d.t.N, Excluded: excluded}}, Warnings: []string{}}
 	fit := &f.Record.Fit
 	*fit = Fit{Method: o.method, Status: o.status.String(), Reason: o.reason, ChiSquared: Number(o.chi2), DOF: o.dof, PValue: Number(o.p),
 		BirgeRatio: Number(o.birge), ResidualSumOfSquares: Number(o.rss), ResidualStandardDeviation: Number(o.sd),
@@ -157,6 +159,12 @@ func (d *fitData) noiseWords() string {
 		}
 	}
 	return s
+}
+
+// recordName is the file in the record: its name alone, so that the bytes don't
+// depend on where the folder lies.
+func (d *fitData) recordName() string {
+	return path.Base(filepath.ToSlash(d.t.File))
 }
 
 // run records the settings, so that the fit can be done again.
@@ -386,7 +394,7 @@ func (d *fitData) finish(f *FormulaFit) *FormulaFit {
 func (d *fitData) recordRows(f *FormulaFit) []RecordRow {
 	out := make([]RecordRow, f.Rows.N)
 	for i := range out {
-		row := RecordRow{Row: d.record[i] + 1, File: d.file, Line: d.t.Line(d.record[i]), Kind: "reading", Channels: map[string]Number{},
+		row := RecordRow{Row: d.record[i] + 1, File: d.recordName(), Line: d.t.Line(d.record[i]), Kind: "reading", Channels: map[string]Number{},
 			Response: Number(f.Rows.Response[i]), Fitted: Number(f.Rows.Fitted[i]), U: Number(f.Rows.U[i]), Residual: Number(f.Rows.Residual[i]),
 			Standardised: Number(f.Rows.Standardised[i]), Leverage: Number(f.Rows.Leverage[i]), Studentised: Number(f.Rows.Studentised[i])}
 		for k, name := range f.Rows.PredictorNames {

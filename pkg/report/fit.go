@@ -73,7 +73,8 @@ func (d *document) fitGoodness(rec *reduce.FitRecord) {
 	d.head("Goodness of the fit")
 	facts := []fact{{"noise of the readings", rec.Noise}}
 	if f.ScaledByResiduals {
-		facts = append(facts, fact{"chi-squared", plural(f.DOF, "degree of freedom", "degrees of freedom") + "; it can't be tested, since the noise comes from the residuals"})
+		facts = append(facts, fact{"chi-squared", plural(f.DOF, "degree of freedom", "degrees of freedom") + "; it can't be tested, since the noise comes from the residuals"},
+			fact{"Birge ratio", "not defined without stated noise"})
 	} else {
 		chi := fmt.Sprintf("%s with %s", digits(float64(f.ChiSquared), 4), plural(f.DOF, "degree of freedom", "degrees of freedom"))
 		if finite(f.PValue) {
