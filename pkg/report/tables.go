@@ -12,11 +12,18 @@ import (
 
 // The functions of this file give the parts of a report one by one.
 
-// part makes a sheet of what add writes, without its first heading.
+// part makes a sheet of what add writes; a heading that stands alone is left to
+// whoever shows the sheet.
 func part(add func(d *document)) *Sheet {
 	s := &Sheet{}
 	add(&s.d)
-	if len(s.d.blocks) > 0 && s.d.blocks[0].heading != "" {
+	headings := 0
+	for i := range s.d.blocks {
+		if s.d.blocks[i].heading != "" {
+			headings++
+		}
+	}
+	if headings == 1 && s.d.blocks[0].heading != "" {
 		s.d.blocks = s.d.blocks[1:]
 	}
 	return s
