@@ -86,6 +86,6 @@ that is singular or has not converged, or a failed write; 130 interrupted.`,
 		RunE:          func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
 	}
 	root.CompletionOptions.HiddenDefaultCmd = true
-	root.AddCommand(reduceCommand(), checkCommand(), newCommand(), certificateCommand(), compareCommand(), historyCommand(), simulateCommand(), planCommand(), fitCommand(), propagateCommand(), mergeCommand(), kernelCommand(), replayCommand(), packCommand(), versionCommand())
+	root.AddCommand(reduceCommand(), checkCommand(), newCommand(), certificateCommand(), compareCommand(), historyCommand(), simulateCommand(), planCommand(), strayfieldCommand(), fitCommand(), propagateCommand(), mergeCommand(), kernelCommand(), replayCommand(), packCommand(), versionCommand())
 	return root
 }
