@@ -191,7 +191,7 @@ func (b *Bench) records(most int) *report.Table {
 		t.Columns = append(t.Columns, report.Column{Name: "time", Unit: "s", Align: report.Decimal})
 	}
 	kinds, left := false, false
-	for i := range r.N {
+	for i := range n {
 		kinds = kinds || r.Kind[i] != bench.Reading
 		left = left || r.Excluded[i]
 	}

@@ -10,15 +10,25 @@
 //
 // # Verbs
 //
-// Open looks at a dataset, Reduce turns it into a result; Provenance says what
-// another laboratory needs to get the same numbers.
+//	Open        look at a dataset
+//	Reduce      turn readings into a result with its uncertainty budget
+//	Fit         fit any formula to columns of a CSV file or a frame
+//	Propagate   work out an uncertainty budget by the law and by Monte Carlo
+//	Plan        say before measuring what a design gives
+//	Certify     make the calibration certificate of a result
+//	Compare     say whether laboratories agree
+//	Provenance  say what another laboratory needs to get the same numbers
+//
+// Readings move to and from gota frames (Bench.Frame, WithFrame, Result.Frame,
+// ReadFrame, Table) and gonum matrices (Bench.Matrix, Bench.WithMatrix).
 //
 // # What a cell can end in
 //
 // Every value that a verb or a method returns has String for plain text and
 // SimpleRender for all its forms: text/plain, text/html and text/latex for
 // tables, image/svg+xml and image/png for figures, and for a result its record
-// as application/vnd.guardring.result+json (reduce.Record). What is shown is made
+// as application/vnd.guardring.result+json (what the
+// command prints with --json). What is shown is made
 // when the value is, so showing can't fail.
 //
 // # Failure

@@ -25,6 +25,19 @@ const (
 	disc     = datasets + "/attracted-disc"
 )
 
+const budget = datasets + "/plate-field-budget/budget.toml"
+
+// springFit is a fit whose answer is known: the data lie on a straight line with
+// the given noise.
+var springFit = FitSettings{Formula: "k*x + f0", Response: "f", Start: map[string]float64{"k": 10, "f0": 0}, Noise: "0.002 N"}
+
+func springData(t *testing.T) dataframe.DataFrame {
+	t.Helper()
+	x := []float64{0, 10, 20, 30, 40, 50}
+	f := []float64{101, 348, 603, 849, 1099, 1352}
+	return dataframe.New(series.New(x, series.Float, "x/mm"), series.New(f, series.Float, "f/mN"))
+}
+
 // renders are the values of the package that a cell can end in.
 type renders interface {
 	String() string
@@ -62,13 +75,25 @@ func everything(t *testing.T) (tables, figures map[string]renders) {
 	t.Helper()
 	b := Open(disc)
 	r := Reduce(b, Settings{Trials: 200})
+	quick := Settings{LawOnly: true}
+	meter := Reduce(datasets+"/field-meter", Settings{Trials: 100})
+	p := Propagate(budget, PropagateSettings{Trials: 20000})
+	d := Plan(b)
+	k := Compare(r.Named("A"), Reduce(datasets+"/plate-charge", quick).Named("B"), CompareSettings{Measurand: "vacuum_permittivity"})
+	f := Fit(springData(t), springFit)
+	c := Certify(meter)
 	return map[string]renders{
 			"bench": b, "readings": b.Readings(), "quantities": b.Quantities(), "result": r, "budget": r.Budget(),
 			"budget of": r.Budget("relative_permittivity"), "parameters": r.Parameters(), "correlations": r.Correlations(),
 			"corrections": r.Corrections(), "diagnosis": r.Diagnosis(), "warnings": r.Warnings(), "exclusions": r.Exclusions(),
-			"rows": r.Rows(), "provenance": Provenance(r),
+			"rows": r.Rows(), "provenance": Provenance(r, p, f), "series": meter.Series(), "frame": Table(b.Frame()), "first rows": Table(r.Frame(), 3),
+			"propagation": p, "output": p.Budget("factor"), "warnings of a budget": p.Warnings(), "plan": d, "budget of a plan": d.Budget(),
+			"comparison": k, "pairs": k.Pairs(), "shared": k.Shared(), "formula": f, "parameters of a formula": f.Parameters(),
+			"correlations of a formula": f.Correlations(), "diagnosis of a formula": f.Diagnosis(), "certificate": c, "points": c.Points("as-left, 20 kV/m"),
 		}, map[string]renders{
 			"fit": r.Fit(), "residuals": r.Residuals(), "order": r.Order(), "quantiles": r.Quantiles(), "shares": r.Shares(), "histogram": r.Histogram(),
+			"curve": meter.Curve(), "second curve": meter.Curve(2), "design": d.Figure(), "agreement": k.Figure(), "density": p.Histogram(), "budget shares": p.Shares("factor"),
+			"outputs": p.Pairs(), "formula": f.Curve(), "residuals of a formula": f.Residuals(),
 		}
 }
 
@@ -96,8 +121,8 @@ func TestForms(t *testing.T) {
 			t.Errorf("%s: the plain form is not String", name)
 		}
 		svg := text(t, forms, "image/svg+xml")
-		if !strings.HasPrefix(svg, "<svg ") || !strings.Contains(text(t, forms, "text/html"), svg) {
-			t.Errorf("%s: no SVG, or not in the HTML", name)
+		if html := text(t, forms, "text/html"); !strings.HasPrefix(svg, "<svg ") || !strings.Contains(html, svg) && !strings.Contains(html, "<img ") {
+			t.Errorf("%s: no SVG, or no drawing in the HTML", name)
 		}
 		raw, ok := forms["image/png"].([]byte)
 		if !ok {
@@ -296,6 +321,24 @@ func TestFailures(t *testing.T) {
 		{"no reason", func() { b.Exclude(3, "") }, []string{"reason"}},
 		{"histogram of the law", func() { r.Histogram() }, []string{"trials"}},
 		{"no file", func() { ReadFrame("nothing.csv") }, []string{"nothing.csv"}},
+		{"no budget", func() { Propagate("nothing.toml") }, []string{"nothing.toml"}},
+		{"settings twice", func() { Propagate(budget, PropagateSettings{}, PropagateSettings{}) }, []string{"twice"}},
+		{"output", func() { Propagate(budget, PropagateSettings{LawOnly: true}).Budget("feild") }, []string{`did you mean "field"?`}},
+		{"density of the law", func() { Propagate(budget, PropagateSettings{LawOnly: true}).Histogram() }, []string{"trials"}},
+		{"plan of nothing", func() { Plan("nowhere") }, []string{"nowhere"}},
+		{"plan of a number", func() { Plan(3) }, []string{"int"}},
+		{"comparison of one", func() { Compare(r) }, []string{"two"}},
+		{"comparison of a number", func() { Compare(r, 2) }, []string{"int"}},
+		{"comparison of no record", func() { Compare(r, disc+"/bench.toml") }, []string{"bench.toml", "no record"}},
+		{"comparison with nil", func() { Compare(r, (*Result)(nil)) }, []string{"result 2 is nil"}},
+		{"fit of a number", func() { Fit(1, springFit) }, []string{"int"}},
+		{"fit without a formula", func() { Fit(springData(t), FitSettings{}) }, []string{"ormula"}},
+		{"fit of no file", func() { Fit("nothing.csv", springFit) }, []string{"nothing.csv"}},
+		{"certificate without an order", func() { Certify(r) }, []string{"work."}},
+		{"certificate of a number", func() { Certify(1) }, []string{"int"}},
+		{"no curves", func() { r.Curve() }, []string{"attracted-disc", "point by point"}},
+		{"name of a file", func() { r.Save("result.doc") }, []string{".json, .html, .md, .tex or .txt"}},
+		{"provenance of a number", func() { Provenance(r, 3) }, []string{"int"}},
 		{"provenance of nothing", func() { Provenance(nil) }, []string{"nil"}},
 	} {
 		err := failure(t, c.do)
@@ -327,6 +370,87 @@ func TestFailEndsTheCell(t *testing.T) {
 	}()
 	if got == nil || !strings.Contains(got.Error(), "nowhere") {
 		t.Errorf("the host was told %v", got)
+	}
+}
+
+// A weighted straight line has its solution in closed form (computed
+// independently).
+func TestFit(t *testing.T) {
+	f := Fit(springData(t), springFit)
+	// Least squares of the six points by hand: slope Σ(x−x̄)(f−f̄)/Σ(x−x̄)², u = 2 mN/√Σ(x−x̄)².
+	if k := f.Value("k"); math.Abs(k-25.0114285714) > 1e-8 {
+		t.Errorf("k = %.10f", k)
+	}
+	if u := f.U("k"); math.Abs(u-2e-3/math.Sqrt(1.75e-3)) > 1e-9 {
+		t.Errorf("u(k) = %.10f", u)
+	}
+	path := filepath.Join(t.TempDir(), "spring.csv")
+	if err := os.WriteFile(path, []byte("x/mm,f/mN\n0,101\n10,348\n20,603\n30,849\n40,1099\n50,1352\n"), 0o666); err != nil {
+		t.Fatal(err)
+	}
+	if g := Fit(path, springFit); g.Value("k") != f.Value("k") || g.U("f0") != f.U("f0") {
+		t.Error("the file and the frame give other numbers")
+	}
+}
+
+// A design's uncertainty is that of the run that followed it (property: the
+// prediction uses the same settings and no reading).
+func TestPlan(t *testing.T) {
+	d, r := Plan(disc), Reduce(disc, Settings{LawOnly: true})
+	if ratio := d.U() / r.U(); math.Abs(ratio-1) > 0.05 {
+		t.Errorf("predicted over found %g", ratio)
+	}
+}
+
+// One-sided effects are where the law and Monte Carlo part: the mean of the field
+// rises by Δ²/9d² of it for a half-difference uniform within ±Δ (derived:
+// ⟨Δ²⟩ = Δ²/3, and the field rises by a third of the square over d²).
+func TestPropagate(t *testing.T) {
+	p := Propagate(budget, PropagateSettings{Trials: 200000})
+	m := p.Record().Outputs[0].MonteCarlo
+	want := math.Pow(0.9e-3/20.01355555e-3, 2) / 9
+	if got := float64(m.Value)/p.Value() - 1; math.Abs(got-want) > 4*p.U()/p.Value()/math.Sqrt(200000)+1e-7 {
+		t.Errorf("the mean rises by %.3e, expected %.3e", got, want)
+	}
+	if m.Agrees {
+		t.Error("the law is confirmed where it can't hold")
+	}
+}
+
+func TestSave(t *testing.T) {
+	r := Reduce(disc, Settings{LawOnly: true})
+	dir := t.TempDir()
+	for ext, want := range map[string]string{".json": "\"permittivity\"", ".html": "<!DOCTYPE html>", ".md": "permittivity", ".tex": "\\documentclass", ".txt": "permittivity"} {
+		path := r.Save(filepath.Join(dir, "result"+ext))
+		data, err := os.ReadFile(path)
+		if err != nil || !strings.Contains(string(data), want) {
+			t.Errorf("%s: %v, or does not hold %q", ext, err, want)
+		}
+	}
+	// A record that was saved is compared as the result is.
+	other := Reduce(datasets+"/attracted-disc-unguarded", Settings{LawOnly: true})
+	a, b := Compare(r, other), Compare(filepath.Join(dir, "result.json"), other)
+	if a.Agreement.Mean.Value != b.Agreement.Mean.Value {
+		t.Error("the saved record compares differently")
+	}
+	c := Certify(Reduce(datasets+"/field-meter", Settings{LawOnly: true}))
+	for ext, want := range map[string]string{".html": "<!DOCTYPE html>", ".pdf": "%PDF-", ".xml": "digitalCalibrationCertificate"} {
+		path := c.Save(filepath.Join(dir, "certificate"+ext))
+		data, err := os.ReadFile(path)
+		if err != nil || !strings.Contains(string(data), want) {
+			t.Errorf("%s: %v, or does not hold %q", ext, err, want)
+		}
+		if err := failure(t, func() { c.Save(path) }); !strings.Contains(err.Error(), "never overwritten") {
+			t.Error(err)
+		}
+	}
+}
+
+func TestNamed(t *testing.T) {
+	r := Reduce(disc, Settings{LawOnly: true})
+	n := r.Named("Laboratory A")
+	if n.Record().Title != "Laboratory A" || r.Record().Title == "Laboratory A" || n.Value() != r.Value() {
+		t.Error("another name is more than that")
 	}
 }
 
