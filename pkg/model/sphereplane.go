@@ -41,9 +41,10 @@ var SpherePlane = register(&Kind{
 	Prepare: prepareSpherePlane,
 })
 
-// planeReach is how many heights of the centre the plane should reach beyond the
-// foot of the sphere: at 10, 1/(2·10²) of the charge that a point charge induces
-// lies outside (√ law of its surface charge, derived).
+// planeReach is how many heights h of the sphere's centre the plane should reach
+// beyond its foot: what a point charge induces farther out than R pulls it with
+// (1 + R²/h²)⁻² of the whole force, 1e-4 at 10 (derived from the surface charge
+// ∝ (ρ² + h²)^(−3/2)).
 const planeReach = 10.0
 
 func prepareSpherePlane(k *Kind, s *Setup) (*Model, error) {

@@ -146,6 +146,7 @@ var named = []struct {
 	{Acceleration, "m/s²"}, {Density, "kg/m³"}, {Force, "N"}, {Pressure, "Pa"}, {Energy, "J"}, {Power, "W"},
 	{Charge, "C"}, {Voltage, "V"}, {Field, "V/m"}, {Capacitance, "F"}, {Permittivity, "F/m"},
 	{Resistance, "Ω"}, {Conductivity, "S/m"}, {Inductance, "H"}, {FluxDensity, "T"}, {SurfaceCharge, "C/m²"},
+	{Dimensionless.Div(Permittivity), "N m²/C²"}, // Coulomb's constant
 }
 
 // Unit returns the coherent SI unit of d under the name that people know it
