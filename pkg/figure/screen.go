@@ -5,6 +5,7 @@ import (
 	"cmp"
 	"image"
 	"image/color"
+	"image/draw"
 	"image/png"
 	"slices"
 )
@@ -19,15 +20,31 @@ const paletteSize = 64
 // palette.
 func paletted(src image.Image) *image.Paletted {
 	b := src.Bounds()
-	at := make([]uint32, 0, b.Dx()*b.Dy())
+	rgba, ok := src.(*image.RGBA)
+	if !ok || rgba.Stride != 4*b.Dx() {
+		rgba = image.NewRGBA(b)
+		draw.Draw(rgba, b, src, b.Min, draw.Src)
+	}
+	at := make([]uint32, b.Dx()*b.Dy())
 	count := map[uint32]int{}
-	for y := b.Min.Y; y < b.Max.Y; y++ {
-		for x := b.Min.X; x < b.Max.X; x++ {
-			r, g, bl, _ := src.At(x, y).RGBA()
-			c := r>>8<<16 | g>>8<<8 | bl>>8
-			at = append(at, c)
-			count[c]++
+	for i, last, n := 0, uint32(0), 0; ; i++ { // runs of one colour are counted at once
+		end := i == len(at)
+		c := last
+		if !end {
+			p := rgba.Pix[4*i : 4*i+3 : 4*i+3]
+			c = uint32(p[0])<<16 | uint32(p[1])<<8 | uint32(p[2])
+			at[i] = c
 		}
+		if end || c != last {
+			if n > 0 {
+				count[last] += n
+			}
+			last, n = c, 0
+		}
+		if end {
+			break
+		}
+		n++
 	}
 	colours := make([]uint32, 0, len(count))
 	for c := range count {
@@ -47,8 +64,12 @@ func paletted(src image.Image) *image.Paletted {
 		index[c] = nearest(kept, c)
 	}
 	out := image.NewPaletted(b, palette)
+	last, k := uint32(1<<24), uint8(0) // no colour
 	for i, c := range at {
-		out.Pix[i] = index[c]
+		if c != last {
+			last, k = c, index[c]
+		}
+		out.Pix[i] = k
 	}
 	return out
 }
