@@ -1,7 +1,9 @@
 package figure
 
 import (
+	"encoding/base64"
 	"fmt"
+	"html"
 	"io"
 )
 
@@ -52,9 +54,13 @@ func (f *Figure) String() string {
 
 func (f *Figure) alt() string { return f.String() }
 
+// inlineSVG is the most bytes of SVG that stand inline in the HTML form; a drawing
+// of more strokes than that stands there as its PNG.
+const inlineSVG = 64 << 10
+
 // SimpleRender gives the forms that a notebook can show: text, SVG and PNG, and
-// the SVG within HTML, because converters of notebooks clean an SVG of what they
-// don't know, which may be all of it.
+// the drawing within HTML, because converters of notebooks clean an SVG of what
+// they don't know, which may be all of it.
 func (f *Figure) SimpleRender() map[string]any {
 	svg := f.SVG()
 	forms := map[string]any{
@@ -69,5 +75,10 @@ func (f *Figure) SimpleRender() map[string]any {
 		return forms
 	}
 	forms["image/png"] = png
+	if len(svg) > inlineSVG {
+		w, _ := f.Size()
+		forms["text/html"] = fmt.Sprintf(`<div style="overflow-x:auto"><img alt="%s" style="width:%gpt" src="data:image/png;base64,%s"></div>`+"\n",
+			html.EscapeString(OneLine(f.alt())), w, base64.StdEncoding.EncodeToString(png))
+	}
 	return forms
 }
