@@ -53,9 +53,16 @@ func wordsOf(line string) []wordOf {
 			continue
 		}
 		r := []rune(rest[:min(len(rest), 4)])[0]
-		if rule(r) {
+		switch {
+		case rule(r):
 			flush()
-		} else {
+		case r == '<': // a tag begins
+			flush()
+			word.WriteRune(r)
+		case r == '>':
+			word.WriteRune(r)
+			flush()
+		default:
 			word.WriteRune(r)
 		}
 		before, prev = prev, r
@@ -228,7 +235,7 @@ func (c *Comparison) lines(place string, a, b *printedLine, slack float64) {
 		case x.num:
 			c.numbers(place, a.label(k), x.text, y.text, x.value, y.value, x.u, 0)
 		case x.text != y.text:
-			c.note("%s: %s is now %s", place, a.text, b.text)
+			c.versionNote(place, "%s is now %s", a.text, b.text)
 		}
 	}
 }
@@ -236,9 +243,11 @@ func (c *Comparison) lines(place string, a, b *printedLine, slack float64) {
 func (c *Comparison) differentLines(place string, a, b *printedLine) {
 	switch {
 	case a == nil && moduleLine(b):
-		c.note("%s: the tool now holds the module %s", place, b.text)
+		c.versionNote(place, "the tool now holds the module %s", b.text)
 	case b == nil && moduleLine(a):
-		c.note("%s: the tool no longer holds the module %s", place, a.text)
+		c.versionNote(place, "the tool no longer holds the module %s", a.text)
+	case moduleLine(a) && moduleLine(b):
+		c.versionNote(place, "the module %s is now %s", a.text, b.text)
 	case a == nil:
 		c.words(place, fmt.Sprintf("line %d", b.number), "(nothing)", b.text)
 	case b == nil:
@@ -248,16 +257,29 @@ func (c *Comparison) differentLines(place string, a, b *printedLine) {
 	}
 }
 
+// versionNote notes another build of the tool. The forms in HTML and LaTeX say
+// again what the plain text of the same output says.
+func (c *Comparison) versionNote(place, format string, texts ...any) {
+	if strings.HasSuffix(place, ", text/html") || strings.HasSuffix(place, ", text/latex") {
+		return
+	}
+	for i := range texts {
+		texts[i] = strings.Join(strings.Fields(texts[i].(string)), " ")
+	}
+	c.note("%s: %s", place, fmt.Sprintf(format, texts...))
+}
+
 // versionText is a version, the sum of a module or a platform: what another build
 // of the tool may say without other numbers.
-var versionText = regexp.MustCompile(`^((go|v)\d+\.\d+\S*|\d+\.\d+\.\d+[-+\w.]*[,;.]?|h1:\S+|[a-z0-9]+/(amd64|arm64|386|arm|riscv64|ppc64le|s390x|loong64))$`)
+var versionText = regexp.MustCompile(`^((go|v)\d+\.\d+\S*|\d+\.\d+\.\d+[-+\w.]*[,;.]?|h1:[A-Za-z0-9+/]{43}=|[a-z0-9]+/(amd64|arm64|386|arm|riscv64|ppc64le|s390x|loong64))$`)
 
 func version(s string) bool { return versionText.MatchString(s) }
 
+// moduleSum is the sum of a module as go.sum has it.
+var moduleSum = regexp.MustCompile(`\bh1:[A-Za-z0-9+/]{43}=`)
+
 // moduleLine reports a line that names a module with its sum.
-func moduleLine(p *printedLine) bool {
-	return p != nil && len(p.words) > 0 && strings.HasPrefix(p.words[len(p.words)-1].text, "h1:")
-}
+func moduleLine(p *printedLine) bool { return p != nil && moduleSum.MatchString(p.text) }
 
 // align pairs lines: those with the same words first, in order, then what stands
 // between them one by one.

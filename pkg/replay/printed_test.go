@@ -94,11 +94,17 @@ func TestPrinted(t *testing.T) {
 
 // TestVersionsAreNotes: another build of the tool is told, and is no difference.
 func TestVersionsAreNotes(t *testing.T) {
-	a := "guardring 0.1.0\nGo go1.26.8 for linux/amd64\nx.org/a v1.0.0 h1:abc=\n"
-	b := "guardring 0.2.0\nGo go1.27 for linux/arm64\nx.org/a v1.1.0 h1:def=\nx.org/b v0.1.0 h1:ghi=\n"
+	sum := func(letter string) string { return "h1:" + strings.Repeat(letter, 43) + "=" }
+	a := "guardring 0.1.0\nGo go1.26.8 for linux/amd64\nx.org/a v1.0.0 " + sum("a") + "\n"
+	b := "guardring 0.2.0\nGo go1.27 for linux/arm64\nx.org/a v1.1.0 " + sum("b") + "\nx.org/b v0.1.0 " + sum("c") + "\n"
 	c := compared(t, 0, func(c *Comparison) { c.printed("cell", a, b, 0) })
 	if c.Different != 0 || len(c.Notes) != 4 {
 		t.Errorf("%d different, notes %q", c.Different, c.Notes)
+	}
+	cells := strings.NewReplacer(" ", "</td><td>")
+	c = compared(t, 0, func(c *Comparison) { c.printed("cell, text/html", cells.Replace(a), cells.Replace(b), 0) })
+	if c.Different != 0 || len(c.Notes) != 0 {
+		t.Errorf("%+v, notes %q", c.Differences, c.Notes)
 	}
 }
 

@@ -8,8 +8,9 @@ import (
 	"strings"
 )
 
-// listed is how many differences of one place are printed; --json has all.
-const listed = 20
+// listed is how many differences are printed of each part of a record or output;
+// Differences has all.
+const listed = 12
 
 // WriteText prints what the comparison found.
 func (c *Comparison) WriteText(w io.Writer) error {
@@ -30,41 +31,56 @@ func (c *Comparison) text(b *strings.Builder) {
 	}
 	parts = append(parts, fmt.Sprintf("%d identical", c.Identical), fmt.Sprintf("%d within tolerance", c.Within), fmt.Sprintf("%d different", c.Different))
 	fmt.Fprintf(b, "  %s; tolerance %s of the number or its u\n", strings.Join(parts, ", "), strconv.FormatFloat(c.Tolerance, 'g', -1, 64))
-	place, shown, left := "\x00", 0, 0
-	more := func() {
-		if left > 0 {
-			fmt.Fprintf(b, "    and %d more\n", left)
-		}
-		shown, left = 0, 0
-	}
 	for _, within := range []bool{false, true} {
-		for _, d := range c.Differences {
-			if d.Within != within {
-				continue
-			}
-			at := d.Place
-			if within {
-				at += " (within tolerance)"
-			}
-			if at != place {
-				more()
-				place = at
-				if t := strings.TrimSpace(at); t != "" {
-					fmt.Fprintf(b, "  %s\n", t)
-				}
-			}
-			if shown == listed {
-				left++
-				continue
-			}
-			shown++
-			d.text(b)
-		}
+		c.list(b, within)
 	}
-	more()
 	for _, n := range c.Notes {
 		fmt.Fprintf(b, "  note: %s\n", n)
 	}
+}
+
+// list prints the differences of one sort, at most listed of each part of a record.
+func (c *Comparison) list(b *strings.Builder, within bool) {
+	place, section, shown, left := "", "", 0, 0
+	more := func() {
+		if left > 0 {
+			fmt.Fprintf(b, "    and %d more of %s\n", left, section)
+		}
+		shown, left = 0, 0
+	}
+	first := true
+	for i := range c.Differences {
+		d := &c.Differences[i]
+		if d.Within != within {
+			continue
+		}
+		of, _, _ := strings.Cut(d.Name, ".")
+		if first || d.Place != place || of != section {
+			more()
+			if head := headOf(d.Place, within); head != "" && (first || d.Place != place) {
+				fmt.Fprintf(b, "  %s\n", head)
+			}
+			first, place, section = false, d.Place, of
+		}
+		if shown == listed {
+			left++
+			continue
+		}
+		shown++
+		d.text(b)
+	}
+	more()
+}
+
+// headOf is the heading of the differences at one place.
+func headOf(place string, within bool) string {
+	switch {
+	case !within:
+		return place
+	case place == "":
+		return "within the tolerance"
+	}
+	return place + ", within the tolerance"
 }
 
 func (c *Comparison) verdict() string {
