@@ -17,6 +17,7 @@
 //	Plan        say before measuring what a design gives
 //	Certify     make the calibration certificate of a result
 //	Compare     say whether laboratories agree
+//	StrayField  find the field of charged fixtures at a meter's place
 //	Provenance  say what another laboratory needs to get the same numbers
 //
 // Readings move to and from gota frames (Bench.Frame, WithFrame, Result.Frame,

@@ -82,6 +82,7 @@ func everything(t *testing.T) (tables, figures map[string]renders) {
 	k := Compare(r.Named("A"), Reduce(datasets+"/plate-charge", quick).Named("B"), CompareSettings{Measurand: "vacuum_permittivity"})
 	f := Fit(springData(t), springFit)
 	c := Certify(meter)
+	stray := StrayField(datasets + "/strayfield/strayfield.toml")
 	return map[string]renders{
 			"bench": b, "readings": b.Readings(), "quantities": b.Quantities(), "result": r, "budget": r.Budget(),
 			"budget of": r.Budget("relative_permittivity"), "parameters": r.Parameters(), "correlations": r.Correlations(),
@@ -89,11 +90,11 @@ func everything(t *testing.T) (tables, figures map[string]renders) {
 			"rows": r.Rows(), "provenance": Provenance(r, p, f), "series": meter.Series(), "frame": Table(b.Frame()), "first rows": Table(r.Frame(), 3),
 			"propagation": p, "output": p.Budget("factor"), "warnings of a budget": p.Warnings(), "plan": d, "budget of a plan": d.Budget(),
 			"comparison": k, "pairs": k.Pairs(), "shared": k.Shared(), "formula": f, "parameters of a formula": f.Parameters(),
-			"correlations of a formula": f.Correlations(), "diagnosis of a formula": f.Diagnosis(), "certificate": c, "points": c.Points("as-left, 20 kV/m"),
+			"correlations of a formula": f.Correlations(), "diagnosis of a formula": f.Diagnosis(), "stray field": stray, "certificate": c, "points": c.Points("as-left, 20 kV/m"),
 		}, map[string]renders{
 			"fit": r.Fit(), "residuals": r.Residuals(), "order": r.Order(), "quantiles": r.Quantiles(), "shares": r.Shares(), "histogram": r.Histogram(),
 			"curve": meter.Curve(), "second curve": meter.Curve(2), "design": d.Figure(), "agreement": k.Figure(), "density": p.Histogram(), "budget shares": p.Shares("factor"),
-			"outputs": p.Pairs(), "formula": f.Curve(), "residuals of a formula": f.Residuals(),
+			"outputs": p.Pairs(), "field lines": stray.Figure(), "formula": f.Curve(), "residuals of a formula": f.Residuals(),
 		}
 }
 
@@ -336,6 +337,7 @@ func TestFailures(t *testing.T) {
 		{"fit of no file", func() { Fit("nothing.csv", springFit) }, []string{"nothing.csv"}},
 		{"certificate without an order", func() { Certify(r) }, []string{"work."}},
 		{"certificate of a number", func() { Certify(1) }, []string{"int"}},
+		{"no fixtures", func() { StrayField("nothing.toml") }, []string{"nothing.toml"}},
 		{"no curves", func() { r.Curve() }, []string{"attracted-disc", "point by point"}},
 		{"name of a file", func() { r.Save("result.doc") }, []string{".json, .html, .md, .tex or .txt"}},
 		{"provenance of a number", func() { Provenance(r, 3) }, []string{"int"}},

@@ -16,6 +16,7 @@ func init() {
 		Name: "figure",
 		Binds: map[string]r.Value{
 			"AddFonts":     r.ValueOf(p0_figure.AddFonts),
+			"Agreement":    r.ValueOf(p0_figure.Agreement),
 			"All":          r.ValueOf(p0_figure.All),
 			"AllOfBudget":  r.ValueOf(p0_figure.AllOfBudget),
 			"AllOfFit":     r.ValueOf(p0_figure.AllOfFit),
@@ -24,6 +25,7 @@ func init() {
 			"Curves":       r.ValueOf(p0_figure.Curves),
 			"Density":      r.ValueOf(p0_figure.Density),
 			"Design":       r.ValueOf(p0_figure.Design),
+			"Drift":        r.ValueOf(p0_figure.Drift),
 			"Fit":          r.ValueOf(p0_figure.Fit),
 			"FromRecord":   r.ValueOf(p0_figure.FromRecord),
 			"Histogram":    r.ValueOf(p0_figure.Histogram),
@@ -39,6 +41,7 @@ func init() {
 			"Residuals":    r.ValueOf(p0_figure.Residuals),
 			"Shares":       r.ValueOf(p0_figure.Shares),
 			"Stack":        r.ValueOf(p0_figure.Stack),
+			"StrayField":   r.ValueOf(p0_figure.StrayField),
 			"TextWidth":    r.ValueOf(p0_figure.TextWidth),
 			"Words":        r.ValueOf(p0_figure.Words),
 		},

@@ -25,6 +25,7 @@ func init() {
 			"ReadFrame":  r.ValueOf(p0_lab.ReadFrame),
 			"Reduce":     r.ValueOf(p0_lab.Reduce),
 			"ResultMIME": r.ValueOf(p0_lab.ResultMIME),
+			"StrayField": r.ValueOf(p0_lab.StrayField),
 			"Table":      r.ValueOf(p0_lab.Table),
 			"WithFrame":  r.ValueOf(p0_lab.WithFrame),
 		},
@@ -40,6 +41,7 @@ func init() {
 			"Propagation":       r.TypeOf((*p0_lab.Propagation)(nil)).Elem(),
 			"Result":            r.TypeOf((*p0_lab.Result)(nil)).Elem(),
 			"Settings":          r.TypeOf((*p0_lab.Settings)(nil)).Elem(),
+			"Stray":             r.TypeOf((*p0_lab.Stray)(nil)).Elem(),
 		},
 		Proxies: map[string]r.Type{},
 		Untypeds: map[string]string{

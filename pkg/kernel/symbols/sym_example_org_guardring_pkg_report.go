@@ -15,6 +15,7 @@ func init() {
 	imports.Packages["example.org/guardring/pkg/report"] = imports.Package{
 		Name: "report",
 		Binds: map[string]r.Value{
+			"Agreement":        r.ValueOf(p0_report.Agreement),
 			"Bar":              r.ValueOf(p0_report.Bar),
 			"Budget":           r.ValueOf(p0_report.Budget),
 			"BudgetTable":      r.ValueOf(p0_report.BudgetTable),
@@ -24,6 +25,7 @@ func init() {
 			"Correlations":     r.ValueOf(p0_report.Correlations),
 			"Decimal":          r.ValueOf(p0_report.Decimal),
 			"Diagnosis":        r.ValueOf(p0_report.Diagnosis),
+			"Drift":            r.ValueOf(p0_report.Drift),
 			"Effects":          r.ValueOf(p0_report.Effects),
 			"Exclusions":       r.ValueOf(p0_report.Exclusions),
 			"FitCorrelations":  r.ValueOf(p0_report.FitCorrelations),
@@ -54,6 +56,7 @@ func init() {
 			"Readings":         r.ValueOf(p0_report.Readings),
 			"Right":            r.ValueOf(p0_report.Right),
 			"Series":           r.ValueOf(p0_report.Series),
+			"StrayField":       r.ValueOf(p0_report.StrayField),
 			"Summary":          r.ValueOf(p0_report.Summary),
 			"Tests":            r.ValueOf(p0_report.Tests),
 			"Text":             r.ValueOf(p0_report.Text),
