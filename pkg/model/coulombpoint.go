@@ -358,6 +358,9 @@ func prepareCoulombPoint(k *Kind, s *Setup) (*Model, error) {
 			if !induction {
 				continue // potential, energy and field follow from radii that the bench does not state
 			}
+			v1, v2 := p/(4*math.Pi*si.Eps0*q[iA]), w/(4*math.Pi*si.Eps0*q[iB])
+			h.Voltage = math.Max(h.Voltage, math.Max(math.Max(math.Abs(v1), math.Abs(v2)), math.Abs(v1-v2)))
+			h.Energy = math.Max(h.Energy, 0.5*(p*v1+w*v2))
 			h.meetSphere(i, p, q[iA], delta, &worst)
 			h.meetSphere(i, w, q[iB], delta, &worst)
 		}

@@ -309,11 +309,9 @@ var mediumScalars = []Scalar{
 	electricConstant, temperature, pressure, humidity,
 }
 
-// meetSphere takes a sphere of radius a with charge q into the hazard: its own
-// surface field, judged against the breakdown of a uniform gap of one radius. The
+// meetSphere takes the surface field of a sphere of radius a with charge q into
+// the hazard, judged against the breakdown of a uniform gap of one radius. The
 // field falls off within that distance, so this is a warning and no more.
 func (h *Hazard) meetSphere(row int, q, a, delta float64, worst *float64) {
-	c := 4 * math.Pi * si.Eps0 * a
-	v := q / c
-	h.meet(row, v, v/a, a, c, delta, worst)
+	h.meet(row, 0, q/(4*math.Pi*si.Eps0*a*a), a, 0, delta, worst)
 }

@@ -245,6 +245,31 @@ func TestSphereCharge(t *testing.T) {
 	}
 }
 
+// TestForceHazards holds what the cautions say to the charge and energy of spheres
+// at a known potential or charge: q = 4πεaV alone, U = ½ΣqV.
+func TestForceHazards(t *testing.T) {
+	field := bench(t, "sphere-field", map[string][]float64{"distance": {0.4}, "voltage": {-1e4}, "indication": nil}).with("radius", 0.1)
+	h := field.model().Hazard(field.q, field.x(field.model()))
+	near(t, "voltage", h.Voltage, 1e4, 1e-12)
+	near(t, "charge", h.Charge, fourPiEps*0.1*1e4, 1e-12)
+	near(t, "energy", h.Energy, 0.5*fourPiEps*0.1*1e8, 1e-12)
+	near(t, "surface field", h.Field, 1e5, 1e-12)
+
+	plane := bench(t, "sphere-plane", map[string][]float64{"gap": {0.004, 0.04}, "voltage": {5e3, 8e3}, "force": nil}).option("connection", "connected").with("radius", 0.025)
+	h = plane.model().Hazard(plane.q, plane.x(plane.model()))
+	near(t, "voltage over a plane", h.Voltage, 8e3, 1e-12)
+
+	// Far apart two spheres hold what they hold alone.
+	far := pair(t, "connected", map[string][]float64{"distance": {50}, "voltage_1": {5e3}, "voltage_2": {-4e3}, "force": nil})
+	h = far.model().Hazard(far.q, far.x(far.model()))
+	near(t, "voltage between spheres", h.Voltage, 9e3, 1e-12)
+	near(t, "energy of spheres", h.Energy, 0.5*fourPiEps*0.02*(25e6+16e6), 2e-3)
+	point := points(t, []float64{0.2}, []float64{4e-9}, []float64{-3e-9}).on("induction").with("corrections.induction.radius_1", 0.01).with("corrections.induction.radius_2", 0.02)
+	h = point.model().Hazard(point.q, point.x(point.model()))
+	near(t, "charge of small bodies", h.Charge, 4e-9, 1e-12)
+	near(t, "energy of small bodies", h.Energy, 0.5*(16e-18/0.01+9e-18/0.02)/fourPiEps, 1e-12)
+}
+
 func TestForcesRefuse(t *testing.T) {
 	v := map[string][]float64{"distance": {0.05, 0.06}, "voltage_1": {3e3, 3e3}, "force": nil}
 	q := map[string][]float64{"distance": {0.05, 0.06}, "charge_1": {4e-9, 4e-9}, "charge_2": {3e-9, 3e-9}, "force": nil}

@@ -193,7 +193,7 @@ func prepareSphereField(k *Kind, s *Setup) (*Model, error) {
 		h, worst := Hazard{}, -1.0
 		delta := airDensity(q[iT], q[iP])
 		for i, v := range x[0] {
-			h.meetSphere(i, 4*math.Pi*si.Eps0*q[iA]*v, q[iA], delta, &worst)
+			h.meet(i, v, v/q[iA], q[iA], 4*math.Pi*si.Eps0*q[iA], delta, &worst)
 		}
 		return h
 	}

@@ -23,4 +23,9 @@
 //
 // The same bench, truth and seed give the same bytes, so the readings of a
 // dataset can be made again from its own folder.
+//
+// A stray field (StrayBench) is what charged fixtures, spheres, plate edges and
+// their images in an earthed plane make at the place where a meter is to stand: its
+// value with a budget, its part in the budget of the bench, and the places without
+// field where the meter may be zeroed.
 package plan
