@@ -57,8 +57,13 @@ func Curve(f *reduce.FormulaFit) (*Figure, error) {
 		ys.add(r.Fitted[i])
 	}
 	xa.Log = xs.lo > 0 && xs.hi/xs.lo > longAxis
+	// The curve may lead a little beyond the readings, not to a pole between them.
+	room := (ys.hi - ys.lo) / 4
+	low, high := ys.lo-room, ys.hi+room
 	for _, v := range f.Curve.F {
-		ys.add(v)
+		if v > low && v < high {
+			ys.add(v)
+		}
 	}
 	ya.Log = ys.lo > 0 && ys.hi/ys.lo > longAxis
 	c := f.Curve
@@ -118,6 +123,9 @@ func Curve(f *reduce.FormulaFit) (*Figure, error) {
 	}
 	keep := thin(x, r.Response, sx, sy, nil, thinAbove)
 	s.count(len(keep), r.N)
+	if len(keep) < r.N {
+		top.extent(x, r.Response, keep, pale(blue))
+	}
 	top.bars(x, r.Response, ux, uy, keep, blue)
 	top.dots(x, r.Response, keep, circle, size, circle.pen(blue, false))
 	top.curve(c.X, c.F, pen{stroke: vermilion, width: 1.1})
@@ -142,11 +150,22 @@ func Curve(f *reduce.FormulaFit) (*Figure, error) {
 	return s.finish("fit", title, caption+" b, standardised residuals; the grey band is ±2.", d.residualSummary(r.N)), nil
 }
 
-// AllOfFit draws every figure of a formula's fit.
+// AllOfFit draws every figure of a formula's fit; those of residuals need two that
+// are known.
 func AllOfFit(f *reduce.FormulaFit) ([]*Figure, error) {
 	d := OfFit(f)
 	var out []*Figure
-	for _, draw := range []func() (*Figure, error){func() (*Figure, error) { return Curve(f) }, d.Residuals, d.Order, d.Quantiles} {
+	draws := []func() (*Figure, error){func() (*Figure, error) { return Curve(f) }}
+	known := 0
+	for _, v := range f.Rows.Standardised {
+		if finite(v) {
+			known++
+		}
+	}
+	if known > 1 {
+		draws = append(draws, d.Residuals, d.Order, d.Quantiles)
+	}
+	for _, draw := range draws {
 		g, err := draw()
 		if err != nil {
 			return nil, err

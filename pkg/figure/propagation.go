@@ -1,6 +1,7 @@
 package figure
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -92,7 +93,7 @@ func Density(p *reduce.Propagation, name string) (*Figure, error) {
 		scaleU = (mc.Interval[1] - mc.Interval[0]) / 4
 	}
 	if !(hi > lo) || !(scaleU > 0) {
-		return nil, fmt.Errorf("figure: all trials of %s are alike", o.Name)
+		return nil, fmt.Errorf("figure: %w of %s", errAlike, o.Name)
 	}
 	// Height in probability per standard uncertainty: near 0.4 for a normal
 	// distribution, whatever the unit.
@@ -209,6 +210,9 @@ func Density(p *reduce.Propagation, name string) (*Figure, error) {
 		fmt.Sprintf("%s trials of %s; %s.", count(mc.Trials), OneLine(o.Name), verdict)), nil
 }
 
+// errAlike says that there is nothing to see.
+var errAlike = errors.New("there is one value in all trials")
+
 // monteFill is the colour of Monte Carlo bars.
 const monteFill = "#9cc4de"
 
@@ -275,7 +279,7 @@ func Joint(p *reduce.Propagation) (*Figure, error) {
 			s.add(g.Centre[k] + 1.06*reach)
 		}
 		if !(s.hi > s.lo) {
-			return nil, fmt.Errorf("figure: all trials of %s are alike", r.Outputs[k].Name)
+			return nil, fmt.Errorf("figure: %w of %s", errAlike, r.Outputs[k].Name)
 		}
 		var err error
 		if scales[k], err = newScale(Axis{Name: r.Outputs[k].Name, Unit: units[k], Low: s.lo, High: s.hi}, s, 3); err != nil {
@@ -362,10 +366,14 @@ func (p *panel) region(g *gum.Region, j, i int, k pen) {
 }
 
 // AllOfBudget draws every figure of a propagation: density and shares of each output,
-// and their joint distribution when there are several.
+// and their joint distribution when there are several. An output without uncertainty
+// has no density.
 func AllOfBudget(p *reduce.Propagation) ([]*Figure, error) {
 	var out []*Figure
 	add := func(f *Figure, err error) error {
+		if errors.Is(err, errAlike) {
+			return nil
+		}
 		if err == nil {
 			out = append(out, f)
 		}
@@ -378,7 +386,7 @@ func AllOfBudget(p *reduce.Propagation) ([]*Figure, error) {
 				return nil, err
 			}
 		}
-		if o.Law != nil && len(o.Law.Budget) > 0 {
+		if o.Law != nil && len(o.Law.Budget) > 0 && o.Law.U > 0 {
 			f, err := named(BudgetShares(p, o.Name))("shares-" + o.Name)
 			if err := add(f, err); err != nil {
 				return nil, err

@@ -89,7 +89,11 @@ func (d *Data) Shares(name string) (*Figure, error) {
 	for _, p := range parts {
 		partW = math.Max(partW, width(fitted(words(p), tickSize, true, 90), tickSize, true))
 	}
+	further := fmt.Sprintf("%d further inputs", rest)
 	left := marginX + partW + 12 + nameW + 8
+	if rest > 0 {
+		left = math.Max(left, marginX+width(further, tickSize, false)+8)
+	}
 	xs, err := newScale(Axis{Name: "share of variance", Unit: si.MustUnit("%"), Low: math.Min(sp.lo*1.05, 0), High: math.Max(sp.hi*1.02, 0.01)}, sp, 6)
 	if err != nil {
 		return nil, err
@@ -130,7 +134,7 @@ func (d *Data) Shares(name string) (*Figure, error) {
 	if rest > 0 {
 		s.c.segment(marginX, y+2, wide-marginX, y+2, pen{stroke: "#d0d0d0", width: 0.5})
 		y += 4
-		draw(fmt.Sprintf("%d further inputs", rest), percent(restShare), restShare, slate)
+		draw(further, percent(restShare), restShare, slate)
 	}
 	// The zero line and the axis under the bars.
 	zero := xs.pos(0)

@@ -194,8 +194,22 @@ func span(lo, hi reduce.Number, unit si.Unit, u float64) string {
 		if math.IsNaN(u) {
 			return minus(short(unit.FromSI(float64(x)), 6))
 		}
-		v, _ := si.Round(unit.FromSI(float64(x)), unit.DeltaFromSI(u))
+		d := unit.DeltaFromSI(u)
+		if d >= 99.5 && d < 1e6 { // 590 is read more easily than 5.9×10²
+			return minus(strconv.FormatFloat(unit.FromSI(float64(x)), 'f', 0, 64))
+		}
+		v, _ := si.Round(unit.FromSI(float64(x)), d)
 		return rounded(v)
+	}
+	if a, b := unit.FromSI(float64(lo)), unit.FromSI(float64(hi)); finite(lo) && finite(hi) && unit.DeltaFromSI(u) < 1e-4 {
+		// Both ends with one power of ten.
+		k := math.Floor(math.Log10(math.Max(math.Abs(a), math.Abs(b))))
+		p := math.Pow(10, -k)
+		if k < -3 && !math.IsInf(p, 0) {
+			x, _ := si.Round(a*p, unit.DeltaFromSI(u)*p)
+			y, _ := si.Round(b*p, unit.DeltaFromSI(u)*p)
+			return "(" + rounded(x) + " to " + rounded(y) + ")×10" + super(int(k))
+		}
 	}
 	switch {
 	case !finite(lo) && !finite(hi):

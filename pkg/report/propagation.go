@@ -63,7 +63,7 @@ func buildPropagation(rec *reduce.PropagationRecord, drawn *reduce.Propagation) 
 		}
 		d.head("Uncertainty budget of " + o.Name)
 		d.show(BudgetTable(o))
-		if drawn != nil {
+		if drawn != nil && o.Law.U > 0 {
 			d.picture(figure.BudgetShares(drawn, o.Name))
 		}
 		if s := o.Law.SecondOrder; s != nil {
@@ -124,18 +124,22 @@ func statedOutput(o *reduce.BudgetResult) result {
 	u := outputUnit(o)
 	r := result{name: o.Name, doc: o.Name + " = " + o.Formula}
 	mc := o.MonteCarlo
-	if l := o.Law; l != nil {
+	if l := o.Law; l != nil && (l.U > 0 || mc == nil || !(mc.U > 0)) {
 		r.short = minus(si.Short(float64(l.Value), float64(l.U), u))
 		r.expanded = minus(si.Expanded(float64(l.Value), float64(l.K)*float64(l.U), u, float64(l.K), float64(l.Probability)))
+		if mc != nil && mc.Digits > 0 && !mc.Agrees {
+			r.expanded += "; not confirmed, Monte Carlo: " + intervalText(mc.Interval, u, mc)
+		}
 		return r
 	}
 	if mc == nil {
 		r.short = "no result"
 		return r
 	}
+	// No law, or one that finds no uncertainty where there is some.
 	r.short = intervalText(mc.Interval, u, mc)
 	if finite(mc.Value) && finite(mc.U) {
-		r.expanded = "Monte Carlo: " + minus(si.Short(float64(mc.Value), float64(mc.U), u))
+		r.expanded = "interval by Monte Carlo; mean and standard uncertainty " + minus(si.Short(float64(mc.Value), float64(mc.U), u))
 	} else {
 		r.expanded = "Monte Carlo interval; there is no finite standard uncertainty"
 	}
