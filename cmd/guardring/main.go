@@ -8,6 +8,9 @@
 //	guardring reduce DIR...           the main job: readings to a result
 //	guardring check DIR...            read and validate a bench, reduce nothing
 //	guardring new DIR --model NAME    write a commented bench to start from
+//	guardring fit FILE.csv            fit a formula to the columns of a CSV file
+//	guardring propagate BUDGET.toml   propagate a budget by the law and by Monte Carlo
+//	guardring merge PART...           join the parts of a long propagation
 //	guardring kernel install          install the notebook kernel
 //	guardring version                 version and modules
 //

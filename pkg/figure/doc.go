@@ -17,4 +17,7 @@
 // stand in a row above the panel and cover no data. Where more points arrive
 // than the eye can part, the lowest and the highest of each column of the page
 // are kept, and the figure says how many were drawn.
+//
+// Curve and AllOfFit draw the fit of a formula, Density, BudgetShares, Joint and
+// AllOfBudget the propagation of a budget.
 package figure

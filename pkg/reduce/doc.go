@@ -42,4 +42,12 @@
 // t; noise with finite degrees of freedom shares one scale factor a channel.
 // Each trial has its own stream, so the numbers do not depend on the number of
 // cores.
+//
+// # Formulas and budgets
+//
+// Two smaller jobs stand beside the reduction of a bench. FitTable and FitCSV fit
+// a formula to the columns of a table, with units from the headers, by least
+// squares, effective variance or errors in variables. Propagate takes a budget
+// file through its formulas by the law and by Monte Carlo; PropagatePart does one
+// part of a long run and a PartMerger joins the parts to the same bytes.
 package reduce

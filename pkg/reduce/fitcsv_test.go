@@ -245,6 +245,35 @@ func TestFitUnits(t *testing.T) {
 	}
 }
 
+// TestFitWeights: weights 1/u² give the estimates of the noise u, and uncertainties
+// scaled by the Birge ratio, whatever the weights' common factor.
+func TestFitWeights(t *testing.T) {
+	csv, s := example(t)
+	known := fitText(t, csv, s).Record.Fit
+	s.Noise, s.Weights = "", "w"
+	lines := strings.Split(strings.TrimSpace(csv), "\n")
+	for i, l := range lines {
+		if i == 0 {
+			lines[i] = l + ",w"
+			continue
+		}
+		u, err := strconv.ParseFloat(strings.Split(l, ",")[2], 64)
+		if err != nil {
+			t.Fatal(err)
+		}
+		lines[i] = fmt.Sprintf("%s,%v", l, 1e-3/(u*u))
+	}
+	r := fitText(t, strings.Join(lines, "\n"), s)
+	if !r.Record.Fit.ScaledByResiduals || !math.IsNaN(float64(r.Record.Fit.PValue)) {
+		t.Errorf("scaled %t, p = %v", r.Record.Fit.ScaledByResiduals, float64(r.Record.Fit.PValue))
+	}
+	for j, p := range r.Record.Fit.Parameters {
+		q := known.Parameters[j]
+		rel(t, p.Name, p.Value, float64(q.Value), 1e-8)
+		rel(t, "u of "+p.Name, p.U, float64(q.U*known.BirgeRatio), 1e-8)
+	}
+}
+
 // TestFitHeld: fixed parameters stay, bounds are kept and reported, priors count.
 func TestFitHeld(t *testing.T) {
 	csv, s := example(t)

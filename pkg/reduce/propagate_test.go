@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"context"
 	"encoding/json"
+	"fmt"
 	"math"
 	"strings"
 	"testing"
@@ -11,6 +12,7 @@ import (
 	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/reduce"
+	"example.org/guardring/pkg/si"
 )
 
 func openBudget(t testing.TB, name string) *bench.Budget {
@@ -216,4 +218,22 @@ func TestAdaptivePropagation(t *testing.T) {
 	if r.Sequences < 2 || r.Run.Trials < 2*10000 || r.Run.Options["trials"] != "adaptive" {
 		t.Errorf("%d sequences, run %+v", r.Sequences, r.Run)
 	}
+}
+
+// ExamplePropagate states the published end gauge by the law alone.
+func ExamplePropagate() {
+	b, err := bench.OpenBudget("../../datasets/budgets/end-gauge.toml")
+	if err != nil {
+		fmt.Println(err)
+		return
+	}
+	p, err := reduce.Propagate(context.Background(), b, reduce.PropagateSettings{LawOnly: true})
+	if err != nil {
+		fmt.Println(err)
+		return
+	}
+	l := p.Record.Outputs[0].Law
+	fmt.Println(si.Expanded(float64(l.Value), float64(l.K*l.U), si.MustUnit("mm"), float64(l.K), float64(l.Probability)))
+	// Output:
+	// 50.000838 mm ± 0.000092 mm (k = 2.92, p = 99 %)
 }

@@ -13,4 +13,7 @@
 // Everything that came from a file is escaped for the form it is written in.
 //
 // Table is the small table that other packages show in the same four forms.
+//
+// FitText, FitHTML, PropagationText and PropagationHTML report the fit of a formula
+// and the propagation of a budget in the same manner.
 package report
