@@ -91,7 +91,7 @@ type Grouped struct {
 	U        float64  // standard uncertainty, SI
 	Relative float64  // standard uncertainty relative to the reading; 0 when U is given
 	DOF      float64  // +Inf when not stated
-	Group    []int    // of each data record: 0 to Count−1; shared between channels, not to be changed
+	Group    []int32  // of each data record: 0 to Count−1; shared between channels, not to be changed
 	Labels   []string // the words, in order of first appearance
 	Count    int
 }

@@ -240,10 +240,7 @@ func (l *loader) fill(columns map[string][]float64) {
 			words := b.Rows.Labels[g.By]
 			l.unlabelled(words, g.By)
 			g.Labels, g.Count = words.Words, len(words.Words)
-			g.Group = make([]int, b.Rows.N)
-			for r, k := range words.Index {
-				g.Group[r] = int(k)
-			}
+			g.Group = words.Index
 			shared[g.By] = g
 		}
 	}

@@ -121,8 +121,8 @@ func ExampleEffects() {
 	fmt.Printf("independent: %.3f ± %.3f\n", r.Values[0], r.U[0])
 	p.Effects = &lsq.Effects{
 		Columns: 1,
-		Start:   []int{0, 1, 2, 3, 4, 5},
-		Column:  []int{0, 0, 0, 0, 0},
+		Start:   []int32{0, 1, 2, 3, 4, 5},
+		Column:  []int32{0, 0, 0, 0, 0},
 		Load:    []float64{0.2, 0.2, 0.2, 0.2, 0.2},
 	}
 	r, _ = lsq.Fit(context.Background(), p, lsq.Settings{})

@@ -205,6 +205,10 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	s, p := &f.search, f.p
 	n := len(s.y)
 	sp := f.analyse()
+	if err := s.restore(); err != nil {
+		return nil, fmt.Errorf("lsq: the model can't be evaluated: %w", err)
+	}
+	f.u, f.g, f.lastU, f.lastLoad = nil, nil, nil, nil
 	r := &Result{
 		Status: s.status, Reason: s.reason, Free: f.free,
 		Iterations: s.iterations, Evaluations: s.evaluations, Reweighting: f.reweighting, Restarts: f.restarts,
@@ -217,13 +221,25 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	if f.set.SkipDiagnostics {
 		columns = 1
 	}
-	slab := make([]float64, columns*n)
+	var slab []float64
+	if s.single { // what nobody needs any more can go
+		s.ftrial, s.wres, s.block = nil, nil, nil
+	} else {
+		slab = make([]float64, columns*n)
+	}
 	take := func() []float64 {
+		if s.single {
+			return make([]float64, n)
+		}
 		v := slab[:n:n]
 		slab = slab[n:]
 		return v
 	}
-	r.Fitted, r.Residuals = append([]float64(nil), s.f...), take()
+	if r.Residuals = take(); s.single {
+		r.Fitted = s.f
+	} else {
+		r.Fitted = append([]float64(nil), s.f...)
+	}
 	if f.exact != nil && s.white.diagonal() {
 		for i, v := range f.exact.residuals[:n] {
 			r.Residuals[i] = v / s.white.w[i]
@@ -391,6 +407,10 @@ func (r *Result) Jacobian() [][]float64 {
 	}
 	return out
 }
+
+// Derivatives returns what Jacobian does without a copy: it belongs to the
+// result and must not be changed.
+func (r *Result) Derivatives() [][]float64 { return r.jac }
 
 // SolveCovariance sets dst = Σ⁻¹v, with Σ the covariance of the readings at
 // the final weights (scaled by s² when ScaledByResiduals). v and dst have one

@@ -80,9 +80,15 @@ func takeFitter() *fitter {
 	return &fitter{}
 }
 
+// keptFloats bounds the working memory that outlives a fit.
+const keptFloats = 1 << 20
+
 // release forgets everything but memory that can be used again.
 func (f *fitter) release() {
 	heads, slab := f.search.heads, f.search.slab
+	if cap(slab) > keptFloats {
+		slab = nil
+	}
 	points, pointHeads := f.eiv.slab, f.eiv.heads
 	clear(heads)
 	clear(pointHeads)
@@ -106,9 +112,11 @@ func (f *fitter) weights() error {
 	case p.Covariance != nil:
 		return f.white.setFull(p.Covariance)
 	case p.Reweight != nil:
-		f.u = make([]float64, n)
-		copy(f.u, p.U)
-		if p.Effects != nil {
+		if f.u, f.g = p.U, p.Effects; !p.Scratch || p.U == nil {
+			f.u = make([]float64, n)
+			copy(f.u, p.U)
+		}
+		if p.Effects != nil && !p.Scratch {
 			f.g = p.Effects.copy()
 		}
 		needed := p.U == nil
@@ -173,6 +181,11 @@ func spread(y []float64) float64 {
 // reweight asks the user for weights at theta and checks them.
 func (f *fitter) reweight(theta, values []float64) error {
 	f.reweighting++
+	if s := &f.search; s.single {
+		// What the search whitens into is idle now.
+		s.stale = true
+		f.lastU, f.lastLoad = s.wres[:0:len(s.wres)], s.block[:0:len(s.block)]
+	}
 	f.lastU = append(f.lastU[:0], f.u...)
 	if f.g != nil {
 		f.lastLoad = append(f.lastLoad[:0], f.g.Load...)

@@ -84,17 +84,17 @@ func sameFit(t *testing.T, a, b *Result, rel float64) {
 func TestEffectsAgainstFullCovariance(t *testing.T) {
 	p, _ := decay(30, 1)
 	full, _ := decay(30, 1)
-	g := &Effects{Columns: 10 + 3 + 4 + 1, Start: []int{0}}
+	g := &Effects{Columns: 10 + 3 + 4 + 1, Start: []int32{0}}
 	for i := range p.Y {
 		add := func(c int, load float64) {
-			g.Column = append(g.Column, c)
+			g.Column = append(g.Column, int32(c))
 			g.Load = append(g.Load, load)
 		}
 		add(i/3, 2e-11)                     // ten groups
 		add(10+i/10, 1e-11)                 // nested
 		add(13+i%4, 1.5e-11*float64(1+i%2)) // crossed
 		add(17, 0.01*p.Y[i])                // a gain shared by all
-		g.Start = append(g.Start, len(g.Load))
+		g.Start = append(g.Start, int32(len(g.Load)))
 	}
 	p.Effects = g
 	n := len(p.Y)
@@ -508,11 +508,11 @@ func TestHostileModels(t *testing.T) {
 func TestTooManyOverlappingEffects(t *testing.T) {
 	const n = 2000
 	p, _ := decay(n, 1)
-	g := &Effects{Columns: n + 1, Start: []int{0}}
+	g := &Effects{Columns: n + 1, Start: []int32{0}}
 	for i := 0; i < n; i++ {
-		g.Column = append(g.Column, i, i+1)
+		g.Column = append(g.Column, int32(i), int32(i+1))
 		g.Load = append(g.Load, 1e-12, 1e-12)
-		g.Start = append(g.Start, len(g.Load))
+		g.Start = append(g.Start, int32(len(g.Load)))
 	}
 	p.Effects = g
 	if r, err := Fit(context.Background(), p, Settings{}); err == nil || r != nil || !strings.Contains(err.Error(), "at most 400") {
@@ -520,11 +520,11 @@ func TestTooManyOverlappingEffects(t *testing.T) {
 	}
 	// as many groups as one likes, when no two share a reading
 	for i := 0; i < n; i++ {
-		g.Column[i] = i / 2
+		g.Column[i] = int32(i / 2)
 	}
 	g.Column, g.Load = g.Column[:n], g.Load[:n]
 	for i := range g.Start {
-		g.Start[i] = i
+		g.Start[i] = int32(i)
 	}
 	if r, err := Fit(context.Background(), p, Settings{}); err != nil || r.Status != Converged {
 		t.Errorf("%v, %v", r, err)
@@ -536,11 +536,11 @@ func TestTooManyOverlappingEffects(t *testing.T) {
 // and standard deviation 1, chi-squared probabilities are uniform.
 func TestPulls(t *testing.T) {
 	const runs, n = 2000, 24
-	g := &Effects{Columns: n/4 + 1, Start: []int{0}}
+	g := &Effects{Columns: n/4 + 1, Start: []int32{0}}
 	for i := 0; i < n; i++ {
-		g.Column = append(g.Column, i/4, n/4)
+		g.Column = append(g.Column, int32(i/4), n/4)
 		g.Load = append(g.Load, 2e-11, 1e-11)
-		g.Start = append(g.Start, len(g.Load))
+		g.Start = append(g.Start, int32(len(g.Load)))
 	}
 	var sum, square [3]float64
 	var probabilities []float64

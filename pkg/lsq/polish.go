@@ -75,7 +75,9 @@ func (s *search) polish(ctx context.Context, norm float64) error {
 			}
 		}
 		if small || norm == 0 {
-			s.last()
+			if err := s.last(); err != nil {
+				return err
+			}
 			s.status, s.reason = Converged, "the remaining step is below the tolerance"
 			return nil
 		}
@@ -105,7 +107,10 @@ const staleLimit = 3e-9
 
 // last takes the last step without another evaluation: what it leaves out of the
 // model's values is of the order of its square, below their rounding.
-func (s *search) last() {
+func (s *search) last() error {
+	if err := s.restore(); err != nil {
+		return fmt.Errorf("lsq: the model can't be evaluated: %w", err)
+	}
 	s.aim()
 	for k, c := range s.cols {
 		x := s.trial[s.free[k]] - s.theta[s.free[k]]
@@ -121,6 +126,7 @@ func (s *search) last() {
 		s.eiv.settle()
 	}
 	copy(s.theta, s.trial)
+	return nil
 }
 
 // aim sets the trial point to the present one plus the step, kept within the

@@ -61,6 +61,11 @@ type Problem struct {
 	// or holds a zero, Reweight is also called at the start.
 	Reweight func(theta, f, u []float64, g *Effects) error
 
+	// Scratch gives U and the loads of Effects to Fit, which then rewrites them
+	// in place through Reweight instead of copies: for problems whose readings
+	// fill much of the memory.
+	Scratch bool
+
 	// Linear states that f is linear in the parameters. Fit also recognises
 	// it when the derivatives do not change with the parameters.
 	Linear bool
@@ -80,8 +85,8 @@ type Problem struct {
 // uncertainty of the effect.
 type Effects struct {
 	Columns int       // number of effects
-	Start   []int     // length n+1, from 0, not decreasing
-	Column  []int     // 0 … Columns−1, at most once in a row
+	Start   []int32   // length n+1, from 0, not decreasing
+	Column  []int32   // 0 … Columns−1, at most once in a row
 	Load    []float64 // unit of Y
 }
 

@@ -44,7 +44,10 @@ type search struct {
 	diff          *difference
 	iterations    int
 	evaluations   int
-	linear        bool // the derivatives did not change with the parameters
+	single        bool      // cols, ctrial and wcols are one: see singleRows
+	stale         bool      // that one is whitened
+	block         []float64 // its memory
+	linear        bool      // the derivatives did not change with the parameters
 	lastEvalErr   error
 	size          float64 // length of the whitened readings
 	status        Status
@@ -91,6 +94,7 @@ func (s *search) reduce(t *fold, theta, f []float64, cols [][]float64) {
 		return
 	}
 	s.residual(f)
+	s.stale = s.single
 	for k, c := range cols {
 		copy(s.wcols[k], c)
 		s.white.apply(s.wcols[k])
@@ -153,6 +157,9 @@ func (s *search) begin(start []float64) error {
 	if !finite(s.chi2) || !s.now.finite() {
 		if i := notFinite(s.f); i >= 0 {
 			return fmt.Errorf("lsq: the model is %v for reading %d at the start; choose another start", s.f[i], i+1)
+		}
+		if err := s.restore(); err != nil {
+			return fmt.Errorf("lsq: the model can't be evaluated at the start: %w", err)
 		}
 		for k, c := range s.cols {
 			if i := notFinite(c); i >= 0 {
@@ -362,7 +369,7 @@ func (s *search) run(ctx context.Context) error {
 		jointly = ratio > 0.5 || s.eiv != nil
 		if !s.checkedLinear {
 			s.checkedLinear = true
-			s.linear = !s.numeric && s.eiv == nil && s.sameColumns()
+			s.linear = !s.single && !s.numeric && s.eiv == nil && s.sameColumns()
 		}
 		s.accept()
 		if act <= 1e3*noise && pred <= 1e3*noise {

@@ -105,16 +105,19 @@ func (p *Problem) validate() (free []int, priors int, err error) {
 }
 
 func (g *Effects) check(n int) error {
-	if len(g.Start) != n+1 || g.Start[0] != 0 || g.Start[n] != len(g.Column) || len(g.Column) != len(g.Load) {
+	if len(g.Start) != n+1 || g.Start[0] != 0 || int(g.Start[n]) != len(g.Column) || len(g.Column) != len(g.Load) {
 		return fmt.Errorf("lsq: Effects need %d row starts from 0 to the number of loads; there are %d starts, %d columns, %d loads", n+1, len(g.Start), len(g.Column), len(g.Load))
 	}
+	if len(g.Load) > math.MaxInt32 {
+		return fmt.Errorf("lsq: Effects have %d loads; at most %d can be handled", len(g.Load), math.MaxInt32)
+	}
 	for i := 0; i < n; i++ {
-		if g.Start[i+1] < g.Start[i] || g.Start[i+1] > len(g.Column) {
+		if g.Start[i+1] < g.Start[i] || int(g.Start[i+1]) > len(g.Column) {
 			return fmt.Errorf("lsq: row starts of Effects decrease or run past the loads at reading %d", i+1)
 		}
 		row := g.Column[g.Start[i]:g.Start[i+1]]
 		for k, c := range row {
-			if c < 0 || c >= g.Columns {
+			if c < 0 || int(c) >= g.Columns {
 				return fmt.Errorf("lsq: reading %d names effect %d; there are %d, counted from 0", i+1, c, g.Columns)
 			}
 			for _, d := range row[:k] {
@@ -122,7 +125,7 @@ func (g *Effects) check(n int) error {
 					return fmt.Errorf("lsq: reading %d names effect %d twice; add its loads", i+1, c)
 				}
 			}
-			if v := g.Load[g.Start[i]+k]; !finite(v) {
+			if v := g.Load[int(g.Start[i])+k]; !finite(v) {
 				return fmt.Errorf("lsq: load of effect %d on reading %d is %v", c, i+1, v)
 			}
 		}
@@ -130,10 +133,9 @@ func (g *Effects) check(n int) error {
 	return nil
 }
 
+// copy is g with loads of its own; reweighting leaves the pattern as it is.
 func (g *Effects) copy() *Effects {
 	c := *g
 	c.Load = append([]float64(nil), g.Load...)
-	c.Start = append([]int(nil), g.Start...)
-	c.Column = append([]int(nil), g.Column...)
 	return &c
 }

@@ -35,7 +35,7 @@ type whitener struct {
 	vars []float64 // Σ_ii
 
 	// effects
-	disjoint []int // column of the disjoint effect of each row, −1 none
+	disjoint []int32 // column of the disjoint effect of each row, −1 none
 	load     []float64
 	coef     []float64 // c per disjoint effect
 	sum      []float64 // scratch per disjoint effect
@@ -63,11 +63,11 @@ func newPlan(n int, g *Effects) (*plan, error) {
 	for c, k := range count {
 		at[c+1] = at[c] + k
 	}
-	rows := make([]int, len(g.Column))
+	rows := make([]int32, len(g.Column))
 	fill := append([]int(nil), at[:g.Columns]...)
 	for i := 0; i < n; i++ {
 		for _, c := range g.Column[g.Start[i]:g.Start[i+1]] {
-			rows[fill[c]] = i
+			rows[fill[c]] = int32(i)
 			fill[c]++
 		}
 	}
@@ -133,7 +133,7 @@ func (w *whitener) setEffects(u []float64, g *Effects) error {
 			return err
 		}
 		w.plan = p
-		w.disjoint = make([]int, n)
+		w.disjoint = make([]int32, n)
 		w.load = make([]float64, n)
 		w.coef = make([]float64, p.nd)
 		w.sum = make([]float64, p.nd)
@@ -157,7 +157,7 @@ func (w *whitener) setEffects(u []float64, g *Effects) error {
 			v += g.Load[k] * g.Load[k]
 			h := g.Load[k] * w.w[i]
 			if s := p.slot[g.Column[k]]; s >= 0 {
-				w.disjoint[i], w.load[i] = s, h
+				w.disjoint[i], w.load[i] = int32(s), h
 				w.sum[s] += h * h
 			} else {
 				w.dense[-1-s][i] = h

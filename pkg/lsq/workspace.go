@@ -9,7 +9,12 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 	s.p, s.y, s.free, s.q, s.white, s.eval = p, y, free, q, white, p.Eval
 	m := blockRows(n)
 	tri := (q + 1) * (q + 1)
-	need := 2*n + 2*n*q + 4*np + 3*q + 2*tri + (q+1)*(m+1) + q*q + 3*q
+	s.single = n >= singleFrom && float64(n)*float64(q*q) > wideWork && !white.diagonal() && !p.Numeric && s.eiv == nil
+	rows := 2*n + 2*n*q
+	if s.single {
+		rows = 0
+	}
+	need := rows + 4*np + 3*q + 2*tri + (q+1)*(m+1) + q*q + 3*q
 	if cap(s.slab) < need {
 		s.slab = make([]float64, need)
 	}
@@ -20,15 +25,31 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 		at += k
 		return v
 	}
-	s.f, s.ftrial = take(n), take(n)
+	column := func() []float64 {
+		if s.single { // on its own, so that the result can keep it
+			return make([]float64, n)
+		}
+		return take(n)
+	}
+	s.f, s.ftrial = column(), column()
 	if cap(s.heads) < 2*np+2*q {
 		s.heads = make([][]float64, 2*np+2*q)
 	}
 	heads := s.heads[:2*np+2*q]
 	clear(heads)
 	s.jac, s.jtrial, s.cols, s.ctrial = heads[:np:np], heads[np:2*np:2*np], heads[2*np:2*np+q:2*np+q], heads[2*np+q:]
+	if s.single {
+		s.block = make([]float64, n*q)
+		for k := range free {
+			s.cols[k] = s.block[k*n : k*n+n : k*n+n]
+			s.ctrial[k] = s.cols[k]
+		}
+	} else {
+		for k := range free {
+			s.cols[k], s.ctrial[k] = column(), column()
+		}
+	}
 	for k, j := range free {
-		s.cols[k], s.ctrial[k] = take(n), take(n)
 		s.jac[j], s.jtrial[j] = s.cols[k], s.ctrial[k]
 	}
 	s.theta, s.trial = take(np), take(np)
@@ -68,8 +89,27 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 	s.prepareWhite()
 }
 
+// singleRows is the number of correlated readings from which a search keeps one
+// set of derivatives instead of three.
+const singleRows = 1 << 16
+
+var singleFrom = singleRows // for tests
+
+// restore evaluates the derivatives at the present parameters again, where a
+// search that keeps one set of them has whitened it.
+func (s *search) restore() error {
+	if !s.single || !s.stale {
+		return nil
+	}
+	s.stale = false
+	return s.call(s.theta, s.ftrial, s.jac, s.cols)
+}
+
 // columns returns a copy of the free columns of the Jacobian.
 func (s *search) columns() [][]float64 {
+	if s.single {
+		return append([][]float64(nil), s.cols...)
+	}
 	out := make([][]float64, s.q)
 	n := len(s.y)
 	slab := make([]float64, n*s.q)
@@ -87,6 +127,10 @@ func (s *search) prepareWhite() {
 	}
 	n := len(s.y)
 	s.wres = make([]float64, n)
+	if s.single {
+		s.wcols = s.cols
+		return
+	}
 	s.wcols = make([][]float64, s.q)
 	slab := make([]float64, n*s.q)
 	for k := range s.wcols {

@@ -51,27 +51,17 @@ func (c *chain) law(k *carried, value float64, byTheta, bySh []float64, p float6
 		lines = append(lines, gum.Contribution{Input: in.name, Group: in.group, Unit: in.unit.Symbol, Shape: shape,
 			Value: in.value, U: in.u, DOF: in.dof, Sensitivity: sens})
 	}
-	w := make([]float64, len(c.record))
-	for b := range byTheta {
-		var f float64
-		for a, v := range byTheta {
-			f += v * k.inverse.At(a, b)
-		}
-		for i, d := range k.weighed[b] {
-			w[i] += f * d
-		}
-	}
+	contributions := c.contributions(k, byTheta)
 	for n := range c.comps {
 		comp := &c.comps[n]
 		u := c.typicalU(comp)
-		contribution := c.contribution(comp, k, w)
 		line := gum.Contribution{Input: comp.name, Group: readingsGroup, Unit: comp.unit.Symbol, Shape: gum.ShapeNormal,
 			Block: c.block(comp), U: u, DOF: comp.dof}
 		if comp.flat {
 			line.Shape = gum.ShapeRectangular
 		}
 		if u > 0 {
-			line.Sensitivity = contribution / u
+			line.Sensitivity = contributions[n] / u
 		}
 		lines = append(lines, line)
 	}
@@ -121,42 +111,83 @@ func (c *chain) typicalU(comp *component) float64 {
 	return math.Sqrt(s / float64(len(c.record)))
 }
 
-// contribution is the standard uncertainty that a component gives to a quantity
-// with ∂Y/∂y = w.
-func (c *chain) contribution(comp *component, k *carried, w []float64) float64 {
-	var sum float64
-	switch {
-	case comp.channel == zeroComponent:
-		s := c.zeroNoise()
-		by := make([]float64, len(c.zero.coef))
-		for i := range w {
-			for j := c.zero.start[i]; j < c.zero.start[i+1]; j++ {
-				by[c.zero.column[j]] += w[i] * c.zero.weight[j] * c.zero.unit[c.zero.column[j]] * s
+// contributions is the standard uncertainty that each component gives to a
+// quantity with ∂Y/∂θ = byTheta, through ∂Y/∂y = w, chunk by chunk of rows.
+func (c *chain) contributions(k *carried, byTheta []float64) []float64 {
+	n := len(c.record)
+	factor := make([]float64, len(byTheta))
+	for b := range byTheta {
+		for a, v := range byTheta {
+			factor[b] += v * k.inverse.At(a, b)
+		}
+	}
+	sum := make([]float64, len(c.comps))
+	by := make([][]float64, len(c.comps)) // of each group, or column of the zero
+	for j := range c.comps {
+		if comp := &c.comps[j]; comp.group != nil || comp.channel == zeroComponent {
+			by[j] = make([]float64, comp.count)
+		}
+	}
+	shares, zeroNoise, want := c.zero.shares(), c.zeroNoise(), c.wanted()
+	w := make([]float64, min(n, chunkRows))
+	for lo := 0; lo < n; lo += chunkRows {
+		hi := min(lo+chunkRows, n)
+		w := w[:hi-lo]
+		clear(w)
+		for b, f := range factor {
+			for i, d := range k.weighed[b][lo:hi] {
+				w[i] += f * d
 			}
 		}
-		sum = dot(by, by)
-	case comp.group != nil:
-		by := make([]float64, comp.count)
-		for i, g := range comp.group {
-			by[g] += w[i] * c.gainOf(comp, k, i) * comp.u(i)
-		}
-		sum = dot(by, by)
-	default:
-		for i := range w {
-			d := w[i] * c.gainOf(comp, k, i) * comp.u(i)
-			sum += d * d
+		slope := k.slopes(c, want, lo, hi)
+		for j := range c.comps {
+			comp := &c.comps[j]
+			if comp.channel == zeroComponent {
+				for i, wi := range w {
+					column, weight := shares.row(lo + i)
+					for m, col := range column {
+						by[j][col] += wi * weight[m] * c.zero.unit[col] * zeroNoise
+					}
+				}
+				continue
+			}
+			for i, wi := range w {
+				// the factor by which an error of the component moves the
+				// response residual of its row
+				gain := 1.0
+				if comp.on >= 0 {
+					gain = -slope[comp.on][i]
+				}
+				d := wi * gain * comp.u(lo+i)
+				if comp.group != nil {
+					by[j][comp.group[lo+i]] += d
+				} else {
+					sum[j] += d * d
+				}
+			}
 		}
 	}
-	return math.Sqrt(sum)
+	for j := range sum {
+		if by[j] != nil {
+			sum[j] = dot(by[j], by[j])
+		}
+		sum[j] = math.Sqrt(sum[j])
+	}
+	return sum
 }
 
-// gainOf is the factor by which an error of the component moves the response
-// residual of row i.
-func (c *chain) gainOf(comp *component, k *carried, i int) float64 {
-	if comp.on < 0 {
-		return 1
+// slopes is ∂f/∂x at the estimates of rows lo to hi−1.
+func (k *carried) slopes(c *chain, want []bool, lo, hi int) [][]float64 {
+	if k.slope == nil {
+		return c.slopesOf(k.q, want, lo, hi)
 	}
-	return -k.slope[comp.on][i]
+	out := make([][]float64, len(k.slope))
+	for p, s := range k.slope {
+		if s != nil {
+			out[p] = s[lo:hi]
+		}
+	}
+	return out
 }
 
 // measurands states every measurand of the bench by the law.

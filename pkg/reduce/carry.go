@@ -17,7 +17,7 @@ type carried struct {
 	inverse *mat.Dense  // H⁻¹, full Hessian
 	bySh    [][]float64 // dθ/d(input): [input][parameter]; priors included
 	weighed [][]float64 // Σ⁻¹J: [parameter][row]; dθ/dy = H⁻¹(Σ⁻¹J)ᵀ
-	slope   [][]float64 // ∂f/∂x at the estimates, of predictors with errors
+	slope   [][]float64 // ∂f/∂x at the estimates, of predictors with errors; nil with very many rows
 }
 
 // carry differentiates the estimates implicitly (see the package comment).
@@ -31,7 +31,7 @@ func (c *chain) carry(r *lsq.Result) (*carried, error) {
 	r.SolveCovariance(r.Residuals, v)
 
 	// J and Σ⁻¹J, column by column.
-	jac := r.Jacobian()
+	jac := r.Derivatives()
 	wj := make([][]float64, np)
 	for j := range wj {
 		wj[j] = make([]float64, n)
@@ -72,7 +72,9 @@ func (c *chain) carry(r *lsq.Result) (*carried, error) {
 		}
 		k.bySh[s] = d
 	}
-	k.slope = c.slopes(k.q, c.wanted())
+	if n <= keptShares {
+		k.slope = c.slopes(k.q, c.wanted())
+	}
 	return k, nil
 }
 

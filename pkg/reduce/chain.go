@@ -31,11 +31,9 @@ type chain struct {
 	resp int   // likewise of the response
 
 	record []int       // data record of each row in use
-	t      []float64   // time of each row in use, s; NaN when unknown
 	xr     [][]float64 // predictor readings [predictor][row]
 	x      [][]float64 // their true values at the stated gains and offsets
-	yr     []float64   // response readings
-	y      []float64   // response readings after the zero correction
+	y      []float64   // response readings, after the zero correction
 	zero   *zeroModel  // nil when there is none
 	series *series     // nil when all rows are one
 
@@ -198,23 +196,23 @@ func (c *chain) takeRows() error {
 	for _, p := range c.pred {
 		c.xr = append(c.xr, pick(c.b.Channels[p].Readings))
 	}
-	c.yr = pick(c.b.Channels[c.resp].Readings)
-	if r.HasTime {
-		c.t = pick(r.Time)
-	} else {
-		c.t = make([]float64, n)
-		for i := range c.t {
-			c.t[i] = math.NaN()
-		}
-	}
+	c.y = pick(c.b.Channels[c.resp].Readings)
 	if c.m.TimeDependent {
-		for k, t := range c.t {
-			if math.IsNaN(t) {
+		for k := range c.record {
+			if math.IsNaN(c.seconds(k)) {
 				return fmt.Errorf("%s: the model %s needs the time of every reading; name its column in [rows] time", c.place(c.record[k]), c.b.Kind.Name)
 			}
 		}
 	}
 	return nil
+}
+
+// seconds is the time of row i in use, s; NaN when unknown.
+func (c *chain) seconds(i int) float64 {
+	if r := &c.b.Rows; r.HasTime {
+		return r.Time[c.record[i]]
+	}
+	return math.NaN()
 }
 
 // place names a data record by file and line.
@@ -259,7 +257,11 @@ func (c *chain) correctReadings() {
 		c.x = append(c.x, v)
 	}
 	if c.m.TimeDependent {
-		c.x = append(c.x, c.t)
+		t := make([]float64, len(c.record))
+		for i := range t {
+			t[i] = c.seconds(i)
+		}
+		c.x = append(c.x, t)
 	}
 	if c.series != nil {
 		s := make([]float64, len(c.record))
@@ -359,10 +361,12 @@ func kurtosis(d gum.Distribution) float64 {
 // makes of the readings.
 func (c *chain) starts() error {
 	q := append([]float64(nil), c.q...)
-	y := make([]float64, len(c.y))
-	g, o := gainOffset(&c.b.Channels[c.resp])
-	for i, v := range c.y {
-		y[i] = g*v + o
+	y := c.y
+	if g, o := gainOffset(&c.b.Channels[c.resp]); g != 1 || o != 0 {
+		y = make([]float64, len(c.y))
+		for i, v := range c.y {
+			y[i] = g*v + o
+		}
 	}
 	var err error
 	if c.start, err = c.m.Start(q, c.free, c.x, y); err != nil {
@@ -381,7 +385,9 @@ func (c *chain) starts() error {
 func parallel(n, size int, do func(lo, hi int)) {
 	workers := runtime.GOMAXPROCS(0)
 	if n <= size || workers == 1 {
-		do(0, n)
+		for lo := 0; lo < n; lo += size {
+			do(lo, min(lo+size, n))
+		}
 		return
 	}
 	var wg sync.WaitGroup

@@ -23,10 +23,11 @@ type component struct {
 	// gain·√(fixed² + (relative·reading)²).
 	gain, fixed, relative float64
 	readings              []float64
-	group                 []int // group of each row; nil: independent
-	count                 int   // number of groups
-	column                int   // first column in the effects
-	unknown               bool  // noise of the response, from the residuals
+	at                    []int   // where the reading of a row stands in readings; nil: in order
+	group                 []int32 // group of each row; nil: independent
+	count                 int     // number of groups
+	column                int     // first column in the effects
+	unknown               bool    // noise of the response, from the residuals
 }
 
 // u is the standard uncertainty of row i; for a relative error of a group it has
@@ -34,6 +35,9 @@ type component struct {
 func (k *component) u(i int) float64 {
 	if k.relative == 0 {
 		return k.gain * k.fixed
+	}
+	if k.at != nil {
+		i = k.at[i]
 	}
 	r := k.relative * k.readings[i]
 	if k.group != nil {
@@ -52,9 +56,9 @@ func (c *chain) listComponents() error {
 	for k, ci := range rows {
 		ch := &c.b.Channels[ci]
 		on := k - 1
-		readings, gain := c.yr, 1.0
+		readings, at, gain := ch.Readings, c.record, 1.0
 		if on >= 0 {
-			readings = c.xr[on]
+			readings, at = c.xr[on], nil
 			gain, _ = gainOffset(ch)
 			gain = math.Abs(gain)
 		}
@@ -66,7 +70,7 @@ func (c *chain) listComponents() error {
 				c.b.Dir, ch.Name, c.m.Response)
 		} else if ch.Noise > 0 || ch.RelativeNoise > 0 {
 			c.comps = append(c.comps, component{name: ch.Name + " noise", channel: ch.Name, unit: ch.Unit, on: on, dof: ch.NoiseDOF,
-				gain: gain, fixed: ch.Noise, relative: ch.RelativeNoise, readings: readings})
+				gain: gain, fixed: ch.Noise, relative: ch.RelativeNoise, readings: readings, at: at})
 		}
 		if ch.Resolution > 0 {
 			comp := component{name: ch.Name + " resolution", channel: ch.Name, unit: ch.Unit, on: on, flat: true, dof: math.Inf(1),
@@ -91,12 +95,12 @@ func (c *chain) listComponents() error {
 				// One relative error a group: it changes sign with the reading, and
 				// for the response it is built from fitted values, since readings
 				// would pull the fit down (weights that follow the noise).
-				comp.fixed, comp.relative, comp.readings = 0, g.Relative, readings
+				comp.fixed, comp.relative, comp.readings, comp.at = 0, g.Relative, readings, at
 				if on < 0 {
 					if c.fitted == nil {
 						c.fitted = append([]float64(nil), c.y...)
 					}
-					comp.readings = c.fitted
+					comp.readings, comp.at = c.fitted, nil
 				}
 				c.comps = append(c.comps, comp)
 			}
@@ -127,26 +131,22 @@ func (c *chain) listComponents() error {
 
 // groupOf returns the group of each data record by a row column, or nil when the
 // bench names no such column.
-func groupOf(b *bench.Bench, by string) []int {
+func groupOf(b *bench.Bench, by string) []int32 {
 	labels := b.Rows.Labels[by]
 	if labels == nil {
 		return nil
 	}
-	g := make([]int, len(labels.Index))
-	for i, k := range labels.Index {
-		g[i] = int(k)
-	}
-	return g
+	return labels.Index
 }
 
 // compact renumbers the groups of the rows in use from 0.
-func compact(all []int, record []int) (group []int, count int) {
-	seen := map[int]int{}
-	group = make([]int, len(record))
+func compact(all []int32, record []int) (group []int32, count int) {
+	seen := map[int32]int32{}
+	group = make([]int32, len(record))
 	for i, r := range record {
 		k, ok := seen[all[r]]
 		if !ok {
-			k = len(seen)
+			k = int32(len(seen))
 			seen[all[r]] = k
 		}
 		group[i] = k
@@ -171,27 +171,29 @@ func (c *chain) effects() *lsq.Effects {
 	for k := range c.comps {
 		switch {
 		case c.comps[k].channel == zeroComponent:
-			entries += len(c.zero.column)
+			entries += c.zero.entries
 		case c.comps[k].group != nil:
 			entries += len(c.record)
 		}
 	}
-	e.Start, e.Column = make([]int, 0, len(c.record)+1), make([]int, 0, entries)
+	e.Start, e.Column = make([]int32, 0, len(c.record)+1), make([]int32, 0, entries)
+	shares := c.zero.shares()
 	for i := range c.record {
-		e.Start = append(e.Start, len(e.Column))
+		e.Start = append(e.Start, int32(len(e.Column)))
 		for k := range c.comps {
 			comp := &c.comps[k]
 			switch {
 			case comp.channel == zeroComponent:
-				for j := c.zero.start[i]; j < c.zero.start[i+1]; j++ {
-					e.Column = append(e.Column, comp.column+int(c.zero.column[j]))
+				column, _ := shares.row(i)
+				for _, col := range column {
+					e.Column = append(e.Column, int32(comp.column)+col)
 				}
 			case comp.group != nil:
-				e.Column = append(e.Column, comp.column+comp.group[i])
+				e.Column = append(e.Column, int32(comp.column)+comp.group[i])
 			}
 		}
 	}
-	e.Start = append(e.Start, len(e.Column))
+	e.Start = append(e.Start, int32(len(e.Column)))
 	e.Load = make([]float64, len(e.Column))
 	return e
 }
@@ -219,48 +221,60 @@ func (c *chain) wanted() []bool {
 // reweight fills the independent standard uncertainties u and the loads of e at
 // scalars q: the covariance of the readings there.
 func (c *chain) reweight(q []float64, u []float64, e *lsq.Effects) {
-	slope := c.slopes(q, c.wanted())
 	if c.fitted != nil {
 		c.indication(q, c.fitted, nil)
 	}
-	clear(u)
+	for k := range c.comps {
+		if c.comps[k].unknown {
+			c.comps[k].fixed = c.scale
+		}
+	}
+	want := c.wanted()
+	parallel(len(u), chunkRows, func(lo, hi int) {
+		c.reweightRows(q, u, e, want, lo, hi)
+	})
+}
+
+// reweightRows does so for rows lo to hi−1.
+func (c *chain) reweightRows(q, u []float64, e *lsq.Effects, want []bool, lo, hi int) {
+	slope := c.slopesOf(q, want, lo, hi)
+	clear(u[lo:hi])
 	for k := range c.comps {
 		comp := &c.comps[k]
 		if comp.group != nil || comp.channel == zeroComponent {
 			continue
 		}
-		if comp.unknown {
-			comp.fixed = c.scale
-		}
-		for i := range u {
+		for i := lo; i < hi; i++ {
 			v := comp.u(i)
 			if comp.on >= 0 {
-				v *= slope[comp.on][i]
+				v *= slope[comp.on][i-lo]
 			}
 			u[i] += v * v
 		}
 	}
-	for i := range u {
+	for i := lo; i < hi; i++ {
 		u[i] = math.Sqrt(u[i])
 	}
 	if e == nil {
 		return
 	}
-	at := 0
-	for i := range c.record {
+	shares := c.zero.shares()
+	at := e.Start[lo]
+	for i := lo; i < hi; i++ {
 		for k := range c.comps {
 			comp := &c.comps[k]
 			switch {
 			case comp.channel == zeroComponent:
 				s := c.zeroNoise()
-				for j := c.zero.start[i]; j < c.zero.start[i+1]; j++ {
-					e.Load[at] = -c.zero.weight[j] * c.zero.unit[c.zero.column[j]] * s
+				column, weight := shares.row(i)
+				for j, col := range column {
+					e.Load[at] = -weight[j] * c.zero.unit[col] * s
 					at++
 				}
 			case comp.group != nil:
 				v := comp.u(i)
 				if comp.on >= 0 {
-					v *= slope[comp.on][i]
+					v *= slope[comp.on][i-lo]
 				}
 				e.Load[at] = v
 				at++

@@ -156,7 +156,7 @@ func (c *chain) rankCauses(k *carried, residual []float64, solve func(v, dst []f
 			for p := range c.x {
 				x[p] = c.x[p][i]
 			}
-			g[i] = cause.Signature(k.q, x, fitted[i], c.t[i])
+			g[i] = cause.Signature(k.q, x, fitted[i], c.seconds(i))
 			known = known && !math.IsNaN(g[i]) && !math.IsInf(g[i], 0)
 		}
 		if !known {

@@ -17,7 +17,7 @@ func (c *chain) causes(r *lsq.Result, k *carried) []Cause {
 			ainv[a][b] = r.Covariance.At(a, b)
 		}
 	}
-	return c.rankCauses(k, r.Residuals, r.SolveCovariance, ainv, r.Jacobian())
+	return c.rankCauses(k, r.Residuals, r.SolveCovariance, ainv, r.Derivatives())
 }
 
 // rows lays out the readings as they stand after the fit, excluded ones too.
@@ -40,6 +40,17 @@ func (c *chain) rows(r *lsq.Result, out *Rows) {
 	}
 	out.N = len(out.Record)
 	out.Excluded = make([]bool, out.N)
+	if out.N == len(c.record) && c.readY == nil {
+		// Nothing was left out: the rows are those of the fit, shared with it.
+		out.Record, out.Predictors, out.Response, out.Fitted = c.record, c.x[:len(c.pred):len(c.pred)], c.y, r.Fitted
+		out.Residual, out.Leverage, out.Studentised, out.U = r.Residuals, r.Leverage, r.Studentised, r.Weights
+		for i, w := range r.Weights {
+			out.U[i] = 1 / math.Sqrt(w)
+		}
+		r.Weights, r.Standardised, r.CooksDistance = nil, nil, nil // what is left has no use here
+		out.Standardised = r.Whitened()
+		return
+	}
 	all := grid(8, out.N)
 	out.Response, out.Fitted, out.U, out.Residual = all[0], all[1], all[2], all[3]
 	out.Standardised, out.Leverage, out.Studentised = all[4], all[5], all[6]

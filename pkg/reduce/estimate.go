@@ -10,7 +10,7 @@ import (
 
 // estimate fits the chain at its stated inputs.
 func (c *chain) estimate(ctx context.Context) (*lsq.Result, error) {
-	p := &lsq.Problem{Y: c.y, U: make([]float64, len(c.y))}
+	p := &lsq.Problem{Y: c.y, U: make([]float64, len(c.y)), Scratch: true}
 	for k, f := range c.free {
 		s := &c.b.Scalars[f]
 		par := lsq.Parameter{Name: s.Name, Start: c.start[k]}
@@ -37,9 +37,13 @@ func (c *chain) estimate(ctx context.Context) (*lsq.Result, error) {
 	}
 	if !c.unknownNoise() {
 		c.reweight(at(c.start), p.U, p.Effects)
-		return lsq.Fit(ctx, p, lsq.Settings{})
+		r, err := lsq.Fit(ctx, p, lsq.Settings{})
+		p.U, p.Effects = nil, nil // the result carries the weights
+		return r, err
 	}
-	return c.estimateNoise(ctx, p, at)
+	r, err := c.estimateNoise(ctx, p, at)
+	p.U, p.Effects = nil, nil
+	return r, err
 }
 
 // unknownNoise reports whether the noise of the response is to come from the

@@ -82,10 +82,28 @@ func toIndication(gain, offset float64, lo, hi int, f []float64, jac [][]float64
 // in want, over all rows, at scalars q.
 func (c *chain) slopes(q []float64, want []bool) [][]float64 {
 	out := make([][]float64, len(c.pred))
-	seeds := 0
 	for p, w := range want {
 		if w {
 			out[p] = make([]float64, len(c.record))
+		}
+	}
+	parallel(len(c.record), chunkRows, func(lo, hi int) {
+		for p, s := range c.slopesOf(q, want, lo, hi) {
+			if want[p] {
+				copy(out[p][lo:hi], s)
+			}
+		}
+	})
+	return out
+}
+
+// slopesOf returns the slopes of rows lo to hi−1.
+func (c *chain) slopesOf(q []float64, want []bool, lo, hi int) [][]float64 {
+	out := make([][]float64, len(c.pred))
+	seeds := 0
+	for p, w := range want {
+		if w {
+			out[p] = make([]float64, hi-lo)
 			seeds++
 		}
 	}
@@ -93,30 +111,28 @@ func (c *chain) slopes(q []float64, want []bool) [][]float64 {
 		return out
 	}
 	g, _ := gainOffset(&c.b.Channels[c.resp])
-	parallel(len(c.record), chunkRows, func(lo, hi int) {
-		space := jet.NewSpace(seeds, 0)
-		qj := constants(q)
-		xj := make([]jet.Jet, len(c.x))
-		for i := lo; i < hi; i++ {
-			space.Reset()
-			s := 0
-			for p := range c.x {
-				if p < len(want) && want[p] {
-					xj[p] = space.Var(s, c.x[p][i])
-					s++
-				} else {
-					xj[p] = jet.Const(c.x[p][i])
-				}
-			}
-			r := c.m.Row(qj, xj)
-			s = 0
-			for p := range want {
-				if want[p] {
-					out[p][i] = r.Grad(s) / g
-					s++
-				}
+	space := jet.NewSpace(seeds, 0)
+	qj := constants(q)
+	xj := make([]jet.Jet, len(c.x))
+	for i := lo; i < hi; i++ {
+		space.Reset()
+		s := 0
+		for p := range c.x {
+			if p < len(want) && want[p] {
+				xj[p] = space.Var(s, c.x[p][i])
+				s++
+			} else {
+				xj[p] = jet.Const(c.x[p][i])
 			}
 		}
-	})
+		r := c.m.Row(qj, xj)
+		s = 0
+		for p := range want {
+			if want[p] {
+				out[p][i-lo] = r.Grad(s) / g
+				s++
+			}
+		}
+	}
 	return out
 }

@@ -124,6 +124,7 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 	if res.Record.Series, err = c.seriesRecords(fit, k, p); err != nil {
 		return nil, err
 	}
+	k.weighed, k.slope = nil, nil // the laws are stated
 	res.Record.Diagnosis.Causes = c.causes(fit, k)
 	res.warn(judge(&res.Record)...)
 	if !s.LawOnly {

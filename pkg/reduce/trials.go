@@ -245,10 +245,11 @@ func (w *worker) drawComponent(src *random.Source, comp *component) {
 	if comp.channel == zeroComponent {
 		e := draw(comp.count)
 		s := scale * c.zeroNoise()
+		shares := c.zero.shares()
 		for i := range w.y {
-			for j := c.zero.start[i]; j < c.zero.start[i+1]; j++ {
-				col := c.zero.column[j]
-				w.y[i] -= c.zero.weight[j] * c.zero.unit[col] * s * e[col]
+			column, weight := shares.row(i)
+			for j, col := range column {
+				w.y[i] -= weight[j] * c.zero.unit[col] * s * e[col]
 			}
 		}
 		return

@@ -16,19 +16,28 @@ import (
 // found from the rows of kind "zero", and the blank, found from the rows of kind
 // "blank" after the zero has been taken off them.
 //
-// Row i is lowered by value[i]. Its error is −Σ_k weight[k]·unit[column[k]]·ε over
-// start[i] ≤ k < start[i+1], with independent ε of the standard uncertainty of one
-// reading, shared by all rows that use the same column: the noise of zeros and
-// blanks does not average out over the rows they serve.
+// Row i is lowered by at(i). Its error is −Σ_k weight[k]·unit[column[k]]·ε over the
+// columns and weights of its shares, with independent ε of the standard uncertainty
+// of one reading, shared by all rows that use the same column: the noise of zeros
+// and blanks does not average out over the rows they serve.
 type zeroModel struct {
-	value  []float64
-	start  []int32
-	column []int32
-	weight []float64
-	unit   []float64
-	coef   []float64 // one entry a column; the coefficients that have noise
-	parts  []zeroPart
+	zero, blank *baseline   // nil: not in use
+	through     [][]float64 // see blankThroughZero
+	time        func(row int) float64
+	rows        int
+	entries     int // columns of all rows together
+	unit        []float64
+	coef        []float64 // one entry a column; the coefficients that have noise
+	parts       []zeroPart
+
+	// The shares of all rows, where memory allows; else nil, and they are found
+	// again where they are wanted.
+	start, column []int32
+	weight        []float64
 }
+
+// keptShares is the number of rows up to which their shares are kept.
+const keptShares = 1 << 17
 
 // zeroPart is the share of one correction: the sums over the rows of its square,
 // and of its variance in units of that of one reading.
@@ -55,10 +64,6 @@ var baselineMethods = []string{"interpolate", "linear", "mean", "exponential"}
 // fitZero prepares the zero and the blank, or returns nil when the bench has
 // neither.
 func (c *chain) fitZero() (*zeroModel, error) {
-	rows := make([]float64, len(c.record))
-	for k, i := range c.record {
-		rows[k] = c.timeOf(i)
-	}
 	zero, _, err := c.baselineOf("zero", bench.Zero, nil)
 	if err != nil {
 		return nil, err
@@ -70,12 +75,9 @@ func (c *chain) fitZero() (*zeroModel, error) {
 	if zero == nil && blank == nil {
 		return nil, nil
 	}
-	z := &zeroModel{value: make([]float64, len(rows)), start: make([]int32, 0, len(rows)+1),
-		column: make([]int32, 0, 2*len(rows)), weight: make([]float64, 0, 2*len(rows))}
-	nz := 0
+	z := &zeroModel{zero: zero, blank: blank, rows: len(c.record), time: func(row int) float64 { return c.timeOf(c.record[row]) }}
 	if zero != nil {
 		z.unit = append(z.unit, zero.unit...)
-		nz = len(zero.unit)
 		z.parts = append(z.parts, zeroPart{name: "zero"})
 	}
 	if blank != nil {
@@ -83,52 +85,102 @@ func (c *chain) fitZero() (*zeroModel, error) {
 		z.parts = append(z.parts, zeroPart{name: "blank"})
 	}
 	z.coef = make([]float64, len(z.unit))
-	through := blankThroughZero(blank, zero, blankTimes)
-	sum, part := newSparse(len(z.unit)), newSparse(len(z.unit))
-	for i, t := range rows {
-		p := 0
-		if zero != nil {
-			v, cols, w := zero.at(t)
-			for k, col := range cols {
-				sum.add(col, w[k])
-				part.add(col, w[k])
-			}
-			z.take(p, i, v, part)
-			p++
-		}
-		if blank != nil {
-			v, cols, w := blank.at(t)
-			for k, col := range cols {
-				sum.add(nz+col, w[k])
-				part.add(nz+col, w[k])
-				for j, f := range through[col] {
-					if f != 0 {
-						sum.add(j, -w[k]*f)
-						part.add(j, -w[k]*f)
-					}
-				}
-			}
-			z.take(p, i, v, part)
-		}
-		z.start = append(z.start, int32(len(z.column)))
-		z.column, z.weight = sum.flush(z.column, z.weight)
+	z.through = blankThroughZero(blank, zero, blankTimes)
+	keep := z.rows <= keptShares
+	if keep {
+		z.start = make([]int32, 1, z.rows+1)
+		z.column, z.weight = make([]int32, 0, 2*z.rows), make([]float64, 0, 2*z.rows)
 	}
-	z.start = append(z.start, int32(len(z.column)))
+	shares := z.newShares()
+	for i := range z.rows {
+		column, weight := shares.find(i, z.parts)
+		z.entries += len(column)
+		if keep {
+			z.column, z.weight = append(z.column, column...), append(z.weight, weight...)
+			z.start = append(z.start, int32(len(z.column)))
+		}
+	}
 	return z, nil
 }
 
-// take adds a part's value at row i, and notes its uncertainty from the weights
-// gathered in w, which is emptied.
-func (z *zeroModel) take(part, i int, v float64, w *sparse) {
-	z.value[i] += v
-	z.parts[part].squares += v * v
-	var s float64
-	for _, col := range w.used {
-		f := w.sum[col] * z.unit[col]
-		s += f * f
+// zeroShares finds the shares of rows; each goroutine has its own.
+type zeroShares struct {
+	z         *zeroModel
+	sum, part *sparse
+	column    []int32
+	weight    []float64
+}
+
+func (z *zeroModel) newShares() *zeroShares {
+	return &zeroShares{z: z, sum: newSparse(len(z.unit)), part: newSparse(len(z.unit))}
+}
+
+// shares returns what tells the shares of rows; nil when there is no zero model.
+func (z *zeroModel) shares() *zeroShares {
+	switch {
+	case z == nil:
+		return nil
+	case z.start != nil:
+		return &zeroShares{z: z}
 	}
-	z.parts[part].variance += s
-	w.clear()
+	return z.newShares()
+}
+
+// row is the columns and weights of row i, until the next call.
+func (s *zeroShares) row(i int) (column []int32, weight []float64) {
+	if z := s.z; z.start != nil {
+		lo, hi := z.start[i], z.start[i+1]
+		return z.column[lo:hi], z.weight[lo:hi]
+	}
+	return s.find(i, nil)
+}
+
+// find works out the shares of row i and, where parts are given, adds to them
+// what each takes off this row.
+func (s *zeroShares) find(i int, parts []zeroPart) (column []int32, weight []float64) {
+	z, t := s.z, s.z.time(i)
+	p, nz := 0, 0
+	if z.zero != nil {
+		nz = len(z.zero.unit)
+		v, cols, w := z.zero.at(t)
+		for k, col := range cols {
+			s.sum.add(col, w[k])
+			s.part.add(col, w[k])
+		}
+		s.take(parts, p, v)
+		p++
+	}
+	if z.blank != nil {
+		v, cols, w := z.blank.at(t)
+		for k, col := range cols {
+			s.sum.add(nz+col, w[k])
+			s.part.add(nz+col, w[k])
+			for j, f := range z.through[col] {
+				if f != 0 {
+					s.sum.add(j, -w[k]*f)
+					s.part.add(j, -w[k]*f)
+				}
+			}
+		}
+		s.take(parts, p, v)
+	}
+	s.column, s.weight = s.sum.flush(s.column[:0], s.weight[:0])
+	return s.column, s.weight
+}
+
+// take adds the value v of a part at one row, and its uncertainty from the
+// weights gathered in s.part, which is emptied.
+func (s *zeroShares) take(parts []zeroPart, p int, v float64) {
+	if parts != nil {
+		parts[p].squares += v * v
+		var sum float64
+		for _, col := range s.part.used {
+			f := s.part.sum[col] * s.z.unit[col]
+			sum += f * f
+		}
+		parts[p].variance += sum
+	}
+	s.part.clear()
 }
 
 // blankThroughZero is how the coefficients of the blank hang on those of the zero
@@ -409,7 +461,19 @@ func (s *sparse) flush(column []int32, weight []float64) ([]int32, []float64) {
 }
 
 // at returns what row i is lowered by.
-func (z *zeroModel) at(i int) float64 { return z.value[i] }
+func (z *zeroModel) at(i int) float64 {
+	t := z.time(i)
+	var sum float64
+	if z.zero != nil {
+		v, _, _ := z.zero.at(t)
+		sum += v
+	}
+	if z.blank != nil {
+		v, _, _ := z.blank.at(t)
+		sum += v
+	}
+	return sum
+}
 
 // name says what the model takes off, for the budget.
 func (z *zeroModel) name() string {
@@ -429,7 +493,7 @@ func (z *zeroModel) subtracted(name string, noise float64) (size, u Number) {
 		if p.name != name {
 			continue
 		}
-		n := float64(len(z.value))
+		n := float64(z.rows)
 		return Number(math.Sqrt(p.squares / n)), Number(noise * math.Sqrt(p.variance/n))
 	}
 	return 0, 0
@@ -437,11 +501,9 @@ func (z *zeroModel) subtracted(name string, noise float64) (size, u Number) {
 
 // applyZero subtracts zero and blank from the response readings.
 func (c *chain) applyZero() {
-	c.y = c.yr
 	if c.zero == nil {
 		return
 	}
-	c.y = append([]float64(nil), c.yr...)
 	for i := range c.y {
 		c.y[i] -= c.zero.at(i)
 	}
