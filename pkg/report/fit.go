@@ -236,9 +236,13 @@ func (d *document) fitParameters(rec *reduce.FitRecord) {
 		d.say("Intervals hold the parameter with a probability of " + strings.ReplaceAll(si.Percent(float64(rec.Intervals[0].Probability)), " ", nbsp) +
 			"; those of the profile of chi-squared and of the bootstrap don't rest on the formula being linear near the estimate.")
 	}
+	if rec.Fit.ResponseUnit == "" {
+		d.say("Not every header states a unit, so that dimensions are not checked: numbers are those of the table, in SI where its header has a unit.")
+		return
+	}
 	for _, p := range rec.Fit.Parameters {
 		if p.Unit == "" {
-			d.say("A parameter without a unit is given in the numbers of the table (SI where a column states a unit): its unit does not follow from the headers.")
+			d.say("A parameter without a unit is in SI: its unit does not follow from the headers.")
 			return
 		}
 	}

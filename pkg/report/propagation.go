@@ -122,7 +122,7 @@ func quantity(x float64, unit si.Unit, n int) string {
 // statedOutput gives the two lines of an output.
 func statedOutput(o *reduce.BudgetResult) result {
 	u := outputUnit(o)
-	r := result{name: o.Name, doc: o.Name + " = " + o.Formula}
+	r := result{name: o.Name, doc: "= " + o.Formula}
 	mc := o.MonteCarlo
 	if l := o.Law; l != nil && (l.U > 0 || mc == nil || !(mc.U > 0)) {
 		r.short = minus(si.Short(float64(l.Value), float64(l.U), u))
