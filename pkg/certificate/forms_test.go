@@ -286,3 +286,29 @@ func TestOtherDefinition(t *testing.T) {
 	}
 	written(t, c, (*Certificate).HTML)
 }
+
+// TestOtherKind: a bench without series states all its measurands, with the same
+// gate less what only field meters need.
+func TestOtherKind(t *testing.T) {
+	r := result(t, "attracted-disc")
+	meter := result(t, "field-meter").Bench
+	b := r.Bench
+	b.Client, b.Item, b.Work, b.Instruments = meter.Client, meter.Item, meter.Work, meter.Instruments
+	b.Work.Adjusted = false
+	b.Environment = meter.Environment
+	c := made(t, r)
+	if len(c.Results) != len(r.Record.Measurands) {
+		t.Errorf("%d results; the record has %d measurands", len(c.Results), len(r.Record.Measurands))
+	}
+	m := &r.Record.Measurands[0]
+	_, unit := si.Prefixed(float64(m.Value), si.MustUnit(m.Unit))
+	v, u := si.Round(unit.FromSI(float64(m.Value)), unit.DeltaFromSI(float64(m.K*m.U)))
+	page := text(written(t, c, (*Certificate).HTML))
+	if want := "|" + v + "||" + u + "||" + unit.Unicode() + "|"; !strings.Contains(page, want) {
+		t.Errorf("HTML has no row %q", want)
+	}
+	if doc := written(t, c, (*Certificate).XML); !strings.Contains(doc, `<si:unit>\pico\farad\metre\tothe{-1}</si:unit>`) {
+		t.Error("XML does not state the permittivity in D-SI words")
+	}
+	written(t, c, (*Certificate).PDF)
+}

@@ -7,6 +7,7 @@ import (
 	"strings"
 
 	"example.org/guardring/pkg/assess"
+	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/si"
 )
 
@@ -16,6 +17,15 @@ func (s *Sheet) Page(w io.Writer) error {
 	p := &pager{}
 	p.document(&s.d)
 	return p.to(w)
+}
+
+// equals writes a probability with its sign: "= 0.50", "< 0.0001".
+func equals(p float64) string {
+	s := probability(reduce.Number(p))
+	if strings.HasPrefix(s, "<") {
+		return s
+	}
+	return "= " + s
 }
 
 // assessed is the unit in which results of an assessment are shown.
@@ -58,7 +68,7 @@ func Agreement(a *assess.Agreement, measurand string) *Sheet {
 		unit = nbsp + t
 	}
 	s.Fact("weighted mean", v+unit+", u = "+u+unit)
-	chi := fmt.Sprintf("%s with %s, p = %s", digits(m.ChiSquared, 3), plural(m.DOF, "degree of freedom", "degrees of freedom"), Number(m.PValue, 2))
+	chi := fmt.Sprintf("%s with %s, p %s", digits(m.ChiSquared, 3), plural(m.DOF, "degree of freedom", "degrees of freedom"), equals(m.PValue))
 	if !m.Consistent {
 		chi += fmt.Sprintf(" (NOT consistent at %s)", strings.ReplaceAll(si.Percent(m.Level), " ", nbsp))
 	}
@@ -168,11 +178,11 @@ func Drift(l *assess.Line, what string, predictions []*assess.Prediction) *Sheet
 		verdict = "It drifts."
 	}
 	s.Head("Result").Say(verdict)
-	s.Fact("drift", fmt.Sprintf("%s%s per year, u = %s%s, p = %s by the stated uncertainties, %s by the scatter", rounded(slope), unit, power(us), unit,
-		Number(l.PSlope, 2), Number(l.PScatter, 2)))
+	s.Fact("drift", fmt.Sprintf("%s%s per year, u = %s%s, p %s by the stated uncertainties, %s by the scatter", rounded(slope), unit, power(us), unit,
+		equals(l.PSlope), equals(l.PScatter)))
 	v, u := rescaled(l.Level, l.ULevel, from, to)
 	s.Fact("level", fmt.Sprintf("%s%s, u = %s%s, on %s", v, unit, u, unit, l.Reference.Format("2006-01-02")))
-	s.Fact("chi-squared", fmt.Sprintf("%s with %s, p = %s", digits(l.ChiSquared, 3), plural(l.DOF, "degree of freedom", "degrees of freedom"), Number(l.PValue, 2)))
+	s.Fact("chi-squared", fmt.Sprintf("%s with %s, p %s", digits(l.ChiSquared, 3), plural(l.DOF, "degree of freedom", "degrees of freedom"), equals(l.PValue)))
 	if l.Latest != nil {
 		s.Fact("latest", fmt.Sprintf("%s standard uncertainties from what the others predict: %s", fixed(l.Latest.Score, 1), l.Latest.Signal))
 	}
