@@ -11,6 +11,9 @@
 //	guardring fit FILE.csv            fit a formula to the columns of a CSV file
 //	guardring propagate BUDGET.toml   propagate a budget by the law and by Monte Carlo
 //	guardring merge PART...           join the parts of a long propagation
+//	guardring certificate DIR -o FILE the calibration certificate: .html, .pdf, .xml
+//	guardring compare RESULT.json...  do laboratories agree
+//	guardring history DIR...          follow an instrument over its calibrations
 //	guardring kernel install          install the notebook kernel
 //	guardring version                 version and modules
 //
