@@ -23,7 +23,10 @@ func LaTeXRecord(w io.Writer, rec *reduce.Record) error {
 }
 
 // setter writes the LaTeX form.
-type setter struct{ b strings.Builder }
+type setter struct {
+	b     strings.Builder
+	tight bool // tables are set smaller, the more columns they have: they stand in somebody else's page
+}
 
 func (s *setter) to(w io.Writer) error {
 	_, err := io.WriteString(w, s.b.String())
@@ -147,6 +150,17 @@ func (s *setter) blocks(d *document, heading func(string) string) {
 			b.WriteString(tex(bl.figure.String()) + "\\par\n")
 		}
 	}
+}
+
+// size chooses the size of a table's type.
+func (s *setter) size(t *Table) string {
+	switch {
+	case !s.tight || len(t.Columns) < 6:
+		return `\small`
+	case len(t.Columns) < 9:
+		return `\footnotesize\setlength{\tabcolsep}{4pt}`
+	}
+	return `\scriptsize\setlength{\tabcolsep}{3pt}`
 }
 
 // narrow is the length of a text up to which a column is set on one line; wider

@@ -80,7 +80,7 @@ func (s *Sheet) HTML() string {
 
 // LaTeX returns the sheet for the body of a document; it needs no package.
 func (s *Sheet) LaTeX() string {
-	t := &setter{}
+	t := &setter{tight: true}
 	t.sheet(&s.d)
 	return t.b.String()
 }

@@ -173,9 +173,11 @@ func (t *Table) String() string {
 
 // SimpleRender gives the forms that a notebook can show.
 func (t *Table) SimpleRender() map[string]any {
-	h, l := &pager{inline: true}, &setter{}
+	h, l := &pager{inline: true}, &setter{tight: true}
 	h.table(t)
+	l.b.WriteString("{" + l.size(t) + "\n")
 	l.table(t)
+	l.b.WriteString("\\par}\n")
 	return map[string]any{
 		"text/plain": t.String(),
 		"text/html":  h.b.String(),
