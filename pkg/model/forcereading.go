@@ -141,10 +141,9 @@ type equilibrium struct {
 func (v *balanceValues) settle(rest float64, law func(d float64) (f, df float64)) (e equilibrium) {
 	for range 100 {
 		s, c := math.Sincos(e.phi)
-		half := math.Sin(0.5 * e.phi)
-		x := rest*v.sinLine - 2*v.arm*half*half
+		x := rest*v.sinLine - v.arm*s*s/(1+c) // 1 − cos φ without its cancellation
 		y := rest*v.cosLine + v.arm*s
-		e.dist = math.Hypot(x, y)
+		e.dist = math.Sqrt(x*x + y*y)
 		e.cos = (y*c - x*s) / e.dist
 		sin := (y*s + x*c) / e.dist
 		e.f, e.df = law(e.dist)
