@@ -90,6 +90,9 @@ func serve(path string) error {
 	ctx, stop := signal.NotifyContext(context.Background(), syscall.SIGTERM)
 	defer stop()
 	go kernel.ExitWithParent(func() { os.Exit(0) })
+	if err := kernel.ReleaseProgramPages(); err != nil {
+		fmt.Fprintln(stderr, "guardring-kernel: pages of the start stay in memory:", err)
+	}
 	debug.SetMaxStack(4 << 30) // room for gointerp to notice a recursion without an end
 	if err := server.Serve(ctx); err != nil {
 		return err
