@@ -139,11 +139,7 @@ func (s *setter) blocks(d *document, heading func(string) string) {
 			}
 			b.WriteString("\\end{description}\n")
 		case bl.table != nil:
-			size := "\\small"
-			if len(bl.table.Columns) > 7 {
-				size = "\\footnotesize\\setlength{\\tabcolsep}{3pt}"
-			}
-			b.WriteString("{" + size + "\n")
+			b.WriteString("{" + s.size(bl.table) + "\n")
 			s.table(bl.table)
 			b.WriteString("\\par}\n")
 		case bl.figure != nil:
@@ -154,11 +150,15 @@ func (s *setter) blocks(d *document, heading func(string) string) {
 
 // size chooses the size of a table's type.
 func (s *setter) size(t *Table) string {
+	n := len(t.Columns)
+	if s.tight {
+		n += 2
+	}
 	switch {
-	case !s.tight || len(t.Columns) < 6:
+	case n < 8:
 		return `\small`
-	case len(t.Columns) < 9:
-		return `\footnotesize\setlength{\tabcolsep}{4pt}`
+	case n < 11 || !s.tight:
+		return `\footnotesize\setlength{\tabcolsep}{3pt}`
 	}
 	return `\scriptsize\setlength{\tabcolsep}{3pt}`
 }
