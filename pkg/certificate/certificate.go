@@ -44,11 +44,13 @@ type Certificate struct {
 	Cautions       []string
 	Persons        []Person
 	Amendment      *Amendment
+	Check          string // of the uncertainty by Monte Carlo trials; "" when none was made
 	Software       string // version
 	Inputs         []reduce.Input
 	Run            string
 
 	item    bench.Item
+	base    string // name of the measurand that is stated
 	figures []*figure.Figure
 }
 
@@ -167,6 +169,7 @@ func New(r *reduce.Result, s Settings) (*Certificate, error) {
 	}
 	c.found()
 	c.leftOut(r)
+	c.trials(r, c.base)
 	for _, warning := range rec.Warnings {
 		c.Observations = append(c.Observations, identifiers.ReplaceAllStringFunc(figure.OneLine(warning), figure.Words))
 	}
@@ -182,6 +185,35 @@ func New(r *reduce.Result, s Settings) (*Certificate, error) {
 		return nil, err
 	}
 	return c, nil
+}
+
+// trials says whether the Monte Carlo check of the stated results confirms the law
+// of propagation (JCGM 101:2008 clause 8).
+func (c *Certificate) trials(r *reduce.Result, base string) {
+	n := 0
+	for i := range r.Record.Measurands {
+		m := &r.Record.Measurands[i]
+		if m.MonteCarlo == nil || !strings.HasPrefix(strings.TrimPrefix(m.Name, "shift of "), base) {
+			continue
+		}
+		n = m.MonteCarlo.Trials
+		if !m.MonteCarlo.Agrees {
+			c.Observations = append(c.Observations, fmt.Sprintf("%s: Monte Carlo trials do not confirm the law of propagation; their coverage interval is %s to %s",
+				figure.Words(m.Name), shown(significant(float64(m.MonteCarlo.Interval[0]), 6)), with(significant(float64(m.MonteCarlo.Interval[1]), 6), siUnit(m.Unit))))
+		}
+	}
+	if n > 0 {
+		c.Check = fmt.Sprintf(" and checked by %d Monte Carlo trials of the whole evaluation (JCGM 101:2008)", n)
+	}
+}
+
+// siUnit is the unit of a record.
+func siUnit(symbol string) si.Unit {
+	u, err := si.ParseUnit(symbol)
+	if err != nil {
+		return si.Unit{Symbol: symbol, Factor: 1}
+	}
+	return u
 }
 
 // leftOut says which readings did not enter the results.

@@ -105,6 +105,11 @@ func decide(b *bench.Bench, res *Result, m *reduce.Measurand) (*Conformity, erro
 		risk(producersRisk, g.Producer)
 		c.Population = g.PopulationSource
 	}
+	for _, d := range res.Departures {
+		if d.Found {
+			c.Warnings = append(c.Warnings, d.Name+" was found: the statement is about the one "+res.Value.Name+" of the series, not about each of its points")
+		}
+	}
 	for _, w := range st.Warnings {
 		c.Warnings = append(c.Warnings, w.Error())
 	}

@@ -7,6 +7,7 @@ import (
 	"testing"
 
 	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/reduce"
 )
 
 // TestGate takes away each item that a certificate must hold (ISO/IEC 17025:2017
@@ -157,5 +158,19 @@ func TestUnfitResults(t *testing.T) {
 	r.Bench.Report.Definition = "N = E/r"
 	if _, err := New(r, Settings{}); err == nil || !strings.Contains(err.Error(), "correction_factor, response") {
 		t.Errorf("an unknown definition: %v", err)
+	}
+}
+
+// TestTrialsThatDisagree are told on the certificate.
+func TestTrialsThatDisagree(t *testing.T) {
+	for _, agrees := range []bool{true, false} {
+		r := result(t, "field-meter-50hz")
+		r.Record.Measurands = append([]reduce.Measurand(nil), r.Record.Measurands...)
+		r.Record.Measurands[0].MonteCarlo = &reduce.MonteCarlo{Trials: 10000, Interval: [2]reduce.Number{1.0115, 1.0161}, Agrees: agrees}
+		c := made(t, r)
+		said := strings.Contains(strings.Join(c.Observations, "; "), "do not confirm the law of propagation; their coverage interval is 1.01150 to 1.01610")
+		if said == agrees || !strings.Contains(c.uncertainty(), "checked by 10000 Monte Carlo trials") {
+			t.Errorf("agrees %v: observations %q, uncertainty %q", agrees, c.Observations, c.uncertainty())
+		}
 	}
 }

@@ -32,6 +32,7 @@ func (c *Certificate) results(r *reduce.Result) error {
 	if err != nil {
 		return err
 	}
+	c.base = base
 	least, err := leastOf(b.Capability, rec, base)
 	if err != nil {
 		return err

@@ -93,8 +93,7 @@ func (c *Certificate) sheet() []block {
 	say(c.Traceability)
 	add(block{kind: table, table: c.instrumentGrid()})
 	head("Uncertainty")
-	say(fmt.Sprintf("U is the expanded uncertainty: the standard uncertainty times the coverage factor k stated beside it, chosen for a coverage probability of %s. "+
-		"It was evaluated by the law of propagation of uncertainty (JCGM 100:2008). U is given in the unit of the result.", strings.ReplaceAll(si.Percent(c.Coverage), " ", "\u00a0")))
+	say(c.uncertainty())
 	head("Deviations and remarks")
 	list(Fact{"deviations from the method", or(strings.Join(c.Deviations, "; "), "none")})
 	if len(c.Observations) > 0 {
@@ -132,6 +131,12 @@ func (c *Certificate) sheet() []block {
 	}
 	add(block{kind: end, text: "End of certificate " + c.Identification})
 	return out
+}
+
+// uncertainty says what U is and how it was found.
+func (c *Certificate) uncertainty() string {
+	return fmt.Sprintf("U is the expanded uncertainty: the standard uncertainty times the coverage factor k stated beside it, chosen for a coverage probability of %s. "+
+		"It was evaluated by the law of propagation of uncertainty (JCGM 100:2008)%s. U is given in the unit of the result.", spaced(si.Percent(c.Coverage)), c.Check)
 }
 
 func (c *Certificate) sheetResults(head func(string), list func(...Fact), add func(block)) {

@@ -215,6 +215,7 @@ func (x *writerXML) statements(e *etree.Element, c *Certificate) {
 	words(trace, "dcc:name", "traceability")
 	leaf(trace, "dcc:traceable", "true")
 	words(trace, "dcc:declaration", c.Traceability)
+	say("uncertainty", c.uncertainty())
 	say("deviations from the method", or(strings.Join(c.Deviations, "; "), "none"))
 	for _, o := range c.Observations {
 		say("evaluation", o)
