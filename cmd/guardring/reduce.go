@@ -136,22 +136,21 @@ func (o *reduceOptions) render(r *reduce.Result) ([]outFile, error) {
 	return files, nil
 }
 
-// writeFiles writes each file whole or not at all, making folders as needed.
+// writeFiles writes all files or none, each whole, making folders as needed.
 func writeFiles(files []outFile) error {
-	for _, f := range files {
+	set := make([]safefile.File, len(files))
+	for i, f := range files {
 		if dir := filepath.Dir(f.path); dir != "." {
 			if err := os.MkdirAll(dir, 0o777); err != nil {
 				return err
 			}
 		}
-		if err := safefile.Write(f.path, func(w io.Writer) error {
+		set[i] = safefile.File{Path: f.path, Write: func(w io.Writer) error {
 			_, err := w.Write(f.data)
 			return err
-		}); err != nil {
-			return err
-		}
+		}}
 	}
-	return nil
+	return safefile.WriteSet(set)
 }
 
 // writeJSON prints a document with indentation and a final newline.

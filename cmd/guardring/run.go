@@ -7,6 +7,7 @@ import (
 	"io"
 	"os"
 	"os/signal"
+	"runtime/debug"
 	"syscall"
 
 	"github.com/spf13/cobra"
@@ -29,8 +30,16 @@ type differs struct{ error }
 // said is an error whose message has been printed already.
 type said struct{ error }
 
+// memoryLimit is where the collector starts to work harder rather than let the
+// program grow: a million rows then fit into 250 MB. It is soft, and
+// GOMEMLIMIT in the environment takes its place.
+const memoryLimit = 200 << 20
+
 // run is the command: arguments and streams in, exit code out.
 func run(ctx context.Context, args []string, stdin io.Reader, stdout, stderr io.Writer) int {
+	if os.Getenv("GOMEMLIMIT") == "" {
+		debug.SetMemoryLimit(memoryLimit)
+	}
 	ctx, stop := signal.NotifyContext(ctx, os.Interrupt, syscall.SIGTERM)
 	defer stop()
 	// After the first interrupt the next one ends the program the usual way.
@@ -85,7 +94,6 @@ that is singular or has not converged, or a failed write; 130 interrupted.`,
 		Args:          cobra.NoArgs,
 		RunE:          func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
 	}
-	root.CompletionOptions.HiddenDefaultCmd = true
 	root.AddCommand(reduceCommand(), checkCommand(), newCommand(), certificateCommand(), compareCommand(), historyCommand(), simulateCommand(), planCommand(), strayfieldCommand(), fitCommand(), propagateCommand(), mergeCommand(), kernelCommand(), replayCommand(), packCommand(), versionCommand())
 	return root
 }

@@ -8,6 +8,9 @@ import "errors"
 // rename is journalled by the file system.
 func syncFolder(string) error { return nil }
 
+// lockFolder does nothing where folders can't be locked.
+func lockFolder(string) (unlock func(), err error) { return func() {}, nil }
+
 // chmodUnsupported reports whether the system keeps no such permissions:
 // Windows has none for an open file.
 func chmodUnsupported(err error) bool {

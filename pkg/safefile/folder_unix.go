@@ -26,6 +26,28 @@ func syncFolder(folder string) error {
 	return errors.Join(err, f.Close())
 }
 
+// lockFolder keeps other programs that call it out until unlock; the system
+// unlocks when the program ends. File systems without such locks are let pass.
+func lockFolder(folder string) (unlock func(), err error) {
+	f, err := os.Open(folder)
+	if err != nil {
+		if errors.Is(err, os.ErrPermission) {
+			return func() {}, nil // it can't be listed, so it can't be locked
+		}
+		return nil, err
+	}
+	for {
+		err = syscall.Flock(int(f.Fd()), syscall.LOCK_EX)
+		if !errors.Is(err, syscall.EINTR) {
+			break
+		}
+	}
+	if err != nil && !errors.Is(err, syscall.ENOTSUP) && !errors.Is(err, syscall.ENOLCK) && !errors.Is(err, syscall.EINVAL) {
+		return nil, errors.Join(err, f.Close())
+	}
+	return func() { f.Close() }, nil
+}
+
 // chmodUnsupported reports whether the file system keeps no permissions (FAT
 // and some network mounts), where there is nothing to set.
 func chmodUnsupported(err error) bool {

@@ -8,6 +8,7 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+	"slices"
 )
 
 // mode is the permission of files written here: readable by all, as results
@@ -30,64 +31,127 @@ const bufferSize = 64 << 10
 // A symbolic link at path is followed, so that the link stays and the file it
 // names is replaced. A target that is a folder, a device, a pipe or a socket
 // is refused. A panic in write also removes the temporary file.
-func Write(path string, write func(io.Writer) error) (err error) {
-	if path == "" {
-		return errors.New("safefile: no file name given")
-	}
-	if write == nil {
-		return fmt.Errorf("write %s: no content given", path)
-	}
+func Write(path string, write func(io.Writer) error) error {
+	return WriteSet([]File{{Path: path, Write: write}})
+}
+
+// File is one file of a set: its path and what puts its content into a writer.
+type File struct {
+	Path  string
+	Write func(io.Writer) error
+}
+
+// WriteSet replaces several files as Write does one: all contents are on the
+// disk before the first takes its name, so that an error in any leaves all old
+// files. Two programs that replace the same set at once do not mix: one of them
+// takes all names first (on Unix; Windows has no lock of a folder). A program
+// that is ended between two renames leaves new files beside old ones, each whole.
+func WriteSet(files []File) (err error) {
+	staged := make([]*staging, 0, len(files))
 	defer func() {
-		if err != nil {
-			err = fmt.Errorf("write %s: %w", path, err)
+		for _, s := range staged {
+			err = errors.Join(err, s.discard())
 		}
 	}()
-	target, err := resolve(path)
-	if err != nil {
-		return err
-	}
-	folder := filepath.Dir(target)
-	temp, err := os.CreateTemp(folder, ".guardring-*.tmp")
-	if err != nil {
-		return err
-	}
-	name := temp.Name()
-	done := false
-	defer func() {
-		if done {
-			return
+	for _, f := range files {
+		s, err := stage(f)
+		if s != nil {
+			staged = append(staged, s)
 		}
-		// The first error is what the caller must see; a temporary file that
-		// can't be removed is told beside it.
-		temp.Close() // closing twice is harmless: the file is given up
-		if e := os.Remove(name); e != nil && !errors.Is(e, fs.ErrNotExist) {
-			err = errors.Join(err, fmt.Errorf("remove the temporary file: %w", e))
+		if err != nil {
+			return fmt.Errorf("write %s: %w", f.Path, err)
+		}
+	}
+	folders := make([]string, len(staged))
+	for i, s := range staged {
+		folders[i] = filepath.Dir(s.target)
+	}
+	slices.Sort(folders)
+	folders = slices.Compact(folders)
+	if len(files) > 1 {
+		for _, folder := range folders {
+			unlock, err := lockFolder(folder)
+			if err != nil {
+				return fmt.Errorf("write into %s: %w", folder, err)
+			}
+			defer unlock()
+		}
+	}
+	for _, s := range staged {
+		if err := os.Rename(s.temp, s.target); err != nil {
+			return fmt.Errorf("write %s: %w", s.path, err)
+		}
+		s.done = true
+	}
+	for _, folder := range folders {
+		if err := syncFolder(folder); err != nil {
+			return fmt.Errorf("write into %s: the new file stands, but its folder could not be flushed to the disk: %w", folder, err)
+		}
+	}
+	return nil
+}
+
+// staging is a new content under a temporary name.
+type staging struct {
+	path, target, temp string
+	file               *os.File
+	done               bool
+}
+
+// discard removes the temporary file unless it has taken its name.
+func (s *staging) discard() error {
+	if s.done {
+		return nil
+	}
+	// The first error is what the caller must see; a temporary file that can't
+	// be removed is told beside it.
+	s.file.Close() // closing twice is harmless: the file is given up
+	if err := os.Remove(s.temp); err != nil && !errors.Is(err, fs.ErrNotExist) {
+		return fmt.Errorf("remove the temporary file: %w", err)
+	}
+	return nil
+}
+
+// stage writes the content of f under a temporary name and flushes it to the
+// disk. What it returns must be discarded, on an error too.
+func stage(f File) (s *staging, err error) {
+	if f.Path == "" {
+		return nil, errors.New("no file name given")
+	}
+	if f.Write == nil {
+		return nil, errors.New("no content given")
+	}
+	target, err := resolve(f.Path)
+	if err != nil {
+		return nil, err
+	}
+	temp, err := os.CreateTemp(filepath.Dir(target), ".guardring-*.tmp")
+	if err != nil {
+		return nil, err
+	}
+	s = &staging{path: f.Path, target: target, temp: temp.Name(), file: temp}
+	panicked := true
+	defer func() {
+		if panicked {
+			_ = s.discard() // the panic goes on and says more
 		}
 	}()
 	w := bufio.NewWriterSize(temp, bufferSize)
-	if err := write(w); err != nil {
-		return err
+	err = f.Write(w)
+	panicked = false
+	if err != nil {
+		return s, err
 	}
 	if err := w.Flush(); err != nil {
-		return err
+		return s, err
 	}
 	if err := temp.Chmod(mode); err != nil && !chmodUnsupported(err) {
-		return err
+		return s, err
 	}
 	if err := temp.Sync(); err != nil {
-		return err
+		return s, err
 	}
-	if err := temp.Close(); err != nil {
-		return err
-	}
-	if err := os.Rename(name, target); err != nil {
-		return err
-	}
-	done = true
-	if err := syncFolder(folder); err != nil {
-		return fmt.Errorf("the new file stands, but its folder could not be flushed to the disk: %w", err)
-	}
-	return nil
+	return s, temp.Close()
 }
 
 // WriteBytes replaces the file at path by data, as Write does.

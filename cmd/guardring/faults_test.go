@@ -1,0 +1,537 @@
+//go:build linux || darwin
+
+package main
+
+import (
+	"bytes"
+	"context"
+	"errors"
+	"fmt"
+	"math/rand/v2"
+	"os"
+	"os/exec"
+	"path/filepath"
+	"strings"
+	"sync"
+	"syscall"
+	"testing"
+	"time"
+
+	"example.org/guardring/pkg/kernel"
+)
+
+// long says that the long run is wanted: more of everything, and what takes root.
+var long = os.Getenv("GUARDRING_LONG") != ""
+
+// command returns the path of a file that runs the command: the test program
+// itself under another name, see TestMain.
+func command(t *testing.T) string {
+	t.Helper()
+	exe, err := os.Executable()
+	if err != nil {
+		t.Fatal(err)
+	}
+	link := filepath.Join(t.TempDir(), "guardring")
+	if err := os.Symlink(exe, link); err != nil {
+		t.Fatal(err)
+	}
+	return link
+}
+
+// dataset copies a dataset of the repository.
+func dataset(t *testing.T, name, to string) {
+	t.Helper()
+	if err := os.CopyFS(to, os.DirFS(filepath.Join("..", "..", "datasets", name))); err != nil {
+		t.Fatal(err)
+	}
+}
+
+// victim is a command to be killed while it writes.
+type victim struct {
+	name    string
+	args    []string // run in the folder
+	outputs []string // what it leaves, relative to the folder
+	old     bool     // whether old outputs stand there before
+	prepare func(t *testing.T, dir string)
+}
+
+func benchOf(name string) func(t *testing.T, dir string) {
+	return func(t *testing.T, dir string) { dataset(t, name, filepath.Join(dir, "bench")) }
+}
+
+// TestKilled kills commands at random moments, every second time just after a
+// temporary file has appeared: old output stays whole, new output is whole or
+// absent, nothing but the documented temporary file is left, and the next run
+// is not hindered.
+func TestKilled(t *testing.T) {
+	victims := []victim{
+		{name: "reduce", prepare: benchOf("attracted-disc"), old: true,
+			args:    []string{"reduce", "bench", "--law-only", "--html", "out/r.html", "--figures", "out"},
+			outputs: []string{"out/r.html", "out/residuals.svg"}},
+		{name: "certificate", prepare: benchOf("field-meter"),
+			args:    []string{"certificate", "bench", "--trials", "200", "-o", "out/c.html", "-o", "out/c.pdf", "-o", "out/c.xml"},
+			outputs: []string{"out/c.html", "out/c.pdf", "out/c.xml"}},
+		{name: "pack", old: true,
+			prepare: func(t *testing.T, dir string) {
+				benchOf("attracted-disc")(t, dir)
+				if err := os.Mkdir(filepath.Join(dir, "out"), 0o755); err != nil {
+					t.Fatal(err)
+				}
+			},
+			args:    []string{"pack", "bench", "--law-only", "--date", "2026-01-01", "-o", "out/p.zip"},
+			outputs: []string{"out/p.zip"}},
+	}
+	if long {
+		victims = append(victims, replayVictim(t))
+	}
+	kills := 25
+	switch {
+	case long:
+		kills = 200
+	case testing.Short():
+		kills = 3
+	}
+	exe := command(t)
+	for _, v := range victims {
+		t.Run(v.name, func(t *testing.T) { v.kill(t, exe, kills) })
+	}
+}
+
+// replayVictim replays a small notebook over itself.
+func replayVictim(t *testing.T) victim {
+	t.Helper()
+	dir := t.TempDir()
+	source, err := kernel.FindSource("")
+	if err != nil {
+		t.Fatal(err)
+	}
+	bin := filepath.Join(dir, "kernel")
+	if _, err := kernel.Build(context.Background(), source, bin, os.Stderr); err != nil {
+		t.Fatal(err)
+	}
+	const notebook = `{"cells":[{"cell_type":"code","execution_count":null,"id":"a","metadata":{},"outputs":[],"source":["1.5 + 2"]}],` +
+		`"metadata":{"kernelspec":{"display_name":"Go","language":"go","name":"guardring"},"language_info":{"name":"go"}},"nbformat":4,"nbformat_minor":5}`
+	return victim{name: "replay", args: []string{"replay", "out/n.ipynb", "--overwrite", "--kernel", bin}, outputs: []string{"out/n.ipynb"},
+		prepare: func(t *testing.T, dir string) {
+			if err := os.MkdirAll(filepath.Join(dir, "out"), 0o755); err != nil {
+				t.Fatal(err)
+			}
+			if err := os.WriteFile(filepath.Join(dir, "out", "n.ipynb"), []byte(notebook), 0o644); err != nil {
+				t.Fatal(err)
+			}
+		}}
+}
+
+func (v *victim) kill(t *testing.T, exe string, kills int) {
+	dir := t.TempDir()
+	v.prepare(t, dir)
+	before := contents(t, dir)
+	start := func() (*exec.Cmd, *bytes.Buffer) {
+		c := exec.Command(exe, v.args...)
+		c.Dir = dir
+		out := new(bytes.Buffer)
+		c.Stdout, c.Stderr = out, out
+		if err := c.Start(); err != nil {
+			t.Fatal(err)
+		}
+		return c, out
+	}
+	began := time.Now()
+	c, out := start()
+	var exit *exec.ExitError
+	if err := c.Wait(); err != nil && !(errors.As(err, &exit) && exit.ExitCode() == exitDifference) {
+		t.Fatalf("%v\n%s", err, out)
+	}
+	took := time.Since(began)
+	whole := contents(t, dir)
+	for _, name := range v.outputs {
+		if whole[name] == "" || whole[name] == before[name] {
+			t.Fatalf("%s was not written", name)
+		}
+	}
+	old := map[string]string{}
+	for name := range whole {
+		if text, ok := before[name]; ok {
+			old[name] = text
+		} else if v.old {
+			old[name] = "old " + name
+		}
+	}
+	r := rand.New(rand.NewPCG(1, 2))
+	stopped := 0
+	for n := range kills {
+		for name := range whole {
+			path := filepath.Join(dir, name)
+			if text, ok := old[name]; !ok {
+				os.Remove(path) // it may be absent
+			} else if err := os.WriteFile(path, []byte(text), 0o644); err != nil {
+				t.Fatal(err)
+			}
+		}
+		c, _ := start()
+		if n%2 == 0 {
+			time.Sleep(time.Duration(r.Float64() * 1.1 * float64(took)))
+		} else {
+			awaitTemporary(dir, 20*took)
+			time.Sleep(time.Duration(r.Float64() * float64(3*time.Millisecond)))
+		}
+		if err := c.Process.Signal(syscall.SIGKILL); err != nil && !errors.Is(err, os.ErrProcessDone) {
+			t.Fatal(err)
+		}
+		if c.Wait() != nil {
+			stopped++
+		}
+		for name, text := range contents(t, dir) {
+			base := filepath.Base(name)
+			switch {
+			case strings.HasPrefix(base, ".guardring-") && strings.HasSuffix(base, ".tmp"):
+				os.Remove(filepath.Join(dir, name)) // documented, and not in the way
+			case whole[name] == "":
+				t.Errorf("kill %d leaves %s", n+1, name)
+			case text != whole[name] && text != old[name]:
+				t.Errorf("kill %d: %s is neither the old nor the new one (%d bytes; old %d, new %d)", n+1, name, len(text), len(old[name]), len(whole[name]))
+			}
+		}
+		for name := range old {
+			if _, err := os.Stat(filepath.Join(dir, name)); err != nil {
+				t.Errorf("kill %d: %v", n+1, err)
+			}
+		}
+	}
+	for name := range whole {
+		if _, ok := old[name]; !ok {
+			os.Remove(filepath.Join(dir, name))
+		}
+	}
+	if c, out := start(); c.Wait() != nil && c.ProcessState.ExitCode() != exitDifference {
+		t.Errorf("after the kills: exit code %d: %s", c.ProcessState.ExitCode(), out)
+	}
+	for name, text := range contents(t, dir) {
+		if text != whole[name] {
+			t.Errorf("after the kills: %s is not what it was", name)
+		}
+	}
+	if stopped == 0 {
+		t.Errorf("none of %d kills came before the end", kills)
+	}
+	t.Logf("%d of %d kills came before the end", stopped, kills)
+}
+
+// awaitTemporary waits until a temporary file stands anywhere under out.
+func awaitTemporary(dir string, most time.Duration) {
+	for end := time.Now().Add(most); time.Now().Before(end); time.Sleep(200 * time.Microsecond) {
+		if m, _ := filepath.Glob(filepath.Join(dir, "out", ".guardring-*.tmp")); len(m) > 0 {
+			return
+		}
+	}
+}
+
+// contents reads every file under dir.
+func contents(t *testing.T, dir string) map[string]string {
+	t.Helper()
+	all := map[string]string{}
+	err := filepath.WalkDir(dir, func(path string, d os.DirEntry, err error) error {
+		if err != nil || d.IsDir() {
+			return err
+		}
+		data, err := os.ReadFile(path)
+		if err != nil {
+			return err
+		}
+		name, err := filepath.Rel(dir, path)
+		all[name] = string(data)
+		return err
+	})
+	if err != nil {
+		t.Fatal(err)
+	}
+	return all
+}
+
+// runCommand runs the command to its end, as another user when asked to.
+func runCommand(t *testing.T, exe, dir string, as *syscall.Credential, args ...string) (code int, output string) {
+	t.Helper()
+	c := exec.Command(exe, args...)
+	c.Dir = dir
+	if as != nil {
+		c.SysProcAttr = &syscall.SysProcAttr{Credential: as}
+	}
+	var out bytes.Buffer
+	c.Stdout, c.Stderr = &out, &out
+	err := c.Run()
+	var exit *exec.ExitError
+	if err != nil && !errors.As(err, &exit) {
+		t.Fatal(err)
+	}
+	return c.ProcessState.ExitCode(), out.String()
+}
+
+// A folder that may not be written to: exit code 2, a message that names the
+// file, and the old output as it was.
+func TestReadOnlyFolder(t *testing.T) {
+	dir := t.TempDir()
+	benchOf("attracted-disc")(t, dir)
+	out := filepath.Join(dir, "out")
+	if err := os.Mkdir(out, 0o755); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(filepath.Join(out, "r.html"), []byte("old"), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.Chmod(out, 0o555); err != nil {
+		t.Fatal(err)
+	}
+	defer os.Chmod(out, 0o755)
+	if f, err := os.Create(filepath.Join(out, "probe")); err == nil {
+		f.Close()
+		os.Remove(f.Name())
+		t.Skip("this user may write into read-only folders; TestFullDisk mounts one read-only")
+	}
+	code, text := runCommand(t, command(t), dir, nil, "reduce", "bench", "--law-only", "--html", "out/r.html")
+	if code != exitBad || !strings.Contains(text, "r.html") {
+		t.Errorf("exit code %d: %s", code, text)
+	}
+	if got := contents(t, out); len(got) != 1 || got["r.html"] != "old" {
+		t.Errorf("left: %v", got)
+	}
+}
+
+// A full disk and one mounted read-only, on a small file system in memory.
+func TestFullDisk(t *testing.T) {
+	if !long || os.Getuid() != 0 {
+		t.Skip("mounting takes root and GUARDRING_LONG=1")
+	}
+	dir := t.TempDir()
+	benchOf("attracted-disc")(t, dir)
+	disk := filepath.Join(dir, "disk")
+	if err := os.Mkdir(disk, 0o755); err != nil {
+		t.Fatal(err)
+	}
+	mount := func(args ...string) {
+		if out, err := exec.Command("mount", args...).CombinedOutput(); err != nil {
+			t.Skipf("mount: %v: %s", err, out)
+		}
+	}
+	mount("-t", "tmpfs", "-o", "size=48k", "tmpfs", disk)
+	defer exec.Command("umount", disk).Run()
+	if err := os.WriteFile(filepath.Join(disk, "r.html"), []byte("old"), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	exe := command(t)
+	try := func(want string, args ...string) {
+		t.Helper()
+		code, text := runCommand(t, exe, dir, nil, args...)
+		if code != exitBad || !strings.Contains(text, want) {
+			t.Errorf("%v: exit code %d: %s", args, code, text)
+		}
+		if got := contents(t, disk); len(got) != 1 || got["r.html"] != "old" {
+			t.Errorf("%v leaves %d files", args, len(got))
+		}
+	}
+	try("no space left", "reduce", "bench", "--law-only", "--html", "disk/r.html")
+	try("no space left", "reduce", "bench", "--law-only", "--html", "disk/r.html", "--figures", "disk")
+	dataset(t, "field-meter", filepath.Join(dir, "meter"))
+	try("no space left", "certificate", "meter", "--trials", "200", "-o", "disk/c.pdf", "-o", "disk/c.html")
+	mount("-o", "remount,ro", disk)
+	try("read-only file system", "reduce", "bench", "--law-only", "--html", "disk/r.html")
+	try("read-only file system", "pack", "bench", "--law-only", "-o", "disk/p.zip")
+}
+
+// A file that is named but not there.
+func TestVanishedInput(t *testing.T) {
+	dir := t.TempDir()
+	benchOf("attracted-disc")(t, dir)
+	if err := os.Remove(filepath.Join(dir, "bench", "readings.csv")); err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(filepath.Join(dir, "r.html"), []byte("old"), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	code, text := runCommand(t, command(t), dir, nil, "reduce", "bench", "--law-only", "--html", "r.html")
+	if code != exitBad || !strings.Contains(text, "readings.csv") {
+		t.Errorf("exit code %d: %s", code, text)
+	}
+	if got := contents(t, dir); got["r.html"] != "old" {
+		t.Error("the old report is gone")
+	}
+}
+
+// Readings that grow while they are read are no record of a measurement that has
+// ended: the run says so, or has read all of one state.
+func TestInputChangesWhileRead(t *testing.T) {
+	dir := t.TempDir()
+	manyRows(t, filepath.Join(dir, "bench"), 60_000)
+	if err := os.WriteFile(filepath.Join(dir, "r.html"), []byte("old"), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	f, err := os.OpenFile(filepath.Join(dir, "bench", "readings.csv"), os.O_APPEND|os.O_WRONLY, 0)
+	if err != nil {
+		t.Fatal(err)
+	}
+	stop := make(chan struct{})
+	var wg sync.WaitGroup
+	wg.Add(1)
+	go func() {
+		defer wg.Done()
+		defer f.Close()
+		for {
+			select {
+			case <-stop:
+				return
+			case <-time.After(200 * time.Microsecond):
+				if _, err := f.WriteString("1,reading,1,+,3.0000,4.0000,2.0\n"); err != nil {
+					return
+				}
+			}
+		}
+	}()
+	code, text := runCommand(t, command(t), dir, nil, "reduce", "bench", "--law-only", "--html", "r.html")
+	close(stop)
+	wg.Wait()
+	if code != exitBad || !strings.Contains(text, "changed while it was read") {
+		t.Errorf("exit code %d: %s", code, text)
+	}
+	if got := contents(t, dir); got["r.html"] != "old" {
+		t.Error("the old report is gone")
+	}
+}
+
+// manyRows makes an invented bench of n rows from the demonstration: its rows
+// again and again, at later times and under new settings of the gap.
+func manyRows(t *testing.T, dir string, n int) {
+	t.Helper()
+	dataset(t, "attracted-disc", dir)
+	toml, err := os.ReadFile(filepath.Join(dir, "bench.toml"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	text := string(toml)
+	for {
+		i := strings.Index(text, "[[exclude]]")
+		if i < 0 {
+			break
+		}
+		rest := text[i+len("[[exclude]]"):]
+		if j := strings.Index(rest, "\n["); j >= 0 {
+			text = text[:i] + rest[j+1:]
+		} else {
+			text = text[:i]
+		}
+	}
+	if err := os.WriteFile(filepath.Join(dir, "bench.toml"), []byte(text), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	data, err := os.ReadFile(filepath.Join(dir, "readings.csv"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	lines := strings.Split(strings.TrimSpace(string(data)), "\n")
+	var out strings.Builder
+	out.WriteString(lines[0] + "\n")
+	for i := range n {
+		_, rest, _ := strings.Cut(lines[1+i%(len(lines)-1)], ",")
+		fmt.Fprintf(&out, "%d,%s\n", 40*i, rest)
+	}
+	if err := os.WriteFile(filepath.Join(dir, "readings.csv"), []byte(out.String()), 0o644); err != nil {
+		t.Fatal(err)
+	}
+}
+
+// Two runs on one output: whoever comes last leaves all of it.
+func TestTwoRunsDoNotMix(t *testing.T) {
+	dir := t.TempDir()
+	dataset(t, "attracted-disc", filepath.Join(dir, "a"))
+	dataset(t, "sphere-plane", filepath.Join(dir, "b"))
+	exe := command(t)
+	args := func(b, out string) []string {
+		return []string{"reduce", b, "--law-only", "--html", filepath.Join(out, "r.html"), "--figures", out}
+	}
+	want := map[string]map[string]string{}
+	for _, b := range []string{"a", "b"} {
+		if code, text := runCommand(t, exe, dir, nil, args(b, "only-"+b)...); code != exitDone {
+			t.Fatalf("exit code %d: %s", code, text)
+		}
+		want[b] = contents(t, filepath.Join(dir, "only-"+b))
+	}
+	rounds := 3
+	if long {
+		rounds = 30
+	}
+	for range rounds {
+		var wg sync.WaitGroup
+		for _, b := range []string{"a", "b"} {
+			wg.Add(1)
+			go func() {
+				defer wg.Done()
+				if code, text := runCommand(t, exe, dir, nil, args(b, "both")...); code != exitDone {
+					t.Errorf("exit code %d: %s", code, text)
+				}
+			}()
+		}
+		wg.Wait()
+		got := contents(t, filepath.Join(dir, "both"))
+		winner := "a"
+		if got["r.html"] == want["b"]["r.html"] {
+			winner = "b"
+		}
+		for name, text := range want[winner] {
+			if got[name] != text {
+				t.Errorf("the report is of %s, but %s is not", winner, name)
+			}
+		}
+		for name := range got {
+			if want["a"][name] == "" && want["b"][name] == "" {
+				t.Errorf("%s is left", name)
+			}
+		}
+	}
+}
+
+// Many benches at once, bad ones among them: each is judged by itself.
+func TestBatch(t *testing.T) {
+	dir := t.TempDir()
+	var args []string
+	bad := map[int]string{3: "readings.csv", 11: "bench.toml", 17: "voltage", 30: "bench.toml"}
+	for i := range 36 {
+		name := fmt.Sprintf("b%02d", i)
+		args = append(args, name)
+		path := filepath.Join(dir, name)
+		manyRows(t, path, 100)
+		var err error
+		switch i {
+		case 3:
+			err = os.Remove(filepath.Join(path, "readings.csv"))
+		case 11:
+			err = os.WriteFile(filepath.Join(path, "bench.toml"), []byte("format = 1\ntitle = "), 0o644)
+		case 17:
+			err = os.WriteFile(filepath.Join(path, "readings.csv"), []byte("t/s,kind,gap_no,polarity,V,gap/mm,m/g\n"), 0o644)
+		case 30:
+			err = os.RemoveAll(path)
+		}
+		if err != nil {
+			t.Fatal(err)
+		}
+	}
+	code, text := runCommand(t, command(t), dir, nil, append([]string{"reduce", "--law-only"}, args...)...)
+	if code != exitBad || !strings.Contains(text, "4 of 36 benches are bad") {
+		t.Errorf("exit code %d: %s", code, text)
+	}
+	good := 0
+	for line := range strings.Lines(text) {
+		for i, name := range args {
+			if !strings.HasPrefix(line, name+" ") {
+				continue
+			}
+			isBad := strings.Contains(line, "bad: ")
+			if want := bad[i]; (want != "") != isBad || !strings.Contains(line, want) {
+				t.Errorf("%s: %s", name, line)
+			}
+			if !isBad {
+				good++
+			}
+		}
+	}
+	if good != 32 {
+		t.Errorf("%d good benches in\n%s", good, text)
+	}
+}
