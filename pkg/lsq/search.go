@@ -7,7 +7,7 @@ import (
 )
 
 // search is one run of the trust-region Levenberg–Marquardt method (Moré,
-// Lecture Notes in Mathematics 630 (1978) 105) on whitened residuals with
+// Numerical Analysis, Springer LNM 630 (1978) 105) on whitened residuals with
 // frozen weights. Parameters are scaled by the largest length so far of their
 // columns of the Jacobian, so that no unit of a parameter or of the readings
 // matters.

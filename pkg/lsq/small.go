@@ -191,7 +191,7 @@ func (t *trust) init(q int) {
 }
 
 // damped solves min ‖b − Rx‖² + λ‖Dx‖² by rotating the rows of √λ·D into the
-// triangle (Moré, Lecture Notes in Mathematics 630 (1978) 105, section 3).
+// triangle (Moré, Numerical Analysis, Springer LNM 630 (1978) 105, section 3).
 func (t *trust) damped(q, ld int, r, b, d []float64, lambda float64) bool {
 	for k := 0; k < q; k++ {
 		copy(t.s[k*q:k*q+k+1], r[k*ld:k*ld+k+1])
