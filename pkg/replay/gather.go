@@ -260,14 +260,12 @@ func (g *gatherer) references(full string) error {
 			}
 		}
 		for _, o := range c.outputs() {
-			v := o.get("data").get(lab.ResultMIME)
-			if v == nil {
-				continue
-			}
-			d := document{root: v}
-			h, err := readHead(d.bytes())
+			h, err := recordOf(o)
 			if err != nil {
 				return fmt.Errorf("%s: %s: %w", full, c.place(), err)
+			}
+			if h == nil {
+				continue
 			}
 			for _, in := range h.Inputs {
 				g.needed = append(g.needed, neededInput{filepath.Base(full) + ", " + c.place(), in})
@@ -275,6 +273,16 @@ func (g *gatherer) references(full string) error {
 		}
 	}
 	return nil
+}
+
+// recordOf is the beginning of the record that an output holds, nil without one.
+func recordOf(output *value) (*recordHead, error) {
+	v := output.get("data").get(lab.ResultMIME)
+	if v == nil {
+		return nil, nil
+	}
+	d := document{root: v}
+	return readHead(d.bytes())
 }
 
 // stringsOf lists the string literals of Go source.
@@ -356,6 +364,10 @@ func (g *gatherer) budget(full string) error {
 	return nil
 }
 
+// frameInput is what records call readings that a notebook holds in a frame, which
+// are no file.
+const frameInput = "frame"
+
 // holdsInputs reports an input of a notebook's record that is not in the pack.
 func (g *gatherer) holdsInputs(p *Package, root string) error {
 	have := map[string]bool{}
@@ -364,7 +376,7 @@ func (g *gatherer) holdsInputs(p *Package, root string) error {
 	}
 	var errs []error
 	for _, n := range g.needed {
-		if !have[n.in.SHA256] {
+		if !have[n.in.SHA256] && n.in.File != frameInput {
 			errs = append(errs, fmt.Errorf("%s: input %s (SHA-256 %s) is not among the files found in and beside %s; name its folder with --with, or run the notebook again if the file has changed",
 				n.where, n.in.File, n.in.SHA256, root))
 		}

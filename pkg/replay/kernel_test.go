@@ -229,6 +229,19 @@ func TestNotebookReplay(t *testing.T) {
 			t.Errorf("%v", names)
 		}
 	})
+	t.Run("missing input", func(t *testing.T) {
+		csv := filepath.Join(filepath.Dir(path), "..", "datasets", "attracted-disc", "readings.csv")
+		whole := read(t, csv)
+		defer write(t, csv, whole)
+		if err := os.Remove(csv); err != nil {
+			t.Fatal(err)
+		}
+		_, err := RunNotebook(context.Background(), path, Settings{Kernel: binary})
+		var f *CellFailure
+		if !errors.As(err, &f) || len(f.Inputs) != 1 || f.Inputs[0].File != "readings.csv" || !f.Inputs[0].Missing || !strings.Contains(err.Error(), sumOf(whole)) {
+			t.Errorf("%v", err)
+		}
+	})
 	if got := read(t, path); !bytes.Equal(got, stored) {
 		t.Error("a replay changed the notebook")
 	}

@@ -40,11 +40,18 @@ type NotebookReplay struct {
 type CellFailure struct {
 	Notebook, Cell string
 	Err            error
+	// Inputs are those of the stored records that are missing or have changed, the
+	// likely reason.
+	Inputs []*InputProblem
 }
 
 // Error tells the notebook, the cell and what it said.
 func (e *CellFailure) Error() string {
-	return fmt.Sprintf("%s: %s failed, the cells after it were not run: %v", e.Notebook, e.Cell, e.Err)
+	s := fmt.Sprintf("%s: %s failed, the cells after it were not run: %v", e.Notebook, e.Cell, e.Err)
+	for _, p := range e.Inputs {
+		s += "\n" + p.Error()
+	}
+	return s
 }
 
 // Unwrap returns the error of the cell.
@@ -93,9 +100,12 @@ func RunNotebook(ctx context.Context, path string, s Settings) (*NotebookReplay,
 	}
 	if err := nb.run(ctx, client, out, cmp); err != nil {
 		var f *CellFailure
-		if errors.As(err, &f) {
-			f.Notebook = path
+		if errors.As(err, &f) && ctx.Err() == nil {
+			f.Notebook, f.Inputs = path, nb.inputProblems(launch.Dir)
 			return nil, f
+		}
+		if ctx.Err() != nil { // an interrupt also ends the cell, which is then no failure of its own
+			err = ctx.Err()
 		}
 		return nil, fmt.Errorf("%s: %w", path, err)
 	}
@@ -160,6 +170,56 @@ func (nb *Notebook) run(ctx context.Context, client *kernel.Client, out *Noteboo
 		cmp.note("no output holds a record (%s): only printed numbers and figures were compared", lab.ResultMIME)
 	}
 	return nil
+}
+
+// inputProblems compares the inputs that the stored records name with the files in
+// the folders that the cells name.
+func (nb *Notebook) inputProblems(dir string) []*InputProblem {
+	folders := []string{dir}
+	var inputs []reduce.Input
+	for _, c := range nb.cells {
+		if c.kind != "code" {
+			continue
+		}
+		for _, s := range stringsOf(c.source) {
+			if p := filepath.FromSlash(s); !filepath.IsAbs(p) {
+				p = filepath.Join(dir, p)
+				folders = append(folders, p, filepath.Dir(p))
+			}
+		}
+		for _, o := range c.outputs() {
+			if h, err := recordOf(o); err == nil && h != nil {
+				inputs = append(inputs, h.Inputs...)
+			}
+		}
+	}
+	var out []*InputProblem
+	told := map[reduce.Input]bool{}
+	for _, in := range inputs {
+		key := reduce.Input{File: in.File, SHA256: in.SHA256}
+		if in.File == frameInput || told[key] || !filepath.IsLocal(filepath.FromSlash(in.File)) {
+			continue
+		}
+		told[key] = true
+		problem := &InputProblem{File: in.File, Path: "the folders that the cells name", Recorded: in.SHA256, Missing: true}
+		for _, folder := range folders {
+			sum, err := fileSum(filepath.Join(folder, filepath.FromSlash(in.File)))
+			switch {
+			case err != nil: // not there
+			case sum == in.SHA256:
+				problem = nil
+			case problem.Missing:
+				problem.Missing, problem.Note = false, "the file in "+folder+" has "+sum
+			}
+			if problem == nil {
+				break
+			}
+		}
+		if problem != nil {
+			out = append(out, problem)
+		}
+	}
+	return out
 }
 
 // findKernel finds the kernel's binary: the one asked for, the installed one, or

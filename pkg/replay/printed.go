@@ -285,8 +285,7 @@ func moduleLine(p *printedLine) bool { return p != nil && moduleSum.MatchString(
 // between them one by one.
 func align(a, b []printedLine) [][2]*printedLine {
 	var out [][2]*printedLine
-	var between func(i0, i1, j0, j1 int)
-	between = func(i0, i1, j0, j1 int) {
+	between := func(i0, i1, j0, j1 int) {
 		for i0 < i1 || j0 < j1 {
 			var p [2]*printedLine
 			if i0 < i1 {

@@ -60,7 +60,7 @@ type InputProblem struct {
 // Error names the file by its hash.
 func (e *InputProblem) Error() string {
 	if e.Missing {
-		return fmt.Sprintf("input %s (SHA-256 %s) is missing: looked for it at %s; records stand beside their inputs, or give the folder with --inputs", e.File, e.Recorded, e.Path)
+		return fmt.Sprintf("input %s (SHA-256 %s) is missing: looked for it at %s", e.File, e.Recorded, e.Path)
 	}
 	return fmt.Sprintf("input %s: SHA-256 %s is recorded, %s", e.File, e.Recorded, e.Note)
 }
@@ -131,10 +131,11 @@ func RunRecord(ctx context.Context, path string, s Settings) (*Comparison, error
 		return nil, fmt.Errorf("%s: %w", path, err)
 	}
 	if len(missing) > 0 {
-		errs := make([]error, len(missing))
+		errs := make([]error, len(missing), len(missing)+1)
 		for i, m := range missing {
 			errs[i] = m
 		}
+		errs = append(errs, errors.New("a record stands beside its inputs; give their folder with --inputs when it does not"))
 		return nil, fmt.Errorf("%s: %w", path, errors.Join(errs...))
 	}
 	now, err := again(ctx, dir, head)
