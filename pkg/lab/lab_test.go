@@ -151,7 +151,8 @@ func TestDeterministic(t *testing.T) {
 		}
 		return string(data)
 	}
-	if forms() != forms() {
+	first, second := forms(), forms()
+	if first != second {
 		t.Error("the second time gives other bytes")
 	}
 }
