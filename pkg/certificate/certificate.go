@@ -2,6 +2,7 @@ package certificate
 
 import (
 	"fmt"
+	"math"
 	"regexp"
 	"strings"
 
@@ -225,7 +226,10 @@ func (c *Certificate) leftOut(r *reduce.Result) {
 		}
 	}
 	if over > 0 {
-		c.Observations = append(c.Observations, fmt.Sprintf("at %d readings the item was over its range; they are not in the results", over))
+		c.Observations = append(c.Observations, fmt.Sprintf("readings over the item's range, not in the results: %d", over))
+	}
+	if n, full := atFullScale(r.Bench); n > 0 {
+		c.Observations = append(c.Observations, fmt.Sprintf("readings at the end of the range, %s, where the item may have been clipped: %d", full, n))
 	}
 	count := map[string]int{}
 	var reasons []string
@@ -238,6 +242,27 @@ func (c *Certificate) leftOut(r *reduce.Result) {
 	for _, reason := range reasons {
 		c.Observations = append(c.Observations, fmt.Sprintf("readings left out: %d, %s", count[reason], or(figure.OneLine(reason), "no reason stated")))
 	}
+}
+
+// atFullScale counts the readings that stand at the end of the range as the bench
+// states it, which is also told.
+func atFullScale(b *bench.Bench) (n int, full string) {
+	s := scalar(b, "full_scale")
+	if s == nil || !(s.Dist.Value > 0) {
+		return 0, ""
+	}
+	for _, ch := range b.Channels {
+		if ch.Name != "indication" {
+			continue
+		}
+		for i, x := range ch.Readings {
+			// One part in 10¹² is the rounding of two numbers written in different units.
+			if b.Rows.Kind[i] == bench.Reading && !b.Rows.Excluded[i] && math.Abs(x) >= s.Dist.Value*(1-1e-12) {
+				n++
+			}
+		}
+	}
+	return n, with(significant(s.Unit.FromSI(s.Dist.Value), 4), s.Unit)
 }
 
 // deviations are those stated; the word none is none.

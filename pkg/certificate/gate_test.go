@@ -8,6 +8,7 @@ import (
 
 	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/reduce"
+	"example.org/guardring/pkg/si"
 )
 
 // TestGate takes away each item that a certificate must hold (ISO/IEC 17025:2017
@@ -171,6 +172,25 @@ func TestTrialsThatDisagree(t *testing.T) {
 		said := strings.Contains(strings.Join(c.Observations, "; "), "do not confirm the law of propagation; their coverage interval is 1.01150 to 1.01610")
 		if said == agrees || !strings.Contains(c.uncertainty(), "checked by 10000 Monte Carlo trials") {
 			t.Errorf("agrees %v: observations %q, uncertainty %q", agrees, c.Observations, c.uncertainty())
+		}
+	}
+}
+
+// TestFullScale: readings at the end of the range are told; the largest reading
+// of the demonstration's upper range is 18.807 kV/m (readings.csv).
+func TestFullScale(t *testing.T) {
+	for _, c := range []struct {
+		full float64
+		want string
+	}{{18807, "readings at the end of the range, 18.81\u00a0kV m⁻¹, where the item may have been clipped: 1"}, {18808, ""}} {
+		r := result(t, "field-meter")
+		b := r.Bench
+		b.Scalars = append([]bench.Scalar(nil), b.Scalars...)
+		s := scalar(b, "full_scale")
+		s.Dist.Value, s.Unit, s.Given = c.full, si.MustUnit("kV/m"), true
+		got := strings.Join(made(t, r).Observations, "; ")
+		if c.want != "" && !strings.Contains(got, c.want) || c.want == "" && strings.Contains(got, "end of the range") {
+			t.Errorf("full scale %v: %q", c.full, got)
 		}
 	}
 }
