@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"io/fs"
 	"os"
 	"strings"
 
@@ -146,18 +147,11 @@ func OpenNotebook(path string) (*Notebook, error) {
 
 // readBounded reads an ordinary file of at most limit bytes.
 func readBounded(path string, limit int64) ([]byte, error) {
-	f, err := os.Open(path)
+	f, _, err := openFile(path)
 	if err != nil {
 		return nil, err
 	}
 	defer f.Close()
-	info, err := f.Stat()
-	if err != nil {
-		return nil, err
-	}
-	if !info.Mode().IsRegular() {
-		return nil, fmt.Errorf("%s is not an ordinary file", path)
-	}
 	var b bytes.Buffer
 	n, err := io.Copy(&b, io.LimitReader(f, limit+1))
 	if err != nil {
@@ -167,6 +161,26 @@ func readBounded(path string, limit int64) ([]byte, error) {
 		return nil, fmt.Errorf("%s has more than %d bytes, the most that is read here", path, limit)
 	}
 	return b.Bytes(), nil
+}
+
+// openFile opens an ordinary file; opening a pipe would wait for a writer.
+func openFile(path string) (*os.File, fs.FileInfo, error) {
+	info, err := os.Stat(path)
+	if err != nil {
+		return nil, nil, err
+	}
+	if !info.Mode().IsRegular() {
+		return nil, nil, fmt.Errorf("%s is not an ordinary file", path)
+	}
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, nil, err
+	}
+	if info, err = f.Stat(); err != nil {
+		f.Close()
+		return nil, nil, err
+	}
+	return f, info, nil
 }
 
 // Bytes writes the notebook.

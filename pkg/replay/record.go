@@ -8,6 +8,7 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
+	"io"
 	"io/fs"
 	"math"
 	"os"
@@ -87,11 +88,16 @@ func checkInputs(dir string, inputs []reduce.Input) (missing, changed []*InputPr
 
 // fileSum is the SHA-256 of an ordinary file.
 func fileSum(path string) (string, error) {
-	data, err := readBounded(path, 4<<30)
+	f, _, err := openFile(path)
 	if err != nil {
 		return "", err
 	}
-	return sumOf(data), nil
+	defer f.Close()
+	h := sha256.New()
+	if _, err := io.Copy(h, f); err != nil {
+		return "", fmt.Errorf("%s: %w", path, err)
+	}
+	return hex.EncodeToString(h.Sum(nil)), nil
 }
 
 func sumOf(data []byte) string {

@@ -129,18 +129,11 @@ func Unpack(ctx context.Context, zipPath, dir string) ([]string, error) {
 }
 
 func unpack(ctx context.Context, zipPath, dir string) ([]string, error) {
-	f, err := os.Open(zipPath)
+	f, info, err := openFile(zipPath)
 	if err != nil {
 		return nil, err
 	}
 	defer f.Close()
-	info, err := f.Stat()
-	if err != nil {
-		return nil, err
-	}
-	if !info.Mode().IsRegular() {
-		return nil, errors.New("it is not an ordinary file")
-	}
 	z, err := zip.NewReader(f, info.Size())
 	if err != nil {
 		return nil, fmt.Errorf("this is no pack: %w", err)
