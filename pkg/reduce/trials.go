@@ -18,12 +18,18 @@ import (
 // trialStream names the random streams of the trials of a reduction.
 const trialStream = "reduction"
 
+// maxTrialValues bounds the memory of the trials, 8 bytes a value.
+const maxTrialValues = 100_000_000
+
 // trialBlock is how many trials one core takes at a time.
 const trialBlock = 32
 
 // trials repeats the whole chain and returns the measurands [measurand][trial];
 // trials whose fit failed hold NaN and are counted.
 func (c *chain) trials(ctx context.Context, r *lsq.Result, k *carried, seed uint64, n int) ([][]float64, int, error) {
+	if n > maxTrialValues/max(1, len(c.m.Measurands)) {
+		return nil, 0, fmt.Errorf("%d trials of %d measurands are more than the %d values that are kept to find intervals from; ask for fewer trials", n, len(c.m.Measurands), maxTrialValues)
+	}
 	out := make([][]float64, len(c.m.Measurands))
 	for m := range out {
 		out[m] = make([]float64, n)
