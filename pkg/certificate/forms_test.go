@@ -285,6 +285,14 @@ func TestOtherDefinition(t *testing.T) {
 		}
 	}
 	written(t, c, (*Certificate).HTML)
+
+	// The shift by adjustment is the record's, which is that of the factor.
+	r = result(t, "field-meter")
+	r.Bench.Report.Definition = "response"
+	r.Bench.Limits = nil
+	if c := made(t, r); len(c.Shifts) != 2 || c.Shifts[0].Name != "correction factor, 2 kV/m" {
+		t.Errorf("shifts %+v; want two of the correction factor", c.Shifts)
+	}
 }
 
 // TestOtherKind: a bench without series states all its measurands, with the same

@@ -94,14 +94,22 @@ func (c *Certificate) results(r *reduce.Result) error {
 	}
 	for i := range rec.Measurands {
 		m := &rec.Measurands[i]
-		if rest, ok := strings.CutPrefix(m.Name, "shift of "+base); ok {
-			unit, err := unitFor(m)
-			if err != nil {
-				return err
-			}
-			name := strings.TrimSuffix(strings.TrimPrefix(rest, " ("), ")")
-			c.Shifts = append(c.Shifts, quantity(name, m.Doc, float64(m.Value), float64(m.U), float64(m.K), unit, nil))
+		rest, ok := strings.CutPrefix(m.Name, "shift of ")
+		if !ok {
+			continue
 		}
+		unit, err := unitFor(m)
+		if err != nil {
+			return err
+		}
+		// A shift of the result itself needs no more than its series; one of the
+		// other definition of the factor says so.
+		of, name, _ := strings.Cut(rest, " (")
+		name = strings.TrimSuffix(name, ")")
+		if of != base {
+			name = title(figure.Words(of), name)
+		}
+		c.Shifts = append(c.Shifts, quantity(name, m.Doc, float64(m.Value), float64(m.U), float64(m.K), unit, nil))
 	}
 	return nil
 }

@@ -101,6 +101,7 @@ func (c *Certificate) sheet() []block {
 		add(block{kind: notices, lines: c.Observations})
 	}
 	if len(c.Remarks) > 0 {
+		say("Remarks:")
 		add(block{kind: notices, lines: c.Remarks})
 	}
 	if c.Recalibration != "" {
