@@ -94,6 +94,6 @@ that is singular or has not converged, or a failed write; 130 interrupted.`,
 		Args:          cobra.NoArgs,
 		RunE:          func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
 	}
-	root.AddCommand(reduceCommand(), checkCommand(), newCommand(), certificateCommand(), compareCommand(), historyCommand(), simulateCommand(), planCommand(), strayfieldCommand(), fitCommand(), propagateCommand(), mergeCommand(), kernelCommand(), replayCommand(), packCommand(), versionCommand())
+	root.AddCommand(reduceCommand(), checkCommand(), newCommand(), certificateCommand(), compareCommand(), historyCommand(), simulateCommand(), planCommand(), strayfieldCommand(), fitCommand(), propagateCommand(), mergeCommand(), kernelCommand(), replayCommand(), packCommand(), manCommand(), versionCommand())
 	return root
 }
