@@ -138,6 +138,20 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 // judge turns what the residuals say into warnings, one sentence each.
 func judge(r *Record) []error {
 	var w []error
+	for i := range r.Measurands {
+		m := &r.Measurands[i]
+		switch u := float64(m.U); {
+		case math.IsNaN(u) || math.IsInf(u, 0):
+			w = append(w, fmt.Errorf("no uncertainty of %s can be stated: what bench.toml states for an input, or a reading, is too large or too small to compute with", m.Name))
+		case u == 0:
+			w = append(w, fmt.Errorf("the uncertainty of %s is zero: nothing that enters it has one; state what is known of the instruments", m.Name))
+		}
+	}
+	for _, p := range r.Fit.Parameters {
+		if u := float64(p.U); u == 0 || math.IsNaN(u) || math.IsInf(u, 0) {
+			w = append(w, fmt.Errorf("the uncertainty of %s from the fit is unknown or vanishes: the readings and what is stated of them do not bear it out", p.Name))
+		}
+	}
 	switch p := float64(r.Fit.PValue); {
 	case p < 0.001:
 		w = append(w, fmt.Errorf("the residuals are larger than the stated noise allows (chi-squared probability %.1g): an effect is missing from the model, or the noise is understated; the uncertainty does not cover it", p))
