@@ -11,6 +11,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"runtime"
 	"strings"
 	"sync"
 	"syscall"
@@ -533,5 +534,47 @@ func TestBatch(t *testing.T) {
 	}
 	if good != 32 {
 		t.Errorf("%d good benches in\n%s", good, text)
+	}
+}
+
+// A million rows are reduced and reported in 250 MB of resident memory.
+func TestMillionRows(t *testing.T) {
+	if !long {
+		t.Skip("GUARDRING_LONG=1 reduces a million rows")
+	}
+	dir := t.TempDir()
+	path := filepath.Join(dir, "bench")
+	manyRows(t, path, 1_000_000)
+	toml, err := os.ReadFile(filepath.Join(path, "bench.toml"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	// zeros interpolated one by one would be as many effects as there are zeros
+	text := strings.Replace(string(toml), `method = "interpolate"`, `method = "linear"`, 1)
+	if text == string(toml) {
+		t.Fatal("the zero of the demonstration is not interpolated")
+	}
+	if err := os.WriteFile(filepath.Join(path, "bench.toml"), []byte(text), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	c := exec.Command(command(t), "reduce", "bench", "--law-only", "--html", "r.html")
+	c.Dir = dir
+	if out, err := c.CombinedOutput(); err != nil {
+		t.Fatalf("%v\n%s", err, out)
+	}
+	resident := c.ProcessState.SysUsage().(*syscall.Rusage).Maxrss
+	if runtime.GOOS == "linux" {
+		resident *= 1024 // kilobytes there, bytes on macOS
+	}
+	t.Logf("%d MB resident", resident/1e6)
+	if resident > 250e6 {
+		t.Errorf("%d bytes resident; at most 250 MB are promised", resident)
+	}
+	report, err := os.ReadFile(filepath.Join(dir, "r.html"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	if !bytes.Contains(report, []byte("1000000")) && !bytes.Contains(report, []byte("1 000 000")) {
+		t.Error("the report does not say how many rows there were")
 	}
 }
