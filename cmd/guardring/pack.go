@@ -22,7 +22,8 @@ func packCommand() *cobra.Command {
 
 Of a dataset it takes every file of the folder that is not hidden; when none of
 them is the record of a result, the bench is reduced and result.json is added. Of
-a notebook it takes the files and datasets that the strings in its cells name.
+a notebook it takes the files and dataset folders that the strings in its cells
+name.
 Every input of a recorded result must be there, with the SHA-256 of the record.
 
 SHA256SUMS, go.sum with the sums of the modules of this program,

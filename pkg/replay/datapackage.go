@@ -220,7 +220,7 @@ func (g *gatherer) tables(p *Package, root, dir string, b *bench.Bench) error {
 		}
 		t := &tableSchema{MissingValues: append([]string{""}, r.Missing...)}
 		time, _ := layout.Rows["time"].(string)
-		if err := t.read(f.data, r.Separator, r.Decimal == "comma", time, units, titles); err != nil {
+		if err := t.read(f.data, csvLayout{r.Separator, r.Decimal == "comma", time, false}, units, titles); err != nil {
 			return fmt.Errorf("%s: %w", f.Name, err)
 		}
 		f.table = t
@@ -228,11 +228,33 @@ func (g *gatherer) tables(p *Package, root, dir string, b *bench.Bench) error {
 	return nil
 }
 
+// otherTables gives schemas to the CSV files that no bench describes, from headers
+// of the form NAME/UNIT. A file that is no table stays a plain resource.
+func (p *Package) otherTables() {
+	for _, f := range p.Files {
+		if f.table != nil || !strings.EqualFold(path.Ext(f.Name), ".csv") {
+			continue
+		}
+		t := &tableSchema{MissingValues: []string{""}}
+		if err := t.read(f.data, csvLayout{numbers: true}, nil, nil); err == nil {
+			f.table = t
+		}
+	}
+}
+
+// csvLayout is how a CSV file is written.
+type csvLayout struct {
+	separator string // comma, semicolon or tab; "": found from the header
+	comma     bool   // decimal comma
+	time      string // column of times
+	numbers   bool   // a column of numbers without a unit is one of numbers, not of words
+}
+
 // read makes the schema of a CSV file.
-func (t *tableSchema) read(data []byte, separator string, comma bool, time string, units map[string]si.Unit, titles map[string]string) error {
+func (t *tableSchema) read(data []byte, l csvLayout, units map[string]si.Unit, titles map[string]string) error {
 	data = bytes.TrimPrefix(data, []byte("\ufeff"))
 	head, _, _ := bytes.Cut(data, []byte("\n"))
-	sep := map[string]byte{"comma": ',', "semicolon": ';', "tab": '\t'}[separator]
+	sep := map[string]byte{"comma": ',', "semicolon": ';', "tab": '\t'}[l.separator]
 	if sep == 0 { // as bench finds it: the one that the header has most of
 		sep = ','
 		for _, c := range []byte{';', '\t'} {
@@ -289,7 +311,7 @@ func (t *tableSchema) read(data []byte, separator string, comma bool, time strin
 				continue
 			}
 			cell := strings.TrimSpace(rec[i])
-			if comma {
+			if l.comma {
 				cell = strings.Replace(cell, ",", ".", 1)
 			}
 			some[i] = true
@@ -302,9 +324,9 @@ func (t *tableSchema) read(data []byte, separator string, comma bool, time strin
 		f := &t.Fields[i]
 		name, unit, stated := strings.Cut(f.Name, "/")
 		switch {
-		case f.Name == time && some[i] && !numeric[i]:
+		case f.Name == l.time && some[i] && !numeric[i]:
 			f.Type, f.Format = "datetime", "any" // RFC 3339
-		case f.Name == time && some[i]:
+		case f.Name == l.time && some[i]:
 			f.Type, f.Unit = "number", "s"
 		case numeric[i] && some[i] && stated && name != "":
 			if u, err := si.ParseUnit(strings.Trim(unit, "()")); err == nil {
@@ -312,9 +334,11 @@ func (t *tableSchema) read(data []byte, separator string, comma bool, time strin
 					f.Type, f.Unit = "number", code
 				}
 			}
+		case numeric[i] && some[i] && l.numbers:
+			f.Type = "number"
 		}
 	}
-	if comma {
+	if l.comma {
 		for i := range t.Fields {
 			if t.Fields[i].Type == "number" {
 				t.Fields[i].DecimalChar = ","

@@ -30,6 +30,7 @@ type gatherer struct {
 	benches  map[string]*bench.Bench // by absolute folder
 	record   []byte                  // a record made for a dataset that has none
 	needed   []neededInput
+	folders  []string // absolute, named in cells, without a bench of their own
 }
 
 // neededInput is an input that a record names.
@@ -227,6 +228,53 @@ func (g *gatherer) notebook(file string) error {
 	return nil
 }
 
+// fromFolders takes in the datasets in folders that the cells name, where a record
+// was made from them.
+func (g *gatherer) fromFolders() error {
+	wanted := map[string]bool{}
+	for _, n := range g.needed {
+		wanted[n.in.SHA256] = true
+	}
+	for _, folder := range g.folders {
+		for _, dir := range datasetsIn(folder) {
+			sum, err := fileSum(filepath.Join(dir, "bench.toml"))
+			if err != nil {
+				return err
+			}
+			if !wanted[sum] {
+				continue
+			}
+			if _, err := g.openBench(dir); err != nil {
+				return err
+			}
+			if err := g.folder(dir); err != nil {
+				return err
+			}
+		}
+	}
+	return nil
+}
+
+// datasetsIn lists the folders in dir that hold a bench.
+func datasetsIn(dir string) []string {
+	found, err := filepath.Glob(filepath.Join(literalGlob(dir), "*", "bench.toml"))
+	if err != nil { // the pattern is well formed
+		return nil
+	}
+	for i := range found {
+		found[i] = filepath.Dir(found[i])
+	}
+	return found
+}
+
+// literalGlob writes a path so that a pattern finds it as it is.
+func literalGlob(path string) string {
+	if filepath.Separator == '\\' {
+		return path // no escapes there, and no such names
+	}
+	return strings.NewReplacer(`\`, `\\`, "*", `\*`, "?", `\?`, "[", `\[`).Replace(path)
+}
+
 // title is the first heading of the notebook.
 func (nb *Notebook) title() string {
 	for _, c := range nb.cells {
@@ -322,19 +370,18 @@ func (g *gatherer) reference(dir, s string) error {
 		isBench = err == nil
 	}
 	switch {
+	case !isBench && info.IsDir() && !absolute:
+		g.folders = append(g.folders, full) // datasets may stand in it
+		return nil
 	case !isBench && !info.Mode().IsRegular():
-		return nil // any other folder
+		return nil
 	case absolute:
 		return fmt.Errorf("%q is an absolute path, which leads nowhere in another laboratory; name it relative to the notebook", s)
 	case isBench:
 		if _, err := g.openBench(full); err != nil {
 			return err
 		}
-		readme := filepath.Join(full, "README.md")
-		if info, err := os.Lstat(readme); err == nil && info.Mode().IsRegular() {
-			g.add(readme)
-		}
-		return nil
+		return g.folder(full) // the truth of a simulation, results, notes
 	}
 	g.add(full)
 	if strings.EqualFold(filepath.Ext(full), ".toml") {

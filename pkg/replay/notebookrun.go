@@ -176,6 +176,7 @@ func (nb *Notebook) run(ctx context.Context, client *kernel.Client, out *Noteboo
 // the folders that the cells name.
 func (nb *Notebook) inputProblems(dir string) []*InputProblem {
 	folders := []string{dir}
+	var deeper []string // datasets in a folder that a cell names
 	var inputs []reduce.Input
 	for _, c := range nb.cells {
 		if c.kind != "code" {
@@ -185,6 +186,7 @@ func (nb *Notebook) inputProblems(dir string) []*InputProblem {
 			if p := filepath.FromSlash(s); !filepath.IsAbs(p) {
 				p = filepath.Join(dir, p)
 				folders = append(folders, p, filepath.Dir(p))
+				deeper = append(deeper, datasetsIn(p)...)
 			}
 		}
 		for _, o := range c.outputs() {
@@ -213,6 +215,11 @@ func (nb *Notebook) inputProblems(dir string) []*InputProblem {
 			}
 			if problem == nil {
 				break
+			}
+		}
+		for _, folder := range deeper {
+			if sum, err := fileSum(filepath.Join(folder, filepath.FromSlash(in.File))); err == nil && sum == in.SHA256 {
+				problem = nil
 			}
 		}
 		if problem != nil {

@@ -97,6 +97,9 @@ func Pack(ctx context.Context, source string, s PackSettings) (*Package, error) 
 			return nil, err
 		}
 	}
+	if err := g.fromFolders(); err != nil {
+		return nil, err
+	}
 	return g.pack(ctx)
 }
 
@@ -159,6 +162,7 @@ func (g *gatherer) pack(ctx context.Context) (*Package, error) {
 			return nil, err
 		}
 	}
+	p.otherTables()
 	var err error
 	if p.Date, err = publicationDate(g.settings.Date, newest); err != nil {
 		return nil, err

@@ -130,6 +130,54 @@ func TestPackAll(t *testing.T) {
 	}
 }
 
+// TestPackNotebook: what the cells name is taken in, and of a folder of datasets
+// only those that the records were made from.
+func TestPackNotebook(t *testing.T) {
+	_, record := recorded(t, reduce.Settings{LawOnly: true})
+	dir := t.TempDir()
+	for _, n := range []string{"one", "other"} {
+		if err := os.CopyFS(filepath.Join(dir, "datasets", n), os.DirFS(filepath.Join("..", "..", "datasets", "attracted-disc"))); err != nil {
+			t.Fatal(err)
+		}
+	}
+	other := filepath.Join(dir, "datasets", "other", "bench.toml")
+	write(t, other, append(read(t, other), "# another\n"...))
+	write(t, filepath.Join(dir, "datasets", "gap.csv"), []byte("d/um,label,E/(kV/m),n\n1,a,2,3\n2,b,4,5\n"))
+	cells := fmt.Sprintf(`{"cell_type":"code","execution_count":1,"id":"a","metadata":{},"source":"dir := \"../datasets\"; csv := \"../datasets/gap.csv\"; none := \"../nowhere\"",
+"outputs":[{"output_type":"display_data","metadata":{},"data":{"application/vnd.guardring.result+json":%s}}]}`, read(t, record))
+	nb := filepath.Join(dir, "notebooks", "n.ipynb")
+	if err := os.MkdirAll(filepath.Dir(nb), 0o755); err != nil {
+		t.Fatal(err)
+	}
+	write(t, nb, []byte(`{"cells":[`+cells+`],"metadata":{"kernelspec":{"name":"guardring"}},"nbformat":4,"nbformat_minor":5}`))
+	p, err := Pack(context.Background(), nb, PackSettings{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	var names []string
+	var schema *tableSchema
+	for _, f := range p.Files {
+		names = append(names, f.Name)
+		if f.Name == "datasets/gap.csv" {
+			schema = f.table
+		}
+	}
+	if s := strings.Join(names, " "); s != "SHA256SUMS datapackage.json datasets/gap.csv datasets/one/README.md datasets/one/bench.toml datasets/one/readings.csv datasets/one/simulation.toml go.sum notebooks/n.ipynb ro-crate-metadata.json" {
+		t.Errorf("%s", s)
+	}
+	if p.Main != "notebooks/n.ipynb" || p.Title != "n.ipynb" {
+		t.Errorf("%q %q", p.Main, p.Title)
+	}
+	// UCUM 2.1 (published): um, kV.m-1.
+	var fields []string
+	for _, f := range schema.Fields {
+		fields = append(fields, f.Name+"|"+f.Type+"|"+f.Unit)
+	}
+	if s := strings.Join(fields, " "); s != "d/um|number|um label|string| E/(kV/m)|number|kV.m-1 n|number|" {
+		t.Errorf("%s", s)
+	}
+}
+
 func TestPublicationDate(t *testing.T) {
 	t.Setenv("SOURCE_DATE_EPOCH", "")
 	newest := time.Date(2026, 3, 4, 23, 59, 0, 0, time.UTC)
