@@ -13,6 +13,7 @@ import (
 	"text/tabwriter"
 
 	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/figure"
 	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/si"
 )
@@ -139,9 +140,10 @@ func batchTable(w io.Writer, dirs []string, results []outcome) {
 			m := rec.Measurands[0]
 			u, err := si.ParseUnit(m.Unit)
 			if err != nil {
-				u = si.MustUnit("1")
+				u = si.One
 			}
-			what, value = m.Name, si.Short(float64(m.Value), float64(m.U), u)
+			_, u = si.Prefixed(float64(m.Value), u)
+			what, value = figure.Words(m.Name), si.Short(float64(m.Value), float64(m.U), u)
 		}
 		fmt.Fprintf(t, "%s\t%s\t%s\t%d\t%.4g/%d\t%s\t%d\n", name, what, value, rec.Fit.Rows,
 			float64(rec.Fit.ChiSquared), rec.Fit.DOF, probability(float64(rec.Fit.PValue)), len(rec.Warnings))
@@ -153,6 +155,9 @@ func batchTable(w io.Writer, dirs []string, results []outcome) {
 func probability(p float64) string {
 	if p != p {
 		return "unknown"
+	}
+	if p < 0.001 {
+		return "< 0.001"
 	}
 	return fmt.Sprintf("%.3f", p)
 }

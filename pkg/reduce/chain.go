@@ -122,6 +122,9 @@ func newChain(b *bench.Bench) (*chain, error) {
 		return nil, err
 	}
 	c.applyZero()
+	if err := c.checkAir(); err != nil {
+		return nil, err
+	}
 	warn, err := c.m.Check(c.q, c.x, c.y)
 	if err != nil {
 		return nil, c.locate(err)

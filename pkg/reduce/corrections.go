@@ -105,7 +105,11 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 		d := grad[n] / rows * s.u
 		v += d * d
 	}
-	return size / rows, math.Sqrt(v), nil
+	u = math.Sqrt(v)
+	if u < negligible*math.Abs(size/rows) {
+		u = 0 // rounding: what scales the response alone drops out of the ratio
+	}
+	return size / rows, u, nil
 }
 
 // factorSize is a correction of a measurand and its standard uncertainty from

@@ -10,8 +10,6 @@ import (
 	"strconv"
 	"strings"
 
-	"gonum.org/v1/gonum/stat/distuv"
-
 	"example.org/guardring/pkg/lsq"
 	"example.org/guardring/pkg/si"
 )
@@ -352,9 +350,6 @@ func (d *fitData) replicates() []int {
 	return out
 }
 
-// mostFlagged is how many outlying readings are named one by one.
-const mostFlagged = 5
-
 // finish adds what the residuals say.
 func (d *fitData) finish(f *FormulaFit) *FormulaFit {
 	named := f.Record.Reduction()
@@ -368,21 +363,10 @@ func (d *fitData) finish(f *FormulaFit) *FormulaFit {
 	for _, w := range judge(named) {
 		f.warn(w)
 	}
-	// A reading whose residual would come by chance once in a hundred tables as long
-	// as this is flagged (two-sided, Bonferroni).
-	var far []int
-	limit := -distuv.UnitNormal.Quantile(0.005 / float64(f.Rows.N))
-	for i, t := range f.Rows.Studentised {
-		if math.Abs(t) > limit {
-			far = append(far, i)
-		}
-	}
-	if len(far) > mostFlagged {
-		f.warn(fmt.Errorf("%d of %d readings lie further from the fit than %.1f standard uncertainties of their residuals; none has been left out", len(far), f.Rows.N, limit))
-		far = nil
-	}
-	for _, i := range far {
-		f.warn(fmt.Errorf("reading %d (line %d) lies %.1f standard uncertainties of its residual from the fit; it has not been left out", d.record[i]+1, d.t.Line(d.record[i]), math.Abs(f.Rows.Studentised[i])))
+	for _, w := range flagged(f.Rows.Studentised, nil, func(i int) string {
+		return fmt.Sprintf("reading %d (line %d)", d.record[i]+1, d.t.Line(d.record[i]))
+	}) {
+		f.warn(w)
 	}
 	if d.s.Rows {
 		f.Record.Rows = d.recordRows(f)

@@ -126,7 +126,11 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 	}
 	k.weighed, k.slope = nil, nil // the laws are stated
 	res.Record.Diagnosis.Causes = c.causes(fit, k)
+	res.warn(flagged(res.Rows.Studentised, res.Rows.Excluded, func(i int) string {
+		return fmt.Sprintf("reading %d (%s)", res.Rows.Record[i]+1, c.place(res.Rows.Record[i]))
+	})...)
 	res.warn(judge(&res.Record)...)
+	res.warn(notAir(res.Record.Measurands)...)
 	if !s.LawOnly {
 		if err := c.check(ctx, fit, k, laws, s, p, res); err != nil {
 			return nil, err
@@ -154,25 +158,25 @@ func judge(r *Record) []error {
 	}
 	switch p := float64(r.Fit.PValue); {
 	case p < 0.001:
-		w = append(w, fmt.Errorf("the residuals are larger than the stated noise allows (chi-squared probability %.1g): an effect is missing from the model, or the noise is understated; the uncertainty does not cover it", p))
+		w = append(w, fmt.Errorf("the residuals are larger than the stated noise allows (chi-squared probability %s): an effect is missing from the model, or the noise is understated; the uncertainty does not cover it", small(p)))
 	case p > 0.999:
 		w = append(w, fmt.Errorf("the residuals are smaller than the stated noise makes likely (chi-squared probability %.4f): the noise may be overstated", p))
 	}
 	for _, t := range r.Diagnosis.Tests {
 		if !t.Passed {
-			w = append(w, fmt.Errorf("the residuals fail the test of %s (p = %.1g)", t.Name, float64(t.PValue)))
+			w = append(w, fmt.Errorf("the residuals fail the test of %s (p %s)", t.Name, equals(float64(t.PValue))))
 		}
 	}
 	for _, s := range r.Series {
 		for _, e := range s.Effects {
 			if !e.Passed {
-				w = append(w, fmt.Errorf("%s: %s of %.2g %% with u = %.1g %% (p = %.1g)", SeriesName(s.Result, s.Name), e.Name, 100*float64(e.Estimate), 100*float64(e.U), float64(e.PValue)))
+				w = append(w, fmt.Errorf("%s: %s of %.2g %% with u = %.1g %% (p %s)", SeriesName(s.Result, s.Name), e.Name, 100*float64(e.Estimate), 100*float64(e.U), equals(float64(e.PValue))))
 			}
 		}
 	}
 	if len(r.Diagnosis.Causes) > 0 {
 		c := r.Diagnosis.Causes[0]
-		w = append(w, fmt.Errorf("the residuals carry the signature of %s (p = %.1g); it has not been applied", c.Name, float64(c.PValue)))
+		w = append(w, fmt.Errorf("the residuals carry the signature of %s (p %s); it has not been applied", c.Name, equals(float64(c.PValue))))
 	}
 	return w
 }
