@@ -366,7 +366,7 @@ func (r *Result) Frame() dataframe.DataFrame {
 		_, line[i] = r.Result.Bench.Rows.Place(k)
 	}
 	head := func(name, of string) string {
-		if u := units[of].Dim.Unit(); u.Symbol != "1" {
+		if u := units[of].Coherent(); u.Symbol != "1" {
 			return name + "/" + u.ASCII()
 		}
 		return name

@@ -227,5 +227,5 @@ func (c *chain) measurands(k *carried, p float64) ([]Measurand, []*gum.Law, []er
 }
 
 // siSymbol names the coherent SI unit in which the record gives a number whose
-// display unit is u.
-func siSymbol(u si.Unit) string { return u.Dim.Unit().Symbol }
+// display unit is u; angles and torques keep theirs.
+func siSymbol(u si.Unit) string { return u.Coherent().Symbol }

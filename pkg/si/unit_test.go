@@ -356,3 +356,24 @@ func TestSuggest(t *testing.T) {
 		t.Errorf("Suggest(noise) = %q", got)
 	}
 }
+
+// SI Brochure, 9th edition, sections 2.3.3 and 2.3.4 (value from memory): the
+// unit of an angle may be shown as rad, that of a torque is the newton metre.
+func TestCoherentKeepsTheQuantity(t *testing.T) {
+	for _, c := range []struct{ unit, want string }{
+		{"mrad", "rad"}, {"deg", "rad"}, {"arcsec", "rad"}, {"mN m/rad", "N m/rad"}, {"uN mm/deg", "N m/rad"},
+		{"deg/min", "rad/s"}, {"mN m", "N m"}, {"N m", "N m"}, {"kJ", "J"}, {"mm", "m"}, {"kV/cm", "V/m"}, {"ppm/degC", "K^-1"},
+		{"pF/m", "F/m"}, {"%", "1"}, {"degC", "K"}, {"L/rad", "m^3"}, {"g m/s^2", "N"}, {"kg m^2/(s^2 rad)", "kg m^2/(s^2 rad)"},
+	} {
+		got := MustUnit(c.unit).Coherent()
+		if got.ASCII() != c.want || got.Factor != 1 {
+			t.Errorf("%s: %s × %g, want %s", c.unit, got.ASCII(), got.Factor, c.want)
+		}
+		if back, err := ParseUnit(got.Symbol); err != nil || back != got {
+			t.Errorf("%s: %q does not read back: %v", c.unit, got.Symbol, err)
+		}
+	}
+	if v, u := Prefixed(6.014e-3, MustUnit("N m/rad")); v != 6.014 || u.String() != "mN m/rad" {
+		t.Errorf("got %g %s", v, u)
+	}
+}
