@@ -95,13 +95,14 @@ func (l *loader) channel(n *node, k *model.Channel) {
 	l.b.Channels = append(l.b.Channels, c)
 }
 
-// headerUnit warns when the header of a column says another unit than the bench.
+// headerUnit refuses a header that says a unit of another quantity than the bench
+// does, and warns of another unit of the same quantity.
 func (l *loader) headerUnit(n *node, header string, u si.Unit) {
 	first, last := strings.IndexByte(header, '/'), strings.LastIndexByte(header, '/')
 	if first <= 0 {
 		return
 	}
-	says := si.Unit{}
+	var says, other si.Unit
 	// NAME/m/s holds a quotient behind the first solidus, a/b/V a unit behind the last.
 	for _, at := range []int{last, first} {
 		h, err := si.ParseUnit(header[at+1:])
@@ -111,10 +112,18 @@ func (l *loader) headerUnit(n *node, header string, u si.Unit) {
 		if h.Dim == u.Dim && h.Factor == u.Factor && h.Offset == u.Offset {
 			return
 		}
-		says = h
+		// Behind a pure number the solidus may be that of a ratio: C1/C.
+		if h.Dim == u.Dim || u.Dim.IsOne() {
+			says = h
+		} else {
+			other = h
+		}
 	}
-	if says.Symbol != "" {
+	switch {
+	case says.Symbol != "":
 		l.warnf(n, "the header %s says %s, the bench %s; the bench counts", quoted(header), says.Symbol, u.Symbol)
+	case other.Symbol != "":
+		l.fail(n, "the header %s says %s, %s; the bench says %s, %s: correct the header of the readings or the unit", quoted(header), other.Symbol, dimensionName(other), u.Symbol, dimensionName(u))
 	}
 }
 

@@ -26,6 +26,22 @@ func wantError(t *testing.T, err error, texts ...string) {
 	}
 }
 
+// TestHeaderOfAnotherQuantity: a header that says a length where the bench says a
+// voltage is refused.
+func TestHeaderOfAnotherQuantity(t *testing.T) {
+	files := map[string]string{
+		"bench.toml":   strings.Replace(goodBench, `"V/kV"`, `"V/mm"`, 1),
+		"readings.csv": strings.Replace(goodReadings, "V/kV", "V/mm", 1),
+	}
+	_, err := OpenWith(testKind(), dataset(t, files))
+	if err == nil {
+		t.Fatal("not refused")
+	}
+	if want := `channels.voltage.unit: the header "V/mm" says mm, a length; the bench says kV, a voltage`; !strings.Contains(err.Error(), want) {
+		t.Errorf("%v\ndoes not say %q", err, want)
+	}
+}
+
 // TestBenchErrors changes the good bench in one place each.
 func TestBenchErrors(t *testing.T) {
 	for _, c := range []struct{ old, new, want string }{

@@ -297,11 +297,7 @@ func (r *reader) measures(n *node, u, like si.Unit) bool {
 	if u.Dim == like.Dim {
 		return true
 	}
-	problem := fmt.Sprintf("%s is %s; %s is due", quoted(n.text), dimensionName(u), dimensionName(like))
-	if !like.Dim.IsOne() {
-		problem += fmt.Sprintf(" (for example %s)", like.Symbol)
-	}
-	e := r.errorf(n, "%s", problem)
+	e := r.errorf(n, "%s", WrongDimension(n.text, u, like))
 	e.Err = u.CheckDim(like.Dim)
 	r.errs.add(e)
 	return false

@@ -57,6 +57,9 @@ type StrayZero struct {
 // The uncertainty is that of JCGM 100:2008 5.1.3 with the note's numerical
 // sensitivities, c_i u_i = ½[f(x_i + u_i) − f(x_i − u_i)].
 func Stray(b *StrayBench) (*StrayField, error) {
+	if _, problem := b.overlap(); problem != "" {
+		return nil, fmt.Errorf("%s: %s", b.File, problem)
+	}
 	x := newStrayInputs(b)
 	s := &StrayField{Bench: b}
 	scene, err := x.scene(x.value)
@@ -151,6 +154,31 @@ func (s *StrayField) findZeros() error {
 		}
 	}
 	return nil
+}
+
+// overlap finds a sphere that another body touches or reaches into, where no charge
+// of either is where the description puts it: the index of the body, and what is
+// wrong; "" when all stand apart.
+func (b *StrayBench) overlap() (int, string) {
+	for i := range b.Bodies {
+		for j := range i {
+			p, q := &b.Bodies[i], &b.Bodies[j]
+			if p.Radius.Value == 0 {
+				p, q = q, p
+			}
+			reach := p.Radius.Value + q.Radius.Value
+			if reach == 0 {
+				continue
+			}
+			if d := toSegment(p.From, q.From, q.To); !(d > reach) {
+				if q.Radius.Value > 0 {
+					return i, fmt.Sprintf("spheres %q and %q overlap: their centres are %.4g mm apart; want more than the sum of their radii, %.4g mm", q.Name, p.Name, 1e3*d, 1e3*reach)
+				}
+				return i, fmt.Sprintf("%s %q reaches into sphere %q: it comes within %.4g mm of the centre; want more than the radius, %.4g mm", q.Shape, q.Name, p.Name, 1e3*d, 1e3*reach)
+			}
+		}
+	}
+	return 0, ""
 }
 
 // near warns of spheres so near each other, the plane or the meter that the
@@ -310,7 +338,7 @@ func influence(s *field.Scene, j, i int, at field.Vec) (float64, error) {
 	one.Charge = 1
 	k := 1 / (4 * math.Pi * s.Eps)
 	if i != j {
-		one.Radius = 0 // two spheres that overlap are refused where the field is found
+		one.Radius = 0 // spheres that overlap have been refused before
 		return (&field.Scene{Eps: s.Eps, Sources: []field.Source{one}, Plane: s.Plane}).Potential(at)
 	}
 	p := k / s.Sources[i].Radius

@@ -2,7 +2,9 @@ package plan_test
 
 import (
 	"encoding/json"
+	"errors"
 	"fmt"
+	"io/fs"
 	"math"
 	"os"
 	"path/filepath"
@@ -264,6 +266,10 @@ at = ["0.3 m", "0.2 m", "0.5 m"]
 
 func TestStrayRefuses(t *testing.T) {
 	const body = "[[point]]\nname = \"rod\"\ncharge = \"1 nC\"\nat = [\"0 m\", \"0 m\", \"0 m\"]\n"
+	// A ball of radius 0.1 m on the x axis.
+	ball := func(name, x string) string {
+		return "[[sphere]]\nname = \"" + name + "\"\ncharge = \"1 nC\"\nradius = \"0.1 m\"\nat = [\"" + x + " m\", \"0 m\", \"0 m\"]\n"
+	}
 	const meter = "[meter]\nat = [\"1 m\", \"0 m\", \"0 m\"]\n"
 	for _, c := range []struct {
 		name, text string
@@ -274,7 +280,13 @@ func TestStrayRefuses(t *testing.T) {
 		{"syntax", "format = 1\n[[point]\n", []string{"stray.toml:2:"}},
 		{"no meter", "format = 1\n" + body, []string{"meter", "is missing"}},
 		{"no body", "format = 1\n" + meter, []string{"no charged body"}},
-		{"unit", "format = 1\n[[point]]\ncharge = \"1 nF\"\nat = [\"0 m\", \"0 m\", \"0 m\"]\n" + meter, []string{"charge", "nF"}},
+		{"unit", "format = 1\n[[point]]\ncharge = \"1 nF\"\nat = [\"0 m\", \"0 m\", \"0 m\"]\n" + meter, []string{"stray.toml:3:10: ", `charge: "1 nF" is a capacitance; a charge is due (for example C)`}},
+		{"unit of a table", "format = 1\n[[point]]\ncharge = { value = \"1 nC\", u = \"1 mm\" }\nat = [\"0 m\", \"0 m\", \"0 m\"]\n" + meter, []string{"stray.toml:3:32: ", `charge.u: "1 mm" is a length; a charge is due`}},
+		{"number for a text", "format = 1\n[[point]]\nname = 7\n" + meter, []string{"stray.toml:3:8: point.name: 7 where a text is due; put it in quotes"}},
+		{"spheres that overlap", "format = 1\n" + ball("c", "0") + ball("d", "0.15") + meter, []string{"stray.toml:7:3: ", `spheres "c" and "d" overlap`, "150 mm apart", "200 mm"}},
+		{"spheres that touch", "format = 1\n" + ball("c", "0") + ball("d", "0.2") + meter, []string{`spheres "c" and "d" overlap`}},
+		{"point in a sphere", "format = 1\n" + body + ball("c", "0.05") + meter, []string{`point "rod" reaches into sphere "c"`, "50 mm"}},
+		{"edge through a sphere", "format = 1\n" + ball("c", "0") + "[[edge]]\nname = \"lip\"\ncharge = \"1 nC\"\nfrom = [\"-1 m\", \"0.05 m\", \"0 m\"]\nto = [\"1 m\", \"0.05 m\", \"0 m\"]\n[meter]\nat = [\"0 m\", \"0 m\", \"1 m\"]\n", []string{`edge "lip" reaches into sphere "c"`}},
 		{"no unit", "format = 1\n[[point]]\ncharge = 1e-9\nat = [\"0 m\", \"0 m\", \"0 m\"]\n" + meter, []string{"charge", "no unit"}},
 		{"place", "format = 1\n[[point]]\ncharge = \"1 nC\"\nat = [\"0 m\", \"0 m\"]\n" + meter, []string{"at", "three lengths"}},
 		{"charge and potential", "format = 1\n[[sphere]]\ncharge = \"1 nC\"\npotential = \"1 kV\"\nradius = \"1 cm\"\nat = [\"0 m\", \"0 m\", \"0 m\"]\n" + meter, []string{"one of the two"}},
@@ -304,7 +316,10 @@ func TestStrayRefuses(t *testing.T) {
 			}
 		}
 	}
-	if _, err := plan.OpenStray(filepath.Join(t.TempDir(), "none.toml")); !os.IsNotExist(err) {
+	if _, err := plan.OpenStray(t.TempDir()); err == nil || !strings.Contains(err.Error(), "this is a folder; name the file") {
+		t.Errorf("a folder: %v", err)
+	}
+	if _, err := plan.OpenStray(filepath.Join(t.TempDir(), "none.toml")); !errors.Is(err, fs.ErrNotExist) {
 		t.Errorf("a file that is not there: %v", err)
 	}
 }

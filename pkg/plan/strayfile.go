@@ -5,6 +5,7 @@ import (
 	"encoding/hex"
 	"errors"
 	"fmt"
+	"io/fs"
 	"math"
 	"os"
 	"path/filepath"
@@ -13,6 +14,7 @@ import (
 
 	"github.com/pelletier/go-toml/v2"
 
+	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/field"
 	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/si"
@@ -121,20 +123,35 @@ var (
 	strayBodies = 200
 )
 
-// strayReader reads one file and keeps its name for messages.
-type strayReader struct{ path string }
+// strayReader reads one file and knows the places of its values for messages.
+type strayReader struct {
+	path   string
+	places *bench.Places
+	// A body is told by its name, and found by its number: what begins with shown
+	// in messages begins with found in the file.
+	shown, found string
+}
 
+// errorf is an error about a key; elements of arrays are counted from 1.
 func (r *strayReader) errorf(key, format string, a ...any) error {
-	return fmt.Errorf("%s: %s: %s", r.path, key, fmt.Sprintf(format, a...))
+	path := key
+	if rest, ok := strings.CutPrefix(key, r.shown); ok && r.shown != "" {
+		path = r.found + rest
+	}
+	return r.places.Errorf(path, key, format, a...)
 }
 
 // OpenStray reads the description of a stray field.
 func OpenStray(path string) (*StrayBench, error) {
 	info, err := os.Stat(path)
-	if err != nil {
+	switch {
+	case errors.Is(err, fs.ErrNotExist):
+		return nil, &bench.Error{File: path, Problem: "there is no such file; name one that describes the charged bodies", Err: err}
+	case err != nil:
 		return nil, err
-	}
-	if !info.Mode().IsRegular() || info.Size() > strayLimit {
+	case info.IsDir():
+		return nil, fmt.Errorf("%s: this is a folder; name the file", path)
+	case !info.Mode().IsRegular() || info.Size() > strayLimit:
 		return nil, fmt.Errorf("%s: want a file of at most %d bytes", path, strayLimit)
 	}
 	data, err := os.ReadFile(path)
@@ -146,39 +163,22 @@ func OpenStray(path string) (*StrayBench, error) {
 
 // ParseStray is OpenStray for a text already read; path is for messages.
 func ParseStray(path string, data []byte) (*StrayBench, error) {
+	places, err := bench.FindPlaces(path, data)
+	if err != nil {
+		return nil, err
+	}
 	var f strayFile
-	d := toml.NewDecoder(strings.NewReader(string(data)))
+	d := toml.NewDecoder(strings.NewReader(strings.TrimPrefix(string(data), "\ufeff")))
 	d.DisallowUnknownFields()
 	if err := d.Decode(&f); err != nil {
-		var strict *toml.StrictMissingError
-		var plain *toml.DecodeError
-		switch {
-		case errors.As(err, &strict):
-			var all []error
-			for i := range strict.Errors {
-				e := &strict.Errors[i]
-				key := strings.Join(e.Key(), ".")
-				hint := ""
-				if s := si.Suggest(e.Key()[len(e.Key())-1], strayKeys); s != "" {
-					hint = fmt.Sprintf("; did you mean %q?", s)
-				}
-				row, col := e.Position()
-				all = append(all, fmt.Errorf("%s:%d:%d: %s: this key is not known%s", path, row, col, key, hint))
-			}
-			return nil, errors.Join(all...)
-		case errors.As(err, &plain):
-			row, col := plain.Position()
-			return nil, fmt.Errorf("%s:%d:%d: %w", path, row, col, err)
-		}
-		return nil, fmt.Errorf("%s: %w", path, err)
+		return nil, places.Undecoded(err, strayKeys)
 	}
+	r := &strayReader{path: path, places: places}
 	if f.Format != 1 {
-		return nil, fmt.Errorf("%s: format %d is not known; this version reads format = 1", path, f.Format)
+		return nil, r.errorf("format", "format %d is not known; this version reads format = 1", f.Format)
 	}
 	sum := sha256.Sum256(data)
-	r := &strayReader{path}
 	b := &StrayBench{File: filepath.ToSlash(path), SHA256: hex.EncodeToString(sum[:]), Title: f.Title, Medium: gum.Exactly(1), Coverage: 0.9545}
-	var err error
 	if f.Medium.Relative != nil {
 		if b.Medium, err = r.quantity("medium.relative_permittivity", f.Medium.Relative, pureUnit); err != nil {
 			return nil, err
@@ -211,7 +211,7 @@ func ParseStray(path string, data []byte) (*StrayBench, error) {
 			b.Bodies = append(b.Bodies, body)
 		}
 	}
-	if err := r.names(b); err != nil {
+	if err := r.names(b, &f); err != nil {
 		return nil, err
 	}
 	if f.Report.Coverage != nil {
@@ -283,7 +283,8 @@ func (r *strayReader) body(shape string, i int, f *strayBodyFile) (StrayBody, er
 	if b.Name == "" {
 		b.Name = fmt.Sprintf("%s %d", shape, i+1)
 	}
-	key := func(k string) string { return fmt.Sprintf("%s %q: %s", shape, b.Name, k) }
+	r.shown, r.found = fmt.Sprintf("%s %q: ", shape, b.Name), fmt.Sprintf("%s[%d].", shape, i+1)
+	key := func(k string) string { return r.shown + k }
 	var err error
 	switch {
 	case f.Charge != nil && f.Potential != nil:
@@ -346,23 +347,38 @@ func (r *strayReader) body(shape string, i int, f *strayBodyFile) (StrayBody, er
 	return b, err
 }
 
-// names refuses a file without bodies and two bodies of one name.
-func (r *strayReader) names(b *StrayBench) error {
+// names refuses a file without bodies, two bodies of one name, and a sphere that
+// another body is in.
+func (r *strayReader) names(b *StrayBench, f *strayFile) error {
 	switch n := len(b.Bodies); {
 	case n == 0:
 		return fmt.Errorf("%s: there is no charged body; describe them in [[point]], [[sphere]] and [[edge]]", r.path)
 	case n > strayBodies:
 		return fmt.Errorf("%s: %d charged bodies; at most %d", r.path, n, strayBodies)
 	}
-	names := make([]string, 0, len(b.Bodies))
-	for i := range b.Bodies {
-		names = append(names, b.Bodies[i].Name)
-	}
-	sort.Strings(names)
-	for i := 1; i < len(names); i++ {
-		if names[i] == names[i-1] {
-			return fmt.Errorf("%s: two bodies are called %q; give each a name of its own", r.path, names[i])
+	// path is where body i stands in the file.
+	path := func(i int) string {
+		for _, g := range []struct {
+			shape string
+			n     int
+		}{{"point", len(f.Point)}, {"sphere", len(f.Sphere)}} {
+			if i < g.n {
+				return fmt.Sprintf("%s[%d]", g.shape, i+1)
+			}
+			i -= g.n
 		}
+		return fmt.Sprintf("edge[%d]", i+1)
+	}
+	first := map[string]bool{}
+	for i := range b.Bodies {
+		name := b.Bodies[i].Name
+		if first[name] {
+			return r.places.Errorf(path(i)+".name", "name", "two bodies are called %q; give each a name of its own", name)
+		}
+		first[name] = true
+	}
+	if i, problem := b.overlap(); problem != "" {
+		return r.places.Errorf(path(i), "", "%s", problem)
 	}
 	return nil
 }
@@ -403,11 +419,11 @@ func (r *strayReader) quantity(key string, v any, unit si.Unit) (gum.Distributio
 				parse = si.ParseInterval
 			}
 			x, u, err := parse(t)
-			if err == nil {
-				err = u.CheckDim(unit.Dim)
-			}
 			if err != nil {
 				return 0, r.errorf(key, "%v", err)
+			}
+			if u.Dim != unit.Dim {
+				return 0, r.errorf(key, "%s", bench.WrongDimension(t, u, unit))
 			}
 			return x, nil
 		case float64, int64:
@@ -511,7 +527,7 @@ func (r *strayReader) place(key string, v any) (field.Vec, error) {
 		return p, r.errorf(key, "want three lengths, such as [\"0 mm\", \"0 mm\", \"300 mm\"]")
 	}
 	for i, e := range list {
-		q, err := r.quantity(fmt.Sprintf("%s[%d]", key, i), e, lengthUnit)
+		q, err := r.quantity(fmt.Sprintf("%s[%d]", key, i+1), e, lengthUnit)
 		if err != nil {
 			return p, err
 		}

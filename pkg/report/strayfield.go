@@ -31,7 +31,9 @@ func StrayField(s *plan.StrayField, drawn *figure.Figure) *Sheet {
 		out.Fact("in its budget, taken off", "relative u = "+perCent(b.U))
 		out.Fact("in its budget, left in", "relative u = "+perCent(b.Left)+", rectangular over ±(|E| + U)")
 	}
-	out.Notice(rec.Warnings...)
+	if len(rec.Warnings) > 0 {
+		out.Head("Warnings").Notice(rec.Warnings...)
+	}
 	out.Head("Bodies")
 	coulomb := si.MustUnit("nC")
 	t := &Table{Columns: []Column{{Name: "body", Most: 22}, {Name: "shape"}, {Name: "charge", Unit: "nC", Align: Decimal}, {Name: "u", Unit: "nC", Align: Decimal},
