@@ -35,8 +35,12 @@ func (d *difference) columns(theta, f []float64, cols [][]float64) error {
 		}
 		h := stepFactor * scale
 		up, down := theta[j]+h, theta[j]-h
-		if s.lo != nil {
-			up, down = math.Min(up, s.hi[k]), math.Max(down, s.lo[k])
+		// its own bounds: those of the search may pin it (see valley)
+		if hi := s.p.Parameters[j].Upper; hi != nil {
+			up = math.Min(up, *hi)
+		}
+		if lo := s.p.Parameters[j].Lower; lo != nil {
+			down = math.Max(down, *lo)
 		}
 		d.x[j] = up
 		s.evaluations++

@@ -122,43 +122,32 @@ func (e *extended) inverse() [][]float64 {
 	return out
 }
 
+// faintLimit is the size of a singular value, relative to the greatest, below
+// which a search that ended badly names its direction.
+const faintLimit = 1e-5
+
+// faint lists the singular values that are small without being zero.
+func (sp *spectrum) faint() []int {
+	top := 0.0
+	for _, x := range sp.s {
+		top = math.Max(top, x)
+	}
+	var out []int
+	for k, x := range sp.s {
+		if x <= faintLimit*top {
+			out = append(out, k)
+		}
+	}
+	return out
+}
+
 // confounded names the parameters of each null vector, after reducing the null
 // vectors to echelon form so that each names as few as it can.
 func (f *fitter) confounded(sp *spectrum) (sentences []string, involved []bool) {
 	s := &f.search
-	q, m := s.q, len(sp.idx)
-	involved = make([]bool, q)
-	rows := make([][]float64, 0, len(sp.null))
-	for _, k := range sp.null {
-		rows = append(rows, append([]float64(nil), sp.v[k*m:k*m+m]...))
-	}
-	used := make([]bool, m)
-	for i := range rows {
-		pivot, big := -1, 0.0
-		for l, v := range rows[i] {
-			if !used[l] && math.Abs(v) > big {
-				pivot, big = l, math.Abs(v)
-			}
-		}
-		if pivot < 0 {
-			continue
-		}
-		used[pivot] = true
-		d := rows[i][pivot]
-		for l := range rows[i] {
-			rows[i][l] /= d
-		}
-		for h := range rows {
-			if h == i {
-				continue
-			}
-			c := rows[h][pivot]
-			for l := range rows[h] {
-				rows[h][l] -= c * rows[i][l]
-			}
-		}
-	}
-	for _, row := range rows {
+	involved = make([]bool, s.q)
+	for _, d := range sp.echelon(largest) {
+		row := d.v
 		// the direction in units of the parameters, scaled to a change of 1 % of
 		// the parameter that changes most relative to itself
 		big, most := 0.0, 0.0
@@ -204,6 +193,9 @@ func (f *fitter) confounded(sp *spectrum) (sentences []string, involved []bool) 
 func (f *fitter) result(ctx context.Context) (*Result, error) {
 	s, p := &f.search, f.p
 	n := len(s.y)
+	if f.pinned != nil {
+		f.unpin()
+	}
 	sp := f.analyse()
 	if err := s.restore(); err != nil {
 		return nil, fmt.Errorf("lsq: the model can't be evaluated: %w", err)
@@ -525,6 +517,11 @@ func (f *fitter) parameters(r *Result, sp *spectrum, scale float64) {
 	}
 	if r.Status != Converged && r.Status != Singular {
 		r.warn("the fit did not converge: %s", r.Reason)
+		near := &spectrum{idx: sp.idx, norm: sp.norm, s: sp.s, v: sp.v, null: sp.faint()}
+		sentences, _ := f.confounded(near)
+		for _, c := range sentences {
+			r.warn("where the search ended, to within %.0g of the readings' response, %s", faintLimit, c)
+		}
 	}
 
 }

@@ -68,6 +68,8 @@ type fitter struct {
 	restarts    int
 	warnings    []error
 	exact       *extended // solution of a linear model in extended precision
+	pinned      []int     // free parameters kept at the start: see valley
+	bare        bool      // the search had no bounds before
 }
 
 // fitters keeps the working memory of fits, which come in series.
@@ -271,7 +273,7 @@ func (f *fitter) fit(ctx context.Context) error {
 // covariance afterwards would be wrong.
 func (f *fitter) findNoise(ctx context.Context, rounds int) error {
 	s := &f.search
-	dof := float64(len(f.p.Y) + f.priors - len(f.free))
+	dof := float64(len(f.p.Y) + f.priors - len(f.free) + len(f.pinned))
 	if dof <= 0 {
 		return nil // result says that the noise can't be known
 	}
@@ -314,10 +316,26 @@ func (f *fitter) once(ctx context.Context, start []float64, restarts bool) error
 	s.checkedLinear = f.p.Linear
 	limit := s.iterations + f.set.MaxIterations
 	s.maxIter = limit
+	if restarts && !f.p.Linear && s.eiv == nil {
+		if pins := f.pins(); pins != nil {
+			if lost, err := f.valley(ctx, pins); lost || err != nil {
+				return err
+			}
+			if err := s.begin(start); err != nil {
+				return err
+			}
+			s.checkedLinear = false
+			s.linear = false
+			s.maxIter = s.iterations + f.set.MaxIterations
+		}
+	}
 	if err := s.run(ctx); err != nil {
 		return err
 	}
 	f.exact = nil
+	if f.pinned != nil {
+		return nil
+	}
 	if s.linear && !s.anyHeld() {
 		return f.refine(ctx)
 	}

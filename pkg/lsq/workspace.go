@@ -68,12 +68,7 @@ func (s *search) init(p *Problem, y []float64, free []int, white *whitener) {
 			s.hasPrior = true
 		}
 		if (q.Lower != nil || q.Upper != nil) && s.lo == nil {
-			s.lo, s.hi = make([]float64, s.q), make([]float64, s.q)
-			s.held = make([]bool, s.q)
-			for l := range s.lo {
-				s.lo[l], s.hi[l] = math.Inf(-1), math.Inf(1)
-			}
-			s.sub = newSubspace(s.q)
+			s.boundless()
 		}
 		if q.Lower != nil {
 			s.lo[k] = *q.Lower

@@ -92,8 +92,13 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 	res.warn(fit.Warnings...)
 	c.rows(fit, &res.Rows)
 	res.Record.Diagnosis.Tests = c.tests(fit)
-	if fit.Status == lsq.Singular {
+	switch fit.Status {
+	case lsq.Converged:
+	case lsq.Singular:
 		res.warn(fmt.Errorf("no measurand is stated: the fit is singular"))
+		return res.finish(s), nil
+	default: // where a search stopped is no estimate, and its covariance no uncertainty
+		res.warn(fmt.Errorf("no measurand is stated: the fit has not converged (%s: %s)", fit.Status, fit.Reason))
 		return res.finish(s), nil
 	}
 	c.fitU = fit.U
