@@ -85,7 +85,7 @@ func planText(w *bytes.Buffer, p *plan.Prediction) error {
 	if err != nil {
 		return err
 	}
-	_, unit = si.Prefixed(float64(m.Value), unit)
+	unit = unit.Suited(float64(m.Value), float64(m.K)*float64(m.U))
 	fmt.Fprintf(w, "%s\nmodel %s, before measuring\n\n", p.Title, p.Model)
 	fmt.Fprintf(w, "The design gives %s: %s\n", figure.Words(m.Name), si.Expanded(float64(m.Value), float64(m.K)*float64(m.U), unit, float64(m.K), float64(m.Probability)))
 	h := &p.Hazard

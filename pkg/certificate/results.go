@@ -275,7 +275,11 @@ func measurand(rec *reduce.Record, name string) *reduce.Measurand {
 // unitFor chooses the unit in which a measurand is stated: its own, with the
 // prefix that suits it.
 func unitFor(m *reduce.Measurand) (si.Unit, error) {
-	return prefixed(math.Max(math.Abs(float64(m.Value)), float64(m.K*m.U)), m.Unit)
+	u, err := si.ParseUnit(m.Unit)
+	if err != nil {
+		return u, fmt.Errorf("certificate: %w", err)
+	}
+	return u.Suited(float64(m.Value), float64(m.K*m.U)), nil
 }
 
 func prefixed(x float64, symbol string) (si.Unit, error) {

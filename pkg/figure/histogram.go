@@ -141,7 +141,7 @@ func (d *Data) Histogram(name string) (*Figure, error) {
 	p.axes(frame{})
 	// The two intervals, one under the other, beneath the axis title's left.
 	y0 := p.y + p.h + 4 + tickSize + 3 + labelSize - 3
-	_, du := si.Prefixed(math.Max(math.Abs(lo), math.Abs(hi)), unit)
+	du := unit.Suited(math.Max(math.Abs(lo), math.Abs(hi)), scaleU)
 	bracket := func(a, b float64, color, dash, name string) {
 		if !finite(a, b) {
 			return

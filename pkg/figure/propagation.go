@@ -164,7 +164,7 @@ func Density(p *reduce.Propagation, name string) (*Figure, error) {
 	q.curve(lx, ly, pen{stroke: vermilion, width: 1.2})
 	q.axes(frame{})
 	y := q.y + q.h + 4 + tickSize + 3 + labelSize - 3
-	_, du := si.Prefixed(math.Max(math.Abs(lo), math.Abs(hi)), unit)
+	du := unit.Suited(math.Max(math.Abs(lo), math.Abs(hi)), scaleU)
 	bracket := func(ends [2]float64, color, dash, what string) {
 		if !finite(ends[0], ends[1]) {
 			return

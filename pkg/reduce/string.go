@@ -18,7 +18,7 @@ func (r *Result) String() string {
 		if err != nil {
 			u = si.One // a unit of this package's own making; shown without prefix
 		}
-		_, u = si.Prefixed(float64(m.Value), u)
+		u = u.Suited(float64(m.Value), float64(m.U))
 		lines = append(lines, m.Name+" = "+si.Short(float64(m.Value), float64(m.U), u))
 	}
 	return strings.Join(lines, "\n")

@@ -57,7 +57,7 @@ func alike(a, b *reduce.Measurand) bool {
 // Budget is the table of a measurand with the columns of EA-4/02 section 4, by parts of the
 // bench, the weightiest first.
 func Budget(m *reduce.Measurand) *Table {
-	mu := display(math.Max(math.Abs(float64(m.Value)), float64(m.U)), m.Unit)
+	mu := shown(m)
 	cu := display(float64(m.U), m.Unit)
 	per := mu.String()
 	t := &Table{Columns: []Column{

@@ -127,8 +127,7 @@ func cautions(h *reduce.Hazard) *caution {
 
 // stated gives the two lines of a measurand.
 func stated(m *reduce.Measurand) result {
-	u := unitOf(m.Unit)
-	_, du := si.Prefixed(math.Max(math.Abs(float64(m.Value)), float64(m.U)), u)
+	du := shown(m)
 	r := result{name: words(m.Name), doc: m.Doc}
 	r.short = minus(si.Short(float64(m.Value), float64(m.U), du))
 	r.expanded = minus(si.Expanded(float64(m.Value), float64(m.K)*float64(m.U), du, float64(m.K), float64(m.Probability)))
@@ -177,6 +176,11 @@ func Parameters(rec *reduce.Record) *Table {
 		total = total || finite(p.UTotal)
 		prior := "–"
 		if p.Prior != nil {
+			// One unit for both, where the estimate stays a plain decimal in it.
+			both := unitOf(p.Unit).Suited(float64(p.Value), math.Max(float64(u), float64(p.Prior.U)))
+			if bv, bu := si.Round(both.FromSI(float64(p.Value)), both.DeltaFromSI(float64(u))); !strings.ContainsRune(bv+bu, 'e') && finite(u) {
+				v, unit = minus(bv), both
+			}
 			pv, pu := si.Round(unit.FromSI(float64(p.Prior.Value)), unit.DeltaFromSI(float64(p.Prior.U)))
 			prior = rounded(pv) + " ± " + power(pu)
 		}
@@ -361,7 +365,7 @@ func (d *document) causes(rec *reduce.Record) {
 		s = strings.ReplaceAll(s, "p = <", "p <")
 		if len(rec.Measurands) > 0 && finite(c.Shift) {
 			m := &rec.Measurands[0]
-			du := display(math.Max(math.Abs(float64(m.Value)), float64(m.U)), m.Unit)
+			du := shown(m)
 			shift := minus(digits(du.DeltaFromSI(float64(c.Shift)), 2))
 			if x := unitText(du); x != "" {
 				shift += nbsp + x
@@ -433,7 +437,7 @@ func (d *document) monteCarlo(rec *reduce.Record) {
 		if mc == nil {
 			continue
 		}
-		du := display(math.Max(math.Abs(float64(m.Value)), float64(m.U)), m.Unit)
+		du := shown(m)
 		unit := ""
 		if x := unitText(du); x != "" {
 			unit = nbsp + x

@@ -41,14 +41,7 @@ func display(x float64, symbol string) si.Unit {
 // people in one display unit.
 func measured(value, u reduce.Number, symbol string) (v, du string, unit si.Unit) {
 	x, ux := float64(value), float64(u)
-	size := math.Abs(x)
-	if !(size > 0) || ux > 10*size {
-		size = ux
-	}
-	unit = display(size, symbol)
-	if d := unit.DeltaFromSI(ux); d >= 99.5 {
-		unit = display(10*size, symbol) // 0.20 V says more than 2.0×10² mV
-	}
+	unit = unitOf(symbol).Suited(x, ux)
 	if ux == 0 {
 		return minus(short(unit.FromSI(x), 12)), "0", unit
 	}
@@ -63,6 +56,16 @@ func rounded(v string) string {
 		return "0"
 	}
 	return minus(power(v))
+}
+
+// shown is the unit in which everything of a measurand is stated, such that its
+// expanded uncertainty needs no power of ten.
+func shown(m *reduce.Measurand) si.Unit {
+	du := float64(m.U)
+	if k := float64(m.K); k > 1 && !math.IsInf(k, 0) {
+		du *= k
+	}
+	return unitOf(m.Unit).Suited(float64(m.Value), du)
 }
 
 // power rewrites "1.2e-30" as "1.2×10⁻³⁰".

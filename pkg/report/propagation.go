@@ -102,12 +102,20 @@ func propagationSubtitle(rec *reduce.PropagationRecord) string {
 	return strings.Join(parts, " · ")
 }
 
-// outputUnit is the unit in which an output is shown: the one that the budget states.
+// outputUnit is the unit in which an output is shown: the one that the budget
+// states, unless its expanded uncertainty would need a power of ten there.
 func outputUnit(o *reduce.BudgetResult) si.Unit {
-	if o.StatedUnit == "" {
-		return unitOf(o.Unit)
+	u := unitOf(o.Unit)
+	if o.StatedUnit != "" {
+		u = unitOf(o.StatedUnit)
 	}
-	return unitOf(o.StatedUnit)
+	if l := o.Law; l != nil {
+		du := math.Max(float64(l.U), float64(l.K)*float64(l.U))
+		if _, t := si.Round(0, u.DeltaFromSI(du)); strings.ContainsRune(t, 'e') {
+			return u.Suited(float64(l.Value), du)
+		}
+	}
+	return u
 }
 
 // quantity writes a difference, SI, with n significant digits and its unit.

@@ -77,7 +77,7 @@ func MonteCarlo(ms []reduce.Measurand) *Table {
 		if mc == nil {
 			continue
 		}
-		u := display(math.Max(math.Abs(float64(m.Value)), float64(m.U)), m.Unit)
+		u := shown(m)
 		end := func(x reduce.Number) string {
 			v, _ := si.Round(u.FromSI(float64(x)), u.DeltaFromSI(float64(mc.U)))
 			return rounded(v)

@@ -269,6 +269,36 @@ func Prefixed(x float64, u Unit) (float64, Unit) {
 	return n.FromSI(x), n
 }
 
+// Suited returns u with the SI prefix that suits the SI value x with the
+// uncertainty du: that of the larger of the two (Prefixed), or the next one up
+// where du, rounded to two digits, would end left of the point, so that both
+// stay plain decimals: −0.07 kV/m ± 0.10 kV/m rather than hundreds of V/m with
+// a power of ten. An unknown or infinite du is left out of account.
+func (u Unit) Suited(x, du float64) Unit {
+	size := math.Abs(x)
+	if du > size && !math.IsInf(du, 0) {
+		size = du
+	}
+	_, n := Prefixed(size, u)
+	plain := func(in Unit) bool {
+		r := round(0, in.DeltaFromSI(du), digitsOfU)
+		return r.apart || r.exp == 0
+	}
+	if plain(n) {
+		return n
+	}
+	for up := 1e3; up <= 1e9; up *= 1e3 {
+		// The number may grow by 10³, 10⁶ or 10⁹ within one prefix (m, m², m³).
+		if _, next := Prefixed(size*up, u); next != n {
+			if plain(next) {
+				return next
+			}
+			return n
+		}
+	}
+	return n
+}
+
 // prefixOf returns the index of the prefix 10^exp.
 func prefixOf(exp int) int {
 	for i, p := range prefixes {

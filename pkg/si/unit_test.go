@@ -377,3 +377,22 @@ func TestCoherentKeepsTheQuantity(t *testing.T) {
 		t.Errorf("got %g %s", v, u)
 	}
 }
+
+// GUM 7.2.6 asks for two digits of the uncertainty and the value to their place;
+// that neither should need a power of ten is common practice, no source.
+func TestSuitedKeepsPlainDecimals(t *testing.T) {
+	for _, c := range []struct {
+		x, du      float64
+		unit, want string
+	}{
+		{-70, 100, "V/m", "-0.07 0.10 kV/m"}, {0, 300e-6, "m", "0.00 0.30 mm"}, {0.01e-3, 0.1e-3, "F/m", "0.01 0.10 mF/m"},
+		{70, 99.4, "V/m", "70 99 V/m"}, {70, 99.6, "V/m", "0.07 0.10 kV/m"}, {0, 0.2, "V", "0.00 0.20 V"}, {8.854e-12, 3e-15, "F/m", "8.8540 0.0030 pF/m"},
+		{5.3e-10, 4.8e-10, "m^2", "0.00053 0.00048 mm²"}, {350, 120, "degC", "0.8e2 1.2e2 °C"}, {3, math.NaN(), "mm", "3 unknown m"}, {0, 0, "mm", "0 0 mm"},
+	} {
+		u := MustUnit(c.unit).Suited(c.x, c.du)
+		v, du := Round(u.FromSI(c.x), u.DeltaFromSI(c.du))
+		if got := v + " " + du + " " + u.String(); got != c.want {
+			t.Errorf("%g ± %g %s: %s, want %s", c.x, c.du, c.unit, got, c.want)
+		}
+	}
+}
