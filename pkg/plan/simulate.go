@@ -3,6 +3,7 @@ package plan
 import (
 	"bytes"
 	"encoding/csv"
+	"errors"
 	"fmt"
 	"io"
 	"math"
@@ -45,7 +46,54 @@ func Simulate(b *bench.Bench, t *Truth, seed uint64) ([]float64, error) {
 	if err != nil {
 		return nil, err
 	}
+	if err := valid(b, m, q, of, x); err != nil {
+		return nil, err
+	}
 	return response(b, m, q, of, names, x, t, seed)
+}
+
+// valid refuses a truth for which the kind's formulas do not hold. Its warnings are
+// those of the reduction, which looks at the same readings.
+func valid(b *bench.Bench, m *model.Model, q [][]float64, of []int, x [][]float64) error {
+	for s := range q {
+		var rows []int
+		for i, k := range b.Rows.Kind {
+			if of[i] == s && (k == bench.Reading || k == bench.Overrange) && !b.Rows.Excluded[i] {
+				rows = append(rows, i)
+			}
+		}
+		if len(rows) == 0 {
+			continue
+		}
+		xs, ys := make([][]float64, len(x)), make([]float64, len(rows))
+		for p := range x {
+			for _, i := range rows {
+				xs[p] = append(xs[p], x[p][i])
+			}
+		}
+		qj, xj := make([]jet.Jet, len(q[s])), make([]jet.Jet, len(x))
+		for i, v := range q[s] {
+			qj[i] = jet.Const(v)
+		}
+		for n := range rows {
+			for p := range xs {
+				xj[p] = jet.Const(xs[p][n])
+			}
+			ys[n] = m.Row(qj, xj).V
+		}
+		_, err := m.Check(q[s], xs, ys)
+		if err == nil {
+			continue
+		}
+		truth := filepath.Join(b.Dir, TruthFile)
+		var row *model.RowError
+		if errors.As(err, &row) {
+			file, line := b.Rows.Place(rows[row.Row])
+			return fmt.Errorf("%s:%d: with the truth of %s: %w", file, line, truth, err)
+		}
+		return fmt.Errorf("%s: %w", truth, err)
+	}
+	return nil
 }
 
 // Scalars returns the true scalars of a series of the bench ("" when it has only

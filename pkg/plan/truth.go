@@ -1,12 +1,16 @@
 package plan
 
 import (
+	"bytes"
 	"errors"
 	"fmt"
 	"io/fs"
+	"math"
 	"os"
 	"path/filepath"
 	"sort"
+	"strconv"
+	"strings"
 
 	"github.com/pelletier/go-toml/v2"
 
@@ -52,30 +56,34 @@ type Fault struct {
 	Add float64 // unit of the response, SI
 }
 
-// truthFile is the layout of simulation.toml.
+// truthFile is the layout of simulation.toml. What is a quantity is read as it
+// stands, so that a number without a unit is told in our words.
 type truthFile struct {
-	Format int               `toml:"format"`
-	Seed   uint64            `toml:"seed"`
-	Truth  map[string]string `toml:"truth"`
+	Format int            `toml:"format"`
+	Seed   any            `toml:"seed"`
+	Truth  map[string]any `toml:"truth"`
 	Zero   struct {
-		Start        string `toml:"start"`
-		PerHour      string `toml:"per_hour"`
-		Settling     string `toml:"settling"`
-		TimeConstant string `toml:"time_constant"`
+		Start        any `toml:"start"`
+		PerHour      any `toml:"per_hour"`
+		Settling     any `toml:"settling"`
+		TimeConstant any `toml:"time_constant"`
 	} `toml:"zero"`
 	Blank struct {
-		Add string `toml:"add"`
+		Add any `toml:"add"`
 	} `toml:"blank"`
 	Fault []struct {
-		Row int    `toml:"row"`
-		Add string `toml:"add"`
+		Row int `toml:"row"`
+		Add any `toml:"add"`
 	} `toml:"fault"`
 	Defect []struct {
 		By     string `toml:"by"`
 		Series string `toml:"series"`
-		Size   string `toml:"size"`
+		Size   any    `toml:"size"`
 	} `toml:"defect"`
 }
+
+// truthKeys are the keys of the file but for those of [truth], for hints.
+var truthKeys = []string{"format", "seed", "truth", "zero", "start", "per_hour", "settling", "time_constant", "blank", "add", "fault", "row", "defect", "by", "series", "size"}
 
 // ReadTruth reads simulation.toml in the folder of a bench.
 func ReadTruth(b *bench.Bench) (*Truth, error) {
@@ -86,32 +94,56 @@ func ReadTruth(b *bench.Bench) (*Truth, error) {
 	} else if err != nil {
 		return nil, err
 	}
+	places, err := bench.FindPlaces(path, data)
+	if err != nil {
+		return nil, err
+	}
 	var f truthFile
-	if err := toml.Unmarshal(data, &f); err != nil {
-		var d *toml.DecodeError
-		if errors.As(err, &d) {
-			row, col := d.Position()
-			return nil, fmt.Errorf("%s:%d:%d: %w", path, row, col, err)
-		}
-		return nil, fmt.Errorf("%s: %w", path, err)
+	d := toml.NewDecoder(bytes.NewReader(bytes.TrimPrefix(data, []byte("\xef\xbb\xbf"))))
+	d.DisallowUnknownFields()
+	if err := d.Decode(&f); err != nil {
+		return nil, places.Undecoded(err, truthKeys)
 	}
 	if f.Format != 1 {
-		return nil, fmt.Errorf("%s: format %d is not known; this version reads format = 1", path, f.Format)
+		return nil, places.Errorf("format", "format", "format %d is not known; this version reads format = 1", f.Format)
 	}
-	t := &Truth{Seed: f.Seed, Values: map[string]float64{}}
-	units := truthUnits(b)
-	known := make([]string, 0, len(units))
-	for k := range units {
+	t := &Truth{Values: map[string]float64{}}
+	switch n, ok := f.Seed.(int64); {
+	case f.Seed == nil:
+	case !ok || n < 0:
+		return nil, places.Errorf("seed", "seed", "%#v is no seed; write a whole number, zero or above", f.Seed)
+	default:
+		t.Seed = uint64(n)
+	}
+	inputs := truthInputs(b)
+	known := make([]string, 0, len(inputs))
+	for k := range inputs {
 		known = append(known, k)
 	}
 	sort.Strings(known)
-	quantity := func(key, text string, unit si.Unit) (float64, error) {
-		v, u, err := si.ParseQuantity(text)
-		if err == nil && u.Dim != unit.Dim {
-			err = fmt.Errorf("%q is in %s; %s is due", text, u.Dim, unit.Symbol)
+	// at is the key in the file where it is not the one that messages show.
+	quantity := func(key, at string, value any, unit si.Unit) (float64, error) {
+		text, ok := value.(string)
+		switch value.(type) {
+		case int64, float64:
+			if unit.Dim.IsOne() {
+				text, ok = fmt.Sprint(value), true
+				break
+			}
+			return 0, places.Errorf(at, key, "%v has no unit; write it with its unit (for example \"%v %s\")", value, value, unit.Symbol)
 		}
+		if !ok {
+			return 0, places.Errorf(at, key, "want a text with a unit, such as \"1 %s\"", unit.Symbol)
+		}
+		v, u, err := si.ParseQuantity(text)
 		if err != nil {
-			return 0, fmt.Errorf("%s: %s: %w", path, key, err)
+			return 0, places.Errorf(at, key, "%v", err)
+		}
+		if u.Dim != unit.Dim {
+			return 0, places.Errorf(at, key, "%s", bench.WrongDimension(text, u, unit))
+		}
+		if math.IsNaN(v) || math.IsInf(v, 0) {
+			return 0, places.Errorf(at, key, "%q is not a finite number", text)
 		}
 		return v, nil
 	}
@@ -121,64 +153,77 @@ func ReadTruth(b *bench.Bench) (*Truth, error) {
 	}
 	sort.Strings(keys)
 	for _, key := range keys {
-		unit, ok := units[key]
+		in, ok := inputs[key]
+		at := "truth." + key
+		if strings.Trim(key, bareKey) != "" {
+			at = "truth." + strconv.Quote(key)
+		}
 		if !ok {
 			hint := ""
 			if s := si.Suggest(key, known); s != "" {
 				hint = fmt.Sprintf("; did you mean %q?", s)
 			}
-			return nil, fmt.Errorf("%s: truth: %q is no input of model %s%s", path, key, b.Kind.Name, hint)
+			return nil, places.Errorf(at, "truth", "%q is no input of model %s%s", key, b.Kind.Name, hint)
 		}
-		if t.Values[key], err = quantity("truth."+key, f.Truth[key], unit); err != nil {
+		v, err := quantity("truth."+key, at, f.Truth[key], in.unit)
+		switch {
+		case err != nil:
 			return nil, err
+		case in.positive && !(v > 0):
+			return nil, places.Errorf(at, "truth."+key, "%q must be above zero: %s", fmt.Sprint(f.Truth[key]), in.doc)
+		case in.gain && v == 0:
+			return nil, places.Errorf(at, "truth."+key, "a gain of zero leaves nothing of the readings")
 		}
+		t.Values[key] = v
 	}
 	response := responseUnit(b)
-	if f.Zero.Start != "" {
-		if t.ZeroStart, err = quantity("zero.start", f.Zero.Start, response); err != nil {
+	if f.Zero.Start != nil {
+		if t.ZeroStart, err = quantity("zero.start", "zero.start", f.Zero.Start, response); err != nil {
 			return nil, err
 		}
 	}
-	if f.Zero.PerHour != "" {
-		if t.ZeroRate, err = quantity("zero.per_hour", f.Zero.PerHour, response); err != nil {
+	if f.Zero.PerHour != nil {
+		if t.ZeroRate, err = quantity("zero.per_hour", "zero.per_hour", f.Zero.PerHour, response); err != nil {
 			return nil, err
 		}
 		t.ZeroRate /= 3600
 	}
-	if f.Zero.Settling != "" {
-		if t.ZeroSettling, err = quantity("zero.settling", f.Zero.Settling, response); err != nil {
+	if f.Zero.Settling != nil {
+		if t.ZeroSettling, err = quantity("zero.settling", "zero.settling", f.Zero.Settling, response); err != nil {
 			return nil, err
 		}
-		if t.ZeroTime, err = quantity("zero.time_constant", f.Zero.TimeConstant, si.MustUnit("s")); err != nil {
+		if t.ZeroTime, err = quantity("zero.time_constant", "zero.time_constant", f.Zero.TimeConstant, si.MustUnit("s")); err != nil {
 			return nil, err
 		}
 		if !(t.ZeroTime > 0) {
-			return nil, fmt.Errorf("%s: zero.time_constant: %q must be above zero", path, f.Zero.TimeConstant)
+			return nil, places.Errorf("zero.time_constant", "zero.time_constant", "%q must be above zero", fmt.Sprint(f.Zero.TimeConstant))
 		}
 	}
-	if f.Blank.Add != "" {
-		if t.Blank, err = quantity("blank.add", f.Blank.Add, response); err != nil {
+	if f.Blank.Add != nil {
+		if t.Blank, err = quantity("blank.add", "blank.add", f.Blank.Add, response); err != nil {
 			return nil, err
 		}
 	}
-	for _, x := range f.Fault {
-		add, err := quantity("fault.add", x.Add, response)
+	for i, x := range f.Fault {
+		at := fmt.Sprintf("fault[%d].", i+1)
+		add, err := quantity("fault.add", at+"add", x.Add, response)
 		if err != nil {
 			return nil, err
 		}
 		if x.Row < 1 || x.Row > b.Rows.N {
-			return nil, fmt.Errorf("%s: fault.row: %d is not a data record; there are %d, counted from 1", path, x.Row, b.Rows.N)
+			return nil, places.Errorf(at+"row", "fault.row", "%d is not a data record; there are %d, counted from 1", x.Row, b.Rows.N)
 		}
 		t.Faults = append(t.Faults, Fault{Row: x.Row, Add: add})
 	}
-	for _, x := range f.Defect {
+	for i, x := range f.Defect {
+		at := fmt.Sprintf("defect[%d].", i+1)
 		if x.By != "polarity" && x.By != "direction" {
-			return nil, fmt.Errorf("%s: defect.by: %q is not known; use polarity or direction", path, x.By)
+			return nil, places.Errorf(at+"by", "defect.by", "%q is not known; use polarity or direction", x.By)
 		}
 		if b.Rows.Labels[x.By] == nil {
-			return nil, fmt.Errorf("%s: defect.by: the bench names no column in [rows] %s", path, x.By)
+			return nil, places.Errorf(at+"by", "defect.by", "the bench names no column in [rows] %s", x.By)
 		}
-		size, err := quantity("defect.size", x.Size, si.MustUnit("1"))
+		size, err := quantity("defect.size", at+"size", x.Size, si.MustUnit("1"))
 		if err != nil {
 			return nil, err
 		}
@@ -187,25 +232,37 @@ func ReadTruth(b *bench.Bench) (*Truth, error) {
 	return t, nil
 }
 
-// truthUnits lists what a truth may name, with a unit of its dimension.
-func truthUnits(b *bench.Bench) map[string]si.Unit {
-	units := map[string]si.Unit{}
+// bareKey holds the characters of a key of TOML that needs no quotes.
+const bareKey = "abcdefghijklmnopqrstuvwxyzABCDEFGHIJKLMNOPQRSTUVWXYZ0123456789_-"
+
+// truthInput is one number that a truth may name.
+type truthInput struct {
+	unit     si.Unit // a unit of its dimension
+	doc      string
+	positive bool // must be above zero
+	gain     bool // must not be zero
+}
+
+// truthInputs lists what a truth may name.
+func truthInputs(b *bench.Bench) map[string]truthInput {
+	inputs := map[string]truthInput{}
 	_, series := reduce.SeriesOf(b)
 	for i := range b.Kind.Scalars {
 		s := &b.Kind.Scalars[i]
-		units[s.Key()] = s.Unit
+		in := truthInput{unit: s.Unit, doc: s.Doc, positive: s.Positive}
+		inputs[s.Key()] = in
 		for _, name := range series {
 			if s.Own {
-				units[reduce.SeriesName(s.Key(), name)] = s.Unit
+				inputs[reduce.SeriesName(s.Key(), name)] = in
 			}
 		}
 	}
 	for i := range b.Channels {
 		ch := &b.Channels[i]
-		units["channels."+ch.Name+".gain"] = si.MustUnit("1")
-		units["channels."+ch.Name+".offset"] = ch.Unit
+		inputs["channels."+ch.Name+".gain"] = truthInput{unit: si.MustUnit("1"), gain: true}
+		inputs["channels."+ch.Name+".offset"] = truthInput{unit: ch.Unit}
 	}
-	return units
+	return inputs
 }
 
 // responseUnit is the unit of the response that the bench reads.
