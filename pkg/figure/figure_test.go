@@ -596,3 +596,14 @@ func TestLinesOfManyReadings(t *testing.T) {
 		}
 	}
 }
+
+func TestWordsOfKeys(t *testing.T) {
+	for key, want := range map[string]string{
+		"channels.voltage.gain": "voltage gain", "contact_potential": "contact potential", "corrections.offset_current.current": "offset current",
+		"corrections.image.height_offset": "image height offset", "vacuum_coulomb_constant": "vacuum Coulomb constant", "coulomb_constant": "Coulomb constant",
+	} {
+		if got := Words(key); got != want {
+			t.Errorf("%s: %q, want %q", key, got, want)
+		}
+	}
+}

@@ -154,7 +154,13 @@ func Words(key string) string {
 	for _, table := range []string{"channels.", "corrections.", "environment.", "quantities."} {
 		s = strings.TrimPrefix(s, table)
 	}
-	return strings.NewReplacer("_", " ", ".", " ").Replace(s)
+	// A key that repeats the end of its table says nothing more:
+	// offset_current.current is the offset current.
+	if table, key, ok := strings.Cut(s, "."); ok && (table == key || strings.HasSuffix(table, "_"+key)) {
+		s = table
+	}
+	s = strings.NewReplacer("_", " ", ".", " ").Replace(s)
+	return strings.ReplaceAll(s, "coulomb constant", "Coulomb constant")
 }
 
 func words(key string) string { return Words(key) }

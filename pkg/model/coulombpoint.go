@@ -328,7 +328,7 @@ func prepareCoulombPoint(k *Kind, s *Setup) (*Model, error) {
 			}
 			if induction {
 				if a := math.Max(q[iA], q[iB]); r < inductionLimit*a {
-					return nil, &RowError{Row: i, Err: fmt.Errorf("corrections.induction: distance %.4g mm is within %g radii (%.4g mm), where single images do not suffice; use model = \"sphere-pair\" or a larger distance", 1e3*r, inductionLimit, 1e3*a)}
+					return nil, &RowError{Row: i, Err: fmt.Errorf("corrections.induction: distance %.4g mm is within %g radii (%g × %.4g mm = %.4g mm), where single images do not suffice; use model = \"sphere-pair\" or a larger distance", 1e3*r, inductionLimit, inductionLimit, 1e3*a, 1e3*inductionLimit*a)}
 				}
 			}
 			nearest, farthest = math.Min(nearest, r), math.Max(farthest, r)
@@ -386,8 +386,11 @@ func values(q []jet.Jet) []float64 {
 
 // likeness says what the product of two charges means.
 func likeness(product float64) string {
-	if product > 0 {
+	switch {
+	case product > 0:
 		return "charges of like sign"
+	case product == 0:
+		return "a body without charge beside one that may be charged"
 	}
 	return "charges of unlike sign"
 }

@@ -3,6 +3,7 @@ package model
 import (
 	"fmt"
 	"math"
+	"strconv"
 
 	"example.org/guardring/pkg/field"
 	"example.org/guardring/pkg/gum"
@@ -262,9 +263,22 @@ func (m *Model) checkSigns(q []float64, j int, v float64, r *forceReading, x [][
 		return nil // Start tells
 	}
 	if i := wrongSign(f, y, k, rest); i >= 0 {
-		return &RowError{Row: i, Err: fmt.Errorf("%s %.4g (SI): %s give a force of the other sign here; check the signs, the zero, and how the bodies are held", r.response, y[i], what(i))}
+		return &RowError{Row: i, Err: fmt.Errorf("%s %s: %s give a force of the other sign here; check the signs, the zero, and how the bodies are held", r.response, r.told(y[i]), what(i))}
 	}
 	return nil
+}
+
+// told writes a reading with its unit.
+func (r *forceReading) told(y float64) string {
+	unit := si.Force.Unit()
+	switch {
+	case r.perMass != nil:
+		unit = si.Mass.Unit()
+	case r.angle:
+		unit = si.MustUnit("rad")
+	}
+	y, unit = si.Prefixed(y, unit)
+	return strconv.FormatFloat(y, 'g', 4, 64) + " " + unit.String()
 }
 
 // leakScalars are the inputs of the leakage of one or two charges.

@@ -292,9 +292,9 @@ func TestForcesRefuse(t *testing.T) {
 
 	p := points(t, []float64{0.05, 0.06}, []float64{4e-9, 4e-9}, []float64{3e-9, 3e-9})
 	refuses(t, "within five radii", points(t, []float64{0.05, 0.06}, []float64{4e-9, 4e-9}, []float64{3e-9, 3e-9}).on("induction").
-		with("corrections.induction.radius_1", 0.011).with("corrections.induction.radius_2", 0.01).check(p.predict(0), p.predict(1)), "sphere-pair")
+		with("corrections.induction.radius_1", 0.011).with("corrections.induction.radius_2", 0.01).check(p.predict(0), p.predict(1)), "sphere-pair", "5 radii (5 × 11 mm = 55 mm)")
 	refuses(t, "distance below zero", points(t, []float64{0.05}, []float64{4e-9}, []float64{3e-9}).with("distance_offset", -0.06).check(1e-4), "above zero")
-	refuses(t, "unlike charges that repel", points(t, []float64{0.05, 0.06, 0.07}, []float64{4e-9, 4e-9, 4e-9}, []float64{3e-9, 3e-9, -3e-9}).check(p.predict(0), p.predict(1), 5e-5), "unlike sign")
+	refuses(t, "unlike charges that repel", points(t, []float64{0.05, 0.06, 0.07}, []float64{4e-9, 4e-9, 4e-9}, []float64{3e-9, 3e-9, -3e-9}).check(p.predict(0), p.predict(1), 5e-5), "unlike sign", "force 50 µN:")
 	refuses(t, "exponent without a distance", points(t, []float64{0.05}, []float64{4e-9}, []float64{3e-9}).with("exponent", 2.01).check(1e-4), "reference_distance")
 	refuses(t, "distance of the exponent", points(t, []float64{0.05, 0.06}, []float64{4e-9, 4e-9}, []float64{3e-9, 3e-9}).with("exponent", 2).with("reference_distance", 0.2).check(p.predict(0), p.predict(1)), "outside the distances")
 	refuses(t, "a body without charge", bench(t, "coulomb-point", map[string][]float64{"distance": {0.05}, "charge_1": {4e-9}, "force": nil}).with("charge_2", 0).check(1e-4), "zero")

@@ -5,6 +5,7 @@ import (
 	"math"
 
 	"example.org/guardring/pkg/jet"
+	"example.org/guardring/pkg/si"
 )
 
 // corrections lists every correction of the kind with its mean size over the
@@ -15,6 +16,9 @@ func (c *chain) corrections(k *carried) ([]Correction, error) {
 	var out []Correction
 	for _, corr := range c.b.Kind.Corrections {
 		r := Correction{Name: corr.Name, Doc: corr.Doc, Unit: "1", Used: c.b.Corrections[corr.Name]}
+		if corr.Name == "balance" && c.b.Channels[c.resp].Unit.Dim != si.Mass {
+			r.Used = false // nothing was weighed
+		}
 		switch {
 		case corr.Name == "zero" || corr.Name == "blank":
 			r.Unit = siSymbol(c.b.Channels[c.resp].Unit)

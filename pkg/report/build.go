@@ -335,9 +335,17 @@ func Tests(rec *reduce.Record) *Table {
 		case !x.Passed:
 			verdict = "FAILS"
 		}
-		t.Rows = append(t.Rows, []string{testName(x.Name), x.Doc, minus(digits(float64(x.Statistic), 3)), probability(x.PValue), verdict})
+		t.Rows = append(t.Rows, []string{testName(x.Name), x.Doc, statistic(x.Name, x.Statistic), probability(x.PValue), verdict})
 	}
 	return t
+}
+
+// statistic writes the statistic of a test with three digits; runs are counted.
+func statistic(test string, x reduce.Number) string {
+	if n := float64(x); test == "runs" && n == math.Trunc(n) && math.Abs(n) < 1e9 {
+		return whole(int(n))
+	}
+	return minus(digits(float64(x), 3))
 }
 
 // testName gives a test the name that people know.
