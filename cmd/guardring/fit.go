@@ -302,25 +302,12 @@ func (o *fitOptions) run(ctx context.Context, path string, stdin io.Reader, stdo
 			return err
 		}
 	}
-	var out bytes.Buffer
+	var record any
 	if o.json {
-		err = writeJSON(&out, &r.Record)
-	} else {
-		err = report.FitText(&out, r)
+		record = &r.Record
 	}
-	if err != nil {
+	if err := deliver(stdout, stderr, files, record, func(w io.Writer) error { return report.FitText(w, r) }, r.Record.Warnings); err != nil {
 		return err
-	}
-	if err := writeFiles(files); err != nil {
-		return err
-	}
-	if _, err := stdout.Write(out.Bytes()); err != nil {
-		return err
-	}
-	if o.json {
-		for _, w := range r.Record.Warnings {
-			fmt.Fprintf(stderr, "guardring: warning: %s\n", w)
-		}
 	}
 	if s := r.Record.Fit.Status; s != "converged" {
 		return errors.New(name + ": the fit is " + s + ": " + r.Record.Fit.Reason)

@@ -78,13 +78,28 @@ func (o *reduceOptions) one(ctx context.Context, dir string, stdout, stderr io.W
 	if err != nil {
 		return err
 	}
-	var out bytes.Buffer
+	var record any
 	if o.json {
-		err = writeJSON(&out, &r.Record)
-	} else {
-		err = report.Text(&out, r)
+		record = &r.Record
 	}
-	if err != nil {
+	if err := deliver(stdout, stderr, files, record, func(w io.Writer) error { return report.Text(w, r) }, r.Record.Warnings); err != nil {
+		return err
+	}
+	if s := r.Record.Fit.Status; s != "converged" {
+		return fmt.Errorf("%s: the fit is %s: %s", dir, s, r.Record.Fit.Reason)
+	}
+	return nil
+}
+
+// deliver writes the files and prints the record, or the text when there is no
+// record to print. Text holds its warnings; beside a record they go to stderr.
+func deliver(stdout, stderr io.Writer, files []outFile, record any, text func(io.Writer) error, warnings []string) error {
+	var out bytes.Buffer
+	say := func() error { return text(&out) }
+	if record != nil {
+		say = func() error { return writeJSON(&out, record) }
+	}
+	if err := say(); err != nil {
 		return err
 	}
 	if err := writeFiles(files); err != nil {
@@ -93,13 +108,10 @@ func (o *reduceOptions) one(ctx context.Context, dir string, stdout, stderr io.W
 	if _, err := stdout.Write(out.Bytes()); err != nil {
 		return err
 	}
-	if o.json {
-		for _, w := range r.Record.Warnings {
+	if record != nil {
+		for _, w := range warnings {
 			fmt.Fprintf(stderr, "guardring: warning: %s\n", w)
 		}
-	}
-	if s := r.Record.Fit.Status; s != "converged" {
-		return fmt.Errorf("%s: the fit is %s: %s", dir, s, r.Record.Fit.Reason)
 	}
 	return nil
 }
