@@ -1,13 +1,16 @@
 package reduce_test
 
 import (
+	"bytes"
 	"context"
 	"encoding/csv"
+	"encoding/json"
 	"fmt"
 	"math"
 	"os"
 	"path/filepath"
 	"regexp"
+	"runtime"
 	"slices"
 	"strconv"
 	"strings"
@@ -374,5 +377,34 @@ func sound(t *rapid.T, s *sheet, dir string) {
 	}
 	if rec.Fit.Status != "converged" && len(rec.Warnings) == 0 {
 		t.Fatalf("%s: the fit is %s without a warning", s.name, rec.Fit.Status)
+	}
+}
+
+// The record has the same bytes on one core as on several, with more rows than one
+// core takes at a time.
+func TestCoresDoNotMatter(t *testing.T) {
+	base := openSheet(t, "attracted-disc")
+	base.toml = strings.Replace(base.toml, `method = "interpolate"`, `method = "linear"`, 1)
+	s := base.clone()
+	s.rows = nil
+	c := s.column(t, "t/s")
+	for i := range 10_000 {
+		r := slices.Clone(base.rows[i%len(base.rows)])
+		r[c] = strconv.Itoa(40 * i)
+		s.rows = append(s.rows, r)
+	}
+	defer runtime.GOMAXPROCS(runtime.GOMAXPROCS(0))
+	var first []byte
+	for _, cores := range []int{1, 2, 3} {
+		runtime.GOMAXPROCS(cores)
+		text, err := json.Marshal(s.mustReduce(t))
+		if err != nil {
+			t.Fatal(err)
+		}
+		if first == nil {
+			first = text
+		} else if !bytes.Equal(first, text) {
+			t.Errorf("the record differs between one core and %d", cores)
+		}
 	}
 }
