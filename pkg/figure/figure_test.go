@@ -607,3 +607,29 @@ func TestWordsOfKeys(t *testing.T) {
 		}
 	}
 }
+
+// A reading left out that lies beyond the panel carries its residual, and fitted
+// values that no line can join are dashes.
+func TestFitTellsWhatItLeavesOut(t *testing.T) {
+	d := fixture(t)
+	rows := *d.Rows
+	rows.Standardised = append([]float64(nil), rows.Standardised...)
+	rows.Excluded = append([]bool(nil), rows.Excluded...)
+	rows.Fitted = append([]float64(nil), rows.Fitted...)
+	rows.Standardised[3], rows.Excluded[3] = 21.83, true
+	for i := range rows.Fitted {
+		rows.Fitted[i] *= 1 + 0.1*float64(i*7%11)
+	}
+	rows.Predictors, rows.PredictorNames = rows.Predictors[:1], rows.PredictorNames[:1]
+	d.Rows, d.Groups = &rows, nil
+	f, err := d.Fit()
+	if err != nil {
+		t.Fatal(err)
+	}
+	svg := f.SVG()
+	for _, want := range []string{"1 (21.8)", "fitted values"} {
+		if !strings.Contains(svg, want) {
+			t.Errorf("no %q in the figure", want)
+		}
+	}
+}

@@ -3,11 +3,13 @@ package figure
 import (
 	"fmt"
 	"math"
+	"strconv"
 )
 
 // Fit draws the response against the predictor and in the series that show the
 // fitted values as lines, with error bars of one standard uncertainty and the fitted
-// values joined, over an aligned panel of standardised residuals.
+// values joined, over an aligned panel of standardised residuals. Where the predictor
+// alone does not tell the fitted values apart, a dash marks each of them.
 func (d *Data) Fit() (*Figure, error) {
 	r, err := d.rows()
 	if err != nil {
@@ -93,6 +95,13 @@ func (d *Data) Fit() (*Figure, error) {
 		}
 		keys = append(keys, key{look: lookOf(k), name: n, point: true, line: lines[k].x != nil})
 	}
+	dashed := func(k int) bool { return lines[k].x == nil && len(groups[k].rows) <= crowded }
+	for k := range groups {
+		if dashed(k) {
+			keys = append(keys, key{look: look{color: ink}, name: "fitted values", line: true, short: true})
+			break
+		}
+	}
 	s.keys(keys, left)
 	top := &panel{c: s.c, xs: xs, ys: ys}
 	top.at(left, s.y+8+labelSize+6, wide-marginX-left, 210)
@@ -103,7 +112,8 @@ func (d *Data) Fit() (*Figure, error) {
 	if r.N > crowded {
 		size = 1.5
 	}
-	joined := true
+	joined, marked := true, false
+	mark, _ := d.reasons()
 	var skip []bool
 	for k, g := range groups {
 		lk := lookOf(k)
@@ -127,6 +137,17 @@ func (d *Data) Fit() (*Figure, error) {
 			}
 		}
 		s.count(len(keep), len(g.rows))
+		if dashed(k) {
+			marked = true
+			var q path
+			for _, i := range in {
+				if cx, cy := xs.pos(gx[i]), ys.pos(r.Fitted[g.rows[i]]); finite(cx, cy) && top.inside(cx, cy) {
+					q.move(cx-dashHalf, cy)
+					q.line(cx+dashHalf, cy)
+				}
+			}
+			top.c.draw(q, pen{stroke: ink, width: 0.9})
+		}
 		if len(in) <= 1000 {
 			top.bars(gx, gy, nil, gu, in, lk.color)
 		}
@@ -149,24 +170,32 @@ func (d *Data) Fit() (*Figure, error) {
 			}
 		}
 		foot.dots(gx, gr, in, lk.marker, size, lk.marker.pen(lk.color, false))
-		foot.edgeDots(gx, gr, out, lk.marker, size, lk.color)
+		foot.edgeDots(gx, gr, out, lk.marker, size, lk.color, func(i int) string { return strconv.Itoa(mark[g.rows[i]]) })
 	}
 	top.axes(frame{tag: "a", noX: true})
 	foot.axes(frame{tag: "b"})
 	s.y = foot.y + foot.h + below
 	if d.hollow() != "" {
-		s.note("Open markers: readings left out of the fit, see the residuals in order of acquisition.")
+		s.note("Open markers: readings left out of the fit; one beyond the axis has its residual beside it.")
+		d.foot(s)
 	}
 	caption := fmt.Sprintf("a, %s against %s with error bars of one standard uncertainty (often smaller than the marker)", name, xName)
 	if joined {
 		caption += "; the lines join the fitted values"
 	}
+	if marked {
+		caption += "; dashes are the fitted values"
+	}
 	caption += ". b, standardised residuals; the grey band is ±2."
 	return s.finish("fit", title, caption, d.residualSummary(r.N)), nil
 }
 
-// edgeDots draws hollow markers, those beyond the axis at its edge.
-func (p *panel) edgeDots(x, y []float64, rows []int, m marker, r float64, color string) {
+// dashHalf is half the length of the dash of a fitted value, in points.
+const dashHalf = 5.5
+
+// edgeDots draws hollow markers with the numbers of their reasons, those beyond
+// the axis at its edge with their values.
+func (p *panel) edgeDots(x, y []float64, rows []int, m marker, r float64, color string, reason func(i int) string) {
 	for _, i := range rows {
 		cx, cy := p.xs.pos(x[i]), p.ys.pos(y[i])
 		shape := m
@@ -181,5 +210,17 @@ func (p *panel) edgeDots(x, y []float64, rows []int, m marker, r float64, color 
 		var q path
 		shape.mark(&q, cx, cy, r)
 		p.c.draw(q, shape.pen(color, true))
+		if len(rows) > 200 {
+			continue
+		}
+		text := reason(i)
+		if y[i] < p.ys.lo || y[i] > p.ys.hi {
+			text += " (" + number(y[i]) + ")"
+		}
+		side, anchor := cx+r+2.5, 0.0
+		if side+width(text, noteSize, false) > p.x+p.w {
+			side, anchor = cx-r-2.5, 1
+		}
+		p.c.write(label{x: side, y: cy + 0.35*noteSize, size: noteSize, anchor: anchor, color: color, s: text})
 	}
 }

@@ -40,6 +40,7 @@ type key struct {
 	look   look
 	name   string
 	line   bool
+	short  bool // a dash for the line
 	point  bool
 	hollow bool
 	fill   string // a patch instead of line and point
@@ -57,7 +58,7 @@ func (s *sheet) keys(entries []key, left float64) {
 	for _, e := range entries {
 		name := fitted(e.name, tickSize, false, 0.6*s.c.w)
 		sample := 11.0
-		if e.line {
+		if e.line && !e.short {
 			sample = 20
 		}
 		w := sample + 4 + width(name, tickSize, false) + 14
