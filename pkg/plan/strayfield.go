@@ -21,10 +21,13 @@ type StrayField struct {
 	Field     field.Vec // V/m
 	Magnitude float64   // V/m
 	Component float64   // V/m, along the meter's direction; the magnitude when it has none
-	Law       *gum.Law  // of Component
-	Parts     []StrayPart
-	Zeros     []StrayZero
-	Warnings  []error
+	// Standard uncertainties of Potential, Field and Magnitude.
+	PotentialU, MagnitudeU float64
+	FieldU                 field.Vec
+	Law                    *gum.Law // of Component
+	Parts                  []StrayPart
+	Zeros                  []StrayZero
+	Warnings               []error
 }
 
 // StrayPart is the share of one body.
@@ -34,6 +37,9 @@ type StrayPart struct {
 	ChargeU   float64   // C, standard uncertainty of Charge
 	Field     field.Vec // V/m, with its image
 	Component float64   // V/m, along the direction of Component
+	// Standard uncertainties of Field and Component.
+	FieldU     field.Vec
+	ComponentU float64
 }
 
 // StrayZero is a place without field.
@@ -110,12 +116,15 @@ func Stray(b *StrayBench) (*StrayField, error) {
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", b.File, err)
 	}
+	u, err := x.spreads(func(v []float64) ([]float64, error) { return x.outputs(v, *along) })
+	if err != nil {
+		return nil, fmt.Errorf("%s: %w", b.File, err)
+	}
+	s.PotentialU, s.FieldU, s.MagnitudeU = u[0], field.Vec(u[1:4]), u[4]
 	for i, p := range parts {
-		u, err := x.chargeU(i)
-		if err != nil {
-			return nil, fmt.Errorf("%s: %w", b.File, err)
-		}
-		s.Parts = append(s.Parts, StrayPart{Name: p.Name, Charge: scene.Sources[i].Charge, ChargeU: u, Field: p.Field, Component: inner(p.Field, *along)})
+		w := u[outputsAt+outputsEach*i:]
+		s.Parts = append(s.Parts, StrayPart{Name: p.Name, Charge: scene.Sources[i].Charge, ChargeU: w[0], Field: p.Field, FieldU: field.Vec(w[1:4]),
+			Component: inner(p.Field, *along), ComponentU: w[4]})
 	}
 	if err := s.findZeros(); err != nil {
 		return nil, err
@@ -382,23 +391,63 @@ func (x *strayInputs) lines(f func(v []float64) (float64, error)) ([]gum.Contrib
 	return lines, nil
 }
 
-// chargeU is the standard uncertainty of the charge of body i.
-func (x *strayInputs) chargeU(i int) (float64, error) {
-	lines, err := x.lines(func(v []float64) (float64, error) {
-		s, err := x.scene(v)
-		if err != nil {
-			return 0, err
-		}
-		return s.Sources[i].Charge, nil
-	})
+// What outputs lays out: the potential, the field, its magnitude; then of each
+// body its charge, its field and that along the direction.
+const outputsAt, outputsEach = 5, 5
+
+// outputs gives every quantity that is stated besides the measurand.
+func (x *strayInputs) outputs(v []float64, along field.Vec) ([]float64, error) {
+	s, err := x.scene(v)
 	if err != nil {
-		return 0, err
+		return nil, err
 	}
-	var sum float64
-	for _, l := range lines {
-		sum += l.Sensitivity * l.Sensitivity * l.U * l.U
+	at := x.at(v)
+	phi, e, _, err := s.At(at)
+	if err != nil {
+		return nil, err
 	}
-	return math.Sqrt(sum), nil
+	out := []float64{phi, e[0], e[1], e[2], length(e)}
+	parts, err := s.Contributions(at)
+	if err != nil {
+		return nil, err
+	}
+	for i, p := range parts {
+		out = append(out, s.Sources[i].Charge, p.Field[0], p.Field[1], p.Field[2], inner(p.Field, along))
+	}
+	return out, nil
+}
+
+// spreads gives the standard uncertainties of several outputs, by the same
+// differences over ±u as lines.
+func (x *strayInputs) spreads(f func(v []float64) ([]float64, error)) ([]float64, error) {
+	v := append([]float64(nil), x.value...)
+	y, err := f(v)
+	if err != nil {
+		return nil, err
+	}
+	sum := make([]float64, len(y))
+	for _, in := range x.known {
+		var sides [2][]float64
+		for k, by := range []float64{in.line.U, -in.line.U} {
+			for _, i := range in.at {
+				v[i] = x.value[i] + by
+			}
+			if sides[k], err = f(v); err != nil {
+				return nil, fmt.Errorf("%s changed by one standard uncertainty: %w", in.line.Input, err)
+			}
+			for _, i := range in.at {
+				v[i] = x.value[i]
+			}
+		}
+		for k := range sum {
+			d := (sides[0][k] - sides[1][k]) / 2
+			sum[k] += d * d
+		}
+	}
+	for k := range sum {
+		sum[k] = math.Sqrt(sum[k])
+	}
+	return sum, nil
 }
 
 func inner(a, b field.Vec) float64   { return a[0]*b[0] + a[1]*b[1] + a[2]*b[2] }

@@ -104,6 +104,13 @@ at = ["0.4 m", "0 m", "0 m"]
 	close(t, "field of a sphere", ball.Magnitude, 2e3*0.05/(0.4*0.4), 1e-12)
 	close(t, "its potential", ball.Potential, 2e3*0.05/0.4, 1e-12)
 	close(t, "its uncertainty", ball.Law.U/ball.Component, 0.01, 1e-9)
+	// All of it goes as the potential of the sphere (derived): 1 % throughout.
+	close(t, "u of the potential", ball.PotentialU/ball.Potential, 0.01, 1e-9)
+	close(t, "u of the field", ball.FieldU[0]/ball.Field[0], 0.01, 1e-9)
+	close(t, "u of the magnitude", ball.MagnitudeU/ball.Magnitude, 0.01, 1e-9)
+	close(t, "u of the charge", ball.Parts[0].ChargeU/ball.Parts[0].Charge, 0.01, 1e-9)
+	close(t, "u of the sphere's field", ball.Parts[0].FieldU[0]/ball.Field[0], 0.01, 1e-9)
+	close(t, "u of the sphere's share", ball.Parts[0].ComponentU/ball.Component, 0.01, 1e-9)
 	close(t, "its charge", ball.Parts[0].Charge, 2e3*0.05/k, 1e-12)
 	close(t, "uncertainty of its charge", ball.Parts[0].ChargeU/ball.Parts[0].Charge, 0.01, 1e-9)
 

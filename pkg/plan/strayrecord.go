@@ -19,6 +19,10 @@ type StrayRecord struct {
 	Potential reduce.Number  `json:"potential"` // V
 	Field     Triple         `json:"field"`     // V/m
 	Magnitude reduce.Number  `json:"magnitude"` // V/m
+	// Standard uncertainties of the three.
+	PotentialU reduce.Number `json:"potential_u"` // V
+	FieldU     Triple        `json:"field_u"`     // V/m
+	MagnitudeU reduce.Number `json:"magnitude_u"` // V/m
 	// Measurand is the field along the direction, or the magnitude, with its budget.
 	Measurand reduce.Measurand  `json:"measurand"`
 	Bodies    []StrayBodyRecord `json:"bodies"`
@@ -44,6 +48,9 @@ type StrayBodyRecord struct {
 	ChargeU   reduce.Number `json:"charge_u"`  // C
 	Field     Triple        `json:"field"`     // V/m, with its image
 	Component reduce.Number `json:"component"` // V/m
+	// Standard uncertainties of Field and Component.
+	FieldU     Triple        `json:"field_u"`     // V/m
+	ComponentU reduce.Number `json:"component_u"` // V/m
 }
 
 // StrayZeroRecord is a place without field.
@@ -91,7 +98,8 @@ func (s *StrayField) Record() *StrayRecord {
 	b, l := s.Bench, s.Law
 	r := &StrayRecord{Format: 1, Guardring: reduce.Version, Title: b.Title, Run: StrayRun{Command: "strayfield", Options: map[string]string{}},
 		Inputs: []reduce.Input{{File: b.File, SHA256: b.SHA256}}, Place: triple(b.At), Potential: reduce.Number(s.Potential),
-		Field: triple(s.Field), Magnitude: reduce.Number(s.Magnitude), Bodies: []StrayBodyRecord{}, Zeros: []StrayZeroRecord{}, Bench: s.Share(), Warnings: []string{}}
+		Field: triple(s.Field), Magnitude: reduce.Number(s.Magnitude),
+		PotentialU: reduce.Number(s.PotentialU), FieldU: triple(s.FieldU), MagnitudeU: reduce.Number(s.MagnitudeU), Bodies: []StrayBodyRecord{}, Zeros: []StrayZeroRecord{}, Bench: s.Share(), Warnings: []string{}}
 	if b.Direction != nil {
 		d := triple(*b.Direction)
 		r.Direction = &d
@@ -114,7 +122,8 @@ func (s *StrayField) Record() *StrayRecord {
 			Shape: c.Shape, DOF: reduce.Number(dof), Sensitivity: reduce.Number(c.Sensitivity), Contribution: reduce.Number(math.Abs(c.Contribution)), Share: reduce.Number(c.Share)})
 	}
 	for i, p := range s.Parts {
-		r.Bodies = append(r.Bodies, StrayBodyRecord{Name: p.Name, Shape: b.Bodies[i].Shape, Charge: reduce.Number(p.Charge), ChargeU: reduce.Number(p.ChargeU), Field: triple(p.Field), Component: reduce.Number(p.Component)})
+		r.Bodies = append(r.Bodies, StrayBodyRecord{Name: p.Name, Shape: b.Bodies[i].Shape, Charge: reduce.Number(p.Charge), ChargeU: reduce.Number(p.ChargeU), Field: triple(p.Field), Component: reduce.Number(p.Component),
+			FieldU: triple(p.FieldU), ComponentU: reduce.Number(p.ComponentU)})
 	}
 	for _, z := range s.Zeros {
 		zero := StrayZeroRecord{Place: triple(z.At), Potential: reduce.Number(z.Phi), Slope: reduce.Number(z.Slope()), Gradient: triple(z.Gradient), FieldU: reduce.Number(z.FieldU), Curve: z.Line}

@@ -20,12 +20,16 @@ func StrayField(s *plan.StrayField, drawn *figure.Figure) *Sheet {
 		title = "Stray field"
 	}
 	out := New(title, "stray field at "+s.Bench.Meter+" · "+plural(len(rec.Bodies), "charged body", "charged bodies"))
-	fieldUnit, volt, metre := display(s.Magnitude, "V/m"), display(math.Abs(s.Potential), "V"), si.MustUnit("m")
+	most := math.Max(s.Law.K*s.Law.U, s.MagnitudeU)
+	for _, p := range s.Parts {
+		most = math.Max(most, math.Max(p.ComponentU, math.Max(p.FieldU[0], math.Max(p.FieldU[1], p.FieldU[2]))))
+	}
+	fieldUnit, volt, metre := si.MustUnit("V/m").Suited(s.Magnitude, most), si.MustUnit("V").Suited(s.Potential, s.PotentialU), si.MustUnit("m")
 	out.Head("At the meter")
 	out.Fact("place", at(rec.Place, metre))
 	out.Fact("field "+alongWords(s.Bench), minus(si.Expanded(s.Component, s.Law.K*s.Law.U, fieldUnit, s.Law.K, s.Law.Probability)))
-	out.Fact("field, components", components(rec.Field, fieldUnit)+"; magnitude "+quantity(s.Magnitude, fieldUnit, 3))
-	out.Fact("potential", quantity(s.Potential, volt, 3))
+	out.Fact("field, components", components(rec.Field, rec.FieldU, fieldUnit)+"; magnitude "+brief(s.Magnitude, s.MagnitudeU, s.Magnitude, fieldUnit)+nbsp+unitText(fieldUnit))
+	out.Fact("potential", brief(s.Potential, s.PotentialU, math.Abs(s.Potential), volt)+nbsp+unitText(volt))
 	if b := rec.Bench; b != nil {
 		out.Fact("part of the bench's field", perCent(b.Relative)+" of "+quantity(float64(b.Field), display(float64(b.Field), "V/m"), 3))
 		out.Fact("in its budget, taken off", "relative u = "+perCent(b.U))
@@ -36,17 +40,20 @@ func StrayField(s *plan.StrayField, drawn *figure.Figure) *Sheet {
 	}
 	out.Head("Bodies")
 	coulomb := si.MustUnit("nC")
-	t := &Table{Columns: []Column{{Name: "body", Most: 22}, {Name: "shape"}, {Name: "charge", Unit: "nC", Align: Decimal}, {Name: "u", Unit: "nC", Align: Decimal},
+	t := &Table{Columns: []Column{{Name: "body", Most: 22}, {Name: "shape"}, {Name: "charge", Unit: "nC", Align: Decimal},
 		{Name: "Ex", Unit: unitText(fieldUnit), Align: Decimal}, {Name: "Ey", Unit: unitText(fieldUnit), Align: Decimal}, {Name: "Ez", Unit: unitText(fieldUnit), Align: Decimal},
 		{Name: "along", Unit: unitText(fieldUnit), Align: Decimal}}}
 	for _, b := range rec.Bodies {
-		row := []string{b.Name, b.Shape, minus(digits(coulomb.FromSI(float64(b.Charge)), 4)), digits(coulomb.FromSI(float64(b.ChargeU)), 2)}
-		for _, e := range b.Field {
-			row = append(row, minus(small(fieldUnit.FromSI(float64(e)), fieldUnit.FromSI(s.Magnitude))))
+		row := []string{b.Name, b.Shape, brief(float64(b.Charge), float64(b.ChargeU), math.Abs(float64(b.Charge)), coulomb)}
+		for k, e := range b.Field {
+			row = append(row, brief(float64(e), float64(b.FieldU[k]), s.Magnitude, fieldUnit))
 		}
-		t.Rows = append(t.Rows, append(row, minus(small(fieldUnit.FromSI(float64(b.Component)), fieldUnit.FromSI(s.Magnitude)))))
+		t.Rows = append(t.Rows, append(row, brief(float64(b.Component), float64(b.ComponentU), s.Magnitude, fieldUnit)))
 	}
 	out.Table(t)
+	if len(rec.Measurand.Budget) > 0 {
+		out.Say("Digits in parentheses are standard uncertainties in the last places before them.")
+	}
 	if len(rec.Measurand.Budget) > 0 {
 		out.Head("Uncertainty budget of the field " + alongWords(s.Bench))
 		out.Table(Budget(&rec.Measurand))
@@ -145,16 +152,26 @@ func at(p plan.Triple, metre si.Unit) string {
 	return "x, y, z = " + strings.Join(s, ", ") + nbsp + "m"
 }
 
-func components(p plan.Triple, u si.Unit) string {
+func components(p, pu plan.Triple, u si.Unit) string {
 	scale := 0.0
 	for _, v := range p {
-		scale = math.Max(scale, math.Abs(u.FromSI(float64(v))))
+		scale = math.Max(scale, math.Abs(float64(v)))
 	}
 	var s []string
-	for _, v := range p {
-		s = append(s, minus(small(u.FromSI(float64(v)), scale)))
+	for k, v := range p {
+		s = append(s, brief(float64(v), float64(pu[k]), scale, u))
 	}
 	return "(" + strings.Join(s, ", ") + ")" + nbsp + unitText(u)
+}
+
+// brief writes x, SI, in a unit with its standard uncertainty in parentheses (GUM
+// 7.2.2, second form) and without the unit's name; with three digits of the
+// largest of its kind where it has no uncertainty.
+func brief(x, u, largest float64, unit si.Unit) string {
+	if !(u > 0) {
+		return minus(small(unit.FromSI(x), unit.FromSI(largest)))
+	}
+	return minus(si.Short(unit.FromSI(x), unit.DeltaFromSI(u), si.One))
 }
 
 // small writes a number with the places that three digits of the largest have.
