@@ -13,6 +13,7 @@ import (
 	"text/tabwriter"
 
 	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/cell"
 	"example.org/guardring/pkg/figure"
 	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/si"
@@ -54,7 +55,7 @@ func (o *reduceOptions) many(ctx context.Context, dirs []string, stdout, stderr 
 				done++
 			}
 		}
-		return fmt.Errorf("stopped after %d of %d benches: %w", done, len(dirs), err)
+		return cell.Stopped(fmt.Sprintf("after %d of %d benches", done, len(dirs)), err)
 	}
 	bad := 0
 	for _, r := range results {

@@ -42,14 +42,14 @@ is given: then bench.toml must state an amendment (work.replaces, work.reason an
 a new work.certificate); the old file stays beside the new one under the name
 FILE.superseded-HASH and its SHA-256 stands in the new certificate.`,
 		Example: `  guardring certificate datasets/field-meter -o certificate.html -o certificate.pdf -o certificate.xml`,
-		Args:    cobra.ExactArgs(1),
+		Args:    names("one bench folder", 1, 1),
 		RunE:    func(cmd *cobra.Command, args []string) error { return o.run(cmd, args[0]) },
 	}
 	f := cmd.Flags()
 	f.StringArrayVarP(&o.out, "output", "o", nil, "write the certificate to `FILE` (.html, .pdf or .xml); repeatable")
 	f.BoolVar(&o.replace, "replace", false, "replace existing files by an amendment and keep the old ones")
 	f.Uint64Var(&o.settings.Seed, "seed", 0, "seed `N` of the Monte Carlo check")
-	f.IntVar(&o.settings.Trials, "trials", reduce.DefaultTrials, "number `N` of Monte Carlo trials")
+	countFlag(cmd, &o.settings.Trials, "trials", reduce.DefaultTrials, "number `N` of Monte Carlo trials")
 	return cmd
 }
 

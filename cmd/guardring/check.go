@@ -18,7 +18,7 @@ func checkCommand() *cobra.Command {
 		Long: `Check reads DIR/bench.toml and the readings it names, checks every key, unit and
 number and whether the model applies, and prints what it found.`,
 		Example: "  guardring check datasets/attracted-disc",
-		Args:    cobra.ExactArgs(1),
+		Args:    names("one bench folder", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			b, err := bench.Open(args[0])
 			if err != nil {

@@ -89,7 +89,7 @@ E_n of each result and each pair, all with the covariance of what is common.
 
 Exit code 1 says that the results do not agree.`,
 		Example: "  guardring compare one.json two.json three.json --html comparison.html",
-		Args:    cobra.MinimumNArgs(2),
+		Args:    names("at least two records that reduce --json wrote", 2, -1),
 		RunE: func(cmd *cobra.Command, paths []string) error {
 			var records []*reduce.Record
 			doc := comparison{Format: 1, Guardring: reduce.Version, Run: reduce.RunRecord{Command: "compare", Options: map[string]string{}}, Warnings: []string{}}

@@ -56,7 +56,7 @@ variables, or one with --effective-variance.`,
       --start c_s=2e-12,s=7e-14,d0=1e-5 --noise '0.02 pF' --predictor-noise 'd=0.5 um'
   guardring fit gap.csv --formula 'c_s + s/(d+d0)' --response c --noise u_c \
       --start c_s=2e-12,s=7e-14 --prior d0=1e-5+-2e-6 --bound c_s=0: --html fit.html`,
-		Args: cobra.ExactArgs(1),
+		Args: names("one CSV file", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			if err := o.read(); err != nil {
 				return err
@@ -78,7 +78,7 @@ variables, or one with --effective-variance.`,
 	f.StringVar(&s.Weights, "weights", "", "`COLUMN` proportional to 1/u², when only the ratios of the noise are known")
 	f.BoolVar(&s.Profile, "profile", false, "intervals from the profile of chi-squared")
 	f.BoolVar(&s.Robust, "robust", false, "a second opinion with robust weights")
-	f.IntVar(&s.Bootstrap, "bootstrap", 0, "intervals from `N` fits to resampled residuals")
+	countFlag(cmd, &s.Bootstrap, "bootstrap", 0, "intervals from `N` fits to resampled residuals")
 	f.StringVar(&o.probability, "probability", "95.45 %", "coverage probability `P` of intervals")
 	f.Uint64Var(&s.Seed, "seed", 0, "seed `N` of the bootstrap")
 	f.StringVar(&o.decimal, "decimal", "point", "decimal sign of the file, `point|comma`")

@@ -49,7 +49,7 @@ found of each at its date (work.performed), fits a line in time that knows of th
 adjustments between, tests whether it drifts, draws control limits, and predicts
 the value at the dates asked for. Predictions serve the laboratory's own planning.`,
 		Example: `  guardring history 2023 2024 2025 2026 --series "20 kV/m" --predict 2027-03-01`,
-		Args:    cobra.MinimumNArgs(3),
+		Args:    names("at least three bench folders", 3, -1),
 		RunE:    func(cmd *cobra.Command, dirs []string) error { return o.run(cmd, dirs) },
 	}
 	o.flags(cmd)

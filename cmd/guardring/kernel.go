@@ -16,7 +16,8 @@ func kernelCommand() *cobra.Command {
 		Short: "Build, install, list or remove the notebook kernel",
 		Long: "Build, install, list or remove the notebook kernel. Jupyter then offers \"" + kernel.DisplayName + "\" for new notebooks.\n" +
 			"The kernel is compiled on this machine from a checkout; the first time takes some minutes, a second time with nothing changed none.",
-		Args: cobra.NoArgs,
+		Args: nothing,
+		RunE: func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
 	}
 	cmd.AddCommand(kernelBuildCommand(), kernelInstallCommand(), kernelListCommand(), kernelRemoveCommand())
 	return cmd
@@ -37,7 +38,7 @@ func kernelBuildCommand() *cobra.Command {
 		Use:     "build -o FILE",
 		Short:   "Compile the kernel to a file",
 		Example: "  guardring kernel build -o ./guardring-kernel",
-		Args:    cobra.NoArgs,
+		Args:    nothing,
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			dir, err := kernel.FindSource(source)
 			if err != nil {
@@ -69,7 +70,7 @@ func kernelInstallCommand() *cobra.Command {
 		Use:     "install",
 		Short:   "Compile the kernel and make it known to Jupyter",
 		Example: "  guardring kernel install\n  go run -C CLONE ./cmd/guardring kernel install",
-		Args:    cobra.NoArgs,
+		Args:    nothing,
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			dir, err := kernel.FindSource(source)
 			if err != nil {
@@ -99,7 +100,7 @@ func kernelListCommand() *cobra.Command {
 		Use:     "list",
 		Short:   "List where the kernel is installed",
 		Example: "  guardring kernel list",
-		Args:    cobra.NoArgs,
+		Args:    nothing,
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			found, err := kernel.List(cmd.Context())
 			if err != nil {
@@ -126,7 +127,7 @@ func kernelRemoveCommand() *cobra.Command {
 		Use:     "remove",
 		Short:   "Take the kernel away from Jupyter",
 		Example: "  guardring kernel remove",
-		Args:    cobra.NoArgs,
+		Args:    nothing,
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			dir, err := kernel.Remove(cmd.Context(), at)
 			if err != nil {

@@ -20,7 +20,7 @@ func manCommand() *cobra.Command {
 		Long: `Man writes the manual pages into DIR: guardring.1 and one page a command. They are
 dated by SOURCE_DATE_EPOCH, else by the revision that the program was built from.`,
 		Example: `  guardring man /usr/local/share/man/man1`,
-		Args:    cobra.ExactArgs(1),
+		Args:    names("one folder for the pages", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			pages, err := manual(cmd.Root())
 			if err != nil {

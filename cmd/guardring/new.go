@@ -29,7 +29,7 @@ alone: the folder must be new or empty.
 Models: ` + strings.Join(model.Names(), ", "),
 		Example: `  guardring new my-bench --model attracted-disc
   guardring new demo --model attracted-disc --demo`,
-		Args: cobra.ExactArgs(1),
+		Args: names("one new folder", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			kind, err := model.Lookup(name)
 			if err != nil {

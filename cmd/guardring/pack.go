@@ -32,7 +32,7 @@ as UCUM codes) come with it. The same files with the same --date give the same
 bytes.`,
 		Example: `  guardring pack datasets/attracted-disc -o attracted-disc.zip
   guardring pack notebooks/attracted-disc.ipynb -o attracted-disc.zip --license CC-BY-4.0`,
-		Args: cobra.ExactArgs(1),
+		Args: names("one bench folder or notebook", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			if s.Output == "" {
 				return errors.New("-o FILE.zip is missing")
@@ -66,7 +66,7 @@ bytes.`,
 	f.StringVar(&s.Date, "date", "", "date of publication, `YYYY-MM-DD` (default: SOURCE_DATE_EPOCH, else that of the newest file)")
 	f.StringVar(&s.License, "license", "", "licence of what is packed: an SPDX `ID`, a URL, or words")
 	f.Uint64Var(&s.Reduce.Seed, "seed", 0, "seed `N` of the trials, for a dataset without a record")
-	f.IntVar(&s.Reduce.Trials, "trials", reduce.DefaultTrials, "number `N` of trials, likewise")
+	countFlag(cmd, &s.Reduce.Trials, "trials", reduce.DefaultTrials, "number `N` of trials, likewise")
 	f.BoolVar(&s.Reduce.LawOnly, "law-only", false, "no Monte Carlo check, likewise")
 	return cmd
 }

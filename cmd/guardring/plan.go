@@ -31,7 +31,7 @@ what dominates it, and how more readings, more settings, other voltages or
 spacings, or better known inputs would change it; whether the design stays below
 the breakdown of air and the laboratory's limits of stored energy and charge.`,
 		Example: "  guardring plan datasets/attracted-disc",
-		Args:    cobra.ExactArgs(1),
+		Args:    names("one bench folder", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			b, err := bench.Open(args[0])
 			if err != nil {

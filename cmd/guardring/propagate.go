@@ -7,7 +7,6 @@ import (
 	"errors"
 	"fmt"
 	"io"
-	"math"
 	"os"
 	"strconv"
 	"strings"
@@ -15,6 +14,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/cell"
 	"example.org/guardring/pkg/figure"
 	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/reduce"
@@ -53,7 +53,7 @@ there an undivided run finds its intervals by selection, without bins.`,
   for i in 1 2 3 4; do
       guardring propagate budget.toml --trials 100000000 --part $i/4 -o part$i.json &
   done; wait; guardring merge part?.json -o budget.json`,
-		Args: cobra.ExactArgs(1),
+		Args: names("one budget file", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			index, of, err := o.read(cmd.Flags().Changed("probability"))
 			if err != nil {
@@ -98,14 +98,9 @@ func (o *propagateOptions) read(probability bool) (index, of int, err error) {
 	case t == "adaptive":
 		s.Adaptive = true
 	default:
-		n, err := strconv.ParseInt(t, 10, 64)
+		n, err := wholeNumber(t)
 		if err != nil {
-			// 1e9 is a whole number too.
-			x, e := strconv.ParseFloat(t, 64)
-			if e != nil || x != math.Trunc(x) || math.Abs(x) > 1<<53 {
-				return 0, 0, fmt.Errorf("--trials %s: write a whole number, such as 1e6, or adaptive", t)
-			}
-			n = int64(x)
+			return 0, 0, fmt.Errorf("--trials %s: %w, or adaptive", t, err)
 		}
 		if n < 1 {
 			return 0, 0, fmt.Errorf("--trials %s: at least 1 is needed; use --law-only for none", t)
@@ -233,7 +228,7 @@ propagate --part 1/1 prints, to the byte. A part that is missing, there twice or
 another run is an error that names it.`,
 		Example: `  guardring merge part?.json
   guardring merge part*.json -o budget.json --html budget.html`,
-		Args: cobra.MinimumNArgs(1),
+		Args: names("the files that propagate --part wrote", 1, -1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			p, err := joined(cmd.Context(), args)
 			if err != nil {
@@ -252,7 +247,7 @@ func joined(ctx context.Context, paths []string) (*reduce.Propagation, error) {
 	var m reduce.PartMerger
 	for n, path := range paths {
 		if err := ctx.Err(); err != nil {
-			return nil, fmt.Errorf("stopped after %d of %d parts: %w", n, len(paths), err)
+			return nil, cell.Stopped(fmt.Sprintf("after %d of %d parts", n, len(paths)), err)
 		}
 		data, err := os.ReadFile(path)
 		if err != nil {

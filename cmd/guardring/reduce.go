@@ -39,7 +39,7 @@ bad one does not stop the others.`,
 		Example: `  guardring reduce datasets/attracted-disc
   guardring reduce datasets/attracted-disc --html result.html --figures figures
   guardring reduce datasets/attracted-disc --json --rows > result.json`,
-		Args: cobra.MinimumNArgs(1),
+		Args: names("at least one bench folder", 1, -1),
 		RunE: func(cmd *cobra.Command, dirs []string) error {
 			o.settings.LawOnly = o.lawOnly
 			if o.settings.Trials < 1 {
@@ -57,7 +57,7 @@ bad one does not stop the others.`,
 	f.BoolVar(&o.json, "json", false, "print the record as JSON and nothing else")
 	f.BoolVar(&o.settings.Rows, "rows", false, "put every row with its residual into the record")
 	f.Uint64Var(&o.settings.Seed, "seed", 0, "seed `N` of the Monte Carlo trials")
-	f.IntVar(&o.settings.Trials, "trials", reduce.DefaultTrials, "number `N` of Monte Carlo trials")
+	countFlag(cmd, &o.settings.Trials, "trials", reduce.DefaultTrials, "number `N` of Monte Carlo trials")
 	f.BoolVar(&o.lawOnly, "law-only", false, "no Monte Carlo check")
 	return cmd
 }

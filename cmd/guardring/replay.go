@@ -50,7 +50,7 @@ Notebooks run code: replay only what you would run yourself.`,
   guardring replay notebooks/attracted-disc.ipynb --set seed=7 --set trials=100000
   guardring replay datasets/attracted-disc/result.json
   guardring replay attracted-disc.zip`,
-		Args: cobra.ExactArgs(1),
+		Args: names("one notebook, record or pack", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			for _, s := range o.set {
 				a, err := replay.ParseAssignment(s)

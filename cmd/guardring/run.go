@@ -57,7 +57,7 @@ func run(ctx context.Context, args []string, stdin io.Reader, stdout, stderr io.
 	}
 	var silent said
 	if !errors.As(err, &silent) {
-		fmt.Fprintf(stderr, "guardring: %v\n", err)
+		fmt.Fprintf(stderr, "guardring: %s\n", words(err))
 	}
 	var d differs
 	switch {
@@ -91,9 +91,11 @@ Exit codes: 0 done; 1 the work shows a difference; 2 wrong use, bad input, a fit
 that is singular or has not converged, or a failed write; 130 interrupted.`,
 		SilenceErrors: true,
 		SilenceUsage:  true,
-		Args:          cobra.NoArgs,
+		Args:          nothing,
 		RunE:          func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
 	}
+	root.SetFlagErrorFunc(flagError)
+	root.SetHelpCommand(helpCommand())
 	root.AddCommand(reduceCommand(), checkCommand(), newCommand(), certificateCommand(), compareCommand(), historyCommand(), simulateCommand(), planCommand(), strayfieldCommand(), fitCommand(), propagateCommand(), mergeCommand(), kernelCommand(), replayCommand(), packCommand(), manCommand(), versionCommand())
 	return root
 }

@@ -21,7 +21,7 @@ states the truth; keeps the settings and makes the response anew with noise,
 grouped errors, gains, offsets, zero and drift; and writes the bench with those
 readings into the new folder OUT.`,
 		Example: "  guardring simulate datasets/attracted-disc -o again",
-		Args:    cobra.ExactArgs(1),
+		Args:    names("one bench folder", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			b, err := bench.Open(args[0])
 			if err != nil {

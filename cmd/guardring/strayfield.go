@@ -25,7 +25,7 @@ where a meter may be zeroed.`,
 		Example: `  guardring strayfield datasets/strayfield/strayfield.toml
   guardring strayfield datasets/strayfield/strayfield.toml --figure field.svg
   guardring strayfield datasets/strayfield/strayfield.toml --json > field.json`,
-		Args: cobra.ExactArgs(1),
+		Args: names("one file", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			b, err := plan.OpenStray(args[0])
 			if err != nil {

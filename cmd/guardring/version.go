@@ -74,7 +74,7 @@ Files that carry format = 1 (benches, budgets, simulations, records, parts of a
 Monte Carlo run, packs) are read by every later version; where one can't be, or
 comes from a newer version, it is refused with what to do, never half read.`,
 		Example: "  guardring version --licences",
-		Args:    cobra.NoArgs,
+		Args:    nothing,
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			out := cmd.OutOrStdout()
 			if texts {

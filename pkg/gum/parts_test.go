@@ -222,7 +222,7 @@ func TestCancel(t *testing.T) {
 		if !errors.Is(err, context.Canceled) {
 			t.Fatalf("error %v, want that of the context", err)
 		}
-		if !strings.Contains(err.Error(), "stopped after 3") {
+		if !strings.Contains(err.Error(), "interrupted after 3") {
 			t.Errorf("error %q does not say how far the run came", err)
 		}
 		t.Logf("ended %v after cancel", took)

@@ -92,9 +92,9 @@ func (r *runner) stopped(err error) error {
 	case err == nil:
 		return nil
 	case r.total > 0:
-		return fmt.Errorf("stopped after %d of %d Monte Carlo trials: %w", r.done.Load(), r.total, err)
+		return cell.Stopped(fmt.Sprintf("after %d of %d Monte Carlo trials", r.done.Load(), r.total), err)
 	}
-	return fmt.Errorf("stopped after %d Monte Carlo trials: %w", r.done.Load(), err)
+	return cell.Stopped(fmt.Sprintf("after %d Monte Carlo trials", r.done.Load()), err)
 }
 
 // blockCount returns how many blocks hold n trials.

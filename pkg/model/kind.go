@@ -3,6 +3,7 @@ package model
 import (
 	"fmt"
 	"sort"
+	"strings"
 
 	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/jet"
@@ -249,7 +250,7 @@ func Lookup(name string) (*Kind, error) {
 	}
 	names := Names()
 	if s := si.Suggest(name, names); s != "" {
-		return nil, fmt.Errorf("model %q is not known; did you mean %q? (known: %v)", name, s, names)
+		return nil, fmt.Errorf("model %q is not known; did you mean %q? (known: %s)", name, s, strings.Join(names, ", "))
 	}
-	return nil, fmt.Errorf("model %q is not known (known: %v)", name, names)
+	return nil, fmt.Errorf("model %q is not known (known: %s)", name, strings.Join(names, ", "))
 }

@@ -80,7 +80,7 @@ func (c *chain) trials(ctx context.Context, r *lsq.Result, k *carried, seed uint
 		return nil, 0, firstErr
 	}
 	if err := ctx.Err(); err != nil {
-		return nil, 0, fmt.Errorf("stopped after %d of %d Monte Carlo trials: %w", done.Load(), n, err)
+		return nil, 0, cell.Stopped(fmt.Sprintf("after %d of %d Monte Carlo trials", done.Load(), n), err)
 	}
 	return out, int(failed.Load()), nil
 }
