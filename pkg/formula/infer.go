@@ -141,6 +141,11 @@ func (f *finder) like(t *tree, a, b power, what string) error {
 		if !f.open(a) && !f.open(b) {
 			return f.fail(t, "%s differ: %s and %s", what, unitName(a.dim), unitName(b.dim))
 		}
+		ra, errA := f.resolve(t, a)
+		rb, errB := f.resolve(t, b)
+		if errA == nil && errB == nil && !f.open(ra) && !f.open(rb) {
+			return f.fail(t, "no units of %s fit: %s differ, %s and %s, which can be neither equal nor added", f.names(a, b), what, unitName(ra.dim), unitName(rb.dim))
+		}
 		return f.fail(t, "no units of %s fit: %s differ by %s", f.names(a, b), what, unitName(e.dim))
 	}
 	if e, err = f.times(t, power{coef: f.none()}, e, new(big.Rat).Inv(e.coef[pivot])); err != nil {
@@ -154,6 +159,18 @@ func (f *finder) like(t *tree, a, b power, what string) error {
 	}
 	f.equations = append(f.equations, equation{e, pivot})
 	return nil
+}
+
+// resolve puts what the equations say of the unknowns into a.
+func (f *finder) resolve(t *tree, a power) (power, error) {
+	var err error
+	for _, old := range f.equations {
+		one := power{dim: si.Dimension{}.Div(old.dim), coef: old.coef} // an equation says that its unknowns make its dimension
+		if a, err = f.times(t, a, one, new(big.Rat).Neg(a.coef[old.pivot])); err != nil {
+			return a, err
+		}
+	}
+	return a, nil
 }
 
 // open reports whether a holds an unknown.

@@ -52,10 +52,11 @@ func TestInfer(t *testing.T) {
 
 func TestInferErrors(t *testing.T) {
 	for _, c := range []struct{ src, want string }{
-		{"a + x + t", `column 7: no units of a fit: the terms of this sum differ by`},
+		{"a + x + t", `column 7: no units of a fit: the terms of this sum differ, m and s`},
 		{"a*(x + t)", `column 6: the terms of this sum differ: m and s`},
 		{"exp(x) + a", `column 5: the argument of exp and a pure number differ: m and a pure number`},
 		{"a + a*x", `no units of a fit`},
+		{"a + log(0 - x/x)", `no units of a fit: the formula and the result differ, a pure number and V, which can be neither equal nor added`},
 		{"pow(x, a)", `what is raised to a power`},
 	} {
 		p, err := formula.Compile(c.src, []string{"a", "x", "t"})

@@ -266,7 +266,7 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 		r.warn("the uncertainties are unknown: the readings' uncertainty was not stated and no degrees of freedom are left to find it from the residuals")
 	case f.estimated():
 		r.ScaledByResiduals = true
-		r.warn("the readings' uncertainty was not stated: it was found from the residuals as %.4g, so that chi-squared equals its degrees of freedom and has no probability", f.noise)
+		r.warn("the readings' uncertainty was not stated: it was found from the residuals, so that chi-squared equals its degrees of freedom and has no probability")
 	case p.Relative:
 		r.ScaledByResiduals = true
 		scale = r.ChiSquared / float64(r.DOF)
@@ -277,6 +277,10 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 		r.warn("the readings' uncertainty was not stated: it was taken from the residual standard deviation, so that chi-squared has no probability")
 	}
 	r.scale = scale
+	if r.ScaledByResiduals && r.DOF > 0 && s.vanishing() {
+		r.ResidualsVanish = true
+		r.warn("the residuals vanish to rounding: they say nothing about the readings' uncertainty, and those of the parameters are unknown; state the uncertainty of the readings")
+	}
 
 	f.parameters(r, sp, scale)
 
@@ -305,6 +309,10 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 	r.influence()
 	return r, nil
 }
+
+// vanishing reports residuals that are no more than the rounding of the readings:
+// they say nothing about the noise.
+func (s *search) vanishing() bool { return math.Sqrt(s.chi2) <= 4e-15*s.size }
 
 // weight is 1/Σ_ii.
 func (r *Result) weight(i int) float64 {

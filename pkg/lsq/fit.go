@@ -285,7 +285,7 @@ func (f *fitter) findNoise(ctx context.Context, rounds int) error {
 		}
 		f.noise *= factor
 		if f.noise < floor || s.chi2 == 0 {
-			return fmt.Errorf("lsq: the noise of the readings can't be found from the residuals: they scatter less than the priors and shared effects allow; state U")
+			return fmt.Errorf("lsq: the noise of the readings can't be found from the residuals: they scatter less than the priors and shared effects allow; state the uncertainty of the readings")
 		}
 		for k := range f.u {
 			f.u[k] = f.noise

@@ -56,6 +56,7 @@ type Result struct {
 	Confounded        []string // one sentence per direction the readings can't resolve
 	AtBound           []int    // parameters held at a bound
 	ScaledByResiduals bool     // Covariance was scaled by s² because U is unknown
+	ResidualsVanish   bool     // s² of ScaledByResiduals is rounding alone: it and all that follows from it mean nothing
 
 	Fitted        []float64 // f at the estimates, unit of Y
 	Residuals     []float64 // y − f, unit of Y

@@ -2,8 +2,12 @@ package reduce
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"math"
+	"regexp"
+	"strconv"
+	"strings"
 
 	"example.org/guardring/pkg/lsq"
 )
@@ -33,10 +37,13 @@ func (c *chain) estimate(ctx context.Context) (*lsq.Result, error) {
 	p.Effects = c.effects()
 	p.Reweight = func(theta, f, u []float64, e *lsq.Effects) error {
 		c.reweight(at(theta), u, e)
-		return nil
+		return c.weighable(u)
 	}
 	if !c.unknownNoise() {
 		c.reweight(at(c.start), p.U, p.Effects)
+		if err := c.weighable(p.U); err != nil {
+			return nil, err
+		}
 		r, err := lsq.Fit(ctx, p, lsq.Settings{})
 		p.U, p.Effects = nil, nil // the result carries the weights
 		return r, err
@@ -44,6 +51,54 @@ func (c *chain) estimate(ctx context.Context) (*lsq.Result, error) {
 	r, err := c.estimateNoise(ctx, p, at)
 	p.U, p.Effects = nil, nil
 	return r, err
+}
+
+// rowError is an error that has its place already.
+type rowError struct{ err error }
+
+func (e *rowError) Error() string { return e.err.Error() }
+func (e *rowError) Unwrap() error { return e.err }
+
+// weighable finds the reading whose noise is no weight.
+func (c *chain) weighable(u []float64) error {
+	for i, v := range u {
+		if v > 0 && v <= math.MaxFloat64 {
+			continue
+		}
+		what := "can't be computed"
+		switch {
+		case v == 0:
+			what = "vanishes there"
+		case math.IsInf(v, 0):
+			what = "is too large to compute with"
+		}
+		return &rowError{fmt.Errorf("%s: the standard uncertainty of the reading %s: look at what the row holds and at the noise, relative noise and resolution of the channels in bench.toml", c.place(c.record[i]), what)}
+	}
+	return nil
+}
+
+// nth finds which row an estimator's message is about.
+var nth = regexp.MustCompile(`\breading (\d+)\b`)
+
+// placed gives an estimator's error the place of its reading, else that of the bench.
+func (c *chain) placed(err error) error {
+	var row *rowError
+	if errors.As(err, &row) {
+		return row
+	}
+	if errors.Is(err, context.Canceled) || errors.Is(err, context.DeadlineExceeded) {
+		return fmt.Errorf("%s: %w", c.b.Dir, err)
+	}
+	where, text := c.b.Dir, strings.TrimPrefix(err.Error(), "lsq: ")
+	if m := nth.FindStringSubmatch(text); m != nil {
+		if n, e := strconv.Atoi(m[1]); e == nil && n >= 1 && n <= len(c.record) {
+			where, text = c.place(c.record[n-1]), strings.Replace(text, m[0], "the reading", 1)
+		}
+	}
+	if strings.HasPrefix(text, where+":") { // said already
+		return errors.New(text)
+	}
+	return fmt.Errorf("%s: %s", where, text)
 }
 
 // unknownNoise reports whether the noise of the response is to come from the
@@ -76,11 +131,11 @@ func (c *chain) estimateNoise(ctx context.Context, p *lsq.Problem, at func([]flo
 	}
 	dof := len(c.y) + priors - len(p.Parameters)
 	if dof < 1 {
-		return nil, fmt.Errorf("%s: noise from the residuals needs more readings than parameters; there are %d rows for %d parameters", c.b.Dir, len(c.y), len(p.Parameters))
+		return nil, fmt.Errorf("noise from the residuals needs more readings than parameters; there are %d rows for %d parameters", len(c.y), len(p.Parameters))
 	}
 	c.scale = math.Sqrt(r.RSS / float64(dof))
-	if !(c.scale > 0) {
-		return nil, fmt.Errorf("%s: the residuals vanish, so they give no noise; state channels.%s.noise", c.b.Dir, c.m.Response)
+	if !(c.scale > 0) || r.ResidualsVanish {
+		return nil, fmt.Errorf("the residuals vanish, so they give no noise; state channels.%s.noise", c.m.Response)
 	}
 	// With any other noise in the covariance, chi-squared falls more slowly than
 	// 1/scale²; the fixed point is still where it equals its expectation, or the
@@ -91,6 +146,9 @@ func (c *chain) estimateNoise(ctx context.Context, p *lsq.Problem, at func([]flo
 			p.Parameters[k].Start = r.Values[k]
 		}
 		c.reweight(at(r.Values), p.U, p.Effects)
+		if err := c.weighable(p.U); err != nil {
+			return nil, err
+		}
 		if r, err = lsq.Fit(ctx, p, lsq.Settings{}); err != nil {
 			return nil, err
 		}

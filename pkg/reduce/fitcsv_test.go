@@ -411,7 +411,7 @@ func TestFitErrors(t *testing.T) {
 		{"not a number", func(_ *reduce.FitSettings, csv *string) { *csv = strings.Replace(*csv, "227.547", "Inf", 1) }, `readings.csv:3: column c/pF: "Inf"`},
 		{"unit", func(_ *reduce.FitSettings, csv *string) { *csv = strings.Replace(*csv, "d/mm", "d/mmm", 1) }, `readings.csv:1: column d/mmm`},
 		{"two columns", func(_ *reduce.FitSettings, csv *string) { *csv = strings.Replace(*csv, "remark", "d/um", 1) }, `d is the name of two columns`},
-		{"bounds", func(s *reduce.FitSettings, _ *string) { s.Bounds = map[string][2]float64{"s": {1, 2}} }, `outside its bounds`},
+		{"bounds", func(s *reduce.FitSettings, _ *string) { s.Bounds = map[string][2]float64{"s": {1, 2}} }, `outside its bounds 1 to 2 (--bound); move the start or the bound`},
 		{"predictor noise", func(s *reduce.FitSettings, _ *string) { s.PredictorNoise = map[string]string{"D": "1 um"} }, `predictor noise: D is no column in the formula; did you mean d?`},
 		{"predictor noise alone", func(s *reduce.FitSettings, _ *string) { s.Noise, s.PredictorNoise = "", map[string]string{"d": "1 um"} }, `needs the noise of the response too`},
 		{"weights and noise", func(s *reduce.FitSettings, _ *string) { s.Weights = "u_c" }, `either the noise or the weights`},
@@ -488,4 +488,25 @@ func ExampleFitCSV() {
 	// Output:
 	// q0 = 3.33e-11 C, u = 1.5e-10
 	// i = 2e-09 A, u = 7.1e-11
+}
+
+// TestFitExact: residuals that vanish say nothing about the noise (derived: s² is then
+// rounding alone), so that no uncertainty is stated.
+func TestFitExact(t *testing.T) {
+	r, err := reduce.FitCSV(context.Background(), strings.NewReader("x,y\n1,2\n2,3\n3,4\n4,5\n"), "exact.csv",
+		reduce.FitSettings{Formula: "a + b*x", Response: "y", Start: map[string]float64{"a": 0, "b": 0}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i, p := range r.Record.Fit.Parameters {
+		if math.Abs(float64(p.Value)-1) > 1e-12 || !math.IsNaN(float64(p.U)) {
+			t.Errorf("%s = %v with u = %v, want 1 and unknown", p.Name, p.Value, p.U)
+		}
+		if !strings.Contains(r.Record.Missing[i].Reason, "residuals vanish") {
+			t.Errorf("reason: %s", r.Record.Missing[i].Reason)
+		}
+	}
+	if !strings.Contains(strings.Join(r.Record.Warnings, "\n"), "the residuals vanish to rounding") {
+		t.Errorf("warnings: %q", r.Record.Warnings)
+	}
 }

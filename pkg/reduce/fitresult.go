@@ -25,7 +25,7 @@ type formulaOutcome struct {
 	condition               float64
 	dof, iterations         int
 	confounded              []string
-	scaled                  bool
+	scaled, vanish          bool
 	warnings                []error
 }
 
@@ -102,6 +102,8 @@ func (d *fitData) why(o *formulaOutcome, j int) string {
 		return "it was held at its bound, where the readings would take it beyond"
 	case o.scaled && o.dof <= 0:
 		return "the noise is not stated, and with as many parameters as readings none is left over to find it from"
+	case o.vanish:
+		return "the noise is not stated, and the residuals vanish to rounding, so that they do not tell it"
 	case len(o.confounded) > 0:
 		for _, c := range o.confounded {
 			if slices.Contains(strings.FieldsFunc(c, func(r rune) bool { return strings.ContainsRune(" ,;:.()", r) }), d.params[j]) {

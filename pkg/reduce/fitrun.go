@@ -118,12 +118,14 @@ func (p *fitPlan) data(t *bench.Table) (*fitData, error) {
 			return nil, err
 		}
 	}
-	d.parameters()
+	if err := d.parameters(); err != nil {
+		return nil, err
+	}
 	return d, d.defined()
 }
 
 // parameters states the parameters for the estimator.
-func (d *fitData) parameters() {
+func (d *fitData) parameters() error {
 	n := len(d.params)
 	d.cols = make([][]float64, n+len(d.predictors))
 	for k, v := range d.varOfPred {
@@ -149,11 +151,31 @@ func (d *fitData) parameters() {
 		for _, f := range d.s.Fixed {
 			q.Fixed = q.Fixed || f == name
 		}
+		if b, ok := d.s.Bounds[name]; ok && !q.Fixed {
+			if !(b[0] < b[1]) {
+				return fmt.Errorf("the bounds of %s (--bound) are %s to %s; the lower must be below the upper, or fix the parameter (--fix)", name, si.Exact(b[0]), si.Exact(b[1]))
+			}
+			if q.Start < b[0] || q.Start > b[1] {
+				return fmt.Errorf("%s starts at %s (--start), outside its bounds %s (--bound); move the start or the bound", name, si.Exact(q.Start), between(b))
+			}
+		}
 		d.pars = append(d.pars, q)
 		one := []float64{q.Start}
 		d.theta = append(d.theta, one)
 		d.cols[d.varOfParam[j]] = one
 	}
+	return nil
+}
+
+// between says a pair of bounds in words.
+func between(b [2]float64) string {
+	switch {
+	case math.IsInf(b[0], -1):
+		return "up to " + si.Exact(b[1])
+	case math.IsInf(b[1], 1):
+		return si.Exact(b[0]) + " and above"
+	}
+	return si.Exact(b[0]) + " to " + si.Exact(b[1])
 }
 
 // defined checks that the formula has a value at the start for every reading.
@@ -258,6 +280,14 @@ func (d *fitData) leastSquares(ctx context.Context) (*FormulaFit, error) {
 	o := &formulaOutcome{status: r.Status, reason: r.Reason, values: r.Values, u: r.U, free: r.Free, chi2: r.ChiSquared, p: r.PValue,
 		birge: r.BirgeRatio, rss: r.RSS, sd: r.ResidualSD, dof: r.DOF, iterations: r.Iterations, condition: r.Condition,
 		confounded: r.Confounded, atBound: r.AtBound, scaled: r.ScaledByResiduals, warnings: r.Warnings, method: method, covariance: r.Covariance.At}
+	if o.vanish = r.ResidualsVanish; o.vanish {
+		unknown := math.NaN()
+		o.u = append([]float64(nil), r.U...)
+		for _, j := range r.Free {
+			o.u[j] = unknown
+		}
+		o.covariance = func(int, int) float64 { return unknown }
+	}
 	rows := &Rows{Fitted: r.Fitted, Residual: r.Residuals, Standardised: r.Standardised, Leverage: r.Leverage, Studentised: r.Studentised}
 	for _, w := range r.Weights {
 		rows.U = append(rows.U, 1/math.Sqrt(w))

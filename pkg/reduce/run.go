@@ -82,7 +82,7 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 	}
 	fit, err := estimate(ctx)
 	if err != nil {
-		return nil, fmt.Errorf("%s: %w", b.Dir, err)
+		return nil, c.placed(err)
 	}
 	res := &Result{Bench: b, Settings: s}
 	res.Record = c.header(s)
