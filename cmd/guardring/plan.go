@@ -3,11 +3,8 @@ package main
 import (
 	"bytes"
 	"fmt"
-	"math"
 	"path/filepath"
 	"sort"
-	"strconv"
-	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -88,10 +85,10 @@ func planText(w *bytes.Buffer, p *plan.Prediction) error {
 	unit = unit.Suited(float64(m.Value), float64(m.K)*float64(m.U))
 	fmt.Fprintf(w, "%s\nmodel %s, before measuring\n\n", p.Title, p.Model)
 	fmt.Fprintf(w, "The design gives %s: %s\n", figure.Words(m.Name), si.Expanded(float64(m.Value), float64(m.K)*float64(m.U), unit, float64(m.K), float64(m.Probability)))
-	h := &p.Hazard
-	fmt.Fprintf(w, "At %.3g kV it stores %.3g mJ (limit %.3g mJ) and holds %.3g µC (limit %.3g µC).\n",
-		float64(h.Voltage)/1e3, float64(h.Energy)*1e3, float64(h.EnergyLimit)*1e3, float64(h.Charge)*1e6, float64(h.ChargeLimit)*1e6)
-	fmt.Fprintf(w, "High voltage: interlock or barrier, discharge rod and earth before touching; local codes and licensed practice prevail.\n\n")
+	if held := report.Held(&p.Hazard); held != "" {
+		fmt.Fprintf(w, "%s\nHigh voltage: interlock or barrier, discharge rod and earth before touching; local codes and licensed practice prevail.\n", held)
+	}
+	fmt.Fprintln(w)
 	budget := report.Table{Caption: "What dominates", Columns: []report.Column{{Name: "input"}, {Name: "share", Unit: "%", Align: report.Decimal}}}
 	for _, l := range dominant(m.Budget, 6) {
 		budget.Rows = append(budget.Rows, []string{figure.Words(l.input), fmt.Sprintf("%.1f", 100*l.share)})
@@ -100,26 +97,8 @@ func planText(w *bytes.Buffer, p *plan.Prediction) error {
 		return err
 	}
 	fmt.Fprintln(w)
-	table := report.Table{Caption: "One change at a time", Columns: []report.Column{
-		{Name: "change", Most: 44}, {Name: "u", Unit: unit.String(), Align: report.Decimal}, {Name: "ratio", Align: report.Decimal},
-		{Name: "energy", Unit: "mJ", Align: report.Decimal}, {Name: "breakdown / field", Align: report.Decimal}, {Name: "note"}}}
-	number := func(x float64, digits int) string {
-		if math.IsNaN(x) {
-			return "–"
-		}
-		// Two significant digits are meaningful in an uncertainty (GUM 7.2.6).
-		return strconv.FormatFloat(x, 'f', max(0, digits-1-int(math.Floor(math.Log10(math.Max(math.Abs(x), 1e-9))))), 64)
-	}
-	var notes []string
-	for _, s := range p.Scenarios {
-		note := ""
-		if s.Refused != "" {
-			notes = append(notes, s.Refused)
-			note = fmt.Sprintf("not possible (%d)", len(notes))
-		}
-		table.Rows = append(table.Rows, []string{planName(s.Name), number(unit.DeltaFromSI(float64(s.U)), 2), number(float64(s.Ratio), 3),
-			number(1e3*float64(s.Energy), 2), number(float64(s.Margin), 2), note})
-	}
+	table, notes := report.Changes(p, unit)
+	table.Caption = "One change at a time"
 	if err := table.Text(w); err != nil {
 		return err
 	}
@@ -130,15 +109,6 @@ func planText(w *bytes.Buffer, p *plan.Prediction) error {
 		fmt.Fprintf(w, "! %s\n", warning)
 	}
 	return nil
-}
-
-// planName is the name of a change in words; its numbers keep their points.
-func planName(name string) string {
-	first, rest, ok := strings.Cut(name, " ")
-	if _, err := strconv.ParseFloat(first, 64); ok && err == nil {
-		return first + " " + figure.Words(rest)
-	}
-	return figure.Words(name)
 }
 
 // share is a budget line for the summary.

@@ -4,14 +4,12 @@ import (
 	"fmt"
 	"sort"
 	"strconv"
-	"strings"
 
 	"example.org/guardring/pkg/cell"
 	"example.org/guardring/pkg/figure"
 	"example.org/guardring/pkg/plan"
 	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/report"
-	"example.org/guardring/pkg/si"
 )
 
 // Design is what a planned measurement would give. In a cell it shows the
@@ -76,40 +74,11 @@ func (d *Design) layOut(told bool) *report.Sheet {
 			strconv.FormatFloat(100*float64(l.Share), 'f', 1, 64)})
 	}
 	s.Head("What dominates").Table(t)
-	t, notes := d.changes()
+	unit, _ := report.Unit(float64(p.Measurand.U), p.Measurand.Unit)
+	t, notes := report.Changes(p, unit)
 	s.Head("One change at a time").Table(t)
 	for i, n := range notes {
 		s.Say(fmt.Sprintf("(%d) %s", i+1, n))
 	}
 	return s
-}
-
-// changes is the table of what changes of the design would do, with notes on
-// those that are not possible.
-func (d *Design) changes() (t *report.Table, notes []string) {
-	p := d.Prediction
-	unit, name := report.Unit(float64(p.Measurand.U), p.Measurand.Unit)
-	t = &report.Table{Columns: []report.Column{{Name: "change", Most: 44}, {Name: "u", Unit: name, Align: report.Decimal},
-		{Name: "ratio", Align: report.Decimal}, {Name: "energy", Unit: "mJ", Align: report.Decimal},
-		{Name: "breakdown / field", Align: report.Decimal}, {Name: "note"}}}
-	milli, one := si.MustUnit("mJ"), si.MustUnit("1")
-	for _, c := range p.Scenarios {
-		note := ""
-		if c.Refused != "" {
-			notes = append(notes, c.Refused)
-			note = fmt.Sprintf("not possible (%d)", len(notes))
-		}
-		t.Rows = append(t.Rows, []string{changeName(c.Name), report.In(float64(c.U), unit, 2), report.In(float64(c.Ratio), one, 3),
-			report.In(float64(c.Energy), milli, 2), report.In(float64(c.Margin), one, 2), note})
-	}
-	return t, notes
-}
-
-// changeName is the name of a change in words; its numbers keep their points.
-func changeName(name string) string {
-	first, rest, ok := strings.Cut(name, " ")
-	if _, err := strconv.ParseFloat(first, 64); ok && err == nil {
-		return first + " " + report.Words(rest)
-	}
-	return report.Words(name)
 }
