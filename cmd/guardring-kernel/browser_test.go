@@ -28,7 +28,7 @@ func TestBrowser(t *testing.T) {
 	if shots == "" {
 		shots = t.TempDir()
 	}
-	url := startNotebook(t)
+	url := startNotebook(t, map[string][]byte{"check.ipynb": checkNotebook(t)}) + "check.ipynb?token=" + notebookToken
 	ctx := startBrowser(t)
 
 	step := func(name string, actions ...chromedp.Action[chromedp.Void]) {
@@ -39,8 +39,6 @@ func TestBrowser(t *testing.T) {
 		}
 		shot(t, ctx, shots, name)
 	}
-	idle := until(`typeof Jupyter !== "undefined" && Jupyter.notebook && Jupyter.notebook.kernel && Jupyter.notebook.kernel.is_connected() && !Jupyter.notebook.kernel_busy && document.querySelector("#kernel_indicator_icon.kernel_idle_icon") !== null`)
-
 	step("open", chromedp.Navigate(url), idle)
 	step("run-all", chromedp.Evaluate[chromedp.Void](`Jupyter.notebook.execute_all_cells()`),
 		until(`document.querySelectorAll(".output_html table td").length === 4`),
@@ -66,6 +64,12 @@ func TestBrowser(t *testing.T) {
 		newCell("20 + 3"), chromedp.Evaluate[chromedp.Void](`Jupyter.notebook.execute_cell()`),
 		until(`Array.from(document.querySelectorAll(".output_result")).some(o => o.innerText.trim() === "23")`))
 }
+
+// idle waits until the kernel of the page is connected and does nothing.
+var idle = until(`typeof Jupyter !== "undefined" && Jupyter.notebook && Jupyter.notebook.kernel && Jupyter.notebook.kernel.is_connected() && !Jupyter.notebook.kernel_busy && document.querySelector("#kernel_indicator_icon.kernel_idle_icon") !== null`)
+
+// notebookToken lets the browser in.
+const notebookToken = "c0ffee0123456789"
 
 // newCell adds a cell at the end, with the cursor behind its text, as if it had been typed.
 func newCell(text string) chromedp.Action[chromedp.Void] {
@@ -114,22 +118,9 @@ func shot(t *testing.T, ctx context.Context, dir, name string) {
 	}
 }
 
-// startNotebook installs the kernel into a folder of its own, starts Jupyter on a notebook there and returns the
-// notebook's address with its token.
-func startNotebook(t *testing.T) string {
+// checkNotebook is a notebook with a table, a figure and progress.
+func checkNotebook(t *testing.T) []byte {
 	t.Helper()
-	jupyter, err := exec.LookPath("/usr/bin/jupyter-notebook")
-	if err != nil {
-		t.Fatalf("GUARDRING_BROWSER is set, but there is no Jupyter Notebook: %v", err)
-	}
-	dir := t.TempDir()
-	source, err := kernel.FindSource("")
-	if err != nil {
-		t.Fatal(err)
-	}
-	if _, _, err := kernel.Install(context.Background(), source, kernel.Location{Prefix: dir}, "test", os.Stderr); err != nil {
-		t.Fatal(err)
-	}
 	cells := []string{
 		"import (\n\t\"gonum.org/v1/gonum/mat\"\n\t\"gonum.org/v1/gonum/stat\"\n\t\"gonum.org/v1/plot\"\n\t\"gonum.org/v1/plot/plotter\"\n\t\"time\"\n\n\t\"example.org/guardring/pkg/cell\"\n)\nplate_voltage := 4200.0\nstat.Mean([]float64{4198, 4202}, nil)",
 		"gaps := mat.NewDense(2, 2, []float64{4, 6, 8, 10})\ngaps",
@@ -151,12 +142,34 @@ func startNotebook(t *testing.T) string {
 	if err != nil {
 		t.Fatal(err)
 	}
-	home := filepath.Join(dir, "home")
-	if err := os.MkdirAll(home, 0o755); err != nil {
+	return data
+}
+
+// startNotebook installs the kernel into a folder of its own, starts Jupyter in a home with the files given, and
+// returns the address under which it opens notebooks.
+func startNotebook(t *testing.T, files map[string][]byte) string {
+	t.Helper()
+	jupyter, err := exec.LookPath("/usr/bin/jupyter-notebook")
+	if err != nil {
+		t.Fatalf("GUARDRING_BROWSER is set, but there is no Jupyter Notebook: %v", err)
+	}
+	dir := t.TempDir()
+	source, err := kernel.FindSource("")
+	if err != nil {
 		t.Fatal(err)
 	}
-	if err := os.WriteFile(filepath.Join(home, "check.ipynb"), data, 0o644); err != nil {
+	if _, _, err := kernel.Install(context.Background(), source, kernel.Location{Prefix: dir}, "test", os.Stderr); err != nil {
 		t.Fatal(err)
+	}
+	home := filepath.Join(dir, "home")
+	for name, data := range files {
+		path := filepath.Join(home, filepath.FromSlash(name))
+		if err := os.MkdirAll(filepath.Dir(path), 0o755); err != nil {
+			t.Fatal(err)
+		}
+		if err := os.WriteFile(path, data, 0o644); err != nil {
+			t.Fatal(err)
+		}
 	}
 	l, err := net.Listen("tcp", "127.0.0.1:0")
 	if err != nil {
@@ -164,9 +177,8 @@ func startNotebook(t *testing.T) string {
 	}
 	port := l.Addr().(*net.TCPAddr).Port
 	l.Close()
-	const token = "c0ffee0123456789"
 	cmd := exec.Command(jupyter, "--no-browser", "--allow-root", "--ip=127.0.0.1", fmt.Sprintf("--port=%d", port),
-		"--NotebookApp.token="+token, "--notebook-dir="+home)
+		"--NotebookApp.token="+notebookToken, "--notebook-dir="+home)
 	cmd.Env = append(os.Environ(), "HOME="+home, "JUPYTER_PATH="+filepath.Join(dir, "share", "jupyter"),
 		"JUPYTER_CONFIG_DIR="+filepath.Join(dir, "config"), "JUPYTER_DATA_DIR="+filepath.Join(dir, "data"), "JUPYTER_RUNTIME_DIR="+filepath.Join(dir, "run"))
 	log := &logBuffer{}
@@ -192,7 +204,7 @@ func startNotebook(t *testing.T) string {
 			t.Fatalf("Jupyter does not listen:\n%s", log)
 		}
 	}
-	return "http://" + address + "/notebooks/check.ipynb?token=" + token
+	return "http://" + address + "/notebooks/"
 }
 
 func startBrowser(t *testing.T) context.Context {
