@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"runtime"
+	"strings"
 	"sync"
 
 	"example.org/guardring/pkg/bench"
@@ -187,7 +188,7 @@ func (c *chain) takeRows() error {
 		}
 	}
 	if n < need || n == 0 {
-		return fmt.Errorf("%s: %d rows in use for %d parameters to estimate; take more readings or fix parameters in bench.toml", c.b.Dir, n, need)
+		return c.tooFew(n, need)
 	}
 	pick := func(all []float64) []float64 {
 		v := make([]float64, n)
@@ -208,6 +209,33 @@ func (c *chain) takeRows() error {
 		}
 	}
 	return nil
+}
+
+// tooFew says why there are not enough rows, and what would be right.
+func (c *chain) tooFew(n, need int) error {
+	r := &c.b.Rows
+	if n > 0 || r.N == 0 {
+		return fmt.Errorf("%s: %s in use for %s to estimate; take more readings or fix parameters in bench.toml", c.b.Dir, plural(n, "row"), plural(need, "parameter"))
+	}
+	file := strings.Join(r.Files, ", ")
+	readings := 0
+	for i := range r.N {
+		if r.Kind[i] == bench.Reading {
+			readings++
+		}
+	}
+	if readings > 0 {
+		return fmt.Errorf("%s: no row is in use: %s of kind \"reading\", and all of them excluded; take back an exclusion in bench.toml", file, plural(readings, "row"))
+	}
+	return fmt.Errorf("%s: column %s: no row is a reading: all %s are zeros, blanks or beyond the range; mark the readings \"reading\" there", file, r.Columns["kind"], plural(r.N, "row"))
+}
+
+// plural counts things.
+func plural(n int, one string) string {
+	if n == 1 {
+		return "1 " + one
+	}
+	return fmt.Sprintf("%d %ss", n, one)
 }
 
 // seconds is the time of row i in use, s; NaN when unknown.
