@@ -14,6 +14,8 @@ type Error struct {
 	Hint   string // what would be right; "" when nothing is known
 }
 
+// Error gives the formula, shortened when it is long, the column, what is wrong
+// there, and the hint.
 func (e *Error) Error() string {
 	var b strings.Builder
 	b.WriteString("formula ")

@@ -9,6 +9,7 @@ type RowError struct {
 	Err error
 }
 
+// Error gives the cause; who knows the readings adds the place of the row.
 func (e *RowError) Error() string { return e.Err.Error() }
 
 // Unwrap returns the cause.

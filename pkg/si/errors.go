@@ -13,6 +13,7 @@ type UnitError struct {
 	Hint   string // what would be right; "" when nothing near is known
 }
 
+// Error gives the unit, what is wrong with it and where, and the hint.
 func (e *UnitError) Error() string {
 	var b strings.Builder
 	fmt.Fprintf(&b, "unit %q: %s", e.Unit, e.Reason)
@@ -35,6 +36,7 @@ type QuantityError struct {
 	Err    error
 }
 
+// Error gives the text, what is wrong with it, and the hint.
 func (e *QuantityError) Error() string {
 	if e.Err != nil {
 		return fmt.Sprintf("quantity %q: %v", e.Text, e.Err)
@@ -46,6 +48,7 @@ func (e *QuantityError) Error() string {
 	return s
 }
 
+// Unwrap returns the cause, nil when there is none.
 func (e *QuantityError) Unwrap() error { return e.Err }
 
 // ErrorDim says that a quantity has one dimension where another is due.
@@ -56,6 +59,7 @@ type ErrorDim struct {
 	Like  string    // a unit that would be right, "kV"; "" for the coherent SI unit
 }
 
+// Error gives the unit found with its dimension, and one that would be right.
 func (e *ErrorDim) Error() string {
 	like := e.Like
 	if like == "" {
