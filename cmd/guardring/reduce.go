@@ -69,7 +69,10 @@ func (o *reduceOptions) one(ctx context.Context, dir string, stdout, stderr io.W
 		return err
 	}
 	r, err := reduce.Run(ctx, b, o.settings)
-	if err != nil {
+	if err != nil { // what is odd about the bench may be why
+		for _, w := range b.Warnings {
+			fmt.Fprintf(stderr, "guardring: warning: %s\n", w)
+		}
 		return err
 	}
 	// Everything is made before anything is written, so that a failure leaves no

@@ -116,13 +116,23 @@ func Combine(value float64, lines []Contribution, corr []Correlation, p float64)
 		for i := range b {
 			b[i].Share = cov[i] / sum
 		}
-	} else {
+	} else if !allExact(b) {
 		law.Warnings = append(law.Warnings, errors.New("the law gives no uncertainty to first order: every sensitivity vanishes or the contributions cancel at the estimates; trust Monte Carlo or second-order terms instead"))
 	}
 	law.degreesOfFreedom(corr)
 	law.cover()
 	law.warnShape()
 	return law, nil
+}
+
+// allExact reports that no input has an uncertainty: then neither has the output.
+func allExact(b []Contribution) bool {
+	for i := range b {
+		if b[i].U > 0 {
+			return false
+		}
+	}
+	return true
 }
 
 // cover sets K and Interval from U, DOF and Probability.

@@ -132,6 +132,13 @@ func statedOutput(o *reduce.BudgetResult) result {
 	u := outputUnit(o)
 	r := result{name: o.Name, doc: "= " + o.Formula}
 	mc := o.MonteCarlo
+	mute := unstated(o.Law)
+	if mute != "" && mc == nil {
+		r.short = "not stated by the law (" + mute + ")"
+		r.expanded = "the value at the estimates is " + minus(si.Short(float64(o.Law.Value), 0, u)) + "; its uncertainty needs Monte Carlo or second-order terms"
+		r.expanded = strings.Replace(r.expanded, " (exact)", "", 1)
+		return r
+	}
 	if l := o.Law; l != nil && (l.U > 0 || mc == nil || !(mc.U > 0)) {
 		r.short = minus(si.Short(float64(l.Value), float64(l.U), u))
 		r.expanded = minus(si.Expanded(float64(l.Value), float64(l.K)*float64(l.U), u, float64(l.K), float64(l.Probability)))
@@ -151,7 +158,30 @@ func statedOutput(o *reduce.BudgetResult) result {
 	} else {
 		r.expanded = "Monte Carlo interval; there is no finite standard uncertainty"
 	}
+	if mute != "" {
+		r.expanded += "; not stated by the law (" + mute + ")"
+	}
 	return r
+}
+
+// unstated says why a law finds no uncertainty although inputs have some; "" when it
+// finds one, or nothing has any.
+func unstated(l *reduce.LawRecord) string {
+	if l == nil || l.U != 0 {
+		return ""
+	}
+	uncertain, moved := false, false
+	for _, b := range l.Budget {
+		uncertain = uncertain || b.U > 0
+		moved = moved || b.U > 0 && b.Sensitivity != 0
+	}
+	switch {
+	case !uncertain:
+		return ""
+	case moved:
+		return "the contributions cancel to first order"
+	}
+	return "all first-order sensitivities vanish"
 }
 
 // spread is what the digits of an interval's ends follow.
