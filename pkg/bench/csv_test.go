@@ -172,6 +172,20 @@ func TestFirstErrorsAreTold(t *testing.T) {
 	}
 }
 
+// TestSameInEveryLine: one cause in line after line is told once, with its number
+// and its hint.
+func TestSameInEveryLine(t *testing.T) {
+	for _, c := range []struct{ line, want string }{
+		{"1,5;2\n", `x.csv:2: column x: "1,5" is not a number; if this is a decimal comma, say decimal = "comma" in [[readings]]; the same in 4 more lines`},
+		{"1.5;2;3\n", `x.csv:2: the record has 3 cells, the header 2; the same in 4 more lines`},
+	} {
+		_, err := ReadCSV(strings.NewReader("x;y\n"+strings.Repeat(c.line, 5)), "x.csv", CSVSettings{})
+		if err == nil || err.Error() != c.want {
+			t.Errorf("error\n%v\nwant\n%s", err, c.want)
+		}
+	}
+}
+
 func TestReadCSVFailures(t *testing.T) {
 	_, err := ReadCSV(io.MultiReader(strings.NewReader("a\n"+strings.Repeat("1\n", 1<<20)), iotest.ErrReader(errors.New("disk gone"))), "x.csv", CSVSettings{})
 	wantError(t, err, "x.csv: reading failed: disk gone")

@@ -2,6 +2,7 @@ package bench
 
 import (
 	"errors"
+	"regexp"
 	"sort"
 	"strconv"
 	"strings"
@@ -72,6 +73,7 @@ func (l *errorList) err() error {
 		}
 		return a.Column < b.Column
 	})
+	l.gather()
 	switch n := len(l.list); {
 	case n == 0:
 		return nil
@@ -83,6 +85,58 @@ func (l *errorList) err() error {
 	}
 	return errors.Join(l.list...)
 }
+
+// alike is how many errors that differ in nothing but their line and what the cell
+// holds are told as one.
+const alike = 4
+
+// gather tells errors that repeat line by line once, with their number: a file with
+// another decimal sign or separator is wrong in every line for one reason.
+func (l *errorList) gather() {
+	type family struct{ file, key, problem string }
+	of := func(err error) (family, bool) {
+		e, ok := err.(*Error)
+		if !ok || e.Line == 0 || e.Column != 0 {
+			return family{}, false
+		}
+		return family{e.File, e.Key, cited.ReplaceAllString(e.Problem, "")}, true
+	}
+	// run[i] is the first error of the unbroken run of lines that error i is in
+	run, count := make([]int, len(l.list)), make([]int, len(l.list))
+	last := map[family]int{}
+	for i, err := range l.list {
+		run[i] = i
+		k, ok := of(err)
+		if !ok {
+			continue
+		}
+		if j, seen := last[k]; seen && err.(*Error).Line-l.list[j].(*Error).Line <= 2 { // a line between may be blank
+			run[i] = run[j]
+		}
+		count[run[i]]++
+		last[k] = i
+	}
+	kept := l.list[:0:0]
+	for i, err := range l.list {
+		if n := count[run[i]]; n >= alike {
+			if run[i] != i {
+				continue
+			}
+			e := *err.(*Error)
+			more := strconv.Itoa(n-1) + " more lines"
+			if len(l.list) >= maxErrors { // reading stops soon after as many
+				more = "at least " + more
+			}
+			e.Problem += "; the same in " + more
+			err = &e
+		}
+		kept = append(kept, err)
+	}
+	l.list = kept
+}
+
+// cited is what a message cites at its beginning.
+var cited = regexp.MustCompile(`^"[^"]*"`)
 
 // didYouMean is the hint that follows an unknown word: the nearest known one,
 // or all of them when they are few.
