@@ -4,19 +4,19 @@ import (
 	"context"
 	"fmt"
 	"log"
+	"time"
 
 	"example.org/guardring/pkg/kernel"
 	"example.org/guardring/pkg/kernel/gointerp"
 )
 
-// A cell runs in an installed kernel, and its outputs come back as a notebook holds them.
+// A cell runs in a kernel, and its outputs come back as a notebook holds them. Here
+// the kernel is this program itself; InstalledLaunch is the launch of the one that
+// is installed.
 func ExampleClient_Execute() {
-	ctx := context.Background()
-	launch, err := kernel.InstalledLaunch(ctx)
-	if err != nil {
-		log.Fatal(err)
-	}
-	c, err := kernel.Start(ctx, launch)
+	ctx, cancel := context.WithTimeout(context.Background(), time.Minute)
+	defer cancel()
+	c, err := kernel.Start(ctx, testLaunch())
 	if err != nil {
 		log.Fatal(err)
 	}
@@ -25,7 +25,15 @@ func ExampleClient_Execute() {
 	if err != nil {
 		log.Fatal(err)
 	}
-	fmt.Println(e.Status, e.Result())
+	fmt.Println(e.Status, e.Count, e.Result())
+	e, err = c.Execute(ctx, "gap * width", kernel.ExecuteOptions{})
+	if err != nil {
+		log.Fatal(err)
+	}
+	fmt.Println(e.Status, e.Count, e.EName)
+	// Output:
+	// ok 1 0.008
+	// error 2 CompileError
 }
 
 func ExampleIsComplete() {
