@@ -50,6 +50,7 @@ type Client struct {
 	process *exec.Cmd
 	exited  chan struct{}
 	exitErr error
+	life    context.Context
 	cancel  context.CancelFunc
 
 	shell, control, stdin, iopub zmq4.Socket
@@ -164,7 +165,10 @@ func Connect(ctx context.Context, conn Connection) (*Client, error) {
 }
 
 func newClient(conn Connection) *Client {
+	// The life is there before anything runs in it: a kernel may end at once.
+	life, cancel := context.WithCancel(context.Background())
 	return &Client{
+		life: life, cancel: cancel,
 		conn: conn, key: []byte(conn.Key), sign: newSigner([]byte(conn.Key), "client"), exited: make(chan struct{}),
 		replies: map[string]chan *Message{}, outputs: map[string]chan *Message{}, inputs: map[string]func(*Message){},
 		displays: map[string][]*Output{}, heard: make(chan struct{}),
@@ -192,8 +196,7 @@ func freeConnection() (*Connection, error) {
 }
 
 func (c *Client) connect(ctx context.Context) error {
-	life, cancel := context.WithCancel(context.Background())
-	c.cancel = cancel
+	life, cancel := c.life, c.cancel
 	id := zmq4.WithID(zmq4.SocketIdentity(c.sign.session))
 	retry := []zmq4.Option{zmq4.WithDialerRetry(5 * time.Millisecond), zmq4.WithDialerMaxRetries(-1)}
 	c.shell = zmq4.NewDealer(life, append(retry, id)...)
