@@ -6,6 +6,7 @@ import (
 	"errors"
 	"fmt"
 	"go/ast"
+	"go/build"
 	"go/scanner"
 	"go/token"
 	"maps"
@@ -47,6 +48,10 @@ type Interp struct {
 // New returns an interpreter. linked are the import paths that the kernel brings besides the standard library.
 func New(linked []string, render Render) (*Interp, error) {
 	rebind()
+	// The interpreter asks go/build for export data when it can see a GOROOT, and
+	// panics on the type parameters it finds there. A binary built with -trimpath
+	// sees none; hide it from all others.
+	build.Default.GOROOT = ""
 	l, err := newListener()
 	if err != nil {
 		return nil, err
