@@ -1,6 +1,6 @@
 package si
 
-// The symbols of the coherent units of plane angle and of energy.
+// The symbols of the units of plane angle and of energy.
 const (
 	radian = "rad"
 	joule  = "J"

@@ -24,6 +24,7 @@ func init() {
 			"Input":        r.ValueOf(p0_cell.Input),
 			"Report":       r.ValueOf(p0_cell.Report),
 			"SetHost":      r.ValueOf(p0_cell.SetHost),
+			"Stopped":      r.ValueOf(p0_cell.Stopped),
 			"Update":       r.ValueOf(p0_cell.Update),
 			"WithProgress": r.ValueOf(p0_cell.WithProgress),
 		},
