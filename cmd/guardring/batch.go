@@ -143,7 +143,7 @@ func batchTable(w io.Writer, dirs []string, results []outcome) {
 			if err != nil {
 				u = si.One
 			}
-			_, u = si.Prefixed(float64(m.Value), u)
+			u = u.Suited(float64(m.Value), float64(m.U))
 			what, value = figure.Words(m.Name), si.Short(float64(m.Value), float64(m.U), u)
 		}
 		fmt.Fprintf(t, "%s\t%s\t%s\t%d\t%.4g/%d\t%s\t%d\n", name, what, value, rec.Fit.Rows,
