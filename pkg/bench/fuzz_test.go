@@ -87,7 +87,7 @@ func FuzzCSV(f *testing.F) {
 		if tab.N < 1 || len(tab.Number) != len(tab.Header) {
 			t.Fatalf("incomplete: %+v", tab)
 		}
-		records := standardCSV(t, data, len(tab.Header))
+		records := standardCSV(t, data, len(tab.Header), comma)
 		if records == nil {
 			return
 		}
@@ -116,14 +116,19 @@ func FuzzCSV(f *testing.F) {
 }
 
 // standardCSV reads data by encoding/csv, nil where the two differ on purpose:
-// carriage returns within a cell, and which separator it is.
-func standardCSV(t *testing.T, data []byte, columns int) [][]string {
+// carriage returns within a cell, and which separator it is; a comma that is the
+// decimal sign separates nothing.
+func standardCSV(t *testing.T, data []byte, columns int, decimalComma bool) [][]string {
 	t.Helper()
 	data = bytes.TrimPrefix(data, []byte("\xef\xbb\xbf"))
 	if bytes.Contains(bytes.ReplaceAll(data, []byte("\r\n"), nil), []byte("\r")) {
 		return nil
 	}
-	for _, sep := range ",;\t" {
+	separators := ",;\t"
+	if decimalComma {
+		separators = ";\t"
+	}
+	for _, sep := range separators {
 		r := csv.NewReader(bytes.NewReader(data))
 		r.Comma = sep
 		records, err := r.ReadAll()
