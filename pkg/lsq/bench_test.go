@@ -35,22 +35,22 @@ func disc(n int) *Problem {
 		Eval: func(th, f []float64, jac [][]float64) error {
 			eps, v0, d0 := th[0], th[1], th[2]
 			v, d := v[:len(f)], d[:len(f)]
+			k, k2 := discK*eps, -2*discK*eps
 			if jac == nil {
 				for i := range f {
 					q := (v[i] - v0) / (d[i] + d0)
-					f[i] = discK * eps * q * q
+					f[i] = k * q * q
 				}
 				return nil
 			}
 			a, b, c := jac[0][:len(f)], jac[1][:len(f)], jac[2][:len(f)]
 			for i := range f {
-				x := v[i] - v0
 				r := 1 / (d[i] + d0)
-				q := x * r
-				g := discK * q * q
-				f[i] = eps * g
-				a[i] = g
-				t := -2 * eps * discK * q * r
+				q := (v[i] - v0) * r
+				h := q * q
+				f[i] = k * h
+				a[i] = discK * h
+				t := k2 * q * r
 				b[i] = t
 				c[i] = t * q
 			}
