@@ -16,6 +16,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"example.org/guardring/pkg/figure"
+	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/report"
 	"example.org/guardring/pkg/si"
@@ -259,8 +260,8 @@ func probabilityFlag(text string) (float64, error) {
 	if err == nil && !u.Dim.IsOne() {
 		err = fmt.Errorf("a probability has no unit; write 0.95 or '95 %%'")
 	}
-	if err == nil && !(p > 0 && p < 1) {
-		err = fmt.Errorf("a coverage probability lies between 0 and 1; write 0.95 or '95 %%'")
+	if err == nil {
+		err = gum.CheckCoverage(p)
 	}
 	if err != nil {
 		return 0, fmt.Errorf("--probability %s: %w", text, err)

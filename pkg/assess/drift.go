@@ -6,6 +6,7 @@ import (
 	"math"
 	"time"
 
+	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/reduce"
 	"gonum.org/v1/gonum/mat"
 )
@@ -114,8 +115,11 @@ func Drift(h History, s DriftSettings) (*Line, error) {
 	if s.Probability == 0 {
 		s.Probability = 0.9545
 	}
-	if !(s.Level > 0 && s.Level < 1) || !(s.Probability > 0 && s.Probability < 1) {
-		return nil, fmt.Errorf("significance level %v and probability %v must lie between 0 and 1", s.Level, s.Probability)
+	if !(s.Level > 0 && s.Level < 1) {
+		return nil, fmt.Errorf("significance level %v must lie between 0 and 1", s.Level)
+	}
+	if err := gum.CheckCoverage(s.Probability); err != nil {
+		return nil, err
 	}
 	if err := h.check(); err != nil {
 		return nil, err

@@ -233,7 +233,7 @@ func TestDriftRefuses(t *testing.T) {
 		}
 	}
 	_, err := Drift(three(), DriftSettings{Probability: 95})
-	refuses(t, "probability as percent", err, "between 0 and 1")
+	refuses(t, "probability as percent", err, "between 0.5 and 0.999999")
 }
 
 // Results scale with the unit: values of 1e-12 are treated as those of 1.

@@ -105,7 +105,7 @@ func (f *folder) budget(name string, data []byte, sum string) (*Budget, error) {
 	r.check(root, r.grammar)
 	b.Title = r.text(root, "title")
 	b.Instruments = r.instrumentTables()
-	b.Coverage = r.coverage(r.table(root, "report"))
+	b.Coverage = r.reportCoverage(r.table(root, "report"))
 	f.budgetInputs(r, b)
 	known := make([]string, len(b.Quantities))
 	for i := range b.Quantities {

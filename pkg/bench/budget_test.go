@@ -128,6 +128,7 @@ func TestBudgetErrors(t *testing.T) {
 		{`formula = "(v - v_c)/d"`, ``, `outputs.field.formula: is missing`},
 		{`unit = "kV/m"`, `unit = "kV"`, `outputs.field.unit: "kV" is a voltage; the formula gives an electric field (for example V/m)`},
 		{`unit = "kV/m"`, `unit = "kV/m/s"`, `a second solidus`},
+		{`coverage = "95 %"`, `coverage = 2e-308`, `report.coverage: 2e-308 is no coverage probability`},
 		{`between = ["v", "v_c"]`, `between = ["v", "vc"]`, `input "vc" is not known; did you mean `},
 		{`r = 0.2`, `r = -1.01`, `those lie from -1 to 1`},
 		{"[outputs.field]\nformula = \"(v - v_c)/d\"\nunit = \"kV/m\"", ``, `outputs: is missing`},

@@ -198,6 +198,9 @@ func TestBenchErrors(t *testing.T) {
 
 		// The job.
 		{`[[exclude]]`, "[report]\ncoverage = 95.45\n[[exclude]]", `95.45 is not a probability below 1; write "95.45 %"`},
+		{`[[exclude]]`, "[report]\ncoverage = 2e-308\n[[exclude]]", `report.coverage: 2e-308 is no coverage probability: those lie from 50 % to 99.9999 %`},
+		{`[[exclude]]`, "[report]\ncoverage = \"99.99999 %\"\n[[exclude]]", `those lie from 50 % to 99.9999 %`},
+		{`u = "1.5 um"`, "expanded = \"3 um\"\nprobability = \"5 %\"", `"5 %" is no coverage probability`},
 		{`[[exclude]]`, "[limits]\nlower = 0.9\nupper = 1.1\n[[exclude]]", `limits.unit: is missing; limits without a unit say nothing`},
 		{`[[exclude]]`, "[limits]\nlower = 1.1\nupper = 0.9\nunit = \"1\"\n[[exclude]]", `the limits are the wrong way round: lower is 1.1, upper 0.9`},
 		{`[[exclude]]`, "[limits]\nunit = \"1\"\n[[exclude]]", `neither lower nor upper is given`},

@@ -78,11 +78,11 @@ func twoCapitals(s string) bool {
 	return len(s) == 2 && s[0] >= 'A' && s[0] <= 'Z' && s[1] >= 'A' && s[1] <= 'Z'
 }
 
-// report reads how results are stated.
-func (r *reader) coverage(t *node) float64 {
+// reportCoverage reads the coverage probability of [report].
+func (r *reader) reportCoverage(t *node) float64 {
 	p := defaultCoverage
 	if t != nil && t.fields["coverage"] != nil {
-		if q, ok := r.probability(t, "coverage"); ok {
+		if q, ok := r.coverage(t, "coverage"); ok {
 			p = q
 		}
 	}
@@ -91,7 +91,7 @@ func (r *reader) coverage(t *node) float64 {
 
 func (l *loader) report() {
 	t := l.table(l.root, "report")
-	l.b.Coverage = l.coverage(t)
+	l.b.Coverage = l.reportCoverage(t)
 	l.b.Report.Coverage = l.b.Coverage
 	if t == nil {
 		return

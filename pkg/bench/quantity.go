@@ -196,7 +196,7 @@ func (r *reader) standard(n *node, U, dof float64) float64 {
 		}
 		return U / k.number
 	case p != nil:
-		if q, ok := r.probability(n, "probability"); ok {
+		if q, ok := r.coverage(n, "probability"); ok {
 			return U / gum.CoverageFactor(q, dof)
 		}
 	default:

@@ -7,6 +7,7 @@ import (
 	"strings"
 	"time"
 
+	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/si"
 )
 
@@ -341,6 +342,16 @@ func (r *reader) probability(t *node, key string) (float64, bool) {
 			hint = fmt.Sprintf(`; write "%s %%"`, n.text)
 		}
 		r.fail(n, "%s is not a probability below 1%s", shown(n), hint)
+		return 0, false
+	}
+	return p, ok
+}
+
+// coverage reads a coverage probability.
+func (r *reader) coverage(t *node, key string) (float64, bool) {
+	p, ok := r.probability(t, key)
+	if ok && gum.CheckCoverage(p) != nil {
+		r.fail(t.field(key), "%s is no coverage probability: those lie from 50 %% to 99.9999 %%", shown(t.field(key)))
 		return 0, false
 	}
 	return p, ok

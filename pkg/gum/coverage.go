@@ -1,10 +1,29 @@
 package gum
 
 import (
+	"fmt"
 	"math"
 
 	"gonum.org/v1/gonum/mathext"
 )
+
+// The coverage probabilities that are taken: k of a normal goes from 0.67, the
+// probable error of old, to 4.9. Below, an interval covers less than it leaves
+// out; above, neither trials nor the normal shape of the tails vouch for it
+// (common practice, no source).
+const (
+	MinCoverage = 0.5
+	MaxCoverage = 0.999999
+)
+
+// CheckCoverage returns an error when p is no coverage probability from
+// MinCoverage to MaxCoverage.
+func CheckCoverage(p float64) error {
+	if !(p >= MinCoverage && p <= MaxCoverage) {
+		return fmt.Errorf("coverage probability %v must lie between 0.5 and 0.999999; 0.9545 or 0.95 is usual", p)
+	}
+	return nil
+}
 
 // CoverageFactor returns the k for which ±k covers the probability p under
 // Student's t (JCGM 100:2008 table G.2). Fractional dof of 1 or more are truncated

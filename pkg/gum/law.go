@@ -69,7 +69,7 @@ var ErrInfiniteVariance = errors.New("the t distribution has no variance with tw
 // negative uncertainties, impossible correlations, and a t distribution without a
 // variance.
 func Combine(value float64, lines []Contribution, corr []Correlation, p float64) (*Law, error) {
-	if err := checkProbability(p); err != nil {
+	if err := CheckCoverage(p); err != nil {
 		return nil, err
 	}
 	if math.IsNaN(value) || math.IsInf(value, 0) {
@@ -278,11 +278,4 @@ func dofText(nu float64) string {
 		return "known uncertainty"
 	}
 	return fmt.Sprintf("%.4g degrees of freedom", nu)
-}
-
-func checkProbability(p float64) error {
-	if !(p > 0 && p < 1) {
-		return fmt.Errorf("coverage probability is %v: it must lie between 0 and 1, for example 0.9545", p)
-	}
-	return nil
 }

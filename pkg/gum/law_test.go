@@ -316,9 +316,12 @@ func TestCombineRefuses(t *testing.T) {
 		p     float64
 		word  string
 	}{
-		{two(same), nil, 0, "between 0 and 1"},
-		{two(same), nil, 1, "between 0 and 1"},
-		{two(same), nil, math.NaN(), "between 0 and 1"},
+		{two(same), nil, 0, "between 0.5 and 0.999999"},
+		{two(same), nil, 2e-308, "between 0.5 and 0.999999"},
+		{two(same), nil, 0.4999, "between 0.5 and 0.999999"},
+		{two(same), nil, 1 - 1e-9, "between 0.5 and 0.999999"},
+		{two(same), nil, 1, "between 0.5 and 0.999999"},
+		{two(same), nil, math.NaN(), "between 0.5 and 0.999999"},
 		{two(func(l []gum.Contribution) { l[1].U = -1 }), nil, 0.95, "gain"},
 		{two(func(l []gum.Contribution) { l[1].U = math.NaN() }), nil, 0.95, "gain"},
 		{two(func(l []gum.Contribution) { l[0].Sensitivity = math.Inf(1) }), nil, 0.95, "radius"},

@@ -91,7 +91,7 @@ func (s Settings) withDefaults() (Settings, error) {
 	if s.Probability == 0 {
 		s.Probability = 0.9545
 	}
-	if err := checkProbability(s.Probability); err != nil {
+	if err := CheckCoverage(s.Probability); err != nil {
 		return s, err
 	}
 	if s.Trials < 0 {

@@ -14,8 +14,8 @@ import (
 // leaves y as it is. Trials that are NaN or infinite are counted and left out;
 // more than MaxUndefined of them is an error, as are fewer trials than p needs.
 func Summarise(y []float64, p float64) (*Sample, error) {
-	if err := checkProbability(p); err != nil {
-		return nil, err
+	if !(p > 0 && p < 1) {
+		return nil, fmt.Errorf("probability %v must lie between 0 and 1", p)
 	}
 	return summarise(y, p, 1, true)
 }

@@ -219,8 +219,9 @@ func ParseStray(path string, data []byte) (*StrayBench, error) {
 		if err != nil {
 			return nil, err
 		}
-		if b.Coverage = q.Value; !(b.Coverage > 0 && b.Coverage < 1) {
-			return nil, r.errorf("report.coverage", "%g is not a probability between 0 and 1; write for example \"95.45 %%\"", b.Coverage)
+		b.Coverage = q.Value
+		if err := gum.CheckCoverage(b.Coverage); err != nil {
+			return nil, r.errorf("report.coverage", "%v", err)
 		}
 	}
 	if f.Search == nil {

@@ -11,6 +11,7 @@ import (
 
 	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/formula"
+	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/si"
 )
 
@@ -120,8 +121,8 @@ func newFitPlan(t *bench.Table, s FitSettings) (*fitPlan, error) {
 	if p.s.Probability == 0 {
 		p.s.Probability = 0.9545
 	}
-	if !(p.s.Probability > 0 && p.s.Probability < 1) {
-		return nil, fmt.Errorf("coverage probability %v must lie between 0 and 1", p.s.Probability)
+	if err := gum.CheckCoverage(p.s.Probability); err != nil {
+		return nil, err
 	}
 	if strings.TrimSpace(s.Formula) == "" {
 		return nil, errors.New("no formula is given, such as a + b*x")

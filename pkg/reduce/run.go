@@ -64,8 +64,8 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 	if p == 0 {
 		p = 0.9545
 	}
-	if !(p > 0 && p < 1) {
-		return nil, fmt.Errorf("coverage probability %g: must lie between 0 and 1", p)
+	if err := gum.CheckCoverage(p); err != nil {
+		return nil, err
 	}
 	switch b.Method {
 	case "", leastSquares, errorsInVariables:
