@@ -55,8 +55,9 @@ type Certificate struct {
 	figures []*figure.Figure
 }
 
-// identifiers are keys of a bench in a sentence.
-var identifiers = regexp.MustCompile(`\b[a-z]+(_[a-z]+)+\b`)
+// keys are those of bench.toml that follow an input's name in a warning; who reads a
+// certificate has no such file.
+var keys = regexp.MustCompile(` \((?:channels|corrections|environment|quantities)\.[a-z0-9_.]+\)`)
 
 // Party is a laboratory or a client.
 type Party struct{ Name, Address, Contact string }
@@ -172,7 +173,7 @@ func New(r *reduce.Result, s Settings) (*Certificate, error) {
 	c.leftOut(r)
 	c.trials(r, c.base)
 	for _, warning := range rec.Warnings {
-		c.Observations = append(c.Observations, identifiers.ReplaceAllStringFunc(figure.OneLine(warning), figure.Words))
+		c.Observations = append(c.Observations, keys.ReplaceAllString(figure.OneLine(warning), ""))
 	}
 	c.Cautions = cautions(&rec.Hazard)
 	if err := c.amend(b, s); err != nil {

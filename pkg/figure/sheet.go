@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"strconv"
 	"strings"
+
+	"example.org/guardring/pkg/bench"
 )
 
 // sheet is a page being laid out from the top.
@@ -150,19 +152,7 @@ func wrap(s string, size, most float64) []string {
 
 // Words makes a key of the bench readable: "channels.voltage.gain" is "voltage
 // gain", "contact_potential" is "contact potential".
-func Words(key string) string {
-	s := OneLine(key)
-	for _, table := range []string{"channels.", "corrections.", "environment.", "quantities."} {
-		s = strings.TrimPrefix(s, table)
-	}
-	// A key that repeats the end of its table says nothing more:
-	// offset_current.current is the offset current.
-	if table, key, ok := strings.Cut(s, "."); ok && (table == key || strings.HasSuffix(table, "_"+key)) {
-		s = table
-	}
-	s = strings.NewReplacer("_", " ", ".", " ").Replace(s)
-	return strings.ReplaceAll(s, "coulomb constant", "Coulomb constant")
-}
+func Words(key string) string { return bench.Words(OneLine(key)) }
 
 func words(key string) string { return Words(key) }
 

@@ -60,7 +60,7 @@ type EIVResult struct {
 	Evaluations int
 	Condition   float64
 
-	Confounded        []string
+	Confounded        []*Remark
 	AtBound           []int
 	ScaledByResiduals bool
 

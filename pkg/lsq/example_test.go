@@ -94,7 +94,7 @@ func ExampleResult_confounded() {
 	fmt.Printf("%s: gain = %.4f ± %.4f\n", r.Status, r.Values[0], r.U[0])
 	// Output:
 	// singular NaN
-	// gain and area can't be told apart: changing gain by +1 %, area by -1 % together leaves the fit as it is
+	// gain and area can't be told apart: changing gain by +1 % and area by -1 % together leaves the fit as it is
 	// converged: gain = 0.9950 ± 0.0104
 }
 

@@ -6,7 +6,6 @@ import (
 	"fmt"
 	"math"
 	"sort"
-	"strings"
 
 	"gonum.org/v1/gonum/mat"
 )
@@ -143,7 +142,7 @@ func (sp *spectrum) faint() []int {
 
 // confounded names the parameters of each null vector, after reducing the null
 // vectors to echelon form so that each names as few as it can.
-func (f *fitter) confounded(sp *spectrum) (sentences []string, involved []bool) {
+func (f *fitter) confounded(sp *spectrum) (remarks []*Remark, involved []bool) {
 	s := &f.search
 	involved = make([]bool, s.q)
 	for _, d := range sp.echelon(largest) {
@@ -160,7 +159,7 @@ func (f *fitter) confounded(sp *spectrum) (sentences []string, involved []bool) 
 		if most == 0 {
 			most = 0.01
 		}
-		var names, moves []string
+		var moves []move
 		for l, v := range row {
 			if math.Abs(v) < 1e-5*big {
 				continue
@@ -168,25 +167,19 @@ func (f *fitter) confounded(sp *spectrum) (sentences []string, involved []bool) 
 			k := sp.idx[l]
 			involved[k] = true
 			j := f.free[k]
-			names = append(names, f.p.name(j))
-			change := 0.01 * v / sp.norm[l] / most
+			m := move{j: j, change: 0.01 * v / sp.norm[l] / most}
 			if at := s.theta[j]; at != 0 {
-				moves = append(moves, fmt.Sprintf("%s by %+.3g %%", f.p.name(j), 100*change/at))
-			} else {
-				moves = append(moves, fmt.Sprintf("%s by %+.3g", f.p.name(j), change))
+				m.change, m.share = m.change/at, true
 			}
+			m.change = three(m.change)
+			moves = append(moves, m)
 		}
-		switch len(names) {
-		case 0:
-		case 1:
-			sentences = append(sentences, fmt.Sprintf("the readings do not determine %s: changing it leaves the fit as it is", names[0]))
-		default:
-			list := strings.Join(names[:len(names)-1], ", ") + " and " + names[len(names)-1]
-			sentences = append(sentences, fmt.Sprintf("%s can't be told apart: changing %s together leaves the fit as it is", list, strings.Join(moves, ", ")))
+		if len(moves) > 0 {
+			remarks = append(remarks, f.p.alike(moves))
 		}
 	}
-	sort.Strings(sentences)
-	return sentences, involved
+	sort.Slice(remarks, func(a, b int) bool { return remarks[a].Error() < remarks[b].Error() })
+	return remarks, involved
 }
 
 // result gathers everything about the end of the fit.
@@ -494,7 +487,7 @@ func (f *fitter) parameters(r *Result, sp *spectrum, scale float64) {
 		r.Status = Singular
 		r.Reason = "some parameters can't be told apart by these readings"
 		for _, c := range r.Confounded {
-			r.warn("%s; their uncertainties are unknown", c)
+			r.Warnings = append(r.Warnings, c.within("", "; "+c.whose+" unknown"))
 		}
 	}
 	r.inv = f.take(q * q)
@@ -509,7 +502,10 @@ func (f *fitter) parameters(r *Result, sp *spectrum, scale float64) {
 		held := s.held != nil && s.held[k]
 		if held {
 			r.AtBound = append(r.AtBound, j)
-			r.warn("%s is held at its bound %.6g: its uncertainty is unknown, and those of the others hold for that value", p.name(j), s.theta[j])
+			at := s.theta[j]
+			r.Warnings = append(r.Warnings, p.remark([]int{j}, func(name func(j int) string, amount func(j int, x float64) string) string {
+				return fmt.Sprintf("%s is held at its bound %s: its uncertainty is unknown, and those of the others hold for that value", name(j), amount(j, at))
+			}))
 		}
 		for l := 0; l <= k; l++ {
 			c := r.inv[k*q+l] * scale
@@ -526,9 +522,9 @@ func (f *fitter) parameters(r *Result, sp *spectrum, scale float64) {
 	if r.Status != Converged && r.Status != Singular {
 		r.warn("the fit did not converge: %s", r.Reason)
 		near := &spectrum{idx: sp.idx, norm: sp.norm, s: sp.s, v: sp.v, null: sp.faint()}
-		sentences, _ := f.confounded(near)
-		for _, c := range sentences {
-			r.warn("where the search ended, to within %.0g of the readings' response, %s", faintLimit, c)
+		remarks, _ := f.confounded(near)
+		for _, c := range remarks {
+			r.Warnings = append(r.Warnings, c.within(fmt.Sprintf("where the search ended, to within %.0g of the readings' response, ", faintLimit), ""))
 		}
 	}
 

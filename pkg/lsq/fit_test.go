@@ -242,7 +242,7 @@ func TestConfounded(t *testing.T) {
 	for _, numeric := range []bool{false, true} {
 		p.Numeric = numeric
 		r := fit(t, p)
-		if r.Status != Singular || len(r.Confounded) != 1 || !strings.Contains(r.Confounded[0], "gain and area can't be told apart") {
+		if r.Status != Singular || len(r.Confounded) != 1 || !strings.Contains(r.Confounded[0].Error(), "gain and area can't be told apart") {
 			t.Fatalf("status %s, confounded %q", r.Status, r.Confounded)
 		}
 		if !math.IsNaN(r.U[0]) || !math.IsNaN(r.U[1]) || math.IsNaN(r.U[2]) {

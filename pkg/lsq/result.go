@@ -53,10 +53,10 @@ type Result struct {
 	Restarts    int     // searches begun from scaled starts after the first stalled
 	Condition   float64 // condition number of the whitened Jacobian with columns scaled to unit length
 
-	Confounded        []string // one sentence per direction the readings can't resolve
-	AtBound           []int    // parameters held at a bound
-	ScaledByResiduals bool     // Covariance was scaled by s² because U is unknown
-	ResidualsVanish   bool     // s² of ScaledByResiduals is rounding alone: it and all that follows from it mean nothing
+	Confounded        []*Remark // one sentence per direction the readings can't resolve
+	AtBound           []int     // parameters held at a bound
+	ScaledByResiduals bool      // Covariance was scaled by s² because U is unknown
+	ResidualsVanish   bool      // s² of ScaledByResiduals is rounding alone: it and all that follows from it mean nothing
 
 	Fitted        []float64 // f at the estimates, unit of Y
 	Residuals     []float64 // y − f, unit of Y

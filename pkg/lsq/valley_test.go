@@ -52,7 +52,7 @@ func TestSingularFromTheStart(t *testing.T) {
 		if r.Status != Singular || r.Restarts != 0 {
 			t.Errorf("status %v (%s) after %d restarts, want singular after none", r.Status, r.Reason, r.Restarts)
 		}
-		if len(r.Confounded) != 1 || !strings.Contains(r.Confounded[0], "permittivity and stray_capacitance can't be told apart") {
+		if len(r.Confounded) != 1 || !strings.Contains(r.Confounded[0].Error(), "permittivity and stray_capacitance can't be told apart") {
 			t.Errorf("confounded: %q", r.Confounded)
 		}
 		if !math.IsNaN(r.U[0]) || !math.IsNaN(r.U[2]) || len(r.AtBound) != 0 {

@@ -1,6 +1,8 @@
 package reduce
 
 import (
+	"errors"
+
 	"example.org/guardring/pkg/bench"
 )
 
@@ -19,7 +21,10 @@ func Check(b *bench.Bench) (*Summary, error) {
 	if err != nil {
 		return nil, err
 	}
-	s := &Summary{Rows: len(c.record), Warnings: append(append([]error(nil), b.Warnings...), c.warnings...)}
+	s := &Summary{Rows: len(c.record), Warnings: append([]error(nil), b.Warnings...)}
+	for _, w := range c.warnings {
+		s.Warnings = append(s.Warnings, errors.New(c.words(w)))
+	}
 	q := append([]float64(nil), c.q...)
 	for k, f := range c.free {
 		s.Estimated = append(s.Estimated, c.b.Scalars[f].Name)

@@ -2,6 +2,7 @@ package reduce
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"math"
 	"path"
@@ -24,7 +25,7 @@ type formulaOutcome struct {
 	chi2, p, birge, rss, sd float64
 	condition               float64
 	dof, iterations         int
-	confounded              []string
+	confounded              []*lsq.Remark
 	scaled, vanish          bool
 	warnings                []error
 }
@@ -74,11 +75,28 @@ func (d *fitData) outcome(o *formulaOutcome, rows *Rows) *FormulaFit {
 		rows.Predictors = append(rows.Predictors, d.x[k])
 	}
 	f.Rows = *rows
-	for _, w := range append(append([]error(nil), d.warnings...), o.warnings...) {
+	for _, w := range d.warnings {
+		f.warn(w)
+	}
+	for _, w := range o.warnings {
+		if r := (*lsq.Remark)(nil); errors.As(w, &r) {
+			w = errors.New(d.remark(r))
+		}
 		f.warn(w)
 	}
 	d.curve(f, o)
 	return f
+}
+
+// remark writes what the estimator says of parameters, with their units.
+func (d *fitData) remark(r *lsq.Remark) string {
+	return r.In(func(j int) string { return d.params[j] }, func(j int, x float64) string {
+		u, err := si.ParseUnit(d.units[j])
+		if d.units[j] == "" || err != nil { // not known: SI, as the starts
+			return fmt.Sprintf("%.6g", x)
+		}
+		return amount(x, u)
+	})
 }
 
 func (f *FormulaFit) warn(w error) {
@@ -106,11 +124,11 @@ func (d *fitData) why(o *formulaOutcome, j int) string {
 		return "the noise is not stated, and the residuals vanish to rounding, so that they do not tell it"
 	case len(o.confounded) > 0:
 		for _, c := range o.confounded {
-			if slices.Contains(strings.FieldsFunc(c, func(r rune) bool { return strings.ContainsRune(" ,;:.()", r) }), d.params[j]) {
-				return c
+			if slices.Contains(c.Parameters, j) {
+				return d.remark(c)
 			}
 		}
-		return o.confounded[0]
+		return d.remark(o.confounded[0])
 	}
 	return "the fit ended as " + o.status.String() + ": " + strings.TrimSuffix(o.reason, ".")
 }

@@ -38,6 +38,8 @@ type Result struct {
 	Trials [][]float64
 	// Settings are those of the run.
 	Settings Settings
+
+	words func(error) string // puts a warning into words; nil: as it stands
 }
 
 // Run reduces a bench. A fit that is singular or has not converged is no error:
@@ -84,7 +86,7 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 	if err != nil {
 		return nil, c.placed(err)
 	}
-	res := &Result{Bench: b, Settings: s}
+	res := &Result{Bench: b, Settings: s, words: c.words}
 	res.Record = c.header(s)
 	res.Record.Fit = c.fitRecord(fit)
 	res.warn(b.Warnings...)
@@ -181,7 +183,7 @@ func judge(r *Record) []error {
 	}
 	if len(r.Diagnosis.Causes) > 0 {
 		c := r.Diagnosis.Causes[0]
-		w = append(w, fmt.Errorf("the residuals carry the signature of %s (p %s); it has not been applied", c.Name, equals(float64(c.PValue))))
+		w = append(w, fmt.Errorf("the residuals carry the signature of %s (%s; p %s); it has not been applied", c.Name, c.Doc, equals(float64(c.PValue))))
 	}
 	return w
 }
@@ -236,7 +238,11 @@ func defined(y []float64) []float64 {
 
 func (r *Result) warn(errs ...error) {
 	for _, e := range errs {
-		r.Record.Warnings = append(r.Record.Warnings, e.Error())
+		text := e.Error()
+		if r.words != nil {
+			text = r.words(e)
+		}
+		r.Record.Warnings = append(r.Record.Warnings, text)
 	}
 }
 

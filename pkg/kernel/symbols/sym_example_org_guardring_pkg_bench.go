@@ -25,6 +25,7 @@ func init() {
 			"ReadCSV":        r.ValueOf(p0_bench.ReadCSV),
 			"Reading":        r.ValueOf(p0_bench.Reading),
 			"Starter":        r.ValueOf(p0_bench.Starter),
+			"Words":          r.ValueOf(p0_bench.Words),
 			"WrongDimension": r.ValueOf(p0_bench.WrongDimension),
 			"Zero":           r.ValueOf(p0_bench.Zero),
 		},

@@ -46,6 +46,7 @@ func init() {
 			"Problem":           r.TypeOf((*p0_lsq.Problem)(nil)).Elem(),
 			"Profile":           r.TypeOf((*p0_lsq.Profile)(nil)).Elem(),
 			"Refitter":          r.TypeOf((*p0_lsq.Refitter)(nil)).Elem(),
+			"Remark":            r.TypeOf((*p0_lsq.Remark)(nil)).Elem(),
 			"Result":            r.TypeOf((*p0_lsq.Result)(nil)).Elem(),
 			"Robust":            r.TypeOf((*p0_lsq.Robust)(nil)).Elem(),
 			"RobustKind":        r.TypeOf((*p0_lsq.RobustKind)(nil)).Elem(),
