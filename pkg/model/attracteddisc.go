@@ -35,7 +35,7 @@ var AttractedDisc = register(&Kind{
 		{Table: "quantities", Name: "guard_gap", Doc: "width of the gap between disc and guard ring; a guarded disc needs it", Unit: si.MustUnit("mm"), Positive: true, Part: "electrodes"},
 		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy (default: the disc alone)", Unit: si.MustUnit("pF"), Part: "safety"},
 		electricConstant,
-		{Table: "corrections.guard_gap", Name: "model", Doc: "relative error of the deep-slot formula of the guard gap", Unit: si.MustUnit("1"), Default: gum.Normal(0, 5e-5), Part: "electrodes"},
+		{Table: "corrections.guard_gap", Name: "model", Doc: "relative error of the deep-slot formula of the guard gap", Unit: si.MustUnit("1"), Default: gum.Normal(0, field.SlotAreaUncertainty), Part: "electrodes"},
 		{Table: "corrections.wedge", Name: "half_difference", Doc: "plates not parallel: half the difference of spacing across the disc", Unit: si.MustUnit("um"), Required: true, Squared: true, Part: "electrodes"},
 		{Table: "corrections.coplanarity", Name: "step", Doc: "height of the disc above the plane of the guard", Unit: si.MustUnit("um"), Required: true, Part: "electrodes"},
 		{Table: "corrections.coplanarity", Name: "edge", Doc: "coefficient of the edge term, in step/radius", Unit: si.MustUnit("1"), Default: gum.Rectangular(0, 2), Part: "electrodes"},
@@ -57,22 +57,10 @@ var AttractedDisc = register(&Kind{
 	Prepare: prepareAttractedDisc,
 })
 
-// Scalars that several kinds share.
-var (
-	electricConstant = Scalar{Table: "quantities", Name: "electric_constant", Doc: "vacuum permittivity (CODATA 2022)",
-		Unit: si.MustUnit("F/m"), Default: gum.Normal(si.Eps0, si.UEps0), Positive: true, Part: "constants"}
-	temperature = Scalar{Table: "environment", Name: "temperature", Doc: "temperature of the air", Unit: si.MustUnit("degC"),
-		Default: gum.Exactly(293.15), Positive: true, Part: "air"}
-	pressure = Scalar{Table: "environment", Name: "pressure", Doc: "pressure of the air", Unit: si.MustUnit("hPa"),
-		Default: gum.Exactly(101325), Positive: true, Part: "air"}
-	humidity = Scalar{Table: "environment", Name: "humidity", Doc: "relative humidity of the air", Unit: si.MustUnit("%"),
-		Default: gum.Exactly(0.5), Part: "air"}
-)
-
 func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 	at := func(key string) int { return k.Scalar(key) }
 	iEps, iVc, iOff, iR, iG := at("permittivity"), at("contact_potential"), at("gap_offset"), at("disc_radius"), at("guard_gap")
-	iCap, iE0 := at("bench_capacitance"), at("electric_constant")
+	iCap := at("bench_capacitance")
 	iModel, iWedge := at("corrections.guard_gap.model"), at("corrections.wedge.half_difference")
 	iStep, iEdge := at("corrections.coplanarity.step"), at("corrections.coplanarity.edge")
 	iT, iP, iH := at("environment.temperature"), at("environment.pressure"), at("environment.humidity")
@@ -195,28 +183,11 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 		return true
 	}
 	m.Start = func(q []float64, free []int, x [][]float64, y []float64) ([]float64, error) {
-		// With everything else at its stated value the response is proportional
-		// to the permittivity: a regression through the origin.
-		w := append([]float64(nil), q...)
-		w[iEps] = 1
-		f := make([]float64, len(y))
-		m.Block(w, x, 0, len(y), nil, f, nil)
-		var sfy, sff float64
-		for i, v := range f {
-			sfy += v * y[i]
-			sff += v * v
+		eps := m.proportional(q, iEps, x, y)
+		if !(eps > 0) {
+			return nil, fmt.Errorf("readings of %s: no attraction at any voltage (rough permittivity %.3g F/m); check the sign and the zero of the channel", response, eps)
 		}
-		start := make([]float64, len(free))
-		for k, j := range free {
-			start[k] = q[j]
-			if j == iEps {
-				start[k] = sfy / sff
-				if !(start[k] > 0) {
-					return nil, fmt.Errorf("readings of %s: no attraction at any voltage (rough permittivity %.3g F/m); check the sign and the zero of the channel", response, start[k])
-				}
-			}
-		}
-		return start, nil
+		return startAt(q, free, iEps, eps), nil
 	}
 	m.Check = func(q []float64, x [][]float64, y []float64) ([]error, error) {
 		var warn []error
@@ -236,76 +207,43 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 				warn = append(warn, fmt.Errorf("corrections.edge is off: at the edges of unguarded discs the field adds %.2g %% to the force at the largest gap", 100*part))
 			}
 		}
-		if guard && minGap < 5*q[iG] {
+		if guard && minGap < field.SlotMinimum*q[iG] {
 			return nil, fmt.Errorf("corrections.guard_gap: the deep-slot formula holds for gaps of at least 5 × guard_gap (%.4g mm); the smallest gap is %.4g mm; exclude those rows or switch the correction off and state its uncertainty",
-				5e3*q[iG], 1e3*minGap)
+				field.SlotMinimum*1e3*q[iG], 1e3*minGap)
 		}
-		if wedge && math.Sqrt(q[iWedge]) > 0.1*minGap {
+		if wedge && math.Sqrt(q[iWedge]) > field.WedgeLimit*minGap {
 			return nil, fmt.Errorf("corrections.wedge.half_difference: %.3g mm is more than a tenth of the smallest gap (%.3g mm); the expansion holds for small tilts", 1e3*math.Sqrt(q[iWedge]), 1e3*minGap)
 		}
 		if coplanar && math.Abs(q[iStep]) > 0.01*minGap {
 			warn = append(warn, fmt.Errorf("corrections.coplanarity.step: %.3g mm is more than 1 %% of the smallest gap (%.3g mm); the first-order correction may not suffice", 1e3*q[iStep], 1e3*minGap))
 		}
-		if s.On["air"] && q[iH] > 0.7 {
-			warn = append(warn, fmt.Errorf("environment.humidity: %.0f %% is above 70 %%, where surface leakage spoils such readings (common practice)", 100*q[iH]))
+		if s.On["air"] {
+			warn = append(warn, dampAir(q[iH])...)
 		}
 		return append(warn, breakdownWarning(m.Hazard(q, x))...), nil
 	}
 	m.Hazard = func(q []float64, x [][]float64) Hazard {
-		h := Hazard{}
-		delta, err := field.RelativeAirDensity(q[iT], q[iP])
-		if err != nil {
-			delta = 1 // the cautions stand even where the air is not known
-		}
-		worst := -1.0
+		h, worst := Hazard{}, -1.0
+		delta := airDensity(q[iT], q[iP])
 		for i, v := range x[0] {
-			d := x[1][i] + q[iOff]
-			if d <= 0 {
-				continue
-			}
-			c := math.Max(q[iCap], si.Eps0*math.Pi*q[iR]*q[iR]/d)
-			v = math.Abs(v)
-			h.Voltage = math.Max(h.Voltage, v)
-			h.Energy = math.Max(h.Energy, field.StoredEnergy(c, v))
-			h.Charge = math.Max(h.Charge, c*v)
-			e := v / d
-			b, err := field.BreakdownField(d, delta)
-			if err == nil && e/b > worst {
-				worst = e / b
-				h.Field, h.Breakdown, h.Row, h.HasBreakdown = e, b, i, true
+			if d := x[1][i] + q[iOff]; d > 0 {
+				h.meet(i, v, v/d, d, math.Max(q[iCap], si.Eps0*math.Pi*q[iR]*q[iR]/d), delta, &worst)
 			}
 		}
 		return h
 	}
-	m.Measurands = []Measurand{
-		{Name: "permittivity", Doc: "permittivity of the gap", Unit: si.MustUnit("pF/m"),
-			Value: func(q []jet.Jet) jet.Jet { return q[iEps] }},
-		{Name: "relative_permittivity", Doc: "permittivity of the gap over the electric constant", Unit: si.MustUnit("1"),
-			Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(q[iE0]) }},
-	}
-	if s.On["air"] {
-		m.Factors = map[string]func(q []jet.Jet) jet.Jet{
-			"air": func(q []jet.Jet) jet.Jet { return field.AirPermittivityJet(q[iT], q[iP], q[iH]).Plus(-1) }}
-		m.Measurands = append(m.Measurands, Measurand{
-			Name: "vacuum_permittivity", Doc: "permittivity of the gap over that of its moist air relative to vacuum", Unit: si.MustUnit("pF/m"),
-			Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(field.AirPermittivityJet(q[iT], q[iP], q[iH])) }})
-	}
+	m.gapResults(k, s.On["air"])
 	m.Causes = []Cause{
 		{Name: "wedge", Doc: "grows as 1/gap² relative to the force: plates not parallel",
 			Signature: func(q, x []float64, f, t float64) float64 { d := x[1] + q[iOff]; return f / (d * d) }},
 		{Name: "contact_potential", Doc: "changes sign with the polarity and falls as 1/voltage relative to the force",
-			Signature: func(q, x []float64, f, t float64) float64 {
-				if v := x[0] - q[iVc]; v != 0 {
-					return f / v
-				}
-				return 0
-			}},
+			Signature: perVolt(0, iVc)},
 		{Name: "gap_offset", Doc: "grows as 1/gap relative to the force: zero of the spacing scale",
 			Signature: func(q, x []float64, f, t float64) float64 { return f / (x[1] + q[iOff]) }},
 		{Name: "zero", Doc: "the same at every voltage: zero of the balance",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 }},
+			Signature: always},
 		{Name: "drift", Doc: "proportional to time, whatever the voltage",
-			Signature: func(q, x []float64, f, t float64) float64 { return t }},
+			Signature: withTime},
 		{Name: "edge", Doc: "grows with the gap relative to the force: field beyond the guard",
 			Signature: func(q, x []float64, f, t float64) float64 { return f * (x[1] + q[iOff]) }},
 	}

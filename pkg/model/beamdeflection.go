@@ -43,7 +43,7 @@ var BeamDeflection = register(&Kind{
 	},
 	Options: []Option{
 		{Key: "particle", Doc: "of the beam; an ion has quantities.rest_energy", Values: []string{"electron", "proton", "ion"}, Default: "electron"},
-		{Key: "drive.kind", Doc: "how the plates are driven", Values: []string{"balanced", "one-side-earthed"}, Default: "balanced"},
+		{Key: "drive.kind", Doc: "how the plates are driven", Values: []string{driveBalanced, driveOneEarthed}, Default: driveBalanced},
 	},
 	Prepare: prepareBeamDeflection,
 })
@@ -100,7 +100,7 @@ func prepareBeamDeflection(k *Kind, s *Setup) (*Model, error) {
 	iK, iRef, iVc, iLen, iGap := k.Scalar("field_per_volt"), k.Scalar("reference_voltage"), k.Scalar("contact_potential"), k.Scalar("plate_length"), k.Scalar("plate_gap")
 	iDrift, iU, iRest, iCap, iFringe := k.Scalar("drift_length"), k.Scalar("accelerating_voltage"), k.Scalar("rest_energy"), k.Scalar("bench_capacitance"), k.Scalar("corrections.fringe.length")
 	fringe, relativity := s.On["fringe"], s.On["relativity"]
-	if s.Options["drive.kind"] == "one-side-earthed" {
+	if s.Options["drive.kind"] == driveOneEarthed {
 		return nil, fmt.Errorf("drive.kind: between plates with one side earthed the beam's energy changes by half of their voltage, and so does its path; drive the plates balanced about the potential of the beam's last electrode")
 	}
 	rest := electronRest
@@ -273,10 +273,7 @@ func prepareBeamDeflection(k *Kind, s *Setup) (*Model, error) {
 		w := append([]float64(nil), q...)
 		w[iK] = start[0]
 		var warn []error
-		qj, xj := make([]jet.Jet, len(w)), make([]jet.Jet, len(x))
-		for i, v := range w {
-			qj[i] = jet.Const(v)
-		}
+		qj, xj := constants(w), make([]jet.Jet, len(x))
 		slow := math.Inf(1)
 		for i := range y {
 			for p := range x {
@@ -335,18 +332,13 @@ func prepareBeamDeflection(k *Kind, s *Setup) (*Model, error) {
 	}
 	m.Causes = []Cause{
 		{Name: "contact_potential", Doc: "the same for both polarities: contact potential",
-			Signature: func(q, x []float64, f, t float64) float64 {
-				if v := x[0] - q[iVc]; v != 0 {
-					return f / v
-				}
-				return 0
-			}},
+			Signature: perVolt(0, iVc)},
 		{Name: "uniformity", Doc: "grows as the cube of the deflection: a field that is not uniform off the axis, or a scale that is not linear",
 			Signature: func(q, x []float64, f, t float64) float64 { return f * f * f }},
 		{Name: "zero", Doc: "the same at every voltage: zero of the scale, or of the beam's axis",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 }},
+			Signature: always},
 		{Name: "drift", Doc: "proportional to time, whatever the voltage: drift of the axis",
-			Signature: func(q, x []float64, f, t float64) float64 { return t }},
+			Signature: withTime},
 	}
 	if pU >= 0 {
 		m.Causes = append(m.Causes, Cause{Name: "beam_voltage", Doc: "falls as the beam's voltage, relative to the deflection: zero of that voltage",

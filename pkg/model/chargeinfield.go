@@ -360,18 +360,13 @@ func prepareBody(k *Kind, s *Setup, seekCharge bool) (*Model, error) {
 	}
 	m.Causes = []Cause{
 		{Name: "contact_potential", Doc: "the same for both polarities: contact potential",
-			Signature: func(q, x []float64, f, t float64) float64 {
-				if v := x[0] - q[iVc]; v != 0 {
-					return f / v
-				}
-				return 0
-			}},
+			Signature: perVolt(0, iVc)},
 		{Name: "leakage", Doc: "proportional to force and time: the body loses charge",
 			Signature: func(q, x []float64, f, t float64) float64 { return f * t }},
 		{Name: "zero", Doc: "the same at every voltage: zero of the force, or the image force of a body off the mid-plane",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 }},
+			Signature: always},
 		{Name: "drift", Doc: "proportional to time, whatever the voltage",
-			Signature: func(q, x []float64, f, t float64) float64 { return t }},
+			Signature: withTime},
 	}
 	if pGap >= 0 {
 		gap := func(q, x []float64) float64 { return x[pGap] + q[iOff] }

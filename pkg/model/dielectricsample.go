@@ -360,7 +360,7 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 		{Name: "thickness", Doc: "grows with thickness over electric spacing: thickness of the sheets wrong by one factor",
 			Signature: func(q, x []float64, f, t float64) float64 { return f * thick(q, x) / spacing(q, x) }},
 		{Name: "drift", Doc: "proportional to time: drift of the zero",
-			Signature: func(q, x []float64, f, t float64) float64 { return t }},
+			Signature: withTime},
 	}
 	if charge {
 		m.Causes = append(m.Causes, chargeCauses(pV, pHold, spacing)...)
@@ -375,7 +375,7 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 		}
 	} else {
 		m.Causes = append(m.Causes, Cause{Name: "stray_capacitance", Doc: "the same in every gap: capacitance besides the gap",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 }})
+			Signature: always})
 	}
 	return m, nil
 }

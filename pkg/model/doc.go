@@ -5,11 +5,11 @@
 // read, row by row), its scalars (one number for the whole bench: dimensions,
 // environment, the inputs of corrections, and the parameters that are fitted),
 // its corrections, its options, its measurands, and Prepare, which turns one
-// bench's choices into a Predictor. Everything above this package (reading a
+// bench's choices into a Model. Everything above this package (reading a
 // bench file, fitting, the budget, simulation, reports) works from that
 // description; a new kind needs no change elsewhere.
 //
-// A Predictor gives the true value of the response channel from the scalars and
+// A Model gives the true value of the response channel from the scalars and
 // the true values of the predictor channels as jets (package jet), so that one
 // formula yields the value, the sensitivity to every parameter and shared input
 // and the mixed second derivatives that the reduction needs. The formulas

@@ -10,12 +10,10 @@ import (
 	"example.org/guardring/pkg/si"
 )
 
-// The words of the options of the field meter.
+// The words of the option mounting.kind.
 const (
-	driveBalanced   = "balanced"
-	driveOneEarthed = "one-side-earthed"
-	mountFreeBody   = "free-body"
-	mountFlush      = "flush"
+	mountFreeBody = "free-body"
+	mountFlush    = "flush"
 )
 
 // FieldMeter is the calibration of an electric-field meter in the field between
@@ -33,8 +31,7 @@ var FieldMeter = register(&Kind{
 		{Name: "indication", Doc: "field that the meter indicates", Unit: si.MustUnit("kV/m"), Role: Response},
 	},
 	Scalars: []Scalar{
-		{Table: "quantities", Name: "response", Doc: "indicated over reference field, K", Unit: si.MustUnit("1"), Sought: true, Own: true, Part: "result"},
-		{Table: "quantities", Name: "zero_offset", Doc: "field that the meter adds to the true one, E₀", Unit: si.MustUnit("V/m"), Adjustable: true, Own: true, Part: "meter"},
+		responseScalar, zeroOffsetScalar,
 		{Table: "quantities", Name: "contact_potential", Doc: "contact potential and surface charge, subtracted from the voltage", Unit: si.MustUnit("V"), Adjustable: true, Part: "plates"},
 		{Table: "quantities", Name: "gap_offset", Doc: "error of the spacing, added to the reading", Unit: si.MustUnit("mm"), Adjustable: true, Part: "plates"},
 		{Table: "quantities", Name: "full_scale", Doc: "end of the range, for the non-linearity (default: the largest level)", Unit: si.MustUnit("kV/m"), Part: "meter"},
@@ -206,17 +203,9 @@ func prepareFieldMeter(k *Kind, s *Setup) (*Model, error) {
 		if !(sxx > 0) || sxy == 0 {
 			return nil, fmt.Errorf("readings of indication: no response to the field at any voltage; check the columns voltage and indication")
 		}
-		start := make([]float64, len(free))
-		for k, j := range free {
-			start[k] = q[j]
-			if j == iK {
-				start[k] = sxy / sxx
-			}
-		}
-		return start, nil
+		return startAt(q, free, iK, sxy/sxx), nil
 	}
 	m.Check = func(q []float64, x [][]float64, y []float64) ([]error, error) {
-		var warn []error
 		for i, reading := range x[1] {
 			d := reading + q[iOff]
 			if !(d > 0) {
@@ -249,32 +238,14 @@ func prepareFieldMeter(k *Kind, s *Setup) (*Model, error) {
 				}
 			}
 		}
-		return append(warn, breakdownWarning(m.Hazard(q, x))...), nil
+		return breakdownWarning(m.Hazard(q, x)), nil
 	}
 	m.Hazard = func(q []float64, x [][]float64) Hazard {
-		h := Hazard{}
-		delta, err := field.RelativeAirDensity(q[iT], q[iP])
-		if err != nil {
-			delta = 1 // the cautions stand even where the air is not known
-		}
-		worst := -1.0
+		h, worst := Hazard{}, -1.0
+		delta := airDensity(q[iT], q[iP])
 		for i, v := range x[0] {
-			d := x[1][i] + q[iOff]
-			if d <= 0 {
-				continue
-			}
-			c := math.Max(q[iCap], si.Eps0*q[iWidth]*q[iWidth]/d)
-			v = math.Abs(v)
-			h.Voltage = math.Max(h.Voltage, v)
-			h.Energy = math.Max(h.Energy, field.StoredEnergy(c, v))
-			h.Charge = math.Max(h.Charge, c*v)
-			e := v / d
-			b, err := field.BreakdownField(d, delta)
-			if err == nil && e/b > worst {
-				worst = e / b
-				h.Field, h.Breakdown, h.Row, h.HasBreakdown = e, b, i, true
-			} else if err != nil {
-				h.Field = math.Max(h.Field, e)
+			if d := x[1][i] + q[iOff]; d > 0 {
+				h.meet(i, v, v/d, d, math.Max(q[iCap], si.Eps0*q[iWidth]*q[iWidth]/d), delta, &worst)
 			}
 		}
 		return h
@@ -289,20 +260,10 @@ func prepareFieldMeter(k *Kind, s *Setup) (*Model, error) {
 		m.Measurands = append(m.Measurands, Measurand{Name: "zero_offset", Doc: "field that the meter adds to the true one", Unit: si.MustUnit("V/m"),
 			Value: func(q []jet.Jet) jet.Jet { return q[iZero] }})
 	}
-	level := func(q, x []float64) float64 {
-		qj, xj := make([]jet.Jet, len(q)), make([]jet.Jet, len(x))
-		for i, v := range q {
-			qj[i] = jet.Const(v)
-		}
-		for i, v := range x {
-			xj[i] = jet.Const(v)
-		}
-		return reference(qj, xj).V
-	}
 	m.Curve = &Curve{Name: "correction_factor", Doc: "reference over indicated field", Unit: si.MustUnit("1"),
 		Level: "reference field", LevelUnit: si.MustUnit("kV/m"), FullScale: "full_scale",
 		Value:   func(q []jet.Jet, e jet.Jet) jet.Jet { return e.Div(e.Add(q[iZero]).Mul(q[iK])) },
-		LevelOf: level,
+		LevelOf: func(q, x []float64) float64 { return reference(constants(q), constants(x)).V },
 		Inverse: true,
 	}
 	m.Causes = []Cause{
@@ -311,7 +272,7 @@ func prepareFieldMeter(k *Kind, s *Setup) (*Model, error) {
 		{Name: "gap_offset", Doc: "differs between the spacings in proportion to 1/gap: error of the spacing",
 			Signature: func(q, x []float64, f, t float64) float64 { return f / (x[1] + q[iOff]) }},
 		{Name: "zero_offset", Doc: "the same at every field: zero of the meter",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 }},
+			Signature: always},
 		{Name: "drift", Doc: "proportional to time and to the field: drift of the sensitivity",
 			Signature: func(q, x []float64, f, t float64) float64 { return f * t }},
 		{Name: "edge", Doc: "falls steeply with gap over width: field of the plates' edges",

@@ -6,7 +6,6 @@ import (
 	"strconv"
 
 	"example.org/guardring/pkg/field"
-	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/jet"
 	"example.org/guardring/pkg/si"
 )
@@ -279,52 +278,4 @@ func (r *forceReading) told(y float64) string {
 	}
 	y, unit = si.Prefixed(y, unit)
 	return strconv.FormatFloat(y, 'g', 4, 64) + " " + unit.String()
-}
-
-// leakScalars are the inputs of the leakage of one or two charges.
-var leakScalars = []Scalar{
-	{Table: "corrections.leakage", Name: "time_constant", Doc: "time constant with which the (first) charge is lost", Unit: si.MustUnit("s"), Required: true, Adjustable: true, Positive: true, Part: "charges"},
-	{Table: "corrections.leakage", Name: "rate_ratio", Doc: "leakage rate of the second charge over that of the first", Unit: si.MustUnit("1"), Default: gum.Exactly(1), Part: "charges"},
-}
-
-// airMedium adds what follows for vacuum from the permittivity of moist air.
-type airMedium struct{ iEps, iE0, iT, iP, iH int }
-
-func newAirMedium(k *Kind) airMedium {
-	return airMedium{k.Scalar("permittivity"), k.Scalar("electric_constant"), k.Scalar("environment.temperature"), k.Scalar("environment.pressure"), k.Scalar("environment.humidity")}
-}
-
-// measurands are the permittivity in its forms and Coulomb's constant 1/4πε.
-func (a airMedium) measurands(m *Model, air bool) {
-	m.Measurands = []Measurand{
-		{Name: "permittivity", Doc: "permittivity of the medium", Unit: si.MustUnit("pF/m"),
-			Value: func(q []jet.Jet) jet.Jet { return q[a.iEps] }},
-		{Name: "relative_permittivity", Doc: "permittivity of the medium over the electric constant", Unit: si.MustUnit("1"),
-			Value: func(q []jet.Jet) jet.Jet { return q[a.iEps].Div(q[a.iE0]) }},
-		{Name: "coulomb_constant", Doc: "1/4πε of the medium", Unit: si.MustUnit("N m2/C2"),
-			Value: func(q []jet.Jet) jet.Jet { return q[a.iEps].Inv().Scale(1 / (4 * math.Pi)) }},
-	}
-	if !air {
-		return
-	}
-	air1 := func(q []jet.Jet) jet.Jet { return field.AirPermittivityJet(q[a.iT], q[a.iP], q[a.iH]) }
-	m.Factors = map[string]func(q []jet.Jet) jet.Jet{"air": func(q []jet.Jet) jet.Jet { return air1(q).Plus(-1) }}
-	m.Measurands = append(m.Measurands,
-		Measurand{Name: "vacuum_permittivity", Doc: "permittivity of the medium over that of its moist air relative to vacuum", Unit: si.MustUnit("pF/m"),
-			Value: func(q []jet.Jet) jet.Jet { return q[a.iEps].Div(air1(q)) }},
-		Measurand{Name: "vacuum_coulomb_constant", Doc: "1/4πε with the permittivity of vacuum so found", Unit: si.MustUnit("N m2/C2"),
-			Value: func(q []jet.Jet) jet.Jet { return air1(q).Div(q[a.iEps]).Scale(1 / (4 * math.Pi)) }})
-}
-
-// mediumScalars are the permittivity sought and what leads from it to vacuum.
-var mediumScalars = []Scalar{
-	{Table: "quantities", Name: "permittivity", Doc: "permittivity of the medium", Unit: si.MustUnit("pF/m"), Sought: true, Positive: true, Part: "result"},
-	electricConstant, temperature, pressure, humidity,
-}
-
-// meetSphere takes the surface field of a sphere of radius a with charge q into
-// the hazard, judged against the breakdown of a uniform gap of one radius. The
-// field falls off within that distance, so this is a warning and no more.
-func (h *Hazard) meetSphere(row int, q, a, delta float64, worst *float64) {
-	h.meet(row, 0, q/(4*math.Pi*si.Eps0*a*a), a, 0, delta, worst)
 }

@@ -4,7 +4,6 @@ import (
 	"fmt"
 	"math"
 
-	"example.org/guardring/pkg/field"
 	"example.org/guardring/pkg/jet"
 	"example.org/guardring/pkg/si"
 )
@@ -44,35 +43,6 @@ var PlateCharge = register(&Kind{
 	}, electrometerCorrections...),
 	Prepare: preparePlateCharge,
 })
-
-// chargeChannels sorts out the channels of a bench that reads a charge or a
-// capacitance: the response, and the places of voltage and hold time among the
-// predictors behind those listed (−1: none).
-func chargeChannels(s *Setup, predictors []string) (response string, all []string, voltage, hold int, err error) {
-	response, all, voltage, hold = "capacitance", predictors, -1, -1
-	if s.Channels["charge"] {
-		response = "charge"
-		if !s.Channels["voltage"] {
-			return "", nil, 0, 0, fmt.Errorf("channels.voltage: a charge needs the voltage that it belongs to; name its column, or give channels.capacitance instead of channels.charge")
-		}
-		voltage = len(all)
-		all = append(all, "voltage")
-	} else if s.Given["contact_potential"] {
-		return "", nil, 0, 0, fmt.Errorf("quantities.contact_potential: does not act on a capacitance; leave it out")
-	} else if s.Channels["voltage"] {
-		// Taken for the cautions; the capacitance does not depend on it.
-		voltage = len(all)
-		all = append(all, "voltage")
-	}
-	if s.Channels["hold"] {
-		if response == "capacitance" {
-			return "", nil, 0, 0, fmt.Errorf("channels.hold: a capacitance has no hold time; leave the channel out")
-		}
-		hold = len(all)
-		all = append(all, "hold")
-	}
-	return response, all, voltage, hold, nil
-}
 
 func preparePlateCharge(k *Kind, s *Setup) (*Model, error) {
 	iEps, iVc, iOff, iCs := k.Scalar("permittivity"), k.Scalar("contact_potential"), k.Scalar("gap_offset"), k.Scalar("stray_capacitance")
@@ -193,14 +163,7 @@ func preparePlateCharge(k *Kind, s *Setup) (*Model, error) {
 		}
 		return h
 	}
-	m.Measurands = gapMeasurands(iEps, g)
-	if s.On["air"] {
-		m.Factors = map[string]func(q []jet.Jet) jet.Jet{
-			"air": func(q []jet.Jet) jet.Jet { return field.AirPermittivityJet(q[g.iT], q[g.iP], q[g.iH]).Plus(-1) }}
-		m.Measurands = append(m.Measurands, Measurand{
-			Name: "vacuum_permittivity", Doc: "permittivity of the gap over that of its moist air relative to vacuum", Unit: si.MustUnit("pF/m"),
-			Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(field.AirPermittivityJet(q[g.iT], q[g.iP], q[g.iH])) }})
-	}
+	m.gapResults(k, s.On["air"])
 	gap := func(q, x []float64) float64 { return x[0] + q[iOff] }
 	m.Causes = []Cause{
 		{Name: "wedge", Doc: "grows as 1/gap² relative to the charge: plates not parallel",
@@ -210,60 +173,13 @@ func preparePlateCharge(k *Kind, s *Setup) (*Model, error) {
 		{Name: "edge", Doc: "grows with the gap relative to the charge: field beyond the guard",
 			Signature: func(q, x []float64, f, t float64) float64 { return f * gap(q, x) }},
 		{Name: "drift", Doc: "proportional to time: drift of the zero",
-			Signature: func(q, x []float64, f, t float64) float64 { return t }},
+			Signature: withTime},
 	}
 	if charge {
 		m.Causes = append(m.Causes, chargeCauses(pV, pHold, gap)...)
 	} else {
 		m.Causes = append(m.Causes, Cause{Name: "stray_capacitance", Doc: "the same at every gap: capacitance besides the gap",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 }})
+			Signature: always})
 	}
 	return m, nil
-}
-
-// chargeCauses are the marks that a charge reading leaves; spacing is the
-// electric spacing of a row.
-func chargeCauses(pV, pHold int, spacing func(q, x []float64) float64) []Cause {
-	causes := []Cause{
-		{Name: "stray_capacitance", Doc: "proportional to the voltage, whatever the gap: capacitance besides the gap",
-			Signature: func(q, x []float64, f, t float64) float64 { return x[pV] }},
-		{Name: "contact_potential", Doc: "the same for both polarities and falls with the gap: contact potential",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 / spacing(q, x) }},
-		{Name: "injection", Doc: "the same at every voltage: charge injected by the electrometer, or its zero",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 }},
-	}
-	if pHold >= 0 {
-		causes = append(causes,
-			Cause{Name: "offset_current", Doc: "proportional to the hold time, whatever the voltage: offset current",
-				Signature: func(q, x []float64, f, t float64) float64 { return x[pHold] }},
-			Cause{Name: "leakage", Doc: "proportional to charge and hold time: leakage",
-				Signature: func(q, x []float64, f, t float64) float64 { return f * x[pHold] }})
-	}
-	return causes
-}
-
-// check warns when the hold time is long against the time constant, and returns
-// nil when all is well.
-func (e *electrometer) check(q []float64, x [][]float64) error {
-	if !e.leakage {
-		return nil
-	}
-	longest := 0.0
-	for _, t := range x[e.hold] {
-		longest = math.Max(longest, t)
-	}
-	if u := longest / q[e.iTau]; u > 1 {
-		return fmt.Errorf("corrections.leakage: a hold of %.3g s loses %.0f %% of the charge (time constant %.3g s); dry the insulators or read sooner", longest, -100*math.Expm1(-u), q[e.iTau])
-	}
-	return nil
-}
-
-// gapMeasurands are the permittivity of the gap, absolute and relative.
-func gapMeasurands(iEps int, g *guarded) []Measurand {
-	return []Measurand{
-		{Name: "permittivity", Doc: "permittivity of the gap", Unit: si.MustUnit("pF/m"),
-			Value: func(q []jet.Jet) jet.Jet { return q[iEps] }},
-		{Name: "relative_permittivity", Doc: "permittivity of the gap over the electric constant", Unit: si.MustUnit("1"),
-			Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(q[g.iE0]) }},
-	}
 }

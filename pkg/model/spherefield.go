@@ -46,8 +46,7 @@ var SphereField = register(&Kind{
 		{Name: "indication", Doc: "field that the meter indicates, away from a positive sphere", Unit: si.MustUnit("kV/m"), Role: Response},
 	},
 	Scalars: []Scalar{
-		{Table: "quantities", Name: "response", Doc: "indicated over reference field, K", Unit: si.MustUnit("1"), Sought: true, Own: true, Part: "result"},
-		{Table: "quantities", Name: "zero_offset", Doc: "field that the meter adds to the true one, E₀", Unit: si.MustUnit("V/m"), Adjustable: true, Own: true, Part: "meter"},
+		responseScalar, zeroOffsetScalar,
 		{Table: "quantities", Name: "radius", Doc: "radius of the sphere", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "sphere"},
 		{Table: "quantities", Name: "contact_potential", Doc: "contact potential and surface charge, subtracted from the voltage", Unit: si.MustUnit("V"), Adjustable: true, Part: "sphere"},
 		{Table: "quantities", Name: "distance_offset", Doc: "zero error of the distance scale, added to the reading", Unit: si.MustUnit("mm"), Adjustable: true, Part: "distance"},
@@ -72,10 +71,15 @@ var SphereField = register(&Kind{
 const (
 	floorLimit     = 3.0
 	headFieldLimit = 0.3
-	unitCapacity   = 1 / (4 * math.Pi) // permittivity with which capacities are lengths
+)
+
+// unitCapacity is the permittivity (F/m) with which capacities are lengths.
+const unitCapacity = 1 / (4 * math.Pi)
+
+// The parts of (b/r)² and (b/r)⁴ in what a hemisphere reads; see SphereField.
+const (
 	thirdMultipole = 7. / 12
 	fifthMultipole = 11. / 24
-	distanceKey    = "channels.distance"
 )
 
 func prepareSphereField(k *Kind, s *Setup) (*Model, error) {
@@ -170,11 +174,11 @@ func prepareSphereField(k *Kind, s *Setup) (*Model, error) {
 			r := d + q[iOff]
 			switch {
 			case r <= q[iA]:
-				return nil, &RowError{Row: i, Err: fmt.Errorf("%s: %.6g mm from the centre lies inside the sphere, whose radius is %.6g mm and where there is no field", distanceKey, 1e3*r, 1e3*q[iA])}
+				return nil, &RowError{Row: i, Err: fmt.Errorf("channels.distance: %.6g mm from the centre lies inside the sphere, whose radius is %.6g mm and where there is no field", 1e3*r, 1e3*q[iA])}
 			case head && q[iHead] > headFieldLimit*r:
 				return nil, &RowError{Row: i, Err: fmt.Errorf("corrections.head.radius: %.4g mm is more than %.2g of the distance (%.4g mm); the correction holds for smaller heads: go farther away", 1e3*q[iHead], headFieldLimit, 1e3*r)}
 			case head && r < q[iA]+q[iHead]:
-				return nil, &RowError{Row: i, Err: fmt.Errorf("%s: %.4g mm from centre to centre; head and sphere overlap below %.4g mm", distanceKey, 1e3*r, 1e3*(q[iA]+q[iHead]))}
+				return nil, &RowError{Row: i, Err: fmt.Errorf("channels.distance: %.4g mm from centre to centre; head and sphere overlap below %.4g mm", 1e3*r, 1e3*(q[iA]+q[iHead]))}
 			case floor && r > q[iHeight]:
 				return nil, &RowError{Row: i, Err: fmt.Errorf("corrections.floor: the distance, %.4g m, is beyond the height above the floor, %.4g m; the correction holds for nearer heads", r, q[iHeight])}
 			}
@@ -214,11 +218,11 @@ func prepareSphereField(k *Kind, s *Setup) (*Model, error) {
 		{Name: "surroundings", Doc: "grows with the distance relative to the indication: floor, walls, operator",
 			Signature: func(q, x []float64, f, t float64) float64 { return f * distance(q, x) }},
 		{Name: "zero_offset", Doc: "the same at every field: zero of the meter",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 }},
+			Signature: always},
 		{Name: "nonlinearity", Doc: "as the square of the indication: a meter that is not linear",
 			Signature: func(q, x []float64, f, t float64) float64 { return f * math.Abs(f) }},
 		{Name: "drift", Doc: "proportional to time, whatever the field: drift of the zero",
-			Signature: func(q, x []float64, f, t float64) float64 { return t }},
+			Signature: withTime},
 	}
 	return m, nil
 }

@@ -3,6 +3,7 @@ package model
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"example.org/guardring/pkg/field"
 	"example.org/guardring/pkg/gum"
@@ -29,8 +30,8 @@ var SpherePair = register(&Kind{
 		Channel{Name: "voltage_1", Doc: "potential of the first sphere (connected)", Unit: si.MustUnit("kV"), Role: Predictor, Optional: true},
 		Channel{Name: "voltage_2", Doc: "potential of the second sphere (connected); without it both have that of the first", Unit: si.MustUnit("kV"), Role: Predictor, Optional: true}),
 		append(forceChannels("repulsion positive"), angleChannel)...),
-	Scalars:     join(mediumScalars, chargeScalars, radiiScalars, leakScalars, torsionScalars, balanceScalars),
-	Corrections: append([]Correction{}, append(pairCorrections, Correction{Name: "air", Doc: "moist air of the medium, for the permittivity of vacuum"})...),
+	Scalars:     slices.Concat(mediumScalars, chargeScalars, radiiScalars, leakScalars, torsionScalars, balanceScalars),
+	Corrections: slices.Concat(pairCorrections, []Correction{{Name: "air", Doc: "moist air of the medium, for the permittivity of vacuum"}}),
 	Options: []Option{torsionOption,
 		{Key: "connection", Doc: "isolated: the spheres keep their charges; connected: to sources that keep their potentials", Values: []string{isolated, connected}}},
 	Prepare: func(k *Kind, s *Setup) (*Model, error) { return prepareSpherePair(k, s, false) },
@@ -51,14 +52,14 @@ var SphereCharge = register(&Kind{
 		{Name: "mass", Doc: "indication of the balance, conventional mass, of the sign of the force; turn it round by a gain of -1", Unit: si.MustUnit("mg"), Role: Response},
 		angleChannel,
 	},
-	Scalars: join([]Scalar{
+	Scalars: slices.Concat([]Scalar{
 		{Table: "quantities", Name: "charge_1", Doc: "charge of the first sphere", Unit: si.MustUnit("nC"), Sought: true, Part: "result"},
 		{Table: "quantities", Name: "charge_2", Doc: "charge of the second sphere, when it is known and has no channel", Unit: si.MustUnit("nC"), Part: "charges"},
 		{Table: "quantities", Name: "charge_ratio", Doc: "charge of the second sphere over that of the first, when charge_2 is not stated: 1 after equal spheres have touched", Unit: si.MustUnit("1"), Default: gum.Exactly(1), Part: "charges"},
 		chargeScalars[2], electricConstant, temperature, pressure, humidity,
 		{Table: "quantities", Name: "relative_permittivity", Doc: "of the medium, in the place of the correction for air", Unit: si.MustUnit("1"), Default: gum.Exactly(1), Positive: true, Part: "medium"},
 	}, radiiScalars, leakScalars, torsionScalars, balanceScalars),
-	Corrections: append([]Correction{}, append(pairCorrections, Correction{Name: "air", Doc: "permittivity of moist air", Default: true})...),
+	Corrections: slices.Concat(pairCorrections, []Correction{{Name: "air", Doc: "permittivity of moist air", Default: true}}),
 	Options:     []Option{torsionOption},
 	Prepare:     func(k *Kind, s *Setup) (*Model, error) { return prepareSpherePair(k, s, true) },
 })
@@ -99,24 +100,6 @@ func newHeld(s *Setup) (predictors []string, h held, err error) {
 		predictors, h.p2 = append(predictors, "voltage_2"), 2
 	}
 	return predictors, h, nil
-}
-
-// knownMedium is the permittivity of a medium that is not sought, as jets and as
-// plain numbers.
-func knownMedium(k *Kind, s *Setup) (jets func(q []jet.Jet) jet.Jet, plain func(q []float64) float64, err error) {
-	iE0, iRel := k.Scalar("electric_constant"), k.Scalar("relative_permittivity")
-	iT, iP, iH := k.Scalar("environment.temperature"), k.Scalar("environment.pressure"), k.Scalar("environment.humidity")
-	if !s.On["air"] {
-		return func(q []jet.Jet) jet.Jet { return q[iE0].Mul(q[iRel]) }, func(q []float64) float64 { return q[iE0] * q[iRel] }, nil
-	}
-	if s.Given["relative_permittivity"] {
-		return nil, nil, fmt.Errorf("quantities.relative_permittivity: the correction for air gives it already; take one of the two out")
-	}
-	jets = func(q []jet.Jet) jet.Jet { return q[iE0].Mul(field.AirPermittivityJet(q[iT], q[iP], q[iH])) }
-	plain = func(q []float64) float64 {
-		return q[iE0] * field.AirPermittivityJet(jet.Const(q[iT]), jet.Const(q[iP]), jet.Const(q[iH])).V
-	}
-	return jets, plain, nil
 }
 
 func prepareSpherePair(k *Kind, s *Setup, seekCharge bool) (*Model, error) {
@@ -399,8 +382,8 @@ func heldCauses(iOff int, v held) []Cause {
 		{Name: "surroundings", Doc: "grows with the distance relative to the force: earthed surroundings",
 			Signature: func(q, x []float64, f, t float64) float64 { return f * (x[0] + q[iOff]) }},
 		{Name: "zero", Doc: "the same at every distance: zero of the balance",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 }},
+			Signature: always},
 		{Name: "drift", Doc: "proportional to time, whatever the force: drift of the balance",
-			Signature: func(q, x []float64, f, t float64) float64 { return t }},
+			Signature: withTime},
 	}
 }

@@ -3,6 +3,7 @@ package model
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"example.org/guardring/pkg/field"
 	"example.org/guardring/pkg/jet"
@@ -23,7 +24,7 @@ var SpherePlane = register(&Kind{
 		{Name: "charge", Doc: "charge of the sphere (isolated); not needed when quantities.charge is stated", Unit: si.MustUnit("nC"), Role: Predictor, Optional: true},
 		{Name: "elapsed", Doc: "time from the measurement of the charge to the reading; without it the charge is that at time zero of the rows", Unit: si.MustUnit("s"), Role: Predictor, Optional: true},
 	}, forceChannels("attraction positive")...),
-	Scalars: join(mediumScalars, []Scalar{
+	Scalars: slices.Concat(mediumScalars, []Scalar{
 		{Table: "quantities", Name: "radius", Doc: "radius of the sphere", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "sphere"},
 		{Table: "quantities", Name: "gap_offset", Doc: "zero error of the gap scale, added to the reading", Unit: si.MustUnit("um"), Adjustable: true, Part: "distance"},
 		{Table: "quantities", Name: "contact_potential", Doc: "contact potential, subtracted from the voltage", Unit: si.MustUnit("V"), Adjustable: true, Part: "sphere"},
@@ -229,18 +230,13 @@ func prepareSpherePlane(k *Kind, s *Setup) (*Model, error) {
 		{Name: "plane", Doc: "grows with the height relative to the force: a plane that is not wide, or earthed surroundings",
 			Signature: func(q, x []float64, f, t float64) float64 { return f * (gap(q, x) + q[iA]) }},
 		{Name: "zero", Doc: "the same at every gap: zero of the balance",
-			Signature: func(q, x []float64, f, t float64) float64 { return 1 }},
+			Signature: always},
 		{Name: "drift", Doc: "proportional to time, whatever the force: drift of the balance",
-			Signature: func(q, x []float64, f, t float64) float64 { return t }},
+			Signature: withTime},
 	}
 	if fixedV {
 		m.Causes = append(m.Causes, Cause{Name: "contact_potential", Doc: "changes sign with the polarity and falls as 1/voltage relative to the force: contact potential",
-			Signature: func(q, x []float64, f, t float64) float64 {
-				if v := x[pSource] - q[iVc]; v != 0 {
-					return f / v
-				}
-				return 0
-			}})
+			Signature: perVolt(pSource, iVc)})
 		return m, nil
 	}
 	name := "leakage"
