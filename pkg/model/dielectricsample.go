@@ -52,8 +52,7 @@ var DielectricSample = register(&Kind{
 })
 
 func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
-	iEr, iVc, iOff, iFilm := k.Scalar("sample_relative_permittivity"), k.Scalar("contact_potential"), k.Scalar("gap_offset"), k.Scalar("film_thickness")
-	iThick, iCs := k.Scalar("sample_thickness"), k.Scalar("stray_capacitance")
+	iEr, iOff, iFilm, iThick := k.Scalar("sample_relative_permittivity"), k.Scalar("gap_offset"), k.Scalar("film_thickness"), k.Scalar("sample_thickness")
 	contact := s.Options["electrodes"] == "contact"
 	var predictors []string
 	pGap, pThick := -1, -1
@@ -81,16 +80,11 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 	case !s.Given["sample_thickness"]:
 		return nil, fmt.Errorf("quantities.sample_thickness: is missing; state it, or name a column in channels.thickness")
 	}
-	response, predictors, pV, pHold, err := chargeChannels(s, predictors)
+	r, response, predictors, err := newPlateReading(k, s, predictors)
 	if err != nil {
 		return nil, err
 	}
-	charge := response == "charge"
 	g, err := newGuarded(k, s)
-	if err != nil {
-		return nil, err
-	}
-	e, err := newElectrometer(k, s, charge, pHold)
 	if err != nil {
 		return nil, err
 	}
@@ -135,14 +129,11 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 			d := x[pGap].Add(q[iOff])
 			c = q[g.iE0].Mul(ea).Mul(g.over(q, d.Sub(t).Add(t.Mul(ea).Div(q[iEr]))))
 		}
-		if !charge {
-			return c.Add(q[iCs])
-		}
-		return e.read(c.Mul(x[pV].Sub(q[iVc])).Add(q[iCs].Mul(x[pV])), q, x)
+		return r.jet(c, q, x)
 	}
 	m.Block = func(q []float64, x [][]float64, lo, hi int, wrt []int, f []float64, jac [][]float64) bool {
 		for _, j := range wrt {
-			if j != iEr && j != iVc && j != iOff && j != iFilm && j != iCs && j != e.iCurrent && j != e.iTau && j != e.iInj {
+			if j != iEr && j != iOff && j != iFilm && !r.acts(j) {
 				return false
 			}
 		}
@@ -150,7 +141,7 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 		ea := medium(q)
 		eps := q[g.iE0] * ea
 		ratio := ea / q[iEr]
-		vc, off, cs, t := q[iVc], q[iOff], q[iCs], q[iThick]
+		off, t := q[iOff], q[iThick]
 		for i := lo; i < hi; i++ {
 			if pThick >= 0 {
 				t = x[pThick][i]
@@ -167,49 +158,20 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 			} else {
 				over, slope = p.overValue(x[pGap][i] + off - t + t*ratio)
 			}
-			v, lever, hold := 1.0, 1.0, 0.0
-			if charge {
-				v = x[pV][i]
-				lever = v - vc
-			}
-			if pHold >= 0 {
-				hold = x[pHold][i]
-			}
-			read, keep, byCurrent, byTau, byInj := eps*over*lever+cs*v, 1.0, 0.0, 0.0, 0.0
-			if charge {
-				read, keep, byCurrent, byTau, byInj = e.row(read, q, hold)
-			}
-			f[i] = read
+			y := r.value(eps*over, q, x, i)
+			f[i] = y.reading
 			if jac == nil {
 				continue
 			}
 			for n, j := range wrt {
 				var d float64
-				switch j {
-				case iEr:
-					d = -eps * slope * t * ratio / q[iEr] * lever * keep
-				case iVc:
-					if charge {
-						d = -eps * over * keep
-					}
-				case iOff:
-					if !contact {
-						d = eps * slope * lever * keep
-					}
-				case iFilm:
-					if contact {
-						d = eps * slope * lever * keep
-					}
-				case iCs:
-					d = v * keep
-				case e.iCurrent:
-					d = byCurrent
-				case e.iTau:
-					d = byTau
-				case e.iInj:
-					if e.injection {
-						d = byInj
-					}
+				switch {
+				case j == iEr:
+					d = -eps * slope * t * ratio / q[iEr] * y.lever * y.keep
+				case j == iOff && !contact, j == iFilm && contact:
+					d = eps * slope * y.lever * y.keep
+				default:
+					d = r.by(j, &y)
 				}
 				jac[n][i] = d
 			}
@@ -225,8 +187,8 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 			var sum float64
 			for i, f := range m.predictAll(w, x, len(y)) {
 				v := 1.0
-				if charge {
-					v = x[pV][i]
+				if r.charge {
+					v = x[r.voltage][i]
 				}
 				sum += v * (f - y[i])
 			}
@@ -266,8 +228,8 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 				return nil, fmt.Errorf("quantities.film_thickness: %.3g um: a film can't be thinner than nothing", 1e6*f)
 			case f < 0:
 				return nil, &RowError{Row: i, Err: fmt.Errorf("gap %.6g mm is thinner than the sample, %.6g mm; the gap must be at least the thickness of the sheet", 1e3*(f+t), 1e3*t)}
-			case pHold >= 0 && row[pHold] < 0:
-				return nil, &RowError{Row: i, Err: fmt.Errorf("hold %.6g s: a time from the step of the voltage to the reading can't be below zero", row[pHold])}
+			case r.hold >= 0 && row[r.hold] < 0:
+				return nil, &RowError{Row: i, Err: fmt.Errorf("hold %.6g s: a time from the step of the voltage to the reading can't be below zero", row[r.hold])}
 			}
 			sheets = sheets || t > 0
 		}
@@ -304,9 +266,9 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 			}
 			warn = append(warn, w...)
 			if g.guard && minFilm < field.SlotMinimum*q[g.iG] {
-				r, rg := q[g.iR], q[g.iR]+q[g.iG]
-				alpha := field.SlotLength(r, rg)
-				size := (rg*rg - r*r) / (2 * r * r) * alpha / (minSpacing + alpha)
+				radius, outer := q[g.iR], q[g.iR]+q[g.iG]
+				alpha := field.SlotLength(radius, outer)
+				size := (outer*outer - radius*radius) / (2 * radius * radius) * alpha / (minSpacing + alpha)
 				warn = append(warn, fmt.Errorf("corrections.guard_gap: the air film (%.3g mm) is thinner than 5 × guard_gap, so the sheet enters the field of the slot; the correction there is at most %.2g of the charge: state corrections.guard_gap.model with a standard uncertainty of that order",
 					1e3*minFilm, size))
 			}
@@ -315,7 +277,7 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 			warn = append(warn, fmt.Errorf("the sheet takes at most %.2g %% of the voltage, the air film the rest: the readings hardly depend on the sheet's permittivity; close the gap", 100*share))
 		}
 		warn = append(warn, dampAir(q[g.iH])...)
-		if w := e.check(q, x); w != nil {
+		if w := r.check(q, x); w != nil {
 			warn = append(warn, w)
 		}
 		w := append([]float64(nil), q...)
@@ -324,12 +286,12 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 	}
 	m.Hazard = func(q []float64, x [][]float64) Hazard {
 		h, worst := Hazard{}, -1.0
-		if pV < 0 {
+		if r.voltage < 0 {
 			return h // the bench does not say at what voltage its bridge works
 		}
 		delta, ea := airDensity(q[g.iT], q[g.iP]), medium(q)
 		one := make([]float64, len(x))
-		for i, v := range x[pV] {
+		for i, v := range x[r.voltage] {
 			for p := range one {
 				one[p] = x[p][i]
 			}
@@ -362,15 +324,15 @@ func prepareDielectricSample(k *Kind, s *Setup) (*Model, error) {
 		{Name: "drift", Doc: "proportional to time: drift of the zero",
 			Signature: withTime},
 	}
-	if charge {
-		m.Causes = append(m.Causes, chargeCauses(pV, pHold, spacing)...)
-		if pHold >= 0 {
+	if r.charge {
+		m.Causes = append(m.Causes, chargeCauses(r.voltage, r.hold, spacing)...)
+		if r.hold >= 0 {
 			m.Causes = append(m.Causes, Cause{Name: "absorption", Doc: "proportional to charge and the logarithm of the hold time: dielectric absorption of the sheet",
 				Signature: func(q, x []float64, f, t float64) float64 {
-					if thick(q, x) == 0 || !(x[pHold] > 0) {
+					if thick(q, x) == 0 || !(x[r.hold] > 0) {
 						return 0
 					}
-					return f * math.Log(x[pHold])
+					return f * math.Log(x[r.hold])
 				}})
 		}
 	} else {

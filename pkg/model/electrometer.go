@@ -140,6 +140,86 @@ func (e *electrometer) row(charge float64, q []float64, hold float64) (read, kee
 	return charge*keep + current*hold*phi, keep, byCurrent, byTau, keep
 }
 
+// plateReading is what is read of plates with a known capacitance: their charge, by an
+// electrometer, or the capacitance itself, by a bridge.
+type plateReading struct {
+	*electrometer
+	charge   bool
+	voltage  int // index among the predictors, −1: none
+	iVc, iCs int // contact potential, stray capacitance
+}
+
+// newPlateReading resolves the channels and corrections of the reading; its
+// predictors stand behind those listed.
+func newPlateReading(k *Kind, s *Setup, predictors []string) (r *plateReading, response string, all []string, err error) {
+	r = &plateReading{iVc: k.Scalar("contact_potential"), iCs: k.Scalar("stray_capacitance")}
+	var hold int
+	if response, all, r.voltage, hold, err = chargeChannels(s, predictors); err != nil {
+		return nil, "", nil, err
+	}
+	r.charge = response == "charge"
+	r.electrometer, err = newElectrometer(k, s, r.charge, hold)
+	return r, response, all, err
+}
+
+// jet is the reading of plates of capacitance c (F).
+func (r *plateReading) jet(c jet.Jet, q, x []jet.Jet) jet.Jet {
+	if !r.charge {
+		return c.Add(q[r.iCs])
+	}
+	v := x[r.voltage]
+	return r.read(c.Mul(v.Sub(q[r.iVc])).Add(q[r.iCs].Mul(v)), q, x)
+}
+
+// plateValue is one reading with what its derivatives need.
+type plateValue struct {
+	reading          float64
+	capacitance      float64 // of the plates, F
+	voltage          float64 // V; 1 when the capacitance is read
+	lever            float64 // ∂(charge)/∂capacitance
+	keep             float64 // ∂reading/∂(charge)
+	byCurrent, byTau float64
+	byInjection      float64
+}
+
+// value is jet at plain numbers for row i.
+func (r *plateReading) value(c float64, q []float64, x [][]float64, i int) plateValue {
+	if !r.charge {
+		return plateValue{reading: c + q[r.iCs], capacitance: c, voltage: 1, lever: 1, keep: 1}
+	}
+	y := plateValue{capacitance: c, voltage: x[r.voltage][i]}
+	y.lever = y.voltage - q[r.iVc]
+	hold := 0.0
+	if r.hold >= 0 {
+		hold = x[r.hold][i]
+	}
+	y.reading, y.keep, y.byCurrent, y.byTau, y.byInjection = r.row(c*y.lever+q[r.iCs]*y.voltage, q, hold)
+	return y
+}
+
+// by is the derivative of a reading by scalar j, 0 for those that act by way of the
+// capacitance.
+func (r *plateReading) by(j int, y *plateValue) float64 {
+	switch {
+	case j == r.iVc && r.charge:
+		return -y.capacitance * y.keep
+	case j == r.iCs:
+		return y.voltage * y.keep
+	case j == r.iCurrent:
+		return y.byCurrent
+	case j == r.iTau:
+		return y.byTau
+	case j == r.iInj && r.injection:
+		return y.byInjection
+	}
+	return 0
+}
+
+// acts tells the scalars that by knows.
+func (r *plateReading) acts(j int) bool {
+	return j == r.iVc || j == r.iCs || j == r.iCurrent || j == r.iTau || j == r.iInj
+}
+
 // check warns when the hold time is long against the time constant, and returns
 // nil when all is well.
 func (e *electrometer) check(q []float64, x [][]float64) error {

@@ -45,77 +45,43 @@ var PlateCharge = register(&Kind{
 })
 
 func preparePlateCharge(k *Kind, s *Setup) (*Model, error) {
-	iEps, iVc, iOff, iCs := k.Scalar("permittivity"), k.Scalar("contact_potential"), k.Scalar("gap_offset"), k.Scalar("stray_capacitance")
-	response, predictors, pV, pHold, err := chargeChannels(s, []string{"gap"})
+	iEps, iOff := k.Scalar("permittivity"), k.Scalar("gap_offset")
+	r, response, predictors, err := newPlateReading(k, s, []string{"gap"})
 	if err != nil {
 		return nil, err
 	}
-	charge := response == "charge"
 	g, err := newGuarded(k, s)
-	if err != nil {
-		return nil, err
-	}
-	e, err := newElectrometer(k, s, charge, pHold)
 	if err != nil {
 		return nil, err
 	}
 	m := &Model{Response: response, Predictors: predictors}
 	m.Row = func(q, x []jet.Jet) jet.Jet {
-		c := q[iEps].Mul(g.over(q, x[0].Add(q[iOff])))
-		if !charge {
-			return c.Add(q[iCs])
-		}
-		return e.read(c.Mul(x[pV].Sub(q[iVc])).Add(q[iCs].Mul(x[pV])), q, x)
+		return r.jet(q[iEps].Mul(g.over(q, x[0].Add(q[iOff]))), q, x)
 	}
 	m.Block = func(q []float64, x [][]float64, lo, hi int, wrt []int, f []float64, jac [][]float64) bool {
 		for _, j := range wrt {
-			if j != iEps && j != iVc && j != iOff && j != iCs && j != e.iCurrent && j != e.iTau && j != e.iInj {
+			if j != iEps && j != iOff && !r.acts(j) {
 				return false
 			}
 		}
 		p := g.prepared(q)
-		eps, vc, off, cs := q[iEps], q[iVc], q[iOff], q[iCs]
+		eps, off := q[iEps], q[iOff]
 		for i := lo; i < hi; i++ {
 			over, slope := p.overValue(x[0][i] + off)
-			v, lever, hold := 1.0, 1.0, 0.0
-			if charge {
-				v = x[pV][i]
-				lever = v - vc
-			}
-			if pHold >= 0 {
-				hold = x[pHold][i]
-			}
-			read, keep, byCurrent, byTau, byInj := eps*over*lever+cs*v, 1.0, 0.0, 0.0, 0.0
-			if charge {
-				read, keep, byCurrent, byTau, byInj = e.row(read, q, hold)
-			}
-			f[i] = read
+			y := r.value(eps*over, q, x, i)
+			f[i] = y.reading
 			if jac == nil {
 				continue
 			}
 			for n, j := range wrt {
-				var d float64
 				switch j {
 				case iEps:
-					d = over * lever * keep
-				case iVc:
-					if charge {
-						d = -eps * over * keep
-					}
+					jac[n][i] = over * y.lever * y.keep
 				case iOff:
-					d = eps * slope * lever * keep
-				case iCs:
-					d = v * keep
-				case e.iCurrent:
-					d = byCurrent
-				case e.iTau:
-					d = byTau
-				case e.iInj:
-					if e.injection {
-						d = byInj
-					}
+					jac[n][i] = eps * slope * y.lever * y.keep
+				default:
+					jac[n][i] = r.by(j, &y)
 				}
-				jac[n][i] = d
 			}
 		}
 		return true
@@ -133,8 +99,8 @@ func preparePlateCharge(k *Kind, s *Setup) (*Model, error) {
 			if d+q[iOff] <= 0 {
 				return nil, &RowError{Row: i, Err: fmt.Errorf("gap %.6g mm: must be above zero", 1e3*(d+q[iOff]))}
 			}
-			if pHold >= 0 && x[pHold][i] < 0 {
-				return nil, &RowError{Row: i, Err: fmt.Errorf("hold %.6g s: a time from the step of the voltage to the reading can't be below zero", x[pHold][i])}
+			if r.hold >= 0 && x[r.hold][i] < 0 {
+				return nil, &RowError{Row: i, Err: fmt.Errorf("hold %.6g s: a time from the step of the voltage to the reading can't be below zero", x[r.hold][i])}
 			}
 			minGap = math.Min(minGap, d+q[iOff])
 		}
@@ -142,21 +108,21 @@ func preparePlateCharge(k *Kind, s *Setup) (*Model, error) {
 		if err != nil {
 			return nil, err
 		}
-		if w := e.check(q, x); w != nil {
+		if w := r.check(q, x); w != nil {
 			warn = append(warn, w)
 		}
-		if charge {
+		if r.charge {
 			warn = append(warn, dampAir(q[g.iH])...)
 		}
 		return append(warn, breakdownWarning(m.Hazard(q, x))...), nil
 	}
 	m.Hazard = func(q []float64, x [][]float64) Hazard {
 		h, worst := Hazard{}, -1.0
-		if pV < 0 {
+		if r.voltage < 0 {
 			return h // the bench does not say at what voltage its bridge works
 		}
 		delta := airDensity(q[g.iT], q[g.iP])
-		for i, v := range x[pV] {
+		for i, v := range x[r.voltage] {
 			if d := x[0][i] + q[iOff]; d > 0 {
 				h.meet(i, v, v/d, d, math.Max(q[g.iCap], si.Eps0*math.Pi*q[g.iR]*q[g.iR]/d), delta, &worst)
 			}
@@ -175,8 +141,8 @@ func preparePlateCharge(k *Kind, s *Setup) (*Model, error) {
 		{Name: "drift", Doc: "proportional to time: drift of the zero",
 			Signature: withTime},
 	}
-	if charge {
-		m.Causes = append(m.Causes, chargeCauses(pV, pHold, gap)...)
+	if r.charge {
+		m.Causes = append(m.Causes, chargeCauses(r.voltage, r.hold, gap)...)
 	} else {
 		m.Causes = append(m.Causes, Cause{Name: "stray_capacitance", Doc: "the same at every gap: capacitance besides the gap",
 			Signature: always})
