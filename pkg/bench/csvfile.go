@@ -177,7 +177,8 @@ func readCSV(r io.Reader, name string, size int64, s CSVSettings, wanted []strin
 		times: make([]timeColumn, len(l.header))}
 	m := &merger{t: t, l: l, limit: limit, size: size}
 	first.data, first.line = data[end:], 1+blank+max(lines, 1)
-	first.number, first.word, first.times = newPart(l).number, newPart(l).word, newPart(l).times
+	first.shape(l)
+	first.ends = bytes.Count(first.data, []byte{'\n'})
 
 	if first.last {
 		if err := checkLines(first, name); err != nil {
@@ -223,6 +224,9 @@ type merger struct {
 	errs  errorList
 	ended bool // enough errors, or a failure to read
 
+	column [][]float64 // beside the header: the columns of the whole file; nil: their length is not known
+	room   int         // numbers that each holds
+
 	number []partTimes
 }
 
@@ -243,13 +247,16 @@ func (m *merger) parallel(src *source, first *part) {
 	}
 	go func() { // reads in order
 		defer close(work)
-		p, line := first, first.line
+		p, line, at := first, first.line, 0
 		for seq := 0; ; seq++ {
 			p.seq, p.line = seq, line
 			if fail = checkLines(p, src.name); fail != nil {
 				return
 			}
-			line += bytes.Count(p.data, []byte{'\n'})
+			p.ends = bytes.Count(p.data, []byte{'\n'})
+			m.place(p, at)
+			line += p.ends
+			at += p.ends
 			last := p.last
 			select {
 			case work <- p:
@@ -328,7 +335,7 @@ func (m *merger) add(p *part) {
 	}
 	for c, md := range m.l.modes {
 		if md.numeric() {
-			t.Number[c] = m.grow(t.Number[c], p, p.number[c])
+			t.Number[c] = m.join(t.Number[c], p, p.number[c][:p.rows])
 		}
 		if md.worded() {
 			m.addWords(c, p)
@@ -344,16 +351,53 @@ func (m *merger) add(p *part) {
 	m.ended = len(m.errs.list) >= maxErrors
 }
 
-// grow appends src to dst; the first time it makes room for what the whole file
-// will need, judged by this part.
-func (m *merger) grow(dst []float64, p *part, src []float64) []float64 {
-	if dst == nil {
-		want := len(src)
-		if m.size > int64(len(p.data)) && p.rows > 0 && len(p.data) > 0 {
-			rows := float64(m.size) / float64(len(p.data)) * float64(p.rows) * 1.02
-			want = int(min(rows+16, float64(m.limit)))
+// place decides where the numbers of p go: to their place in the columns of the
+// whole file, if it is known how large those get, and to storage of p otherwise.
+// at is the number of line feeds in the parts before: no fewer than the records
+// there. Where there are fewer, join moves the numbers up.
+func (m *merger) place(p *part, at int) {
+	if p.seq == 0 {
+		m.makeRoom(p)
+	}
+	p.at = -1
+	if m.column == nil || at+p.most() > m.room {
+		return
+	}
+	p.at = at
+	for c, md := range m.l.modes {
+		if md.numeric() {
+			p.number[c] = m.column[c][at : at+p.most()]
 		}
-		dst = make([]float64, 0, want)
+	}
+}
+
+// makeRoom makes columns for what the whole file will hold, judged by its first
+// part.
+func (m *merger) makeRoom(p *part) {
+	if m.size <= int64(len(p.data)) || p.ends == 0 {
+		return
+	}
+	rows := float64(m.size) / float64(len(p.data)) * float64(p.ends) * 1.02
+	m.room = int(min(rows+16, float64(m.limit)))
+	m.column = make([][]float64, len(m.l.modes))
+	for c, md := range m.l.modes {
+		if md.numeric() {
+			m.column[c] = make([]float64, m.room)
+			inLargePages(m.column[c])
+			m.t.Number[c] = m.column[c][:0]
+		}
+	}
+}
+
+// join appends the numbers of p to dst. Those that stand there already, since no
+// line before was blank or broken, stay where they are.
+func (m *merger) join(dst []float64, p *part, src []float64) []float64 {
+	n := len(dst)
+	if len(src) > 0 && cap(dst) >= n+len(src) && &dst[:n+1][n] == &src[0] {
+		return dst[:n+len(src)]
+	}
+	if dst == nil && m.room > 0 {
+		dst = make([]float64, 0, m.room)
 	}
 	return append(dst, src...)
 }
@@ -377,7 +421,7 @@ func (m *merger) addTimes(c int, p *part) {
 		m.ended = true
 	}
 	tc.read, tc.stamped = true, seen.stampLine > 0
-	tc.at = m.grow(tc.at, p, p.number[c])
+	tc.at = m.join(tc.at, p, p.number[c][:p.rows])
 }
 
 func (m *merger) addWords(c int, p *part) {

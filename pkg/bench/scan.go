@@ -14,10 +14,13 @@ type part struct {
 	buf  []byte // storage, reused
 	data []byte // whole records
 	line int    // line of the first
+	ends int    // line feeds in data
 	last bool
 
 	rows   int
-	number [][]float64 // beside the header; only columns read as numbers or times
+	number [][]float64 // beside the header: room for all records, in columns read as numbers or times
+	own    [][]float64 // likewise: storage of the part itself, reused
+	at     int         // where its numbers stand in the columns of the whole file; -1: in own
 	word   []words
 	times  []partTimes
 	starts []lineStart
@@ -39,17 +42,41 @@ type partTimes struct {
 }
 
 func newPart(l *layout) *part {
-	p := &part{number: make([][]float64, len(l.modes)), word: make([]words, len(l.modes)), times: make([]partTimes, len(l.modes))}
+	p := &part{at: -1}
+	p.shape(l)
 	return p
+}
+
+// shape gives p the columns of a layout.
+func (p *part) shape(l *layout) {
+	n := len(l.modes)
+	p.number, p.own, p.word, p.times = make([][]float64, n), make([][]float64, n), make([]words, n), make([]partTimes, n)
+}
+
+// most is how many records p holds at most: one a line feed, and at the end of
+// the file one without.
+func (p *part) most() int {
+	if p.last {
+		return p.ends + 1
+	}
+	return p.ends
+}
+
+// room returns the storage of column c for n numbers.
+func (p *part) room(c, n int) []float64 {
+	if cap(p.own[c]) < n {
+		p.own[c] = make([]float64, n)
+	}
+	return p.own[c][:n]
 }
 
 func (p *part) reset(l *layout) {
 	p.rows, p.starts, p.errs = 0, p.starts[:0], nil
 	for c, m := range l.modes {
-		if m != skip && m != wordy {
-			p.number[c] = p.number[c][:0]
-			p.times[c] = partTimes{}
+		if m != skip && m != wordy && (p.at < 0 || m == timely) {
+			p.number[c] = p.room(c, p.most())
 		}
+		p.times[c] = partTimes{}
 		if m.worded() {
 			w := &p.word[c]
 			w.list, w.index, w.last = nil, w.index[:0], -1
@@ -91,7 +118,7 @@ func (p *part) scan(l *layout) {
 				} else if v, end, ok = p.cell(l, c, i, line, &lines); !ok {
 					bad = true
 				}
-				p.number[c] = append(p.number[c], v)
+				p.number[c][p.rows] = v
 			case skip:
 				for end = i; end < len(b) && b[end] != sep && b[end] != '\n' && b[end] != '"' && b[end] != '\r'; {
 					end++
@@ -106,7 +133,7 @@ func (p *part) scan(l *layout) {
 						bad = true
 						break
 					}
-					p.number[c] = append(p.number[c], v)
+					p.number[c][p.rows] = v
 				}
 				end, bad = p.special(l, c, i, line, &lines)
 			}
@@ -129,7 +156,8 @@ func (p *part) scan(l *layout) {
 				return
 			}
 			i, lines = recordEnd(b, record)
-			// What the record had begun is taken back, so that columns stay together.
+			// What the record had begun is taken back, so that columns stay together;
+			// its numbers are written over by the next.
 			p.truncate(l)
 			line += lines
 			expect = -1
@@ -146,12 +174,9 @@ func (p *part) scan(l *layout) {
 	p.next = line
 }
 
-// truncate cuts all columns to the records finished.
+// truncate cuts the columns of words to the records finished.
 func (p *part) truncate(l *layout) {
 	for c, m := range l.modes {
-		if m != skip && m != wordy {
-			p.number[c] = p.number[c][:min(p.rows, len(p.number[c]))]
-		}
 		if m.worded() {
 			p.word[c].index = p.word[c].index[:min(p.rows, len(p.word[c].index))]
 		}
@@ -290,7 +315,7 @@ func (p *part) special(l *layout, c, i, line int, lines *int) (end int, bad bool
 	cell = bytes.TrimSpace(cell)
 	if l.modes[c] == timely {
 		if l.isMissing(cell) {
-			p.number[c] = append(p.number[c], math.NaN())
+			p.number[c][p.rows] = math.NaN()
 			return end, false
 		}
 		at, nanos, stamped, ok := stamp(cell, l.point)
@@ -308,7 +333,7 @@ func (p *part) special(l *layout, c, i, line int, lines *int) (end int, bad bool
 		} else if t.numberLine == 0 {
 			t.numberLine = line
 		}
-		p.number[c] = append(p.number[c], at)
+		p.number[c][p.rows] = at
 		return end, false
 	}
 	w := &p.word[c]
