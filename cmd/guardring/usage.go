@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"io/fs"
 	"math"
+	"path/filepath"
 	"strconv"
 	"strings"
 	"syscall"
@@ -213,6 +214,15 @@ func words(err error) string {
 			why = "there is no such file or folder; check the name"
 		case errors.Is(path.Err, fs.ErrPermission):
 			why = "this account may not " + path.Op + " it; change its permissions or name another place"
+			dir, base := filepath.Split(path.Path)
+			into := "this account may not write into the folder " + filepath.Clean(dir) + "; change its permissions or name another place"
+			if strings.HasPrefix(base, ".guardring-") {
+				// The temporary file behind it is no name that the user has given.
+				return strings.Replace(msg, path.Error(), into, 1)
+			}
+			if path.Op == "mkdir" {
+				why = into
+			}
 		case errors.Is(path.Err, syscall.ENOTDIR):
 			why = "a file stands where a folder is due; name another place"
 		case errors.Is(path.Err, syscall.EISDIR):
