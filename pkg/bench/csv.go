@@ -155,9 +155,6 @@ func readHeader(file string, line []byte, s CSVSettings, wanted []string) (*layo
 		for _, sep := range separators {
 			h, err := splitHeader(text, sep.sign)
 			if err != "" {
-				if best < 0 && l.header == nil {
-					continue
-				}
 				continue
 			}
 			score := 2 * len(h)

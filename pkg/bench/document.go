@@ -76,7 +76,7 @@ func (n *node) field(key string) *node {
 // every value its place, which the decoder does not hand out.
 func document(file string, data []byte) (*node, error) {
 	if len(data) > maxDocument {
-		return nil, fmt.Errorf("%s: the file has %d bytes; at most %d are read", file, len(data), maxDocument)
+		return nil, &Error{File: file, Problem: fmt.Sprintf("the file has %d bytes; at most %d are read", len(data), maxDocument)}
 	}
 	data = bytes.TrimPrefix(data, []byte("\xef\xbb\xbf"))
 	if !utf8.Valid(data) {

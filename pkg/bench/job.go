@@ -327,10 +327,8 @@ func (l *loader) capability() {
 		l.fail(t, "state either expanded or relative_expanded")
 	}
 	if n := t.field("k"); n != nil {
-		if n.shape != isNumber || !(n.number > 0) || math.IsInf(n.number, 0) {
-			l.fail(n, "%s where a coverage factor is due, a number above zero such as 2", shown(n))
-		} else {
-			c.K = n.number
+		if k, ok := l.coverageFactor(n); ok {
+			c.K = k
 		}
 	}
 	for _, e := range []struct {

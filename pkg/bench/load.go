@@ -200,7 +200,7 @@ func (r *reader) format() bool {
 	return false
 }
 
-// instruments reads [instruments.*], shared by benches and budgets.
+// instrumentTables reads [instruments.*] of a bench or a budget.
 func (r *reader) instrumentTables() []Instrument {
 	t := r.table(r.root, "instruments")
 	if t == nil {
@@ -361,7 +361,7 @@ func (r *reader) find(path string) *node {
 	return n
 }
 
-// correlations reads [[correlations]] between the given names.
+// correlationTables reads [[correlations]] between the given names.
 func (r *reader) correlationTables(known []string) []Correlation {
 	tables := r.tables(r.root, "correlations")
 	if len(tables) > 10000 {

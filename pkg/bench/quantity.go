@@ -3,6 +3,7 @@ package bench
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 
 	"example.org/guardring/pkg/gum"
@@ -190,11 +191,9 @@ func (r *reader) standard(n *node, U, dof float64) float64 {
 	case k != nil && p != nil:
 		r.fail(p, "k and probability are both given; state one of them")
 	case k != nil:
-		if k.shape != isNumber || !(k.number > 0) || math.IsInf(k.number, 0) {
-			r.fail(k, "%s where a coverage factor is due, a number above zero such as 2", shown(k))
-			return 0
+		if f, ok := r.coverageFactor(k); ok {
+			return U / f
 		}
-		return U / k.number
 	case p != nil:
 		if q, ok := r.coverage(n, "probability"); ok {
 			return U / gum.CoverageFactor(q, dof)
@@ -203,6 +202,15 @@ func (r *reader) standard(n *node, U, dof float64) float64 {
 		r.fail(n, "an expanded uncertainty needs its k or its probability")
 	}
 	return 0
+}
+
+// coverageFactor reads a coverage factor.
+func (r *reader) coverageFactor(k *node) (float64, bool) {
+	if k.shape != isNumber || !(k.number > 0) || math.IsInf(k.number, 0) {
+		r.fail(k, "%s where a coverage factor is due, a number above zero such as 2", shown(k))
+		return 0, false
+	}
+	return k.number, true
 }
 
 // bounded makes the distributions that a half-width describes.
@@ -400,11 +408,7 @@ func (r *reader) instrument(t *node) string {
 // checkCited refuses instruments that have no table.
 func (r *reader) checkCited(known []string) {
 	for _, n := range r.cited {
-		found := false
-		for _, k := range known {
-			found = found || k == n.text
-		}
-		if !found {
+		if !slices.Contains(known, n.text) {
 			hint := didYouMean(n.text, known)
 			if len(known) == 0 {
 				hint = fmt.Sprintf("; add a table [instruments.%s]", n.text)

@@ -99,7 +99,7 @@ func (l *Labels) join(more *Labels) *Labels {
 	return l
 }
 
-// file reads one readings file.
+// readFile reads one readings file.
 func (l *loader) readFile(f *readingsFile, limit int) (*Table, error) {
 	file, size, err := l.openReadings(f)
 	if err != nil {

@@ -1,164 +1,98 @@
 package reduce
 
 import (
+	"cmp"
 	"math"
-	"sort"
+	"slices"
 
-	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/lsq"
 )
 
-// causes ranks what could explain residuals that are not noise.
-func (c *chain) causes(r *lsq.Result, k *carried) []Cause {
-	np := len(c.free)
-	ainv := grid(np, np)
-	for a := range np {
-		for b := range np {
-			ainv[a][b] = r.Covariance.At(a, b)
-		}
-	}
-	return c.rankCauses(k, r.Residuals, r.SolveCovariance, ainv, r.Derivatives())
-}
+// causeLevel is the significance below which a cause is listed.
+const causeLevel = 0.01
 
-// rows lays out the readings as they stand after the fit, excluded ones too.
-func (c *chain) rows(r *lsq.Result, out *Rows) {
-	b := c.b
-	q := append([]float64(nil), c.q...)
-	for j, f := range c.free {
-		q[f] = r.Values[j]
+// causes returns the causes whose signature the residuals carry: each is a
+// score test of one more parameter a·g_i in the prediction,
+//
+//	Δχ² = (gᵀΣ⁻¹r)² / (gᵀΣ⁻¹g − gᵀΣ⁻¹J A⁻¹ JᵀΣ⁻¹g),
+//
+// with one degree of freedom (Rao's score test; derived for this fit).
+func (c *chain) causes(r *lsq.Result, k *carried) []Cause {
+	n, np := len(c.record), len(c.free)
+	jac := r.Derivatives()
+	free := map[string]bool{}
+	for _, f := range c.free {
+		free[c.b.Scalars[f].Name] = true
 	}
-	out.ResponseName = c.m.Response
-	out.PredictorNames = append([]string(nil), c.m.Predictors...)
-	used := make([]int, b.Rows.N) // index in the fit plus one
-	for i, rec := range c.record {
-		used[rec] = i + 1
-	}
-	for rec := range b.Rows.N {
-		if used[rec] > 0 || (b.Rows.Excluded[rec] && c.complete(rec)) {
-			out.Record = append(out.Record, rec)
-		}
-	}
-	out.N = len(out.Record)
-	out.Excluded = make([]bool, out.N)
-	if out.N == len(c.record) && c.readY == nil {
-		// Nothing was left out: the rows are those of the fit, shared with it.
-		out.Record, out.Predictors, out.Response, out.Fitted = c.record, c.x[:len(c.pred):len(c.pred)], c.y, r.Fitted
-		out.Residual, out.Leverage, out.Studentised, out.U = r.Residuals, r.Leverage, r.Studentised, r.Weights
-		for i, w := range r.Weights {
-			out.U[i] = 1 / math.Sqrt(w)
-		}
-		r.Weights, r.Standardised, r.CooksDistance = nil, nil, nil // what is left has no use here
-		out.Standardised = r.Whitened()
-		return
-	}
-	all := grid(8, out.N)
-	out.Response, out.Fitted, out.U, out.Residual = all[0], all[1], all[2], all[3]
-	out.Standardised, out.Leverage, out.Studentised = all[4], all[5], all[6]
-	out.Predictors = grid(len(c.pred), out.N)
-	x := make([][]float64, len(c.x))
-	for p := range x {
-		x[p] = make([]float64, 1)
-	}
-	whitened := r.Whitened()
-	one := newPredictor(c.m, len(q), len(c.x), nil)
-	g, o := gainOffset(&b.Channels[c.resp])
-	f := make([]float64, 1)
-	for n, rec := range out.Record {
-		if i := used[rec] - 1; i >= 0 {
-			for p := range c.pred {
-				out.Predictors[p][n] = c.x[p][i]
-			}
-			out.Response[n], out.Fitted[n], out.Residual[n] = c.y[i], r.Fitted[i], r.Residuals[i]
-			if c.readY != nil {
-				for p := range c.pred {
-					out.Predictors[p][n] = c.readX[p][i]
-				}
-				out.Response[n], out.Fitted[n] = c.readY[i], c.readY[i]-r.Residuals[i]
-			}
-			out.U[n] = 1 / math.Sqrt(r.Weights[i])
-			out.Standardised[n], out.Leverage[n], out.Studentised[n] = whitened[i], r.Leverage[i], r.Studentised[i]
+	fitted := make([]float64, n)
+	c.indication(k.q, fitted, nil)
+	var out []Cause
+	g, sg := make([]float64, n), make([]float64, n)
+	x := make([]float64, len(c.x))
+	for _, cause := range c.m.Causes {
+		if free[cause.Name] {
 			continue
 		}
-		out.Excluded[n] = true
-		for p, ci := range c.pred {
-			gp, op := gainOffset(&b.Channels[ci])
-			x[p][0] = gp*b.Channels[ci].Readings[rec] + op
-			out.Predictors[p][n] = x[p][0]
+		known := true
+		for i := range g {
+			for p := range c.x {
+				x[p] = c.x[p][i]
+			}
+			g[i] = cause.Signature(k.q, x, fitted[i], c.seconds(i))
+			known = known && !math.IsNaN(g[i]) && !math.IsInf(g[i], 0)
 		}
-		extra := x[len(c.pred):]
-		if c.m.TimeDependent {
-			extra[0][0] = b.Rows.Time[rec]
-			extra = extra[1:]
+		if !known {
+			continue
 		}
-		if c.series != nil {
-			extra[0][0] = float64(c.series.of[rec])
+		r.SolveCovariance(g, sg)
+		num, den := dot(sg, r.Residuals), dot(sg, g)
+		whole := den
+		jg := make([]float64, np)
+		for j := range jg {
+			jg[j] = dot(sg, jac[j])
 		}
-		one.rows(q, x, 0, 1, f, nil)
-		toIndication(g, o, 0, 1, f, nil)
-		y := b.Channels[c.resp].Readings[rec] - c.zeroNear(rec)
-		out.Response[n], out.Fitted[n], out.Residual[n] = y, f[0], y-f[0]
-		out.U[n], out.Leverage[n], out.Studentised[n] = math.NaN(), math.NaN(), math.NaN()
-		out.Standardised[n] = math.NaN()
-		if i := c.nearest(rec); i >= 0 {
-			out.U[n] = 1 / math.Sqrt(r.Weights[i])
-			out.Standardised[n] = out.Residual[n] / out.U[n]
+		shift := make([]float64, np)
+		for a := range np {
+			for b := range np {
+				shift[a] += r.Covariance.At(a, b) * jg[b]
+			}
+			den -= jg[a] * shift[a]
 		}
+		if !(den > 1e-9*whole) {
+			continue // the parameters already take up this signature
+		}
+		improvement := num * num / den
+		p := math.Erfc(math.Sqrt(improvement / 2))
+		if p >= causeLevel {
+			continue
+		}
+		_, byTheta, _ := c.sensitivities(&c.m.Measurands[0], k.q)
+		out = append(out, Cause{Name: cause.Name, Doc: cause.Doc, Improvement: Number(improvement), PValue: Number(p),
+			Shift: Number(-num / den * dot(byTheta, shift))})
 	}
+	slices.SortStableFunc(out, func(a, b Cause) int { return cmp.Compare(b.Improvement, a.Improvement) })
+	return out
 }
 
-// complete reports whether an excluded record is a reading with all its values.
-func (c *chain) complete(rec int) bool {
-	b := c.b
-	if k := b.Rows.Kind[rec]; k != bench.Reading && k != bench.Overrange {
-		return false
-	}
-	for _, p := range append([]int{c.resp}, c.pred...) {
-		if v := b.Channels[p].Readings[rec]; math.IsNaN(v) {
-			return false
+// tests runs the tests of the residuals, in the order of acquisition and free of
+// the errors that readings share. A test that these residuals do not admit (too
+// few of them) is left out.
+func (c *chain) tests(r *lsq.Result) []Test {
+	e := r.Whitened()
+	for _, v := range e {
+		if math.IsNaN(v) {
+			return nil
 		}
 	}
-	if c.m.TimeDependent && math.IsNaN(b.Rows.Time[rec]) {
-		return false
-	}
-	return true
-}
-
-// nearest is the row of the fit next to a record that was left out; its weight
-// and zero stand in for those the record would have had.
-func (c *chain) nearest(rec int) int {
-	i := sort.SearchInts(c.record, rec)
-	if i == len(c.record) || (i > 0 && rec-c.record[i-1] <= c.record[i]-rec) {
-		i--
-	}
-	return i
-}
-
-// zeroNear is the zero correction at a record that was left out.
-func (c *chain) zeroNear(rec int) float64 {
-	if c.zero == nil {
-		return 0
-	}
-	if i := c.nearest(rec); i >= 0 {
-		return c.zero.at(i)
-	}
-	return 0
-}
-
-// recordRows lists the rows for the record.
-func (r *Result) recordRows() []RecordRow {
-	b := r.Bench
-	out := make([]RecordRow, r.Rows.N)
-	for n := range out {
-		rec := r.Rows.Record[n]
-		file, line := b.Rows.Place(rec)
-		row := RecordRow{Row: rec + 1, File: file, Line: line, Kind: b.Rows.Kind[rec].String(),
-			Excluded: r.Rows.Excluded[n], Channels: map[string]Number{}, Response: Number(r.Rows.Response[n]), Fitted: Number(r.Rows.Fitted[n]),
-			U: Number(r.Rows.U[n]), Residual: Number(r.Rows.Residual[n]), Standardised: Number(r.Rows.Standardised[n]),
-			Leverage: Number(r.Rows.Leverage[n]), Studentised: Number(r.Rows.Studentised[n])}
-		for p, name := range r.Rows.PredictorNames {
-			row.Channels[name] = Number(r.Rows.Predictors[p][n])
+	var out []Test
+	add := func(name, doc string, t lsq.Test, err error) {
+		if err == nil && !math.IsNaN(t.PValue) {
+			out = append(out, Test{Name: name, Doc: doc, Statistic: Number(t.Statistic), PValue: Number(t.PValue), Passed: t.PValue >= causeLevel})
 		}
-		out[n] = row
 	}
+	t, err := lsq.RunsTest(e)
+	add("runs", "runs of equal sign in the order of acquisition", t, err)
+	t, err = lsq.AndersonDarling(e)
+	add("normality", "normal distribution of the residuals (Anderson–Darling)", t, err)
 	return out
 }

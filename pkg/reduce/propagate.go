@@ -123,7 +123,7 @@ func Propagate(ctx context.Context, b *bench.Budget, s PropagateSettings) (*Prop
 }
 
 // PropagatePart does part index of the run cut into of parts. Written as JSON and
-// read again anywhere, all parts give to MergeParts the result that part 1 of 1
+// read again anywhere, all parts give by a PartMerger the result that part 1 of 1
 // gives, to the bit.
 func PropagatePart(ctx context.Context, b *bench.Budget, s PropagateSettings, index, of int) (*gum.Part, error) {
 	p, err := gum.RunPart(ctx, b.Model, s.gum(b), index, of)
