@@ -2,31 +2,12 @@ package report
 
 import (
 	"fmt"
-	"io"
 	"math"
 	"strings"
 
 	"example.org/guardring/pkg/assess"
-	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/si"
 )
-
-// Page writes the sheet as one self-contained page of HTML with its figures
-// inline, in the style of the reports.
-func (s *Sheet) Page(w io.Writer) error {
-	p := &pager{}
-	p.document(&s.d)
-	return p.to(w)
-}
-
-// equals writes a probability with its sign: "= 0.50", "< 0.0001".
-func equals(p float64) string {
-	s := probability(reduce.Number(p))
-	if strings.HasPrefix(s, "<") {
-		return s
-	}
-	return "= " + s
-}
 
 // assessed is the unit in which results of an assessment are shown.
 func assessed(symbol string, values ...float64) si.Unit {

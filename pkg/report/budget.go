@@ -54,12 +54,45 @@ func alike(a, b *reduce.Measurand) bool {
 	return true
 }
 
+// otherPart is the title of what belongs to no named part of the bench.
+const otherPart = "other"
+
 // Budget is the table of a measurand with the columns of EA-4/02 section 4, by parts of the
 // bench, the weightiest first.
 func Budget(m *reduce.Measurand) *Table {
 	mu := shown(m)
-	cu := display(float64(m.U), m.Unit)
-	per := mu.String()
+	lines := make([]reduce.StatedLine, len(m.Budget))
+	for i, b := range m.Budget {
+		lines[i] = reduce.StatedLine{BudgetLine: b}
+	}
+	title := func(part string) string {
+		if name := words(part); name != "" {
+			return name
+		}
+		return otherPart
+	}
+	row := func(b *reduce.StatedLine) (name, v, du string, unit si.Unit) {
+		v, du, unit = measured(b.Value, b.U, b.Unit)
+		if b.Group == "readings" || b.Value == 0 && b.Sensitivity == 0 {
+			v = "–"
+		}
+		return words(b.Input), v, du, unit
+	}
+	return budgetTable(lines, mu, display(float64(m.U), m.Unit), title, row, m.U, [3]string{valueOnly(m, mu), uncertain(m.U, mu), freedom(m.DOF)})
+}
+
+func valueOnly(m *reduce.Measurand, u si.Unit) string {
+	v, _ := si.Round(u.FromSI(float64(m.Value)), u.DeltaFromSI(float64(m.U)))
+	return rounded(v)
+}
+
+// budgetTable lays out the lines of a budget by parts of the bench, the weightiest
+// first, and the combined uncertainty u under them. mu is the unit of the value, cu
+// that of the contributions; title names a part, and row gives the cells of a line
+// that its kind of budget writes in its own way. sum is the last line: value, u and
+// degrees of freedom.
+func budgetTable(budget []reduce.StatedLine, mu, cu si.Unit, title func(part string) string,
+	row func(b *reduce.StatedLine) (name, v, du string, unit si.Unit), u reduce.Number, sum [3]string) *Table {
 	t := &Table{Columns: []Column{
 		{Name: "input", Most: 22},
 		{Name: "share", Align: Bar},
@@ -69,12 +102,12 @@ func Budget(m *reduce.Measurand) *Table {
 		{Name: "unit", Close: true},
 		{Name: "shape", Most: 11},
 		{Name: "ν", Align: Right, Close: true},
-		{Name: "c", Unit: per + " per unit", Align: Right},
+		{Name: "c", Unit: mu.String() + " per unit", Align: Right},
 		{Name: "c × u", Unit: unitText(cu), Align: Decimal},
 	}}
 	weight := map[string]float64{}
 	var parts []string
-	for _, b := range m.Budget {
+	for _, b := range budget {
 		if _, ok := weight[b.Group]; !ok {
 			parts = append(parts, b.Group)
 		}
@@ -82,13 +115,13 @@ func Budget(m *reduce.Measurand) *Table {
 	}
 	sort.SliceStable(parts, func(a, b int) bool { return weight[parts[a]] > weight[parts[b]] })
 	for _, part := range parts {
-		name := words(part)
-		if name == "" {
-			name = "other"
+		if name := title(part); name != "" {
+			t.Sections = append(t.Sections, Section{Before: len(t.Rows), Name: name})
+		} else if len(parts) > 1 {
+			t.Sections = append(t.Sections, Section{Before: len(t.Rows), Name: otherPart})
 		}
-		t.Sections = append(t.Sections, Section{Before: len(t.Rows), Name: name})
-		var lines []reduce.BudgetLine
-		for _, b := range m.Budget {
+		var lines []reduce.StatedLine
+		for _, b := range budget {
 			if b.Group == part {
 				lines = append(lines, b)
 			}
@@ -96,26 +129,18 @@ func Budget(m *reduce.Measurand) *Table {
 		sort.SliceStable(lines, func(a, b int) bool {
 			return math.Abs(float64(lines[a].Share)) > math.Abs(float64(lines[b].Share))
 		})
-		for _, b := range lines {
-			v, du, unit := measured(b.Value, b.U, b.Unit)
-			if b.Group == "readings" || b.Value == 0 && b.Sensitivity == 0 {
-				v = "–"
-			}
-			// Sensitivity per display unit of the input.
-			sens := "–"
+		for i := range lines {
+			b := &lines[i]
+			name, v, du, unit := row(b)
+			sens := "–" // per display unit of the input
 			if finite(b.Sensitivity) && b.Sensitivity != 0 {
 				sens = minus(digits(mu.DeltaFromSI(float64(b.Sensitivity)*unit.DeltaToSI(1)), 2))
 			}
-			t.Rows = append(t.Rows, []string{words(b.Input), strconv.FormatFloat(float64(b.Share), 'f', 6, 64), percent(b.Share),
+			t.Rows = append(t.Rows, []string{name, strconv.FormatFloat(float64(b.Share), 'f', 6, 64), percent(b.Share),
 				v, du, unitText(unit), b.Shape, freedom(b.DOF), sens, digits(cu.DeltaFromSI(float64(b.Contribution)), 2)})
 		}
 	}
-	t.Rows = append(t.Rows, []string{"combined", "", "100.0", valueOnly(m, mu), uncertain(m.U, mu), unitText(mu), "", freedom(m.DOF), "", digits(cu.DeltaFromSI(float64(m.U)), 2)})
+	t.Rows = append(t.Rows, []string{"combined", "", "100.0", sum[0], sum[1], unitText(mu), "", sum[2], "", digits(cu.DeltaFromSI(float64(u)), 2)})
 	t.Sum = 1
 	return t
-}
-
-func valueOnly(m *reduce.Measurand, u si.Unit) string {
-	v, _ := si.Round(u.FromSI(float64(m.Value)), u.DeltaFromSI(float64(m.U)))
-	return rounded(v)
 }

@@ -259,21 +259,31 @@ func Correlations(rec *reduce.Record) *Table {
 		}
 		return minus(fmt.Sprintf("%+.3f", v))
 	}
-	if len(ps) > widestMatrix {
+	names := make([]string, len(ps))
+	for i := range ps {
+		names[i] = words(ps[i].Name)
+	}
+	return pairwise("parameter", names, len(ps) > widestMatrix, r)
+}
+
+// pairwise is a table of what r says of every two of the things named: a triangle, or
+// a list of pairs. kind heads the names of the triangle.
+func pairwise(kind string, names []string, list bool, r func(i, j int) string) *Table {
+	if list {
 		t := &Table{Columns: []Column{{Name: "between"}, {Name: "and"}, {Name: "r", Align: Right}}}
-		for i := range ps {
+		for i := range names {
 			for j := range i {
-				t.Rows = append(t.Rows, []string{words(ps[j].Name), words(ps[i].Name), r(i, j)})
+				t.Rows = append(t.Rows, []string{names[j], names[i], r(i, j)})
 			}
 		}
 		return t
 	}
-	t := &Table{Columns: []Column{{Name: ""}, {Name: "parameter", Most: 30}}}
-	for i := range ps[:len(ps)-1] {
+	t := &Table{Columns: []Column{{Name: ""}, {Name: kind, Most: 30}}}
+	for i := range names[:len(names)-1] {
 		t.Columns = append(t.Columns, Column{Name: strconv.Itoa(i + 1), Align: Right})
 	}
-	for i := range ps {
-		row := []string{strconv.Itoa(i + 1), words(ps[i].Name)}
+	for i, name := range names {
+		row := []string{strconv.Itoa(i + 1), name}
 		for j := range i {
 			row = append(row, r(i, j))
 		}
@@ -286,12 +296,7 @@ func (d *document) goodness(rec *reduce.Record) {
 	f := &rec.Fit
 	d.head("Goodness of the fit")
 	var facts []fact
-	chi := fmt.Sprintf("%s with %s", digits(float64(f.ChiSquared), 4), plural(f.DOF, "degree of freedom", "degrees of freedom"))
-	if finite(f.PValue) {
-		chi += ", p = " + probability(f.PValue)
-		chi = strings.ReplaceAll(chi, "p = <", "p <")
-	}
-	facts = append(facts, fact{"chi-squared", chi})
+	facts = append(facts, fact{"chi-squared", chiSquared(f)})
 	birge := digits(float64(f.BirgeRatio), 3)
 	if !f.ScaledByResiduals {
 		birge += " (nothing has been rescaled by it)"
@@ -507,15 +512,7 @@ func (d *document) exclusions(rec *reduce.Record) {
 func (d *document) provenance(rec *reduce.Record) {
 	d.head("Inputs and run")
 	if len(rec.Inputs) > 0 {
-		t := &Table{Columns: []Column{{Name: "file", Most: 24}, {Name: "rows", Align: Right}, {Name: "SHA-256", Most: 64}}}
-		for _, in := range rec.Inputs {
-			rows := ""
-			if in.Rows > 0 {
-				rows = strconv.Itoa(in.Rows)
-			}
-			t.Rows = append(t.Rows, []string{in.File, rows, in.SHA256})
-		}
-		d.show(t)
+		d.show(files(rec.Inputs))
 	}
 	run := "guardring " + rec.Guardring + ", command " + rec.Run.Command
 	var keys []string
@@ -536,4 +533,26 @@ func (d *document) provenance(rec *reduce.Record) {
 		run += ", law only"
 	}
 	d.say(run + ".")
+}
+
+// files is the table of the files that a result depends on.
+func files(inputs []reduce.Input) *Table {
+	t := &Table{Columns: []Column{{Name: "file", Most: 24}, {Name: "rows", Align: Right}, {Name: "SHA-256", Most: 64}}}
+	for _, in := range inputs {
+		rows := ""
+		if in.Rows > 0 {
+			rows = strconv.Itoa(in.Rows)
+		}
+		t.Rows = append(t.Rows, []string{in.File, rows, in.SHA256})
+	}
+	return t
+}
+
+// chiSquared says chi-squared with its degrees of freedom and its probability.
+func chiSquared(f *reduce.Fit) string {
+	s := fmt.Sprintf("%s with %s", digits(float64(f.ChiSquared), 4), plural(f.DOF, "degree of freedom", "degrees of freedom"))
+	if finite(f.PValue) {
+		s += ", p " + equals(float64(f.PValue))
+	}
+	return s
 }

@@ -12,7 +12,7 @@ type document struct {
 	blocks   []block
 }
 
-// block is one piece of a report; exactly one of its fields after rank is set.
+// block is one piece of a report; exactly one of its fields is set.
 type block struct {
 	heading string
 	caution *caution

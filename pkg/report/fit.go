@@ -76,12 +76,7 @@ func (d *document) fitGoodness(rec *reduce.FitRecord) {
 		facts = append(facts, fact{"chi-squared", plural(f.DOF, "degree of freedom", "degrees of freedom") + "; it can't be tested, since the noise comes from the residuals"},
 			fact{"Birge ratio", "not defined without stated noise"})
 	} else {
-		chi := fmt.Sprintf("%s with %s", digits(float64(f.ChiSquared), 4), plural(f.DOF, "degree of freedom", "degrees of freedom"))
-		if finite(f.PValue) {
-			chi += ", p = " + probability(f.PValue)
-			chi = strings.ReplaceAll(chi, "p = <", "p <")
-		}
-		facts = append(facts, fact{"chi-squared", chi}, fact{"Birge ratio", digits(float64(f.BirgeRatio), 3) + " (nothing has been rescaled by it)"})
+		facts = append(facts, fact{"chi-squared", chiSquared(f)}, fact{"Birge ratio", digits(float64(f.BirgeRatio), 3) + " (nothing has been rescaled by it)"})
 	}
 	if finite(f.ResidualStandardDeviation) {
 		facts = append(facts, fact{"residual standard deviation", one(f.ResidualStandardDeviation, f.ResponseUnit, 3)})
@@ -315,15 +310,7 @@ func (d *document) secondOpinion(rec *reduce.FitRecord) {
 // fitProvenance lists the files and how to run it again.
 func (d *document) fitProvenance(inputs []reduce.Input, version string, run reduce.RunRecord) {
 	d.head("Inputs and run")
-	t := &Table{Columns: []Column{{Name: "file", Most: 24}, {Name: "rows", Align: Right}, {Name: "SHA-256", Most: 64}}}
-	for _, in := range inputs {
-		rows := ""
-		if in.Rows > 0 {
-			rows = strconv.Itoa(in.Rows)
-		}
-		t.Rows = append(t.Rows, []string{in.File, rows, in.SHA256})
-	}
-	d.show(t)
+	d.show(files(inputs))
 	s := "guardring " + version + ", command " + run.Command
 	keys := make([]string, 0, len(run.Options))
 	for k := range run.Options {

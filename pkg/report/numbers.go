@@ -1,6 +1,7 @@
 package report
 
 import (
+	"fmt"
 	"math"
 	"strconv"
 	"strings"
@@ -189,3 +190,70 @@ func plural(n int, one, many string) string {
 
 // words makes a key of the bench readable.
 func words(key string) string { return figure.Words(key) }
+
+// quantity writes a difference, SI, with n significant digits and its unit.
+func quantity(x float64, unit si.Unit, n int) string {
+	s := minus(digits(unit.DeltaFromSI(x), n))
+	if t := unitText(unit); t != "" {
+		s += nbsp + t
+	}
+	return s
+}
+
+// equals writes a probability with its sign: "= 0.50", "< 0.0001".
+func equals(p float64) string {
+	s := probability(reduce.Number(p))
+	if strings.HasPrefix(s, "<") {
+		return s
+	}
+	return "= " + s
+}
+
+// Words makes a key of a bench or record readable: "disc_radius" is "disc
+// radius", "channels.voltage.gain" is "voltage gain".
+func Words(key string) string { return words(key) }
+
+// Number writes x with n significant digits for people, with a true minus sign.
+func Number(x float64, n int) string { return minus(digits(x, n)) }
+
+// Plain writes x with at most n significant digits and no idle zeros.
+func Plain(x float64, n int) string { return minus(short(x, n)) }
+
+// Measured writes a value and its standard uncertainty, both in unit, rounded
+// after GUM 7.2.6.
+func Measured(value, u float64, unit si.Unit) (v, du string) {
+	x, ux := unit.FromSI(value), unit.DeltaFromSI(u)
+	if !(ux > 0) {
+		return minus(short(x, 12)), minus(short(ux, 2))
+	}
+	v, du = si.Round(x, ux)
+	return minus(power(v)), power(du)
+}
+
+// fixed writes x with n digits after the point; nothing for what is not known.
+func fixed(x float64, n int) string {
+	if x != x {
+		return ""
+	}
+	s := fmt.Sprintf("%.*f", n, x)
+	if strings.Trim(s, "-0.") == "" {
+		s = strings.TrimPrefix(s, "-")
+	}
+	return minus(s)
+}
+
+// In writes x, SI, in a unit with exactly n significant digits; an unknown
+// number is a dash.
+func In(x float64, unit si.Unit, n int) string {
+	if math.IsNaN(x) {
+		return "–"
+	}
+	return minus(digits(unit.DeltaFromSI(x), n))
+}
+
+// Unit is the unit in which people read x, SI, of the dimension of symbol, and
+// its name: nothing for pure numbers.
+func Unit(x float64, symbol string) (si.Unit, string) {
+	u := display(math.Abs(x), symbol)
+	return u, unitText(u)
+}

@@ -4,8 +4,6 @@ import (
 	"fmt"
 	"io"
 	"math"
-	"sort"
-	"strconv"
 	"strings"
 
 	"example.org/guardring/pkg/figure"
@@ -118,15 +116,6 @@ func outputUnit(o *reduce.BudgetResult) si.Unit {
 	return u
 }
 
-// quantity writes a difference, SI, with n significant digits and its unit.
-func quantity(x float64, unit si.Unit, n int) string {
-	s := minus(digits(unit.DeltaFromSI(x), n))
-	if t := unitText(unit); t != "" {
-		s += nbsp + t
-	}
-	return s
-}
-
 // statedOutput gives the two lines of an output.
 func statedOutput(o *reduce.BudgetResult) result {
 	u := outputUnit(o)
@@ -209,67 +198,21 @@ func BudgetTable(o *reduce.BudgetResult) *Table {
 	}
 	mu := outputUnit(o)
 	_, cu := si.Prefixed(float64(l.U), deltaUnit(mu))
-	t := &Table{Columns: []Column{
-		{Name: "input", Most: 22},
-		{Name: "share", Align: Bar},
-		{Name: "", Unit: "%", Align: Decimal, Close: true},
-		{Name: "estimate", Align: Right},
-		{Name: "u", Align: Right},
-		{Name: "unit", Close: true},
-		{Name: "shape", Most: 11},
-		{Name: "ν", Align: Right, Close: true},
-		{Name: "c", Unit: mu.String() + " per unit", Align: Right},
-		{Name: "c × u", Unit: unitText(cu), Align: Decimal},
-	}}
-	weight := map[string]float64{}
-	var parts []string
-	for _, b := range l.Budget {
-		if _, ok := weight[b.Group]; !ok {
-			parts = append(parts, b.Group)
+	row := func(b *reduce.StatedLine) (name, v, du string, unit si.Unit) {
+		unit = unitOf(b.StatedUnit)
+		v, du = minus(short(unit.FromSI(float64(b.Value)), 12)), "0"
+		if b.U > 0 {
+			rv, ru := si.Round(unit.FromSI(float64(b.Value)), unit.DeltaFromSI(float64(b.U)))
+			v, du = rounded(rv), power(ru)
 		}
-		weight[b.Group] += math.Abs(float64(b.Share))
-	}
-	sort.SliceStable(parts, func(a, b int) bool { return weight[parts[a]] > weight[parts[b]] })
-	for _, part := range parts {
-		if len(parts) > 1 || part != "" {
-			name := figure.OneLine(part)
-			if name == "" {
-				name = "other"
-			}
-			t.Sections = append(t.Sections, Section{Before: len(t.Rows), Name: name})
-		}
-		var lines []reduce.StatedLine
-		for _, b := range l.Budget {
-			if b.Group == part {
-				lines = append(lines, b)
-			}
-		}
-		sort.SliceStable(lines, func(a, b int) bool {
-			return math.Abs(float64(lines[a].Share)) > math.Abs(float64(lines[b].Share))
-		})
-		for _, b := range lines {
-			unit := unitOf(b.StatedUnit)
-			v, du := minus(short(unit.FromSI(float64(b.Value)), 12)), "0"
-			if b.U > 0 {
-				rv, ru := si.Round(unit.FromSI(float64(b.Value)), unit.DeltaFromSI(float64(b.U)))
-				v, du = rounded(rv), power(ru)
-			}
-			sens := "–"
-			if finite(b.Sensitivity) && b.Sensitivity != 0 {
-				sens = minus(digits(mu.DeltaFromSI(float64(b.Sensitivity)*unit.DeltaToSI(1)), 2))
-			}
-			t.Rows = append(t.Rows, []string{b.Input, strconv.FormatFloat(float64(b.Share), 'f', 6, 64), percent(b.Share),
-				v, du, unitText(unit), b.Shape, freedom(b.DOF), sens, digits(cu.DeltaFromSI(float64(b.Contribution)), 2)})
-		}
+		return b.Input, v, du, unit
 	}
 	v, du := si.Round(mu.FromSI(float64(l.Value)), mu.DeltaFromSI(float64(l.U)))
 	nu := freedom(l.DOF)
 	if l.DOFUnknown {
 		nu = "–"
 	}
-	t.Rows = append(t.Rows, []string{"combined", "", "100.0", rounded(v), power(du), unitText(mu), "", nu, "", digits(cu.DeltaFromSI(float64(l.U)), 2)})
-	t.Sum = 1
-	return t
+	return budgetTable(l.Budget, mu, cu, figure.OneLine, row, l.U, [3]string{rounded(v), power(du), nu})
 }
 
 // deltaUnit is the unit of differences of a unit with an offset.
@@ -374,33 +317,16 @@ func (d *document) jointly(rec *reduce.PropagationRecord, drawn *reduce.Propagat
 		return
 	}
 	d.head("Outputs together")
-	t := &Table{Columns: []Column{{Name: ""}, {Name: "output", Most: 30}}}
-	for i := range n - 1 {
-		t.Columns = append(t.Columns, Column{Name: strconv.Itoa(i + 1), Align: Right})
+	names := make([]string, n)
+	for i := range names {
+		names[i] = rec.Outputs[i].Name
 	}
-	for i := range n {
-		row := []string{strconv.Itoa(i + 1), rec.Outputs[i].Name}
-		for j := range i {
-			s := "unknown"
-			if r := rec.Correlation[i][j]; finite(r) {
-				s = minus(fmt.Sprintf("%+.4f", float64(r)))
-			}
-			row = append(row, s)
+	t := pairwise("output", names, n > widestMatrix+1, func(i, j int) string {
+		if r := rec.Correlation[i][j]; finite(r) {
+			return minus(fmt.Sprintf("%+.4f", float64(r)))
 		}
-		t.Rows = append(t.Rows, row)
-	}
-	if n > widestMatrix+1 {
-		t = &Table{Columns: []Column{{Name: "between"}, {Name: "and"}, {Name: "r", Align: Right}}}
-		for i := range n {
-			for j := range i {
-				s := "unknown"
-				if r := rec.Correlation[i][j]; finite(r) {
-					s = minus(fmt.Sprintf("%+.4f", float64(r)))
-				}
-				t.Rows = append(t.Rows, []string{rec.Outputs[j].Name, rec.Outputs[i].Name, s})
-			}
-		}
-	}
+		return "unknown"
+	})
 	t.Caption = "Correlation of the outputs"
 	d.show(t)
 	for i := range n {

@@ -99,7 +99,7 @@ func (d *document) series(rec *reduce.Record, figures *figure.Data) {
 	}
 	all, err := figures.Curves()
 	if err != nil {
-		d.say("No figure here: " + strings.TrimPrefix(err.Error(), "figure: ") + ".")
+		d.picture(nil, err)
 		return
 	}
 	for _, f := range all {

@@ -1,6 +1,7 @@
 package report
 
 import (
+	"io"
 	"strings"
 
 	"example.org/guardring/pkg/figure"
@@ -83,6 +84,14 @@ func (s *Sheet) LaTeX() string {
 	t := &setter{tight: true}
 	t.sheet(&s.d)
 	return t.b.String()
+}
+
+// Page writes the sheet as one self-contained page of HTML with its figures
+// inline, in the style of the reports.
+func (s *Sheet) Page(w io.Writer) error {
+	p := &pager{}
+	p.document(&s.d)
+	return p.to(w)
 }
 
 // SimpleRender gives the forms that a notebook can show.

@@ -164,11 +164,9 @@ func (t *Table) LaTeX(w io.Writer) error {
 
 // String returns the text form.
 func (t *Table) String() string {
-	var b strings.Builder
 	p := &printer{}
 	p.table(t)
-	b.WriteString(p.b.String())
-	return b.String()
+	return p.b.String()
 }
 
 // SimpleRender gives the forms that a notebook can show.

@@ -2,8 +2,6 @@ package report
 
 import (
 	"fmt"
-	"math"
-	"strings"
 
 	"example.org/guardring/pkg/figure"
 	"example.org/guardring/pkg/reduce"
@@ -165,27 +163,6 @@ func Inputs(rec *reduce.Record) *Sheet {
 	return part(func(d *document) { d.provenance(rec) })
 }
 
-// Words makes a key of a bench or record readable: "disc_radius" is "disc
-// radius", "channels.voltage.gain" is "voltage gain".
-func Words(key string) string { return words(key) }
-
-// Number writes x with n significant digits for people, with a true minus sign.
-func Number(x float64, n int) string { return minus(digits(x, n)) }
-
-// Plain writes x with at most n significant digits and no idle zeros.
-func Plain(x float64, n int) string { return minus(short(x, n)) }
-
-// Measured writes a value and its standard uncertainty, both in unit, rounded
-// after GUM 7.2.6.
-func Measured(value, u float64, unit si.Unit) (v, du string) {
-	x, ux := unit.FromSI(value), unit.DeltaFromSI(u)
-	if !(ux > 0) {
-		return minus(short(x, 12)), minus(short(ux, 2))
-	}
-	v, du = si.Round(x, ux)
-	return minus(power(v)), power(du)
-}
-
 // Readings is a table of a result's readings as they entered the fit, with their
 // places in the CSV files, residuals and leverage, units in the second header
 // row; at most most of them, all when most is 0.
@@ -256,18 +233,6 @@ func Readings(r *reduce.Result, units map[string]si.Unit, most int) *Table {
 	return t
 }
 
-// fixed writes x with n digits after the point; nothing for what is not known.
-func fixed(x float64, n int) string {
-	if x != x {
-		return ""
-	}
-	s := fmt.Sprintf("%.*f", n, x)
-	if strings.Trim(s, "-0.") == "" {
-		s = strings.TrimPrefix(s, "-")
-	}
-	return minus(s)
-}
-
 // Results adds measurands as they are stated, each with its value in short and
 // with its expanded uncertainty.
 func (s *Sheet) Results(ms []reduce.Measurand) *Sheet {
@@ -279,20 +244,4 @@ func (s *Sheet) Results(ms []reduce.Measurand) *Sheet {
 		s.d.blocks = append(s.d.blocks, block{results: rs})
 	}
 	return s
-}
-
-// In writes x, SI, in a unit with exactly n significant digits; an unknown
-// number is a dash.
-func In(x float64, unit si.Unit, n int) string {
-	if math.IsNaN(x) {
-		return "–"
-	}
-	return minus(digits(unit.DeltaFromSI(x), n))
-}
-
-// Unit is the unit in which people read x, SI, of the dimension of symbol, and
-// its name: nothing for pure numbers.
-func Unit(x float64, symbol string) (si.Unit, string) {
-	u := display(math.Abs(x), symbol)
-	return u, unitText(u)
 }
