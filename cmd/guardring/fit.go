@@ -35,7 +35,7 @@ type fitOptions struct {
 func fitCommand() *cobra.Command {
 	var o fitOptions
 	cmd := &cobra.Command{
-		Use:   "fit FILE.csv --formula FORMULA --response COLUMN --start NAME=VALUE,...",
+		Use:   "fit FILE.csv --formula FORMULA [--response COLUMN] --start NAME=VALUE,...",
 		Short: "Fit a formula to the columns of a CSV file",
 		Long: `Fit estimates the parameters of a formula by least squares, and says whether the
 estimate can be trusted. FILE may be - for standard input.
@@ -48,6 +48,11 @@ The formula is a Go expression of names, numbers, + - * /, parentheses and
 sqrt pow exp log sin cos tan asin acos atan atan2 sinh cosh tanh abs min max, with
 the constants pi eps0 qe ke g0.
 
+A formula with an equals sign is an equation that holds between the columns it
+names, such as a circle through points. It predicts no response; all its columns are
+adjusted (errors in variables), so that each needs its --predictor-noise, 0 for one
+that is exact.
+
 Without --noise the uncertainty of the readings is taken from the residuals, and
 chi-squared can't test it. With --predictor-noise the fit is one with errors in
 variables, or one with --effective-variance.`,
@@ -56,7 +61,9 @@ variables, or one with --effective-variance.`,
   guardring fit gap.csv --formula 'c_s + s/(d+d0)' --response c \
       --start c_s=2e-12,s=7e-14,d0=1e-5 --noise '0.02 pF' --predictor-noise 'd=0.5 um'
   guardring fit gap.csv --formula 'c_s + s/(d+d0)' --response c --noise u_c \
-      --start c_s=2e-12,s=7e-14 --prior d0=1e-5+-2e-6 --bound c_s=0: --html fit.html`,
+      --start c_s=2e-12,s=7e-14 --prior d0=1e-5+-2e-6 --bound c_s=0: --html fit.html
+  guardring fit rim.csv --formula 'pow(x-a, 2) + pow(y-b, 2) = pow(r, 2)' \
+      --start a=0,b=0,r=0.05 --predictor-noise 'x=2 um,y=2 um'`,
 		Args: names("one CSV file", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			if err := o.read(); err != nil {
@@ -67,11 +74,11 @@ variables, or one with --effective-variance.`,
 	}
 	f := cmd.Flags()
 	s := &o.settings
-	f.StringVar(&s.Formula, "formula", "", "`FORMULA` for the response")
-	f.StringVar(&s.Response, "response", "", "`COLUMN` that the formula predicts")
+	f.StringVar(&s.Formula, "formula", "", "`FORMULA` for the response, or LEFT = RIGHT between columns")
+	f.StringVar(&s.Response, "response", "", "`COLUMN` that the formula predicts; none of an equation")
 	f.StringArrayVar(&o.start, "start", nil, "where the search begins, `NAME=VALUE`,... in SI")
 	f.StringVar(&s.Noise, "noise", "", "standard uncertainty of one reading of the response, `COLUMN|VALUE` such as '0.3 fF'")
-	f.StringArrayVar(&o.predictors, "predictor-noise", nil, "the same for a predictor, `NAME=COLUMN|VALUE`")
+	f.StringArrayVar(&o.predictors, "predictor-noise", nil, "the same for a predictor, `NAME=COLUMN|VALUE`,...")
 	f.BoolVar(&s.EffectiveVariance, "effective-variance", false, "treat predictor noise by effective variance instead of errors in variables")
 	f.StringArrayVar(&o.fix, "fix", nil, "hold parameters at their start, or at `NAME[=VALUE]`,...")
 	f.StringArrayVar(&o.bound, "bound", nil, "keep a parameter within `NAME=LOW:HIGH`; either end may be left out")
@@ -89,10 +96,8 @@ variables, or one with --effective-variance.`,
 	f.BoolVar(&o.json, "json", false, "print the record as JSON and nothing else")
 	f.StringVar(&o.html, "html", "", "write the report as one HTML `FILE`")
 	f.StringVar(&o.figures, "figures", "", "write the figures as SVG into folder `DIR`")
-	for _, name := range []string{"formula", "response"} {
-		if err := cmd.MarkFlagRequired(name); err != nil {
-			panic(err) // the flags are defined above
-		}
+	if err := cmd.MarkFlagRequired("formula"); err != nil {
+		panic(err) // the flag is defined above
 	}
 	return cmd
 }
@@ -179,7 +184,7 @@ func (o *fitOptions) read() error {
 		}
 		s.Priors[name] = reduce.Prior{Value: reduce.Number(v), U: reduce.Number(d)}
 	}
-	for _, item := range o.predictors {
+	for _, item := range items(o.predictors) {
 		name, text, err := assignment("predictor-noise", item, "'d=0.5 um'")
 		if err != nil {
 			return err
@@ -196,23 +201,8 @@ func (o *fitOptions) read() error {
 	if s.Probability, err = probabilityFlag(o.probability); err != nil {
 		return err
 	}
-	switch o.decimal {
-	case "point":
-	case "comma":
-		s.CSV.DecimalComma = true
-	default:
-		return fmt.Errorf("--decimal: %q is neither point nor comma", o.decimal)
-	}
-	switch o.separator {
-	case "":
-	case "comma":
-		s.CSV.Separator = ','
-	case "semicolon":
-		s.CSV.Separator = ';'
-	case "tab":
-		s.CSV.Separator = '\t'
-	default:
-		return fmt.Errorf("--separator: %q is neither comma, semicolon nor tab", o.separator)
+	if s.CSV, err = reduce.CSVOptions(o.separator, o.decimal, ""); err != nil {
+		return fmt.Errorf("--%w", err)
 	}
 	s.CSV.Missing = o.missing
 	return nil

@@ -181,7 +181,7 @@ func TestFirstErrorsAreTold(t *testing.T) {
 // and its hint.
 func TestSameInEveryLine(t *testing.T) {
 	for _, c := range []struct{ line, want string }{
-		{"1,5;2\n", `x.csv:2: column x: "1,5" is not a number; if this is a decimal comma, say decimal = "comma" in [[readings]]; the same in 4 more lines`},
+		{"1,5;2\n", `x.csv:2: column x: "1,5" is not a number; if this is a decimal comma, say decimal = "comma" in [[readings]] (fit --decimal comma); the same in 4 more lines`},
 		{"1.5;2;3\n", `x.csv:2: the record has 3 cells, the header 2; the same in 4 more lines`},
 	} {
 		_, err := ReadCSV(strings.NewReader("x;y\n"+strings.Repeat(c.line, 5)), "x.csv", CSVSettings{})

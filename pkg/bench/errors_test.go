@@ -240,7 +240,7 @@ func TestBenchErrors(t *testing.T) {
 func TestReadingsErrors(t *testing.T) {
 	for _, c := range []struct{ old, new, want string }{
 		{"2.0001", "1.2e", `readings.csv:3: column V/kV: "1.2e" is not a number`},
-		{"2.0001", "NaN", `"NaN" is not a number; leave the cell empty when a value is missing, or say missing = ["NaN"] in [[readings]]`},
+		{"2.0001", "NaN", `"NaN" is not a number; leave the cell empty when a value is missing, or say missing = ["NaN"] in [[readings]] (fit --missing "NaN")`},
 		{"2.0001", "-Inf", `"-Inf" is not a number; leave the cell empty`},
 		{"2.0001", "0x1p3", `"0x1p3" is not a number; write it as a decimal number`},
 		{"2.0001", "2.0001 kV", `"2.0001 kV" is not a number; the unit belongs in the bench file`},

@@ -61,7 +61,7 @@ func ExampleReadCSV() {
 	fmt.Println(err)
 	// Output:
 	// [V/kV F/mN] 2 [[2.5 5] [0.0031 NaN]]
-	// force.csv:2: column V/kV: "2,5" is not a number; if this is a decimal comma, say decimal = "comma" in [[readings]]
+	// force.csv:2: column V/kV: "2,5" is not a number; if this is a decimal comma, say decimal = "comma" in [[readings]] (fit --decimal comma)
 }
 
 // A budget file gives the model that package gum propagates.

@@ -288,9 +288,9 @@ func numberHint(l *layout, cell string) string {
 	low := strings.ToLower(strings.TrimLeft(cell, "+-"))
 	switch {
 	case low == "nan" || low == "inf" || low == "infinity" || low == "na" || low == "n/a" || low == "-" || low == "null" || low == "":
-		return fmt.Sprintf("; leave the cell empty when a value is missing, or say missing = [%s] in [[readings]]", quoted(cell))
+		return fmt.Sprintf("; leave the cell empty when a value is missing, or say missing = [%s] in [[readings]] (fit --missing %s)", quoted(cell), quoted(cell))
 	case l.point == '.' && strings.Count(cell, ",") == 1 && onlyDecimal(strings.Replace(cell, ",", ".", 1)):
-		return "; if this is a decimal comma, say decimal = \"comma\" in [[readings]]"
+		return "; if this is a decimal comma, say decimal = \"comma\" in [[readings]] (fit --decimal comma)"
 	case l.point == ',' && onlyDecimal(cell):
 		return "; the bench says that decimals are written with a comma"
 	case strings.HasPrefix(low, "0x"):

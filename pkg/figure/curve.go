@@ -14,7 +14,7 @@ func OfFit(f *reduce.FormulaFit) *Data {
 		return nil
 	}
 	rec := f.Record.Reduction()
-	rec.Title = f.Record.Response + " = " + f.Record.Formula
+	rec.Title = f.Record.Title()
 	d := &Data{Record: rec, Rows: &f.Rows, Units: map[string]si.Unit{}}
 	for name, u := range f.Units {
 		d.Units[name] = u

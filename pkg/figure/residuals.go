@@ -282,13 +282,21 @@ func (d *Data) Residuals() (*Figure, error) {
 		size = 1.3
 	}
 
-	// b: against the fitted value.
+	// b: against the fitted value, or the first predictor where that is one for all, as
+	// of an equation.
 	name, unit := d.response()
+	across, fa := r.Fitted, Axis{Name: "fitted " + name, Unit: unit}
 	var fs spanner
-	for _, v := range r.Fitted {
+	for _, v := range across {
 		fs.add(v)
 	}
-	fa := Axis{Name: "fitted " + name, Unit: unit}
+	if fs.lo == fs.hi && len(r.Predictors) > 0 {
+		fs, across = spanner{}, r.Predictors[0]
+		fa = Axis{Name: words(r.PredictorNames[0]), Unit: d.unit(r.PredictorNames[0])}
+		for _, v := range across {
+			fs.add(v)
+		}
+	}
 	fa.Log = fs.lo > 0 && fs.hi/fs.lo > longAxis
 	fx, err := newScale(fa, fs, 4)
 	if err != nil {
@@ -297,7 +305,7 @@ func (d *Data) Residuals() (*Figure, error) {
 	b := &panel{c: s.c, xs: fx, ys: again(top.ys)}
 	b.at(top.x, y, w, height)
 	b.ground()
-	s.count(d.residualDots(b, r.Fitted, size, looks[0]), r.N)
+	s.count(d.residualDots(b, across, size, looks[0]), r.N)
 	b.axes(frame{tag: "b"})
 
 	// c: against leverage.

@@ -23,6 +23,16 @@ import (
 // logarithms of the unknown ones, with rational coefficients (derived from the
 // rules of Dimension); they are solved by elimination.
 func (p *Program) Infer(dims []si.Dimension, unknown []int, result si.Dimension) (found []si.Dimension, known []bool, err error) {
+	return p.infer(dims, unknown, &result)
+}
+
+// InferAny is Infer for a result of whatever dimension, as that of an equation: its
+// sides must be alike, and nothing else is asked of them.
+func (p *Program) InferAny(dims []si.Dimension, unknown []int) (found []si.Dimension, known []bool, err error) {
+	return p.infer(dims, unknown, nil)
+}
+
+func (p *Program) infer(dims []si.Dimension, unknown []int, result *si.Dimension) (found []si.Dimension, known []bool, err error) {
 	if len(dims) != len(p.vars) {
 		return nil, nil, &Error{Source: p.src, Reason: fmt.Sprintf("%d dimensions are given for %d variables", len(dims), len(p.vars))}
 	}
@@ -34,8 +44,10 @@ func (p *Program) Infer(dims []si.Dimension, unknown []int, result si.Dimension)
 	if err != nil {
 		return nil, nil, err
 	}
-	if err := f.like(p.tree, m, power{dim: result, coef: f.none()}, "the formula and the result"); err != nil {
-		return nil, nil, err
+	if result != nil {
+		if err := f.like(p.tree, m, power{dim: *result, coef: f.none()}, "the formula and the result"); err != nil {
+			return nil, nil, err
+		}
 	}
 	found, known = make([]si.Dimension, len(unknown)), make([]bool, len(unknown))
 	for _, e := range f.equations {
@@ -240,6 +252,9 @@ func (f *finder) binary(t *tree) (power, error) {
 			what := "the terms of this sum"
 			if b.op == token.SUB {
 				what = "the terms of this difference"
+			}
+			if f.p.equation && b == f.p.tree {
+				what = "the sides of this equation"
 			}
 			err = f.like(b, m, r, what)
 			if m.any {

@@ -14,6 +14,8 @@ type Program struct {
 	tree *tree
 	main *code
 
+	equation bool // the last operation is left − right of one
+
 	mu     sync.Mutex // guards what follows: derivatives are compiled when first asked for
 	graph  *graph
 	out    int32

@@ -16,7 +16,8 @@ import (
 )
 
 // FitSettings say what to fit: Formula, Response and Start must be given; Noise,
-// Priors, Bounds, Fixed and the rest may be.
+// Priors, Bounds, Fixed and the rest may be. A Formula that is an equation (left =
+// right) takes no Response and needs the PredictorNoise of every column.
 type FitSettings = reduce.FitSettings
 
 // FormulaFit is a fit of a formula to columns of numbers. In a cell it shows the

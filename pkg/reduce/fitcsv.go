@@ -15,13 +15,17 @@ import (
 // FitSettings say how to fit a formula to the columns of a table. Formula,
 // Response and a start for every parameter must be given; the rest is optional.
 //
+// A formula with an equals sign is an equation that holds between the columns it
+// names, such as pow(x-a, 2) + pow(y-b, 2) = pow(r, 2). It predicts no column, so
+// Response stays empty, and PredictorNoise must be stated for each; all are adjusted.
+//
 // A header NAME/UNIT is the variable NAME; its values are converted to SI. The
 // parameters are the names in the formula that are no columns. Starts, bounds and
 // priors are SI. Where a column in use has no unit, dimensions are not checked and
 // its numbers are taken as they stand.
 type FitSettings struct {
-	Formula  string // Go expression of columns and parameters, see package formula
-	Response string // column that the formula predicts
+	Formula  string // Go expression of columns and parameters, see package formula, or left = right
+	Response string // column that the formula predicts; "" for an equation
 
 	Start  map[string]float64    // where the search begins; a parameter with a prior may do without
 	Fixed  []string              // parameters held at their start
@@ -85,7 +89,7 @@ type FitRecord struct {
 	Run       RunRecord `json:"run"`
 	Inputs    []Input   `json:"inputs"`
 	Formula   string    `json:"formula"`
-	Response  string    `json:"response"`
+	Response  string    `json:"response"` // "": the formula is an equation
 	// Noise says in words where the uncertainty of the readings comes from.
 	Noise string `json:"noise"`
 	Fit   Fit    `json:"fit"`
@@ -100,6 +104,14 @@ type FitRecord struct {
 	Diagnosis Diagnosis   `json:"diagnosis"`
 	Warnings  []string    `json:"warnings"`
 	Rows      []RecordRow `json:"rows,omitempty"`
+}
+
+// Title is what was fitted: response = formula, or the equation.
+func (r *FitRecord) Title() string {
+	if r.Response == "" {
+		return r.Formula
+	}
+	return r.Response + " = " + r.Formula
 }
 
 // Limit is what held a parameter.

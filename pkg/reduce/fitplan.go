@@ -29,7 +29,8 @@ type fitPlan struct {
 	s          FitSettings
 	file       string
 	prog       *formula.Program
-	response   fitColumn
+	implicit   bool        // the formula is an equation between columns and predicts no response
+	response   fitColumn   // none of an equation: its at is −1
 	predictors []fitColumn // those in the formula, in its order
 	params     []string    // in the formula's order
 	units      []string    // of the parameters, coherent SI; "" where unknown
@@ -128,17 +129,24 @@ func newFitPlan(t *bench.Table, s FitSettings) (*fitPlan, error) {
 		return nil, errors.New("no formula is given, such as a + b*x")
 	}
 	columns := columnNames(t)
-	if s.Response == "" {
-		return nil, fmt.Errorf("no response is given: name the column that the formula predicts%s", perhaps("", columns))
+	p.implicit = formula.IsEquation(s.Formula)
+	p.response = fitColumn{name: sidesName, at: -1, unit: si.One}
+	switch {
+	case p.implicit && s.Response != "":
+		return nil, fmt.Errorf("the formula is an equation, which holds between columns and predicts none: leave the response (%s) out, or write the right side alone", s.Response)
+	case p.implicit:
+	case s.Response == "":
+		return nil, fmt.Errorf("no response is given: name the column that the formula predicts%s; an equation, left = right, needs none", perhaps("", columns))
+	default:
+		c, ok, err := p.find(t, s.Response)
+		if err != nil {
+			return nil, err
+		}
+		if !ok {
+			return nil, fmt.Errorf("the response %s is no column of %s%s", s.Response, t.File, perhaps(s.Response, columns))
+		}
+		p.response = c
 	}
-	c, ok, err := p.find(t, s.Response)
-	if err != nil {
-		return nil, err
-	}
-	if !ok {
-		return nil, fmt.Errorf("the response %s is no column of %s%s", s.Response, t.File, perhaps(s.Response, columns))
-	}
-	p.response = c
 	if err := p.variables(t, columns); err != nil {
 		return nil, err
 	}
@@ -151,9 +159,25 @@ func newFitPlan(t *bench.Table, s FitSettings) (*fitPlan, error) {
 	return p, p.uncertainties(t, columns)
 }
 
+// compile reads the formula or equation.
+func (p *fitPlan) compile(vars []string) (*formula.Program, error) {
+	if p.implicit {
+		return formula.CompileEquation(p.s.Formula, vars)
+	}
+	return formula.Compile(p.s.Formula, vars)
+}
+
+// names lists the names in it.
+func (p *fitPlan) names() ([]string, error) {
+	if p.implicit {
+		return formula.NamesOfEquation(p.s.Formula)
+	}
+	return formula.Names(p.s.Formula)
+}
+
 // variables finds what the formula's names are, and compiles it.
 func (p *fitPlan) variables(t *bench.Table, columns []string) error {
-	names, err := formula.Names(p.s.Formula)
+	names, err := p.names()
 	if err != nil {
 		return err
 	}
@@ -180,7 +204,7 @@ func (p *fitPlan) variables(t *bench.Table, columns []string) error {
 			known = append(known, n)
 		}
 	}
-	if _, err := formula.Compile(p.s.Formula, known); err != nil {
+	if _, err := p.compile(known); err != nil {
 		var e *formula.Error
 		if errors.As(err, &e) {
 			for _, n := range names {
@@ -212,10 +236,13 @@ func (p *fitPlan) variables(t *bench.Table, columns []string) error {
 		}
 		p.predictors = append(p.predictors, c)
 	}
+	if p.implicit && len(p.predictors) == 0 {
+		return fmt.Errorf("the equation names no column of %s%s", t.File, perhaps("", columns))
+	}
 	if len(p.params) == 0 {
 		return fmt.Errorf("every name in the formula is a column of %s: there is no parameter to estimate", t.File)
 	}
-	if p.prog, err = formula.Compile(p.s.Formula, names); err != nil {
+	if p.prog, err = p.compile(names); err != nil {
 		return err
 	}
 	for i, n := range names {
@@ -278,7 +305,7 @@ func (p *fitPlan) stated(columns []string) error {
 func (p *fitPlan) dimensions() error {
 	p.units = make([]string, len(p.params))
 	with, without := 0, ""
-	for _, c := range append([]fitColumn{p.response}, p.predictors...) {
+	for _, c := range p.columns() {
 		if c.stated {
 			with++
 		} else if without == "" {
@@ -296,16 +323,42 @@ func (p *fitPlan) dimensions() error {
 	for k, v := range p.varOfPred {
 		dims[v] = p.predictors[k].unit.Dim
 	}
-	found, known, err := p.prog.Infer(dims, p.varOfParam, p.response.unit.Dim)
+	var found []si.Dimension
+	var known []bool
+	var err error
+	if p.implicit {
+		found, known, err = p.prog.InferAny(dims, p.varOfParam)
+	} else {
+		found, known, err = p.prog.Infer(dims, p.varOfParam, p.response.unit.Dim)
+	}
 	if err != nil {
 		return err
 	}
 	for j := range found {
 		if known[j] {
 			p.units[j] = p.unitFor(found[j])
+			dims[p.varOfParam[j]] = found[j]
 		}
 	}
+	if p.implicit && !slices.Contains(known, false) { // the unit of left − right
+		d, err := p.prog.Dimension(dims)
+		if err != nil {
+			return err
+		}
+		p.response.unit, p.response.stated = d.Unit(), true
+	}
 	return nil
+}
+
+// sidesName is what the rows of an equation call their response.
+const sidesName = "left − right side"
+
+// columns are those that the formula is about.
+func (p *fitPlan) columns() []fitColumn {
+	if p.implicit {
+		return p.predictors
+	}
+	return append([]fitColumn{p.response}, p.predictors...)
 }
 
 // unitFor names the coherent unit of a dimension: by its own name, or as that of
@@ -387,6 +440,9 @@ func (p *fitPlan) uncertainties(t *bench.Table, columns []string) error {
 		}
 		p.weights = &c
 	}
+	if p.implicit {
+		return p.equation()
+	}
 	zero := p.noise.given && p.noise.column == nil && p.noise.value == 0
 	switch {
 	case zero && len(p.noisy) == 0:
@@ -398,6 +454,31 @@ func (p *fitPlan) uncertainties(t *bench.Table, columns []string) error {
 	}
 	if len(p.noisy) > 0 && !p.s.EffectiveVariance && (p.s.Profile || p.s.Robust || p.s.Bootstrap > 0) {
 		return errors.New("profile, robust and bootstrap work on a fit by least squares: with predictor noise ask for effective variance")
+	}
+	return nil
+}
+
+// equation checks what is stated of the noise of an equation's columns.
+func (p *fitPlan) equation() error {
+	some := false
+	for k, c := range p.predictors {
+		n, ok := p.noisy[k]
+		if !ok {
+			return fmt.Errorf("an equation adjusts every column that it names: state the standard uncertainty of %s (--predictor-noise), 0 for one that is exact", c.name)
+		}
+		some = some || n.column != nil || n.value > 0
+	}
+	switch {
+	case p.noise.given:
+		return errors.New("an equation has no response: state the noise of each column (--predictor-noise)")
+	case p.weights != nil:
+		return errors.New("an equation has no response that weights could be of: state the noise of each column (--predictor-noise)")
+	case !some:
+		return errors.New("every column is said to be exact; the noise of one at least must be above zero")
+	case p.s.EffectiveVariance:
+		return errors.New("effective variance is for a formula that predicts a response; an equation is fitted with errors in variables")
+	case p.s.Profile || p.s.Robust || p.s.Bootstrap > 0:
+		return errors.New("profile, robust and bootstrap work on a fit by least squares, not on an equation")
 	}
 	return nil
 }
@@ -452,7 +533,10 @@ func isName(s string) bool {
 
 // headers lists the columns in use.
 func (p *fitPlan) headers() []string {
-	out := []string{p.response.header}
+	var out []string
+	if !p.implicit {
+		out = append(out, p.response.header)
+	}
 	add := func(c *fitColumn) {
 		if c != nil && !slices.Contains(out, c.header) {
 			out = append(out, c.header)

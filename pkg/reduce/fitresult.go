@@ -34,8 +34,11 @@ type formulaOutcome struct {
 func (d *fitData) outcome(o *formulaOutcome, rows *Rows) *FormulaFit {
 	f := &FormulaFit{Units: map[string]si.Unit{}, UX: d.ux, Line: d.t.Line}
 	excluded := d.left
-	f.Record = FitRecord{Format: 1, Guardring: Version, Run: d.run(), Formula: d.prog.Source(), Response: d.response.name, Noise: d.noiseWords(),
+	f.Record = FitRecord{Format: 1, Guardring: Version, Run: d.run(), Formula: d.prog.Source(), Noise: d.noiseWords(),
 		Inputs: []Input{{File: d.recordName(), SHA256: d.t.SHA256, Rows: d.t.N, Excluded: excluded}}, Warnings: []string{}}
+	if !d.implicit {
+		f.Record.Response = d.response.name
+	}
 	fit := &f.Record.Fit
 	*fit = Fit{Method: o.method, Status: o.status.String(), Reason: o.reason, ChiSquared: Number(o.chi2), DOF: o.dof, PValue: Number(o.p),
 		BirgeRatio: Number(o.birge), ResidualSumOfSquares: Number(o.rss), ResidualStandardDeviation: Number(o.sd),
@@ -60,10 +63,13 @@ func (d *fitData) outcome(o *formulaOutcome, rows *Rows) *FormulaFit {
 		}
 	}
 	d.limits(f, o)
-	for _, c := range append([]fitColumn{d.response}, d.predictors...) {
+	for _, c := range d.predictors {
 		if c.stated {
 			f.Units[c.name] = c.unit
 		}
+	}
+	if d.response.stated {
+		f.Units[d.response.name] = d.response.unit
 	}
 	rows.N = len(d.y)
 	rows.Record = d.record
@@ -164,6 +170,7 @@ func (d *fitData) noiseWords() string {
 	}
 	var s string
 	switch {
+	case d.implicit:
 	case d.weights != nil:
 		s = d.response.name + ": weights from column " + d.weights.header + ", their scale from the residuals"
 	case d.noise.given:
@@ -173,7 +180,10 @@ func (d *fitData) noiseWords() string {
 	}
 	for k, c := range d.predictors {
 		if n, ok := d.noisy[k]; ok {
-			s += "; " + c.name + ": " + say(n)
+			if s != "" {
+				s += "; "
+			}
+			s += c.name + ": " + say(n)
 		}
 	}
 	return s
@@ -187,7 +197,7 @@ func (d *fitData) recordName() string {
 
 // run records the settings, so that the fit can be done again.
 func (d *fitData) run() RunRecord {
-	r := RunRecord{Command: d.s.Command, Options: map[string]string{"formula": d.s.Formula, "response": d.s.Response}, Seed: d.s.Seed}
+	r := RunRecord{Command: d.s.Command, Options: map[string]string{"formula": d.s.Formula}, Seed: d.s.Seed}
 	if r.Command == "" {
 		r.Command = "fit"
 	}
@@ -223,6 +233,7 @@ func (d *fitData) run() RunRecord {
 			r.Options[key] = v
 		}
 	}
+	set("response", d.s.Response)
 	set("noise", d.s.Noise)
 	var pn []string
 	for k, c := range d.predictors {
@@ -245,6 +256,9 @@ func (d *fitData) run() RunRecord {
 	}
 	if d.s.Probability != 0.9545 {
 		r.Options["probability"] = si.Exact(d.s.Probability)
+	}
+	for key, v := range csvOptions(d.s.CSV) {
+		r.Options[key] = v
 	}
 	return r
 }

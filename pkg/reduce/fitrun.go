@@ -89,7 +89,9 @@ func (p *fitPlan) data(t *bench.Table) (*fitData, error) {
 		}
 		return out, nil
 	}
-	d.y = take(&p.response, false)
+	if d.y = make([]float64, len(d.record)); !p.implicit {
+		d.y = take(&p.response, false)
+	}
 	var err error
 	for k := range p.predictors {
 		d.x = append(d.x, take(&p.predictors[k], false))
@@ -316,7 +318,7 @@ func (d *fitData) linear() bool {
 func (d *fitData) errorsInVariables(ctx context.Context) (*FormulaFit, error) {
 	w := d.prog.Workspace()
 	cols := append([][]float64(nil), d.cols...)
-	p := &lsq.EIVProblem{Parameters: d.pars, X: d.x, UX: d.ux, Y: d.y, UY: d.u, Eval: func(theta []float64, x [][]float64, f []float64, jac, dx [][]float64) error {
+	p := &lsq.EIVProblem{Parameters: d.pars, X: d.x, UX: d.ux, Eval: func(theta []float64, x [][]float64, f []float64, jac, dx [][]float64) error {
 		for j, v := range theta {
 			d.theta[j][0] = v
 		}
@@ -342,6 +344,9 @@ func (d *fitData) errorsInVariables(ctx context.Context) (*FormulaFit, error) {
 		w.BlockGradient(cols, wrt, f, grad)
 		return nil
 	}}
+	if !d.implicit {
+		p.Y, p.UY = d.y, d.u
+	}
 	r, err := lsq.FitEIV(ctx, p, lsq.Settings{})
 	if err != nil {
 		return nil, d.placed(err)
@@ -350,12 +355,18 @@ func (d *fitData) errorsInVariables(ctx context.Context) (*FormulaFit, error) {
 	rows := &Rows{Fitted: make([]float64, n), Residual: make([]float64, n), U: make([]float64, n), Standardised: r.Standardised,
 		Leverage: make([]float64, n), Studentised: make([]float64, n)}
 	// The rows of the record are those of the equivalent fit with effective variance
-	// at the estimates: residuals along the response, leverage of J/u.
+	// at the estimates: residuals along the response, leverage of J/u. The
+	// response of an equation is left − right, which it makes 0.
 	jac := grid(len(d.pars), n)
 	if err := d.evaluator()(r.Values, rows.Fitted, jac); err != nil {
 		return nil, err
 	}
-	d.effective(w, r.Values, grid(len(d.predictors), n), rows.U)
+	if d.effective(w, r.Values, grid(len(d.predictors), n), rows.U); d.implicit {
+		d.y, rows.Fitted = rows.Fitted, d.y
+		for i, v := range r.Standardised {
+			r.Standardised[i] = -v
+		}
+	}
 	rss := 0.0
 	for i := range d.y {
 		rows.Residual[i] = d.y[i] - rows.Fitted[i]

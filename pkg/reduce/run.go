@@ -167,7 +167,7 @@ func judge(r *Record) []error {
 	case p < 0.001:
 		w = append(w, fmt.Errorf("the residuals are larger than the stated noise allows (chi-squared probability %s): an effect is missing from the model, or the noise is understated; the uncertainty does not cover it", small(p)))
 	case p > 0.999:
-		w = append(w, fmt.Errorf("the residuals are smaller than the stated noise makes likely (chi-squared probability %.4f): the noise may be overstated", p))
+		w = append(w, fmt.Errorf("the residuals are smaller than the stated noise makes likely (chi-squared probability above %.6g): the noise may be overstated", math.Floor(p*1e4)/1e4))
 	}
 	for _, t := range r.Diagnosis.Tests {
 		if !t.Passed {

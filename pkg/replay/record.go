@@ -305,7 +305,7 @@ func (o *options) list(key string, each func(name, val string)) {
 // err is what was wrong with the options, those not known among it.
 func (o *options) err() error {
 	known := []string{"law-only", "probability", "digits", "trials", "second-order", "formula", "response", "start", "fix", "bound", "prior",
-		"noise", "predictor-noise", "weights", "effective-variance", "profile", "robust", "bootstrap"}
+		"noise", "predictor-noise", "weights", "effective-variance", "profile", "robust", "bootstrap", "separator", "decimal", "missing"}
 	var keys []string
 	for k := range o.left {
 		keys = append(keys, k)
@@ -345,6 +345,10 @@ func (o *options) fit(h *recordHead) (reduce.FitSettings, error) {
 		s.Priors[n] = reduce.Prior{Value: reduce.Number(o.parse("prior", val)), U: reduce.Number(o.parse("prior", u))}
 	})
 	o.list("predictor-noise", func(n, v string) { s.PredictorNoise[n] = v })
+	var err error
+	if s.CSV, err = reduce.CSVOptions(o.word("separator"), o.word("decimal"), o.word("missing")); err != nil {
+		o.errs = append(o.errs, fmt.Errorf("run.options.%w", err))
+	}
 	return s, o.err()
 }
 

@@ -212,6 +212,8 @@ func TestBadRecords(t *testing.T) {
 		{`{"format":1,"run":{"command":"reduce","options":{"law-only":"yes"}},"inputs":[{"file":"here.csv"}]}`, "true is due"},
 		{`{"format":1,"run":{"command":"reduce"},"inputs":[{"file":"here.csv"}]}`, "run.trials is 0"},
 		{`{"format":1,"run":{"command":"fit","options":{"start":"a=x"}},"inputs":[{"file":"here.csv"}]}`, `"x" is no number`},
+		{`{"format":1,"run":{"command":"fit","options":{"separator":"pipe"}},"inputs":[{"file":"here.csv"}]}`, `run.options.separator: "pipe" is neither comma, semicolon nor tab`},
+		{`{"format":1,"run":{"command":"fit","options":{"missing":"\"a"}},"inputs":[{"file":"here.csv"}]}`, `run.options.missing`},
 		{`{"format":1,"format":1}`, "stands twice"},
 	} {
 		dir := t.TempDir()

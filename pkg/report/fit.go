@@ -41,7 +41,7 @@ func FitSheet(f *reduce.FormulaFit, figures bool) *Sheet {
 
 // buildFit makes the document; drawn is where figures come from, nil for none.
 func buildFit(rec *reduce.FitRecord, drawn *reduce.FormulaFit) *document {
-	d := &document{title: rec.Response + " = " + rec.Formula, subtitle: fitSubtitle(rec)}
+	d := &document{title: rec.Title(), subtitle: fitSubtitle(rec)}
 	if rec.Fit.Status != "converged" {
 		d.notice([]string{"The fit has not converged (" + rec.Fit.Status + because(rec.Fit.Reason) + "); these numbers are where it stopped."})
 	}
@@ -79,7 +79,11 @@ func (d *document) fitGoodness(rec *reduce.FitRecord) {
 		facts = append(facts, fact{"chi-squared", chiSquared(f)}, fact{"Birge ratio", digits(float64(f.BirgeRatio), 3) + " (nothing has been rescaled by it)"})
 	}
 	if finite(f.ResidualStandardDeviation) {
-		facts = append(facts, fact{"residual standard deviation", one(f.ResidualStandardDeviation, f.ResponseUnit, 3)})
+		label := "residual standard deviation"
+		if rec.Response == "" { // of an equation
+			label = "standard deviation of left − right side"
+		}
+		facts = append(facts, fact{label, one(f.ResidualStandardDeviation, f.ResponseUnit, 3)})
 	}
 	if finite(f.Condition) && f.Condition > 0 {
 		facts = append(facts, fact{"condition number", digits(float64(f.Condition), 2)})

@@ -15,8 +15,11 @@ func init() {
 	imports.Packages["example.org/guardring/pkg/formula"] = imports.Package{
 		Name: "formula",
 		Binds: map[string]r.Value{
-			"Compile": r.ValueOf(p0_formula.Compile),
-			"Names":   r.ValueOf(p0_formula.Names),
+			"Compile":         r.ValueOf(p0_formula.Compile),
+			"CompileEquation": r.ValueOf(p0_formula.CompileEquation),
+			"IsEquation":      r.ValueOf(p0_formula.IsEquation),
+			"Names":           r.ValueOf(p0_formula.Names),
+			"NamesOfEquation": r.ValueOf(p0_formula.NamesOfEquation),
 		},
 		Types: map[string]r.Type{
 			"Error":     r.TypeOf((*p0_formula.Error)(nil)).Elem(),

@@ -17,6 +17,7 @@ func init() {
 		Binds: map[string]r.Value{
 			"AsFound":       r.ValueOf(p0_reduce.AsFound),
 			"AsLeft":        r.ValueOf(p0_reduce.AsLeft),
+			"CSVOptions":    r.ValueOf(p0_reduce.CSVOptions),
 			"Check":         r.ValueOf(p0_reduce.Check),
 			"DefaultTrials": r.ValueOf(int64(p0_reduce.DefaultTrials)),
 			"FitCSV":        r.ValueOf(p0_reduce.FitCSV),
