@@ -35,20 +35,12 @@ func (o *assessOptions) flags(cmd *cobra.Command) {
 // write makes every form before it writes any.
 func (o *assessOptions) write(stdout io.Writer, sheet *report.Sheet, fig *figure.Figure, doc any) error {
 	var files []outFile
-	var out bytes.Buffer
-	if o.json {
-		if err := writeJSON(&out, doc); err != nil {
-			return err
-		}
-	} else {
-		out.WriteString(sheet.String())
-	}
+	text := sheet.String()
 	if o.figures != "" {
-		var svg bytes.Buffer
-		if err := fig.WriteSVG(&svg); err != nil {
+		var err error
+		if files, err = drawn(files, o.figures, []*figure.Figure{fig}); err != nil {
 			return err
 		}
-		files = append(files, outFile{filepath.Join(o.figures, fig.Name+".svg"), svg.Bytes()})
 	}
 	if o.html != "" {
 		var page bytes.Buffer
@@ -57,11 +49,13 @@ func (o *assessOptions) write(stdout io.Writer, sheet *report.Sheet, fig *figure
 		}
 		files = append(files, outFile{o.html, page.Bytes()})
 	}
-	if err := writeFiles(files); err != nil {
-		return err
+	if !o.json {
+		doc = nil
 	}
-	_, err := stdout.Write(out.Bytes())
-	return err
+	return deliver(stdout, io.Discard, files, doc, func(w io.Writer) error {
+		_, err := io.WriteString(w, text)
+		return err
+	}, nil)
 }
 
 // comparison is the document of compare --json.

@@ -305,15 +305,3 @@ func (o *fitOptions) run(ctx context.Context, path string, stdin io.Reader, stdo
 	}
 	return nil
 }
-
-// drawn adds figures to the files.
-func drawn(files []outFile, dir string, all []*figure.Figure) ([]outFile, error) {
-	for _, f := range all {
-		var b bytes.Buffer
-		if err := f.WriteSVG(&b); err != nil {
-			return nil, err
-		}
-		files = append(files, outFile{filepath.Join(dir, f.Name+".svg"), b.Bytes()})
-	}
-	return files, nil
-}

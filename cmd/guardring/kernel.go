@@ -1,6 +1,7 @@
 package main
 
 import (
+	"context"
 	"fmt"
 
 	"github.com/spf13/cobra"
@@ -32,6 +33,22 @@ func locationFlags(cmd *cobra.Command, at *kernel.Location) {
 	cmd.MarkFlagsMutuallyExclusive("user", "prefix", "sys-prefix")
 }
 
+// sourceFlag adds the flag that says from which checkout the kernel is compiled.
+func sourceFlag(cmd *cobra.Command, source *string) {
+	cmd.Flags().StringVar(source, "source", "", "`DIR` of a checkout (default: the one around the working directory)")
+}
+
+// fromSource finds the checkout and has something made from it, with progress.
+func fromSource(cmd *cobra.Command, source string, do func(ctx context.Context, dir string) error) error {
+	dir, err := kernel.FindSource(source)
+	if err != nil {
+		return err
+	}
+	ctx, done := withProgress(cmd.Context(), cmd.ErrOrStderr())
+	defer done()
+	return do(ctx, dir)
+}
+
 func kernelBuildCommand() *cobra.Command {
 	var source, output string
 	cmd := &cobra.Command{
@@ -40,13 +57,11 @@ func kernelBuildCommand() *cobra.Command {
 		Example: "  guardring kernel build -o ./guardring-kernel",
 		Args:    nothing,
 		RunE: func(cmd *cobra.Command, _ []string) error {
-			dir, err := kernel.FindSource(source)
-			if err != nil {
+			var built bool
+			err := fromSource(cmd, source, func(ctx context.Context, dir string) (err error) {
+				built, err = kernel.Build(ctx, dir, output, cmd.ErrOrStderr())
 				return err
-			}
-			ctx, done := withProgress(cmd.Context(), cmd.ErrOrStderr())
-			built, err := kernel.Build(ctx, dir, output, cmd.ErrOrStderr())
-			done()
+			})
 			if err != nil {
 				return err
 			}
@@ -59,7 +74,7 @@ func kernelBuildCommand() *cobra.Command {
 		},
 	}
 	cmd.Flags().StringVarP(&output, "output", "o", "guardring-kernel", "`FILE` to write")
-	cmd.Flags().StringVar(&source, "source", "", "`DIR` of a checkout (default: the one around the working directory)")
+	sourceFlag(cmd, &source)
 	return cmd
 }
 
@@ -72,13 +87,12 @@ func kernelInstallCommand() *cobra.Command {
 		Example: "  guardring kernel install\n  go run -C CLONE ./cmd/guardring kernel install",
 		Args:    nothing,
 		RunE: func(cmd *cobra.Command, _ []string) error {
-			dir, err := kernel.FindSource(source)
-			if err != nil {
+			var where string
+			var built bool
+			err := fromSource(cmd, source, func(ctx context.Context, dir string) (err error) {
+				where, built, err = kernel.Install(ctx, dir, at, reduce.Version, cmd.ErrOrStderr())
 				return err
-			}
-			ctx, done := withProgress(cmd.Context(), cmd.ErrOrStderr())
-			where, built, err := kernel.Install(ctx, dir, at, reduce.Version, cmd.ErrOrStderr())
-			done()
+			})
 			if err != nil {
 				return err
 			}
@@ -91,7 +105,7 @@ func kernelInstallCommand() *cobra.Command {
 		},
 	}
 	locationFlags(cmd, &at)
-	cmd.Flags().StringVar(&source, "source", "", "`DIR` of a checkout (default: the one around the working directory)")
+	sourceFlag(cmd, &source)
 	return cmd
 }
 

@@ -5,17 +5,23 @@
 //
 // Usage:
 //
-//	guardring reduce DIR...           the main job: readings to a result
-//	guardring check DIR...            read and validate a bench, reduce nothing
-//	guardring new DIR --model NAME    write a commented bench to start from
-//	guardring fit FILE.csv            fit a formula to the columns of a CSV file
-//	guardring propagate BUDGET.toml   propagate a budget by the law and by Monte Carlo
-//	guardring merge PART...           join the parts of a long propagation
-//	guardring certificate DIR -o FILE the calibration certificate: .html, .pdf, .xml
-//	guardring compare RESULT.json...  do laboratories agree
-//	guardring history DIR...          follow an instrument over its calibrations
-//	guardring kernel install          install the notebook kernel
-//	guardring version                 version and modules
+//	guardring reduce DIR...             the main job: readings to a result
+//	guardring check DIR                 read and validate a bench, reduce nothing
+//	guardring new DIR --model NAME      write a commented bench to start from
+//	guardring plan DIR                  what a design would give, before measuring
+//	guardring simulate DIR -o OUT       make readings from a stated truth
+//	guardring fit FILE.csv              fit a formula to the columns of a CSV file
+//	guardring propagate BUDGET.toml     propagate a budget by the law and by Monte Carlo
+//	guardring merge PART...             join the parts of a long propagation
+//	guardring certificate DIR -o FILE   the calibration certificate: .html, .pdf, .xml
+//	guardring compare RESULT.json...    do laboratories agree
+//	guardring history DIR...            follow an instrument over its calibrations
+//	guardring strayfield FILE.toml      the field of charged fixtures at a meter's place
+//	guardring replay FILE               run a notebook, record or pack again and compare
+//	guardring pack DIR|FILE -o FILE.zip one file that another laboratory can replay
+//	guardring kernel install            build the notebook kernel, install, list, remove it
+//	guardring man DIR                   write the manual pages
+//	guardring version                   version, modules and licences
 //
 // Run "guardring help COMMAND" for the options of a command, with an example.
 //

@@ -1,9 +1,8 @@
 package main
 
 import (
-	"bytes"
 	"fmt"
-	"path/filepath"
+	"io"
 	"sort"
 
 	"github.com/spf13/cobra"
@@ -48,26 +47,15 @@ the breakdown of air and the laboratory's limits of stored energy and charge.`,
 				if err != nil {
 					return err
 				}
-				var svg bytes.Buffer
-				if err := f.WriteSVG(&svg); err != nil {
+				if files, err = drawn(files, figures, []*figure.Figure{f}); err != nil {
 					return err
 				}
-				files = append(files, outFile{filepath.Join(figures, f.Name+".svg"), svg.Bytes()})
 			}
-			var out bytes.Buffer
+			var record any
 			if asJSON {
-				err = writeJSON(&out, p)
-			} else {
-				err = planText(&out, p)
+				record = p
 			}
-			if err != nil {
-				return err
-			}
-			if err := writeFiles(files); err != nil {
-				return err
-			}
-			_, err = cmd.OutOrStdout().Write(out.Bytes())
-			return err
+			return deliver(cmd.OutOrStdout(), cmd.ErrOrStderr(), files, record, func(w io.Writer) error { return planText(w, p) }, nil)
 		},
 	}
 	cmd.Flags().BoolVar(&asJSON, "json", false, "print the prediction as JSON and nothing else")
@@ -76,7 +64,7 @@ the breakdown of air and the laboratory's limits of stored energy and charge.`,
 }
 
 // planText prints a prediction as tables.
-func planText(w *bytes.Buffer, p *plan.Prediction) error {
+func planText(w io.Writer, p *plan.Prediction) error {
 	m := &p.Measurand
 	unit, err := si.ParseUnit(m.Unit)
 	if err != nil {

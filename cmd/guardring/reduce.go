@@ -3,11 +3,8 @@ package main
 import (
 	"bytes"
 	"context"
-	"encoding/json"
 	"fmt"
 	"io"
-	"os"
-	"path/filepath"
 
 	"github.com/spf13/cobra"
 
@@ -15,7 +12,6 @@ import (
 	"example.org/guardring/pkg/figure"
 	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/report"
-	"example.org/guardring/pkg/safefile"
 )
 
 // reduceOptions are the flags of reduce.
@@ -94,37 +90,6 @@ func (o *reduceOptions) one(ctx context.Context, dir string, stdout, stderr io.W
 	return nil
 }
 
-// deliver writes the files and prints the record, or the text when there is no
-// record to print. Text holds its warnings; beside a record they go to stderr.
-func deliver(stdout, stderr io.Writer, files []outFile, record any, text func(io.Writer) error, warnings []string) error {
-	var out bytes.Buffer
-	say := func() error { return text(&out) }
-	if record != nil {
-		say = func() error { return writeJSON(&out, record) }
-	}
-	if err := say(); err != nil {
-		return err
-	}
-	if err := writeFiles(files); err != nil {
-		return err
-	}
-	if _, err := stdout.Write(out.Bytes()); err != nil {
-		return err
-	}
-	if record != nil {
-		for _, w := range warnings {
-			fmt.Fprintf(stderr, "guardring: warning: %s\n", w)
-		}
-	}
-	return nil
-}
-
-// outFile is a file to be written.
-type outFile struct {
-	path string
-	data []byte
-}
-
 // render makes the files that the options ask for.
 func (o *reduceOptions) render(r *reduce.Result) ([]outFile, error) {
 	var files []outFile
@@ -140,38 +105,9 @@ func (o *reduceOptions) render(r *reduce.Result) ([]outFile, error) {
 		if err != nil {
 			return nil, err
 		}
-		for _, f := range all {
-			var b bytes.Buffer
-			if err := f.WriteSVG(&b); err != nil {
-				return nil, err
-			}
-			files = append(files, outFile{filepath.Join(o.figures, f.Name+".svg"), b.Bytes()})
+		if files, err = drawn(files, o.figures, all); err != nil {
+			return nil, err
 		}
 	}
 	return files, nil
-}
-
-// writeFiles writes all files or none, each whole, making folders as needed.
-func writeFiles(files []outFile) error {
-	set := make([]safefile.File, len(files))
-	for i, f := range files {
-		if dir := filepath.Dir(f.path); dir != "." {
-			if err := os.MkdirAll(dir, 0o777); err != nil {
-				return err
-			}
-		}
-		set[i] = safefile.File{Path: f.path, Write: func(w io.Writer) error {
-			_, err := w.Write(f.data)
-			return err
-		}}
-	}
-	return safefile.WriteSet(set)
-}
-
-// writeJSON prints a document with indentation and a final newline.
-func writeJSON(w io.Writer, v any) error {
-	e := json.NewEncoder(w)
-	e.SetIndent("", "  ")
-	e.SetEscapeHTML(false)
-	return e.Encode(v)
 }

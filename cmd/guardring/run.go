@@ -27,9 +27,6 @@ const (
 // differs is the error of work that is done and shows a difference.
 type differs struct{ error }
 
-// said is an error whose message has been printed already.
-type said struct{ error }
-
 // memoryLimit is where the collector starts to work harder rather than let the
 // program grow: a million rows then fit into 250 MB. It is soft, and
 // GOMEMLIMIT in the environment takes its place.
@@ -55,10 +52,7 @@ func run(ctx context.Context, args []string, stdin io.Reader, stdout, stderr io.
 	if err == nil {
 		return exitDone
 	}
-	var silent said
-	if !errors.As(err, &silent) {
-		fmt.Fprintf(stderr, "guardring: %s\n", words(err))
-	}
+	fmt.Fprintf(stderr, "guardring: %s\n", words(err))
 	var d differs
 	switch {
 	case errors.Is(err, context.Canceled) && ctx.Err() != nil:

@@ -2,7 +2,7 @@ package main
 
 import (
 	"bytes"
-	"fmt"
+	"io"
 
 	"github.com/spf13/cobra"
 
@@ -35,14 +35,7 @@ where a meter may be zeroed.`,
 			if err != nil {
 				return err
 			}
-			var out bytes.Buffer
-			if asJSON {
-				if err := writeJSON(&out, s.Record()); err != nil {
-					return err
-				}
-			} else {
-				out.WriteString(report.StrayField(s, nil).String())
-			}
+			var files []outFile
 			if drawing != "" {
 				f, err := figure.StrayField(s)
 				if err != nil {
@@ -52,19 +45,17 @@ where a meter may be zeroed.`,
 				if err := f.WriteSVG(&svg); err != nil {
 					return err
 				}
-				if err := writeFiles([]outFile{{drawing, svg.Bytes()}}); err != nil {
-					return err
-				}
+				files = []outFile{{drawing, svg.Bytes()}}
 			}
-			if _, err := cmd.OutOrStdout().Write(out.Bytes()); err != nil {
-				return err
-			}
+			rec := s.Record()
+			var record any
 			if asJSON {
-				for _, w := range s.Warnings {
-					fmt.Fprintf(cmd.ErrOrStderr(), "guardring: warning: %v\n", w)
-				}
+				record = rec
 			}
-			return nil
+			return deliver(cmd.OutOrStdout(), cmd.ErrOrStderr(), files, record, func(w io.Writer) error {
+				_, err := io.WriteString(w, report.StrayField(s, nil).String())
+				return err
+			}, rec.Warnings)
 		},
 	}
 	cmd.Flags().BoolVar(&asJSON, "json", false, "print the record as JSON and nothing else")

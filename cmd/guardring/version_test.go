@@ -5,6 +5,7 @@ import (
 	"context"
 	"os"
 	"os/exec"
+	"regexp"
 	"strings"
 	"testing"
 
@@ -85,5 +86,27 @@ func TestManualAndCompletion(t *testing.T) {
 		if code := run(context.Background(), []string{"completion", shell}, nil, &out, &bad); code != 0 || !strings.Contains(out.String(), mark) {
 			t.Errorf("completion %s: exit code %d: %s", shell, code, bad.String())
 		}
+	}
+}
+
+// TestPackageCommentListsCommands holds the manual that `go doc` shows to the
+// commands that there are.
+func TestPackageCommentListsCommands(t *testing.T) {
+	text, err := os.ReadFile("main.go")
+	if err != nil {
+		t.Fatal(err)
+	}
+	listed := map[string]bool{}
+	for _, m := range regexp.MustCompile(`(?m)^//\tguardring (\w+) `).FindAllStringSubmatch(string(text), -1) {
+		listed[m[1]] = true
+	}
+	for _, c := range newRoot().Commands() {
+		if c.IsAvailableCommand() && !listed[c.Name()] {
+			t.Errorf("the package comment does not list %s", c.Name())
+		}
+		delete(listed, c.Name())
+	}
+	for name := range listed {
+		t.Errorf("the package comment lists %s, which is no command", name)
 	}
 }
