@@ -11,6 +11,6 @@
 //		…
 //	}
 //
-// The package knows no numbers, no units and no wire protocol. It is imported by every floor and imports nothing but
+// The package knows no numbers, no units and no wire protocol. Every floor may import it; it imports nothing but
 // the standard library.
 package cell

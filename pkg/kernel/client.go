@@ -153,17 +153,6 @@ func start(ctx context.Context, l Launch, stderr io.Writer) (*Client, error) {
 	return c, nil
 }
 
-// Connect talks to a kernel that runs already. Kill and Shutdown then only close the connection and ask, in this
-// order.
-func Connect(ctx context.Context, conn Connection) (*Client, error) {
-	c := newClient(conn)
-	if err := c.connect(ctx); err != nil {
-		c.close()
-		return nil, err
-	}
-	return c, nil
-}
-
 func newClient(conn Connection) *Client {
 	// The life is there before anything runs in it: a kernel may end at once.
 	life, cancel := context.WithCancel(context.Background())
@@ -324,22 +313,8 @@ func (c *Client) SendFrames(control, stdin bool, frames ...[]byte) error {
 	return s.SendMulti(zmq4.NewMsgFrom(frames...))
 }
 
-// Encode returns the frames of a signed message, for SendFrames.
-func (c *Client) Encode(msgType string, content any) ([][]byte, error) {
-	frames, _, err := c.sign.encode(nil, msgType, nil, content)
-	return frames, err
-}
-
 // Connection returns where the kernel listens.
 func (c *Client) Connection() Connection { return c.conn }
-
-// Pid returns the process id of the kernel, 0 when this client did not start it.
-func (c *Client) Pid() int {
-	if c.process == nil {
-		return 0
-	}
-	return c.process.Process.Pid
-}
 
 // Exited is closed when the kernel's process has ended.
 func (c *Client) Exited() <-chan struct{} { return c.exited }
@@ -387,9 +362,6 @@ func (c *Client) Interrupt(ctx context.Context) error {
 
 // Signal sends a signal to the kernel's process.
 func (c *Client) Signal(s os.Signal) error {
-	if c.process == nil {
-		return errors.New("kernel: not started by this client")
-	}
 	return c.process.Process.Signal(s)
 }
 
@@ -397,10 +369,7 @@ func (c *Client) Signal(s os.Signal) error {
 // killed.
 func (c *Client) Shutdown(ctx context.Context, restart bool) error {
 	defer c.close()
-	_, err := c.Control(ctx, "shutdown_request", map[string]any{"restart": restart})
-	if c.process == nil {
-		return err
-	}
+	_, _ = c.Control(ctx, "shutdown_request", map[string]any{"restart": restart}) // it may end before it answers
 	select {
 	case <-c.exited:
 		return nil
@@ -412,23 +381,17 @@ func (c *Client) Shutdown(ctx context.Context, restart bool) error {
 
 // Kill ends the kernel's process at once and closes the connection.
 func (c *Client) Kill() {
-	if c.process != nil {
-		_ = c.process.Process.Kill() // it may have ended by itself
-		<-c.exited
-	}
+	_ = c.process.Process.Kill() // it may have ended by itself
+	<-c.exited
 	c.close()
 }
 
 func (c *Client) close() {
-	if c.cancel != nil {
-		c.cancel()
-	}
+	c.cancel()
 	for _, s := range []zmq4.Socket{c.shell, c.control, c.stdin, c.iopub} {
 		if s != nil {
 			_ = s.Close() // nothing is lost: what was sent was answered or given up
 		}
 	}
-	if c.dir != "" {
-		_ = os.RemoveAll(c.dir) // a file of ours in the system's temporary folder
-	}
+	_ = os.RemoveAll(c.dir) // a file of ours in the system's temporary folder
 }

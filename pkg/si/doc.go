@@ -9,6 +9,8 @@
 //	Unit.CheckDim, Dimension                  what may be added to what
 //	Round, Short, Expanded                    numbers for people (GUM 7.2.6)
 //	Exact, Unit.Format                        numbers for machines, bit for bit
+//	Prefixed, Unit.Suited, Unit.Coherent      the unit to show a number in
+//	Suggest                                   the word that was meant
 //	Unit.UCUM, Unit.DSI                       codes for certificates and data packages
 //	Constants, Eps0, KE …                     CODATA 2022
 //

@@ -128,10 +128,10 @@ func Exact(x float64) string {
 }
 
 // Format returns the SI value x in unit u, exactly: "50.012 mm". ParseQuantity
-// reads finite values back to the same bits when u differs from SI by a power
-// of ten (mm, kV, %, hPa), where the point of the shortest decimal is moved, and
-// for temperatures in degC (1 µK to 1e15 K): nothing is rounded. In other units (min, in, deg)
-// two roundings of one conversion lie between.
+// reads finite values back to the same bits when u differs from SI by a power of
+// ten (mm, kV, %, hPa), where the point of the shortest decimal is moved, and for
+// temperatures in degC (1 µK to 1e15 K): nothing is rounded. In other units (min,
+// in, deg) two roundings of one conversion lie between.
 func (u Unit) Format(x float64) string {
 	return join(u.Number(x), u)
 }

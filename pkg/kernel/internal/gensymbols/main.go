@@ -20,6 +20,7 @@ import (
 	"sort"
 	"strings"
 
+	"example.org/guardring/pkg/kernel/docindex"
 	"golang.org/x/tools/go/packages"
 )
 
@@ -57,13 +58,7 @@ var excluded = []string{"pkg/kernel", "pkg/replay", "pkg/safefile"}
 
 func main() {
 	check := flag.Bool("check", false, "compare the committed files with fresh ones instead of writing")
-	except := flag.String("except", "", "packages of this module to leave out while they don't compile, as pkg/a,pkg/b")
 	flag.Parse()
-	for _, e := range strings.Split(*except, ",") {
-		if e != "" {
-			excluded = append(excluded, e)
-		}
-	}
 	if err := run(*check); err != nil {
 		fmt.Fprintln(os.Stderr, "gensymbols:", err)
 		os.Exit(1)
@@ -152,7 +147,7 @@ func generate(root string, own []string) (map[string][]byte, error) {
 		if err != nil {
 			return nil, fmt.Errorf("%s: %w", path, err)
 		}
-		files[fileName(path)+".go"] = src
+		files[tableName(path)] = src
 	}
 	for _, path := range append(append([]string(nil), linked...), documented...) {
 		p := byPath[path]
@@ -163,14 +158,16 @@ func generate(root string, own []string) (map[string][]byte, error) {
 		if err != nil {
 			return nil, fmt.Errorf("%s: %w", path, err)
 		}
-		files["docs/"+fileName(path)+".json"] = data
+		files["docs/"+docindex.FileName(path)] = data
 	}
 	files["linked.go"] = list(linked)
 	return files, nil
 }
 
-func fileName(path string) string {
-	return "sym_" + strings.NewReplacer("/", "_", ".", "_", "-", "_").Replace(path)
+// tableName returns the name of the Go file that holds the table of a package, beside
+// the JSON file of its documentation.
+func tableName(path string) string {
+	return strings.TrimSuffix(docindex.FileName(path), ".json") + ".go"
 }
 
 // list writes the names of the linked-in packages as a Go variable.

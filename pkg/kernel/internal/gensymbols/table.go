@@ -7,6 +7,7 @@ import (
 	"go/format"
 	"go/token"
 	"go/types"
+	"maps"
 	"sort"
 	"strconv"
 	"strings"
@@ -138,7 +139,7 @@ func (t *tabler) proxy(obj *types.TypeName, iface *types.Interface) {
 	}
 	before := t.snapshot()
 	var fields, methods bytes.Buffer
-	name := "P_" + obj.Name()
+	full := proxyName(obj.Name(), t.pkg)
 	for m := range iface.Methods() {
 		if !m.Exported() || !t.nameable(m.Signature()) {
 			t.imports = before
@@ -165,32 +166,25 @@ func (t *tabler) proxy(obj *types.TypeName, iface *types.Interface) {
 			call = "return " + call
 		}
 		fmt.Fprintf(&fields, "\t%s_ func(%s) %s\n", m.Name(), strings.Join(params, ", "), results)
-		fmt.Fprintf(&methods, "func (p *%s_%s) %s(%s) %s { %s }\n\n", name, t.pkg.Name(), m.Name(),
+		fmt.Fprintf(&methods, "func (p *%s) %s(%s) %s { %s }\n\n", full, m.Name(),
 			strings.Join(formal, ", "), results, call)
 	}
-	full := name + "_" + t.pkg.Name()
-	full = unique(full, t.pkg.Path())
-	text := methods.String()
-	text = strings.ReplaceAll(text, "(p *"+name+"_"+t.pkg.Name()+")", "(p *"+full+")")
 	fmt.Fprintf(&t.proxySrc, "// %s lets a type declared in a cell be a %s.%s.\ntype %s struct {\n\tObject any\n%s}\n\n%s",
-		full, t.pkg.Name(), obj.Name(), full, fields.String(), text)
+		full, t.pkg.Name(), obj.Name(), full, fields.String(), methods.String())
 	t.proxies = append(t.proxies, fmt.Sprintf("%q: r.TypeOf((*%s)(nil)).Elem(),", obj.Name(), full))
 }
 
-// unique keeps proxies of equally named packages apart.
-func unique(name, path string) string {
-	if strings.HasPrefix(path, "gonum.org/v1/plot") {
-		return name + "_plot"
+// proxyName names the proxy of an interface, apart from those of equally named packages.
+func proxyName(name string, pkg *types.Package) string {
+	name = "P_" + name + "_" + pkg.Name()
+	if strings.HasPrefix(pkg.Path(), "gonum.org/v1/plot") {
+		name += "_plot"
 	}
 	return name
 }
 
 func (t *tabler) snapshot() map[string]string {
-	c := make(map[string]string, len(t.imports))
-	for k, v := range t.imports {
-		c[k] = v
-	}
-	return c
+	return maps.Clone(t.imports)
 }
 
 // nameable reports whether a signature can be written outside its package.
