@@ -81,6 +81,9 @@ type Channel struct {
 	// The instruments the gain and offset come from; "" when none is named.
 	GainInstrument, OffsetInstrument string
 
+	// Instrument gives the readings; "" when none is named.
+	Instrument string
+
 	Grouped []Grouped
 }
 
@@ -114,25 +117,11 @@ type Scalar struct {
 }
 
 // Correlation is a correlation coefficient stated between two inputs: names of
-// scalars, or "channels.NAME.gain" and "channels.NAME.offset".
+// scalars, "channels.NAME.gain" and "channels.NAME.offset", or those of allowances.
 type Correlation struct {
 	A, B string
 	R    float64
 	Line int // in the bench or budget file
-}
-
-// Instrument is equipment the bench names, for traceability and deviations.
-// Dates are ISO 8601 ("2026-03-04").
-type Instrument struct {
-	Name                            string // key in [instruments.NAME]
-	Description, Maker, Model       string
-	Serial, Firmware                string
-	Certificate, IssuedBy           string
-	Calibrated, Due                 string
-	DriftPerYear, PerKelvin         string // as written, with unit: "0.002 %", "12 ppm"
-	DriftPerYearSI, PerKelvinSI     float64
-	DriftPerYearUnit, PerKelvinUnit si.Unit
-	Line                            int
 }
 
 // Condition is a quantity of the environment that the bench states.

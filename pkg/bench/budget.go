@@ -66,6 +66,7 @@ func budgetGrammar() *grammar {
 	for _, k := range table(benchDoc, "instruments.*").keys {
 		g.at("instruments.*").child(k.name).leaf = true
 	}
+	g.at("instruments.*.calibration_temperature").makeQuantity(&quantityDoc)
 	return g
 }
 
@@ -434,6 +435,14 @@ func (b *Budget) idle() (warnings []error) {
 		}
 		if !used {
 			warnings = append(warnings, &Error{File: b.File, Line: q.Line, Key: "inputs." + q.Name, Problem: "no output uses this input"})
+		}
+	}
+	for _, in := range b.Instruments {
+		for _, k := range []struct{ text, key string }{{in.DriftPerYear, "drift_per_year"}, {in.PerKelvin, "per_kelvin"}} {
+			if k.text != "" {
+				warnings = append(warnings, &Error{File: b.File, Line: in.Line, Key: "instruments." + in.Name + "." + k.key,
+					Problem: "a budget takes only what its formulas name: make it an input of its own (value = 0, with half_width and shape = \"rectangular\")"})
+			}
 		}
 	}
 	for _, c := range b.Correlations {

@@ -54,6 +54,7 @@ func (l *loader) channel(n *node, k *model.Channel) {
 	c := Channel{Name: k.Name, NoiseDOF: math.Inf(1), Gain: gum.Exactly(1), Offset: gum.Exactly(0), ResolutionPer: "reading"}
 	like := wanted{like: k.Unit, interval: true}
 
+	c.Instrument = l.instrument(n)
 	c.Column = l.text(n, "column")
 	if n.fields["column"] == nil {
 		l.missing(n, "column", "the header of the column in the readings")

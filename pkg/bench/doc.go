@@ -37,6 +37,23 @@
 // same word in a row column) and the shared gain and offset (one for all rows):
 // true value = gain × reading + offset.
 //
+// # Instruments
+//
+// What an instrument may have moved by since its calibration is one error that all
+// its values share: the readings of the channels and the quantities that name it
+// (instrument = "caliper"), so that a radius and a spacing from one caliper move
+// together. Two keys of its table state limits either way. drift_per_year is
+// multiplied by the years from calibrated to that day of the work ([work] performed
+// to finished, else the time stamps of the readings) which lies farthest from it.
+// per_kelvin is multiplied by √(t² + u(T)² + u(T₀)²), t being the difference of the
+// temperatures T of the work and T₀ of the calibration: the product of two unknowns
+// then has its variance. Both are rectangular about zero (JCGM 100:2008 4.3.7) and
+// enter budgets as instruments.NAME.drift and instruments.NAME.temperature. A limit
+// that is a pure number ("0.002 %", "12 ppm/K") multiplies every value by 1 + error
+// as a gain does; one in the unit of the values ("2 um", "0.5 um/K") adds to them as
+// an offset does, behind the correction of the zero. Where a date or a temperature is
+// missing the bench is refused, since zero would be wrong.
+//
 // # Readings files
 //
 // CSV after RFC 4180 in UTF-8, with or without byte order mark. The first record
@@ -97,6 +114,7 @@
 //	                       with each setting
 //	  gain                 quantity: true value = gain x reading + offset, for all rows
 //	  offset               quantity, in the unit of the channel
+//	  instrument           name of a table [instruments.NAME], which gives the readings
 //	  grouped              errors that rows with the same word share
 //
 //	[[channels.NAME.grouped]] an error that rows with the same word in a row column share
@@ -110,7 +128,8 @@
 //	[quantities] quantities of the kind of bench
 //
 //	[[correlations]] correlation between two inputs
-//	  between              two names: of quantities, or channels.NAME.gain, channels.NAME.offset
+//	  between              two names: of quantities, channels.NAME.gain, channels.NAME.offset,
+//	                       instruments.NAME.drift, instruments.NAME.temperature
 //	  r                    correlation coefficient, -1 to 1
 //
 //	[corrections.NAME] a correction of the kind of bench, with its inputs
@@ -122,7 +141,7 @@
 //	  humidity             relative humidity
 //	  gravity              local acceleration of free fall
 //
-//	[instruments.NAME] an instrument, for traceability
+//	[instruments.NAME] an instrument: for traceability, and for what its values may have moved by
 //	  description          what it is
 //	  maker
 //	  model
@@ -132,8 +151,11 @@
 //	  issued_by            who calibrated it
 //	  calibrated           date
 //	  due                  date; used later, it is a deviation
-//	  drift_per_year       drift since its calibration
-//	  per_kelvin           temperature coefficient
+//	  drift_per_year       greatest drift in a year, either way: a part of the values, or in their unit;
+//	                       needs calibrated and [work] performed
+//	  per_kelvin           greatest change with a kelvin, likewise; needs calibration_temperature and
+//	                       environment.temperature
+//	  calibration_temperature quantity: temperature at its calibration
 //
 //	[drive] how the voltage is applied
 //	  kind                 balanced or one-side-earthed

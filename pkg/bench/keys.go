@@ -91,6 +91,7 @@ var benchDoc = []tableDoc{
 		{"resolution_kind", "reading (default) or setting: whether rounding is new with each reading or with each setting", `"reading"`},
 		{"gain", "quantity: true value = gain x reading + offset, for all rows", `{ value = 1, u = 0.00012 }`},
 		{"offset", "quantity, in the unit of the channel", `{ value = "0 V", u = "0.2 V" }`},
+		{"instrument", "name of a table [instruments.NAME], which gives the readings", `"divider"`},
 		{"grouped", "errors that rows with the same word share", `[{ by = "setting", u = "3 um", dof = 8 }]`},
 	}},
 	{"channels.*.grouped[]", "an error that rows with the same word in a row column share", []keyDoc{
@@ -102,7 +103,7 @@ var benchDoc = []tableDoc{
 	}},
 	{"quantities", "quantities of the kind of bench", nil},
 	{"correlations[]", "correlation between two inputs", []keyDoc{
-		{"between", "two names: of quantities, or channels.NAME.gain, channels.NAME.offset", `["disc_radius", "channels.voltage.gain"]`},
+		{"between", "two names: of quantities, channels.NAME.gain, channels.NAME.offset, instruments.NAME.drift, instruments.NAME.temperature", `["disc_radius", "channels.voltage.gain"]`},
 		{"r", "correlation coefficient, -1 to 1", `0.6`},
 	}},
 	{"corrections.*", "a correction of the kind of bench, with its inputs", []keyDoc{
@@ -114,7 +115,7 @@ var benchDoc = []tableDoc{
 		{"humidity", "relative humidity", `{ value = "45 %", u = "2 %" }`},
 		{"gravity", "local acceleration of free fall", `{ value = "9.81 m/s2", u = "0.00001 m/s2" }`},
 	}},
-	{"instruments.*", "an instrument, for traceability", []keyDoc{
+	{"instruments.*", "an instrument: for traceability, and for what its values may have moved by", []keyDoc{
 		{"description", "what it is", `"divider, 1000:1"`},
 		{"maker", "", `"(maker)"`},
 		{"model", "", `"(type)"`},
@@ -124,8 +125,9 @@ var benchDoc = []tableDoc{
 		{"issued_by", "who calibrated it", `"(laboratory)"`},
 		{"calibrated", "date", `2026-01-15`},
 		{"due", "date; used later, it is a deviation", `2027-01-15`},
-		{"drift_per_year", "drift since its calibration", `"0.002 %"`},
-		{"per_kelvin", "temperature coefficient", `"12 ppm/K"`},
+		{"drift_per_year", "greatest drift in a year, either way: a part of the values, or in their unit; needs calibrated and [work] performed", `"0.002 %"`},
+		{"per_kelvin", "greatest change with a kelvin, likewise; needs calibration_temperature and environment.temperature", `"12 ppm/K"`},
+		{"calibration_temperature", "quantity: temperature at its calibration", `"23 degC"`},
 	}},
 	{"drive", "how the voltage is applied", []keyDoc{
 		{"kind", "balanced or one-side-earthed", `"balanced"`},

@@ -54,7 +54,7 @@ type exclusion struct {
 func kindGrammar(kind *model.Kind) *grammar {
 	g := &grammar{}
 	g.add(benchDoc)
-	for _, p := range []string{"channels.*.gain", "channels.*.offset", "drive.frequency", "drive.thd", "spacing.centre"} {
+	for _, p := range []string{"channels.*.gain", "channels.*.offset", "drive.frequency", "drive.thd", "spacing.centre", "instruments.*.calibration_temperature"} {
 		g.at(p).makeQuantity(&quantityDoc)
 	}
 	g.at("channels").each = nil
@@ -142,6 +142,9 @@ func (f *folder) load(kind *model.Kind, dir string, data []byte, sum string, giv
 	if err := l.read(); err != nil {
 		return nil, err
 	}
+	if l.allowances(); l.errs.err() != nil {
+		return nil, l.errs.err()
+	}
 	l.b.Warnings = l.warn
 	return l.b, nil
 }
@@ -199,40 +202,6 @@ func (r *reader) format() bool {
 	}
 	return false
 }
-
-// instrumentTables reads [instruments.*] of a bench or a budget.
-func (r *reader) instrumentTables() []Instrument {
-	t := r.table(r.root, "instruments")
-	if t == nil {
-		return nil
-	}
-	var out []Instrument
-	for _, name := range t.keys {
-		n := r.table(t, name)
-		if n == nil {
-			continue
-		}
-		i := Instrument{Name: name, Line: n.line,
-			Description: r.text(n, "description"), Maker: r.text(n, "maker"), Model: r.text(n, "model"),
-			Serial: r.text(n, "serial"), Firmware: r.text(n, "firmware"), Certificate: r.text(n, "certificate"),
-			IssuedBy: r.text(n, "issued_by"), Calibrated: r.date(n, "calibrated"), Due: r.date(n, "due")}
-		if f := n.field("drift_per_year"); f != nil {
-			i.DriftPerYear = f.text
-			i.DriftPerYearSI, i.DriftPerYearUnit, _ = r.number(f, wanted{any: true, interval: true})
-		}
-		if f := n.field("per_kelvin"); f != nil {
-			i.PerKelvin = f.text
-			i.PerKelvinSI, i.PerKelvinUnit, _ = r.number(f, wanted{any: true, interval: true})
-		}
-		if i.Calibrated != "" && i.Due != "" && i.Due < i.Calibrated {
-			r.fail(n.field("due"), "%s is before the calibration on %s", i.Due, i.Calibrated)
-		}
-		out = append(out, i)
-	}
-	return out
-}
-
-func (l *loader) instruments() { l.b.Instruments = l.instrumentTables() }
 
 // readings reads [[readings]].
 func (l *loader) readings() {
@@ -437,6 +406,15 @@ func (l *loader) correlations() {
 				known = append(known, "channels."+c.Name+k.name)
 				exact["channels."+c.Name+k.name] = k.u == 0
 			}
+		}
+	}
+	for i := range l.b.Instruments {
+		in := &l.b.Instruments[i]
+		if in.DriftPerYear != "" {
+			known = append(known, "instruments."+in.Name+".drift")
+		}
+		if in.PerKelvin != "" {
+			known = append(known, "instruments."+in.Name+".temperature")
 		}
 	}
 	l.b.Correlations = l.correlationTables(known)

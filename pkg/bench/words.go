@@ -6,7 +6,7 @@ import "strings"
 // "contact_potential" is "contact potential". It is for people; a record keeps keys.
 func Words(key string) string {
 	s := key
-	for _, table := range []string{"channels.", "corrections.", "environment.", "quantities."} {
+	for _, table := range []string{"channels.", "corrections.", "environment.", "instruments.", "quantities."} {
 		s = strings.TrimPrefix(s, table)
 	}
 	// A key that repeats the end of its table says nothing more:

@@ -92,6 +92,11 @@ func (b *Bench) Quantities() *report.Table {
 			row(c.Name+" offset", c.Offset.Value, c.Offset.U, c.Offset.DOF, c.Unit, c.Offset.Shape, c.OffsetSource)
 		}
 	}
+	for i := range b.Bench.Instruments {
+		for _, a := range b.Bench.Instruments[i].Allowances {
+			row(report.Words(a.Name), a.Dist.Value, a.Dist.U, a.Dist.DOF, a.Unit, a.Dist.Shape, a.Source)
+		}
+	}
 	return t
 }
 

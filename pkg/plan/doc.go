@@ -14,6 +14,7 @@
 //	permittivity = "8.8597 pF/m"
 //	"channels.voltage.gain" = "1.00011"
 //	"corrections.wedge.half_difference" = "3 um"
+//	"instruments.divider.drift" = "20 ppm"   # by what it has moved since its calibration
 //	[zero]                          # of the response
 //	start = "0.031 mN"
 //	per_hour = "0.012 mN"           # drift

@@ -129,6 +129,10 @@ func scenarios(b *bench.Bench, m *reduce.Measurand) []variant {
 		c := *b
 		c.Channels = append([]bench.Channel(nil), b.Channels...)
 		c.Scalars = append([]bench.Scalar(nil), b.Scalars...)
+		c.Instruments = append([]bench.Instrument(nil), b.Instruments...)
+		for i := range c.Instruments {
+			c.Instruments[i].Allowances = append([]bench.Allowance(nil), b.Instruments[i].Allowances...)
+		}
 		for i := range c.Channels {
 			c.Channels[i].Grouped = append([]bench.Grouped(nil), b.Channels[i].Grouped...)
 		}
@@ -230,6 +234,13 @@ func halver(b *bench.Bench, name string) func(b *bench.Bench) {
 					b.Channels[i].Grouped[g].U /= 2
 					b.Channels[i].Grouped[g].Relative /= 2
 				}
+			}
+		}
+	}
+	for i := range b.Instruments {
+		for k := range b.Instruments[i].Allowances {
+			if b.Instruments[i].Allowances[k].Name == name {
+				return func(b *bench.Bench) { half(&b.Instruments[i].Allowances[k].Dist) }
 			}
 		}
 	}

@@ -99,7 +99,8 @@ func valid(b *bench.Bench, m *model.Model, q [][]float64, of []int, x [][]float6
 // Scalars returns the true scalars of a series of the bench ("" when it has only
 // one), SI, in the kind's order, squared where the kind takes squares. A truth
 // named "factor (as-left)" is that series' own; one named "factor" holds for
-// every series without.
+// every series without. A scalar that the truth does not name is what the bench
+// states of it, moved by the true errors of its instrument.
 func (t *Truth) Scalars(b *bench.Bench, series string) ([]float64, error) {
 	k := b.Kind
 	q := make([]float64, len(k.Scalars))
@@ -113,7 +114,7 @@ func (t *Truth) Scalars(b *bench.Bench, series string) ([]float64, error) {
 			if k.Scalars[i].Sought {
 				return nil, fmt.Errorf("%s: truth.%s: a simulation needs the true value of what the bench seeks", filepath.Join(b.Dir, TruthFile), reduce.SeriesName(key, series))
 			}
-			v = b.Scalars[i].Dist.Value
+			v = t.stated(b, i)
 		}
 		if k.Scalars[i].Squared {
 			v *= v
@@ -143,8 +144,9 @@ func (t *Truth) Model(b *bench.Bench, q []float64) (*model.Model, error) {
 	return m, nil
 }
 
-// scale returns the true gain and offset of a channel.
-func (t *Truth) scale(ch *bench.Channel) (gain, offset float64) {
+// scale returns the true gain and offset of a channel, moved by the true errors of
+// the instruments that give its readings.
+func (t *Truth) scale(b *bench.Bench, ch *bench.Channel) (gain, offset float64) {
 	gain = 1
 	if ch.HasGain {
 		gain = ch.Gain.Value
@@ -158,7 +160,45 @@ func (t *Truth) scale(ch *bench.Channel) (gain, offset float64) {
 	if v, ok := t.Values["channels."+ch.Name+".offset"]; ok {
 		offset = v
 	}
+	for i := range b.Instruments {
+		if in := &b.Instruments[i]; ch.From(in.Name) {
+			factor, add := t.moved(in)
+			gain, offset = gain*factor, offset+add
+		}
+	}
 	return gain, offset
+}
+
+// moved is by what factor and by how much an instrument has really moved since its
+// calibration.
+func (t *Truth) moved(in *bench.Instrument) (factor, add float64) {
+	factor = 1
+	for k := range in.Allowances {
+		a := &in.Allowances[k]
+		e, ok := t.Values[a.Name]
+		switch {
+		case !ok:
+		case a.Relative:
+			factor *= 1 + e
+		default:
+			add += e
+		}
+	}
+	return factor, add
+}
+
+// stated is the true value of scalar i where the truth does not name it: what the
+// bench states, moved by the true errors of the instrument that gave it.
+func (t *Truth) stated(b *bench.Bench, i int) float64 {
+	s := &b.Scalars[i]
+	v := s.Dist.Value
+	for n := range b.Instruments {
+		if in := &b.Instruments[n]; s.From(in.Name) {
+			factor, add := t.moved(in)
+			v = v*factor + add
+		}
+	}
+	return v
 }
 
 // trueValues draws what the predictors really were.
@@ -175,7 +215,7 @@ func trueValues(b *bench.Bench, m *model.Model, t *Truth, seed uint64) ([][]floa
 			return nil, fmt.Errorf("%s: channels.%s: the model %s needs this channel", b.Dir, name, b.Kind.Name)
 		}
 		src := random.New(seed, stream+" "+name, 0)
-		gain, offset := t.scale(ch)
+		gain, offset := t.scale(b, ch)
 		v := make([]float64, b.Rows.N)
 		for i, r := range ch.Readings {
 			e := math.Hypot(ch.Noise, ch.RelativeNoise*r) * src.Normal()
@@ -198,7 +238,7 @@ func trueValues(b *bench.Bench, m *model.Model, t *Truth, seed uint64) ([][]floa
 // response predicts the readings and disturbs them.
 func response(b *bench.Bench, m *model.Model, q [][]float64, of []int, names []string, x [][]float64, t *Truth, seed uint64) ([]float64, error) {
 	ch := &b.Channels[responseChannel(b)]
-	gain, offset := t.scale(ch)
+	gain, offset := t.scale(b, ch)
 	src := random.New(seed, stream+" "+ch.Name, 0)
 	qj := make([][]jet.Jet, len(q))
 	for s := range q {

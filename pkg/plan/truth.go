@@ -25,8 +25,10 @@ const TruthFile = "simulation.toml"
 // Truth is what a simulated bench really is, in SI.
 type Truth struct {
 	Seed uint64
-	// Values holds true scalars by key, and true gains and offsets as
-	// "channels.NAME.gain" and "channels.NAME.offset".
+	// Values holds true scalars by key, true gains and offsets (of the day of the
+	// calibration) as "channels.NAME.gain" and "channels.NAME.offset", and what
+	// instruments have moved by since as "instruments.NAME.drift" and
+	// "instruments.NAME.temperature".
 	Values map[string]float64
 	// ZeroStart and ZeroRate are the zero of the response at the first record,
 	// and its drift per second. ZeroSettling is what it had still to lose at the
@@ -261,6 +263,11 @@ func truthInputs(b *bench.Bench) map[string]truthInput {
 		ch := &b.Channels[i]
 		inputs["channels."+ch.Name+".gain"] = truthInput{unit: si.MustUnit("1"), gain: true}
 		inputs["channels."+ch.Name+".offset"] = truthInput{unit: ch.Unit}
+	}
+	for i := range b.Instruments {
+		for _, a := range b.Instruments[i].Allowances {
+			inputs[a.Name] = truthInput{unit: a.Unit}
+		}
 	}
 	return inputs
 }

@@ -25,11 +25,7 @@ func (c *chain) sensitivities(m *model.Measurand, q []float64) (value float64, b
 	for j, f := range c.free {
 		qj[f] = space.Var(j, q[f])
 	}
-	for s, in := range c.inputs {
-		if in.kind == scalarInput {
-			qj[in.index] = space.Var(np+s, q[in.index])
-		}
-	}
+	c.seedScalars(space, q, qj, np)
 	y := m.Value(qj)
 	byTheta, bySh = make([]float64, np), make([]float64, ni)
 	for j := range byTheta {

@@ -63,6 +63,10 @@ func (c *chain) carry(r *lsq.Result) (*carried, error) {
 				continue
 			}
 			rhs[a] = -(cross[a][s] - curve[a][np+s])
+			if d := c.priorSlope(&c.inputs[s], c.free[a]); d != 0 {
+				u := c.b.Scalars[c.free[a]].Dist.U
+				rhs[a] += d / (u * u)
+			}
 		}
 		d := make([]float64, np)
 		for a := range np {
@@ -125,16 +129,17 @@ type rowJets struct {
 	q      []float64
 	qj, xj []jet.Jet
 	scales []scaleJet // the response, then the predictors
+	stated []scaleJet // without derivatives
 }
 
 // scaleJet is the gain and offset of a channel.
 type scaleJet struct{ gain, offset jet.Jet }
 
 func (c *chain) newRowJets(q []float64) *rowJets {
-	r := &rowJets{c: c, q: q, qj: constants(q), xj: make([]jet.Jet, len(c.x)), scales: make([]scaleJet, 1+len(c.pred))}
+	r := &rowJets{c: c, q: q, qj: constants(q), xj: make([]jet.Jet, len(c.x)), scales: make([]scaleJet, 1+len(c.pred)), stated: make([]scaleJet, 1+len(c.pred))}
 	for k, ci := range append([]int{c.resp}, c.pred...) {
 		g, o := gainOffset(&c.b.Channels[ci])
-		r.scales[k] = scaleJet{jet.Const(g), jet.Const(o)}
+		r.stated[k] = scaleJet{jet.Const(g), jet.Const(o)}
 	}
 	return r
 }
@@ -146,16 +151,17 @@ func (r *rowJets) at(space *jet.Space, i int) jet.Jet {
 	for j, f := range c.free {
 		qj[f] = space.Var(j, q[f])
 	}
-	for s, in := range c.inputs {
-		switch in.kind {
-		case scalarInput:
-			qj[in.index] = space.Var(np+s, q[in.index])
+	c.seedScalars(space, q, qj, np)
+	copy(scales, r.stated)
+	for s := range c.inputs {
+		switch in := &c.inputs[s]; in.kind {
 		case gainInput:
 			scales[1+in.index].gain = space.Var(np+s, in.value)
 		case offsetInput:
 			scales[1+in.index].offset = space.Var(np+s, in.value)
 		}
 	}
+	c.moveScales(space, scales, np)
 	for p := range c.x {
 		if p < len(c.pred) {
 			xj[p] = scales[1+p].gain.Scale(c.xr[p][i]).Add(scales[1+p].offset)

@@ -61,6 +61,7 @@ const (
 	gainInput
 	offsetInput
 	priorInput
+	instrumentInput
 )
 
 // input is one shared input or prior.
@@ -76,6 +77,10 @@ type input struct {
 	value   float64          // as it enters (Δ² when squared)
 	u       float64
 	dof     float64
+
+	// Of an instrument: what its error moves, and whether it is a part of that.
+	targets  []target
+	relative bool
 }
 
 // newChain prepares a bench.
@@ -349,6 +354,7 @@ func (c *chain) listInputs() {
 			add(offsetInput, n-1, ch)
 		}
 	}
+	c.listInstruments(isFree)
 }
 
 // active reports whether scalar i can matter: the inputs of a correction that

@@ -60,25 +60,22 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 	}
 	// Whatever moves the ratio counts, inputs and estimates alike; what only
 	// scales the response drops out of it.
-	type source struct {
-		scalar int
-		u      float64
+	ni := len(c.inputs)
+	us := make([]float64, ni, ni+len(c.free))
+	for s, in := range c.inputs {
+		us[s] = in.u
 	}
-	var sources []source
-	for _, in := range c.inputs {
-		if in.kind == scalarInput {
-			sources = append(sources, source{in.index, in.u})
-		}
-	}
+	var estimates []int
 	for k, f := range c.free {
 		if u := c.fitU[k]; u > 0 && !math.IsInf(u, 0) {
-			sources = append(sources, source{f, u})
+			estimates = append(estimates, f)
+			us = append(us, u)
 		}
 	}
 	// A bench with very many rows is sampled evenly: the size is for people.
 	step := 1 + len(c.record)/1000
-	space := jet.NewSpace(len(sources), 0)
-	grad := make([]float64, len(sources))
+	space := jet.NewSpace(len(us), 0)
+	grad := make([]float64, len(us))
 	rows := 0.0
 	qj := constants(k.q)
 	xj := make([]jet.Jet, len(c.x))
@@ -87,8 +84,9 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 		for p := range c.x {
 			xj[p] = jet.Const(c.x[p][i])
 		}
-		for n, s := range sources {
-			qj[s.scalar] = space.Var(n, k.q[s.scalar])
+		c.seedScalars(space, k.q, qj, 0)
+		for n, f := range estimates {
+			qj[f] = space.Var(ni+n, k.q[f])
 		}
 		f0 := without.Row(qj, xj)
 		if f0.V == 0 {
@@ -97,7 +95,7 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 		f := c.m.Row(qj, xj).Div(f0)
 		rows++
 		size += f.V - 1
-		for n := range sources {
+		for n := range us {
 			grad[n] += f.Grad(n)
 		}
 	}
@@ -105,8 +103,8 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 		return 0, 0, nil
 	}
 	var v float64
-	for n, s := range sources {
-		d := grad[n] / rows * s.u
+	for n, un := range us {
+		d := grad[n] / rows * un
 		v += d * d
 	}
 	u = math.Sqrt(v)
@@ -121,11 +119,7 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 func (c *chain) factorSize(factor func(q []jet.Jet) jet.Jet, k *carried) (size, u float64) {
 	space := jet.NewSpace(len(c.inputs), 0)
 	qj := constants(k.q)
-	for s, in := range c.inputs {
-		if in.kind == scalarInput {
-			qj[in.index] = space.Var(s, k.q[in.index])
-		}
-	}
+	c.seedScalars(space, k.q, qj, 0)
 	f := factor(qj)
 	var v float64
 	for s, in := range c.inputs {

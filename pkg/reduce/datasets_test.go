@@ -63,12 +63,16 @@ func openWorld(t testing.TB, name string) *world {
 	return w
 }
 
-// trueScalar is the true value of a scalar: as the truth says, else as stated.
+// trueScalar is the true value of a scalar: as the truth says, else as stated and
+// moved by its instrument.
 func (w *world) trueScalar(i int) float64 {
 	if v, ok := w.truth.Values[w.b.Scalars[i].Name]; ok {
 		return v
 	}
-	return w.b.Scalars[i].Dist.Value
+	if w.b.Kind.Scalars[i].Squared {
+		return w.b.Scalars[i].Dist.Value
+	}
+	return w.q[i]
 }
 
 // trueMeasurand is the true value of the n-th measurand of the reduction: those
@@ -124,15 +128,43 @@ func (w *world) draw(t testing.TB, seed uint64) *bench.Bench {
 		d.Value += v
 		return d
 	}
+	// What an instrument has moved by is stated as zero: the truth lies anywhere.
+	// The values that it gave were then stated so much off.
+	for i := range b.Instruments {
+		for _, a := range b.Instruments[i].Allowances {
+			truth.Values[a.Name] = a.Dist.Sample(&src)
+		}
+	}
+	centre, moved := make([]float64, len(b.Scalars)), make([]bool, len(b.Scalars))
+	for i := range b.Scalars {
+		centre[i] = w.trueScalar(i)
+		for n := range b.Instruments {
+			in := &b.Instruments[n]
+			if !b.Scalars[i].From(in.Name) || len(in.Allowances) == 0 {
+				continue
+			}
+			truth.Values[b.Scalars[i].Name], moved[i] = w.trueScalar(i), true
+			for _, a := range in.Allowances {
+				if e := truth.Values[a.Name]; a.Relative {
+					centre[i] /= 1 + e
+				} else {
+					centre[i] -= e
+				}
+			}
+		}
+	}
 	for i := range b.Scalars {
 		s := &b.Scalars[i]
 		switch {
-		case s.Dist.U == 0 || (s.Adjust && !s.HasPrior):
+		case s.Adjust && !s.HasPrior:
+		case s.Dist.U == 0 && !moved[i]:
+		case s.Dist.U == 0:
+			s.Dist.Value = centre[i]
 		case w.b.Kind.Scalars[i].Squared:
 			// Stated as a range about zero: it is the truth that lies anywhere in it.
 			truth.Values[s.Name] = s.Dist.Sample(&src)
 		default:
-			s.Dist = about(s.Dist, w.trueScalar(i))
+			s.Dist = about(s.Dist, centre[i])
 		}
 	}
 	y, err := plan.Simulate(w.b, &truth, seed)

@@ -117,11 +117,7 @@ func (c *chain) point(n int, rows []int, level []float64, fit *lsq.Result, k *ca
 	for j, i := range c.free {
 		q[i] = space.Var(j, k.q[i])
 	}
-	for s, in := range c.inputs {
-		if in.kind == scalarInput {
-			q[in.index] = space.Var(np+s, k.q[in.index])
-		}
-	}
+	c.seedScalars(space, k.q, q, np)
 	if c.series != nil {
 		q = view(c.series, n, q)
 	}

@@ -193,6 +193,13 @@ func (w *worker) drawInputs(src *random.Source) {
 		w.gains[p], w.offsets[p] = gainOffset(&c.b.Channels[ci])
 	}
 	for s := range c.inputs {
+		for _, t := range c.inputs[s].targets {
+			if t.kind == scalarInput {
+				w.q[t.index] = w.k.q[t.index]
+			}
+		}
+	}
+	for s := range c.inputs {
 		in, v := &c.inputs[s], w.draws[s]
 		switch in.kind {
 		case scalarInput:
@@ -220,6 +227,7 @@ func (w *worker) drawInputs(src *random.Source) {
 			}
 		}
 	}
+	w.moveDraws()
 }
 
 // drawComponent adds one draw of a component to the readings.
