@@ -3,6 +3,7 @@ package main
 import (
 	"fmt"
 	"sort"
+	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -16,7 +17,8 @@ func checkCommand() *cobra.Command {
 		Use:   "check DIR",
 		Short: "Read and validate a bench without reducing it",
 		Long: `Check reads DIR/bench.toml and the readings it names, checks every key, unit and
-number and whether the model applies, and prints what it found.`,
+number and whether the model applies, and prints what it found; of each instrument
+what names it and what it may have moved by since its calibration.`,
 		Example: "  guardring check datasets/attracted-disc",
 		Args:    names("one bench folder", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {
@@ -50,6 +52,9 @@ number and whether the model applies, and prints what it found.`,
 					fmt.Fprintf(w, "given        %s = %s\n", q.Name, si.Short(q.Dist.Value, q.Dist.U, q.Unit))
 				}
 			}
+			for i := range b.Instruments {
+				fmt.Fprintf(w, "instrument   %s: %s\n", b.Instruments[i].Name, instrumentUse(&b.Instruments[i]))
+			}
 			names := make([]string, 0, len(b.Corrections))
 			for n := range b.Corrections {
 				names = append(names, n)
@@ -69,4 +74,23 @@ number and whether the model applies, and prints what it found.`,
 			return nil
 		},
 	}
+}
+
+// instrumentUse tells which keys name an instrument, and what it may have moved by
+// since its calibration.
+func instrumentUse(in *bench.Instrument) string {
+	if len(in.Named) == 0 {
+		return "nothing names it; write instrument = \"" + in.Name + "\" with the channels and quantities that it gives"
+	}
+	use := strings.Join(in.Named, ", ")
+	for i := range in.Allowances {
+		a := &in.Allowances[i]
+		half := fmt.Sprintf("%.2g %%", 100*a.Dist.Half)
+		if !a.Relative {
+			v, u := si.Prefixed(a.Dist.Half, a.Unit.Coherent())
+			half = fmt.Sprintf("%.2g %s", v, u)
+		}
+		use += fmt.Sprintf("; %s within ±%s", strings.TrimPrefix(a.Name, "instruments."+in.Name+"."), half)
+	}
+	return use
 }

@@ -18,8 +18,9 @@ func simulateCommand() *cobra.Command {
 		Short: "Make readings of a bench from a stated truth",
 		Long: `Simulate reads DIR/bench.toml with its readings and DIR/simulation.toml, which
 states the truth; keeps the settings and makes the response anew with noise,
-grouped errors, gains, offsets, zero and drift; and writes the bench with those
-readings into the new folder OUT.`,
+grouped errors, gains, offsets, what the instruments have moved by since their
+calibration, zero and drift; and writes the bench with those readings into the new
+folder OUT.`,
 		Example: "  guardring simulate datasets/attracted-disc -o again",
 		Args:    names("one bench folder", 1, 1),
 		RunE: func(cmd *cobra.Command, args []string) error {

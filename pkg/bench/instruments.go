@@ -269,7 +269,7 @@ func (l *loader) drift(in *Instrument, n, f *node) (half float64, source string,
 }
 
 // days returns the first and last day of the work: as stated, else by the time
-// stamps of the readings.
+// stamps of the readings, days of UTC.
 func (l *loader) days() (first, last time.Time, ok bool) {
 	w := &l.b.Work
 	from, to := w.Performed, w.Finished

@@ -30,6 +30,11 @@
 // inputs, priors and the components of Σ line by line (JCGM 100, 5.1 and 5.2).
 // The weights Σ are held at their values at the fit.
 //
+// What an instrument may have moved by since its calibration is one such input, e,
+// for everything that it gives: gains g(1 + e) of its channels and values p(1 + e), or
+// offsets o + e and values p + e; a prior value moves with its instrument too,
+// dθ/de = dθ/dp·dp/de.
+//
 // Even one-sided inputs (model.Scalar.Squared) enter by their square, whose
 // expectation and standard uncertainty follow from the stated distribution.
 //

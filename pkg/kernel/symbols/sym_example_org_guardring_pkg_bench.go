@@ -30,6 +30,7 @@ func init() {
 			"Zero":           r.ValueOf(p0_bench.Zero),
 		},
 		Types: map[string]r.Type{
+			"Allowance":    r.TypeOf((*p0_bench.Allowance)(nil)).Elem(),
 			"Ambient":      r.TypeOf((*p0_bench.Ambient)(nil)).Elem(),
 			"Bench":        r.TypeOf((*p0_bench.Bench)(nil)).Elem(),
 			"Budget":       r.TypeOf((*p0_bench.Budget)(nil)).Elem(),
