@@ -108,9 +108,7 @@ func (o *reduceOptions) member(ctx context.Context, dir string) (r outcome) {
 		return outcome{err: err}
 	}
 	r.record = &res.Record
-	if s := res.Record.Fit.Status; s != "converged" {
-		r.err = fmt.Errorf("%s: the fit is %s: %s", dir, s, res.Record.Fit.Reason)
-	}
+	r.err = unsettled(dir, &res.Record)
 	return r
 }
 

@@ -8,6 +8,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/cell"
 	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/si"
 )
@@ -68,7 +69,7 @@ what names it and what it may have moved by since its calibration.`,
 				fmt.Fprintf(w, "correction   %s: %s\n", n, state)
 			}
 			for _, warning := range s.Warnings {
-				fmt.Fprintf(cmd.ErrOrStderr(), "guardring: warning: %v\n", warning)
+				fmt.Fprintf(cmd.ErrOrStderr(), "guardring: warning: %s\n", cell.Visible(warning.Error()))
 			}
 			fmt.Fprintln(w, "the bench is in order")
 			return nil

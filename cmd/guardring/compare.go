@@ -10,6 +10,7 @@ import (
 	"io"
 	"os"
 	"path/filepath"
+	"reflect"
 
 	"github.com/spf13/cobra"
 
@@ -140,6 +141,46 @@ Exit code 1 says that the results do not agree.`,
 	return cmd
 }
 
+// notRecord says where a file stops being a record, and what is due there.
+func notRecord(data []byte, err error) error {
+	if bytes.HasPrefix(data, []byte("\xff\xfe")) || bytes.HasPrefix(data, []byte("\xfe\xff")) {
+		return errors.New("this is UTF-16 text, as some shells redirect it; save the file as UTF-8")
+	}
+	offset, key, what := int64(-1), "", err.Error()
+	var syntax *json.SyntaxError
+	var kind *json.UnmarshalTypeError
+	switch {
+	case errors.As(err, &syntax):
+		offset = syntax.Offset
+	case errors.As(err, &kind):
+		offset = kind.Offset
+		if kind.Field != "" {
+			key = kind.Field + ": "
+		}
+		due := "a whole number"
+		switch kind.Type.Kind() {
+		case reflect.String:
+			due = "a string"
+		case reflect.Struct, reflect.Map:
+			due = "an object"
+		case reflect.Slice, reflect.Array:
+			due = "an array"
+		case reflect.Bool:
+			due = "true or false"
+		case reflect.Float64:
+			due = "a number"
+		}
+		what = kind.Value + " where " + due + " is due"
+	}
+	if offset < 0 {
+		return fmt.Errorf("no record of reduce --json: %s", what)
+	}
+	head := data[:min(int(offset), len(data))]
+	line := 1 + bytes.Count(head, []byte{'\n'})
+	column := len(head) - bytes.LastIndexByte(head, '\n') - 1
+	return fmt.Errorf("line %d, column %d: no record of reduce --json: %s%s", line, max(column, 1), key, what)
+}
+
 // largestRecord bounds a record that is read, in bytes.
 const largestRecord = 1 << 30
 
@@ -158,8 +199,8 @@ func readRecord(path string) (*reduce.Record, reduce.Input, error) {
 		return nil, reduce.Input{}, fmt.Errorf("%s: larger than 1 GiB", path)
 	}
 	rec := new(reduce.Record)
-	if err := json.Unmarshal(data, rec); err != nil {
-		return nil, reduce.Input{}, fmt.Errorf("%s: no record of reduce --json: %w", path, err)
+	if err := json.Unmarshal(bytes.TrimPrefix(data, []byte("\xef\xbb\xbf")), rec); err != nil {
+		return nil, reduce.Input{}, fmt.Errorf("%s: %w", path, notRecord(data, err))
 	}
 	if rec.Format != 1 {
 		return nil, reduce.Input{}, fmt.Errorf("%s: no record of reduce --json: format %d where 1 is due", path, rec.Format)

@@ -8,6 +8,7 @@ import (
 	"os"
 	"path/filepath"
 
+	"example.org/guardring/pkg/cell"
 	"example.org/guardring/pkg/figure"
 	"example.org/guardring/pkg/safefile"
 )
@@ -49,7 +50,7 @@ func deliver(stdout, stderr io.Writer, files []outFile, record any, text func(io
 	}
 	if record != nil {
 		for _, w := range warnings {
-			fmt.Fprintf(stderr, "guardring: warning: %s\n", w)
+			fmt.Fprintf(stderr, "guardring: warning: %s\n", cell.Visible(w))
 		}
 	}
 	return nil

@@ -213,7 +213,7 @@ func (o *propagateOptions) print(p *reduce.Propagation, stdout, stderr io.Writer
 		return nil // the text holds the warnings
 	}
 	for _, w := range p.Record.Warnings {
-		fmt.Fprintf(stderr, "guardring: warning: %s\n", w)
+		fmt.Fprintf(stderr, "guardring: warning: %s\n", cell.Visible(w))
 	}
 	return nil
 }

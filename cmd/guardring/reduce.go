@@ -9,6 +9,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/cell"
 	"example.org/guardring/pkg/figure"
 	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/report"
@@ -67,7 +68,7 @@ func (o *reduceOptions) one(ctx context.Context, dir string, stdout, stderr io.W
 	r, err := reduce.Run(ctx, b, o.settings)
 	if err != nil { // what is odd about the bench may be why
 		for _, w := range b.Warnings {
-			fmt.Fprintf(stderr, "guardring: warning: %s\n", w)
+			fmt.Fprintf(stderr, "guardring: warning: %s\n", cell.Visible(w.Error()))
 		}
 		return err
 	}
@@ -84,8 +85,17 @@ func (o *reduceOptions) one(ctx context.Context, dir string, stdout, stderr io.W
 	if err := deliver(stdout, stderr, files, record, func(w io.Writer) error { return report.Text(w, r) }, r.Record.Warnings); err != nil {
 		return err
 	}
-	if s := r.Record.Fit.Status; s != "converged" {
-		return fmt.Errorf("%s: the fit is %s: %s", dir, s, r.Record.Fit.Reason)
+	return unsettled(dir, &r.Record)
+}
+
+// unsettled returns an error when a reduction ends without a result: its fit has
+// not converged, or nothing could be stated from it.
+func unsettled(dir string, r *reduce.Record) error {
+	switch {
+	case r.Fit.Status != "converged":
+		return fmt.Errorf("%s: the fit is %s: %s", dir, r.Fit.Status, r.Fit.Reason)
+	case len(r.Measurands) == 0:
+		return fmt.Errorf("%s: no measurand is stated; the warnings say why", dir)
 	}
 	return nil
 }

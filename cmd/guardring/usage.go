@@ -13,6 +13,7 @@ import (
 
 	"github.com/spf13/cobra"
 
+	"example.org/guardring/pkg/cell"
 	"example.org/guardring/pkg/si"
 )
 
@@ -250,5 +251,5 @@ func words(err error) string {
 			msg = strings.Join(flags, " and ") + map[bool]string{true: " is", false: " are"}[len(flags) == 1] + " missing; state " + map[bool]string{true: "it", false: "them"}[len(flags) == 1]
 		}
 	}
-	return msg
+	return cell.Visible(msg)
 }

@@ -17,6 +17,7 @@ import (
 const (
 	maxDocument = 1 << 20 // bytes
 	maxNesting  = 16      // arrays and inline tables within each other
+	maxDots     = 64      // dots in a dotted key
 	maxKeys     = 20000   // keys in all
 )
 
@@ -87,9 +88,8 @@ func document(file string, data []byte) (*node, error) {
 		line, col := place(data, bytes.IndexByte(data, 0))
 		return nil, &Error{File: file, Line: line, Column: col, Problem: "there is a zero byte here; this is not a text file"}
 	}
-	if line, col, ok := nesting(data); !ok {
-		return nil, &Error{File: file, Line: line, Column: col,
-			Problem: fmt.Sprintf("arrays and tables are nested more than %d deep", maxNesting)}
+	if line, col, problem := nesting(data); problem != "" {
+		return nil, &Error{File: file, Line: line, Column: col, Problem: problem}
 	}
 	var any map[string]any
 	if err := toml.Unmarshal(data, &any); err != nil {
@@ -110,18 +110,18 @@ func invalidUTF8(data []byte) int {
 	return len(data)
 }
 
-// nesting checks the depth of brackets before the parser recurses into them.
-// Brackets within texts and comments count too, which only makes it stricter
-// than it needs to be on one line of text with 16 of them open.
-func nesting(data []byte) (line, col int, ok bool) {
-	depth, quote := 0, byte(0)
+// nesting checks the depth of brackets and of dotted keys before the parser
+// recurses into them; it returns what is wrong, and where, or "". Brackets and dots
+// within texts and comments may count too, which only makes it stricter than it
+// needs to be on a text of several lines that holds 16 of the ones or 64 of the
+// others.
+func nesting(data []byte) (line, col int, problem string) {
+	depth, dots, quote := 0, 0, byte(0)
 	for i := 0; i < len(data); i++ {
 		c := data[i]
 		switch {
 		case c == '\n':
-			if quote != 0 {
-				quote = 0
-			}
+			quote, dots = 0, 0
 		case quote != 0:
 			if c == '\\' && quote == '"' {
 				i++
@@ -133,19 +133,27 @@ func nesting(data []byte) (line, col int, ok bool) {
 		case c == '#':
 			n := bytes.IndexByte(data[i:], '\n')
 			if n < 0 {
-				return 0, 0, true
+				return 0, 0, ""
 			}
 			i += n - 1
 		case c == '[' || c == '{':
+			dots = 0
 			if depth++; depth > maxNesting {
 				line, col = place(data, i)
-				return line, col, false
+				return line, col, fmt.Sprintf("arrays and tables are nested more than %d deep", maxNesting)
 			}
 		case c == ']' || c == '}':
 			depth = max(depth-1, 0)
+		case c == '.':
+			if dots++; dots > maxDots {
+				line, col = place(data, i)
+				return line, col, fmt.Sprintf("a key has more than %d parts", maxDots)
+			}
+		case c == '=' || c == ',':
+			dots = 0
 		}
 	}
-	return 0, 0, true
+	return 0, 0, ""
 }
 
 // place returns the line and column, in characters from 1, of a byte offset.

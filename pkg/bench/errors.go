@@ -36,11 +36,20 @@ func (e *Error) Error() string {
 		b.WriteString(": ")
 	}
 	if e.Key != "" {
-		b.WriteString(e.Key)
+		b.WriteString(brief(e.Key))
 		b.WriteString(": ")
 	}
 	b.WriteString(e.Problem)
 	return b.String()
+}
+
+// brief cuts a key that no real file has.
+func brief(key string) string {
+	const most = 200
+	if len(key) <= most {
+		return key
+	}
+	return strings.ToValidUTF8(key[:most], "") + "…"
 }
 
 // Unwrap returns the cause.

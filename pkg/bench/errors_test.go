@@ -61,6 +61,9 @@ func TestBenchErrors(t *testing.T) {
 		{`model  = "test-disc"`, "model = \"test-disc\"\ncolour", `not valid TOML`},
 		{`model  = "test-disc"`, "model = \"test-disc\"\nconnection = \"fixed\"", `connection: "fixed" is not known here`},
 		{`model  = "test-disc"`, "model = \"test-disc\"\ndeep = [[[[[[[[[[[[[[[[[1]]]]]]]]]]]]]]]]]", `nested more than 16 deep`},
+		{`model  = "test-disc"`, "model = \"test-disc\"\n" + strings.Repeat("a.", 70) + "a = 1", `bench.toml:4:130: a key has more than 64 parts`},
+		{`model  = "test-disc"`, "model = \"test-disc\"\n[" + strings.Repeat("a.", 100) + "a]", `a key has more than 64 parts`},
+		{`model  = "test-disc"`, "model = \"test-disc\"\n\"" + strings.Repeat("k", 100000) + "\" = 1", strings.Repeat("k", 200) + `…: the key is not known`},
 		{`model  = "test-disc"`, "model = \"test-disc\"\n\x00", `zero byte`},
 		{`model  = "test-disc"`, "model = \"test-disc\"\n# \xff", `bench.toml:4:3: this is not UTF-8 text`},
 
@@ -141,6 +144,8 @@ func TestBenchErrors(t *testing.T) {
 		{`u = "1.5 um"`, `expanded = "3 um"`, `an expanded uncertainty needs its k or its probability`},
 		{`u = "1.5 um"`, "expanded = \"3 um\"\nk = 2\nprobability = 0.95", `k and probability are both given`},
 		{`u = "1.5 um"`, "expanded = \"3 um\"\nk = 0", `0 where a coverage factor is due`},
+		{`u = "1.5 um"`, "expanded = \"3 um\"\nk = 1e-300", `1e-300 where a coverage factor is due, a number from 0.5 to 1000`},
+		{`noise  = "0.3 V"`, "noise = \"0.3 V\"\nnoise_dof = 1e-300", `1e-300 degrees of freedom: 0.5 belong to an uncertainty that may be wrong by all of itself`},
 		{`u = "1.5 um"`, "expanded = \"3 um\"\nprobability = 95", `95 is not a probability below 1; write "95 %"`},
 		{`u = "1.5 um"`, "u = \"1.5 um\"\nk = 2", `k belongs to expanded, which is not given`},
 		{`u = "1.5 um"`, `half_width = "2 um"`, `half_width needs a shape`},

@@ -204,10 +204,11 @@ func (r *reader) standard(n *node, U, dof float64) float64 {
 	return 0
 }
 
-// coverageFactor reads a coverage factor.
+// coverageFactor reads a coverage factor: from less than that of half the
+// probability to that of Student's t with one degree of freedom at 99.9 %.
 func (r *reader) coverageFactor(k *node) (float64, bool) {
-	if k.shape != isNumber || !(k.number > 0) || math.IsInf(k.number, 0) {
-		r.fail(k, "%s where a coverage factor is due, a number above zero such as 2", shown(k))
+	if k.shape != isNumber || !(k.number >= 0.5 && k.number <= 1000) {
+		r.fail(k, "%s where a coverage factor is due, a number from 0.5 to 1000 such as 2", shown(k))
 		return 0, false
 	}
 	return k.number, true

@@ -370,6 +370,12 @@ func (r *reader) dof(t *node, key string) float64 {
 		r.fail(n, "%s where degrees of freedom are due: a number above zero, or leave the key out when they are infinite", shown(n))
 		return math.Inf(1)
 	}
+	// JCGM 100:2008 G.4.2: ν = ½ (Δu/u)⁻², and an uncertainty that may be wrong by
+	// more than itself is none.
+	if n.number < 0.5 {
+		r.fail(n, "%s degrees of freedom: 0.5 belong to an uncertainty that may be wrong by all of itself, and fewer say nothing", n.text)
+		return math.Inf(1)
+	}
 	return n.number
 }
 

@@ -148,12 +148,15 @@ func (l *loader) scalar(n *node, k *model.Scalar, s *Scalar) {
 			return
 		}
 	}
-	if k.Positive {
+	if k.Positive || k.NotNegative {
 		at := n
 		if f := n.field("value"); f != nil {
 			at = f
 		}
-		if q.hasValue && !(q.dist.Value > 0) || s.HasStart && !(s.Start > 0) {
+		switch {
+		case k.NotNegative && q.hasValue && q.dist.Value < 0:
+			l.fail(at, "%s: %s can't be negative", shown(at), k.Doc)
+		case k.Positive && (q.hasValue && !(q.dist.Value > 0) || s.HasStart && !(s.Start > 0)):
 			l.fail(at, "%s: %s must be above zero", shown(at), k.Doc)
 		}
 	}

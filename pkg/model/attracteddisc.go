@@ -33,7 +33,7 @@ var AttractedDisc = register(&Kind{
 		{Table: "quantities", Name: "gap_offset", Doc: "zero error of the spacing scale, added to the reading", Unit: si.MustUnit("um"), Adjustable: true, Part: "electrodes"},
 		{Table: "quantities", Name: "disc_radius", Doc: "radius of the disc", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "electrodes"},
 		{Table: "quantities", Name: "guard_gap", Doc: "width of the gap between disc and guard ring; a guarded disc needs it", Unit: si.MustUnit("mm"), Positive: true, Part: "electrodes"},
-		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy (default: the disc alone)", Unit: si.MustUnit("pF"), Part: "safety"},
+		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy (default: the disc alone)", Unit: si.MustUnit("pF"), NotNegative: true, Part: "safety"},
 		electricConstant,
 		{Table: "corrections.guard_gap", Name: "model", Doc: "relative error of the deep-slot formula of the guard gap", Unit: si.MustUnit("1"), Default: gum.Normal(0, field.SlotAreaUncertainty), Part: "electrodes"},
 		{Table: "corrections.wedge", Name: "half_difference", Doc: "plates not parallel: half the difference of spacing across the disc", Unit: si.MustUnit("um"), Required: true, Squared: true, Part: "electrodes"},
@@ -184,6 +184,9 @@ func prepareAttractedDisc(k *Kind, s *Setup) (*Model, error) {
 	}
 	m.Start = func(q []float64, free []int, x [][]float64, y []float64) ([]float64, error) {
 		eps := m.proportional(q, iEps, x, y)
+		if math.IsNaN(eps) {
+			return nil, fmt.Errorf("readings of %s: the force expected of every reading is zero or beyond the range of numbers; check the voltages and dimensions", response)
+		}
 		if !(eps > 0) {
 			return nil, fmt.Errorf("readings of %s: no attraction at any voltage (rough permittivity %.3g F/m); check the sign and the zero of the channel", response, eps)
 		}

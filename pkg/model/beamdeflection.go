@@ -34,7 +34,7 @@ var BeamDeflection = register(&Kind{
 		{Table: "quantities", Name: "drift_length", Doc: "distance from the exit of the plates to where the displacement is read", Unit: si.MustUnit("mm"), Part: "beam"},
 		{Table: "quantities", Name: "accelerating_voltage", Doc: "voltage that accelerated the beam when there is no channel for it", Unit: si.MustUnit("kV"), Positive: true, Part: "beam"},
 		{Table: "quantities", Name: "rest_energy", Doc: "rest energy of an ion for each elementary charge of it, as a voltage; needed for particle = \"ion\"", Unit: si.MustUnit("MV"), Positive: true, Part: "beam"},
-		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy", Unit: si.MustUnit("pF"), Part: "safety"},
+		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy", Unit: si.MustUnit("pF"), NotNegative: true, Part: "safety"},
 		{Table: "corrections.fringe", Name: "length", Doc: "what the field beyond both ends adds to the length of the plates (integral of the field on the axis over its value inside, less the length)", Unit: si.MustUnit("mm"), Required: true, Part: "electrodes"},
 	},
 	Corrections: []Correction{

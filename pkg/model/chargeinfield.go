@@ -61,7 +61,7 @@ func bodyScalars(first Scalar) []Scalar {
 	return append([]Scalar{first,
 		{Table: "quantities", Name: "contact_potential", Doc: "contact potential, subtracted from the voltage", Unit: si.MustUnit("V"), Adjustable: true, Part: "electrodes"},
 		{Table: "quantities", Name: "gap_offset", Doc: "zero error of the spacing scale, added to the reading", Unit: si.MustUnit("um"), Adjustable: true, Part: "electrodes"},
-		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy", Unit: si.MustUnit("pF"), Part: "safety"},
+		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy", Unit: si.MustUnit("pF"), NotNegative: true, Part: "safety"},
 		electricConstant,
 		{Table: "corrections.image", Name: "height_offset", Doc: "added to the height; without a height channel, height of the body over the mid-plane", Unit: si.MustUnit("mm"), Required: true, Adjustable: true, Part: "body"},
 		{Table: "corrections.body", Name: "radius", Doc: "radius of the conducting sphere", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "body"},

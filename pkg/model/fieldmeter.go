@@ -35,7 +35,7 @@ var FieldMeter = register(&Kind{
 		{Table: "quantities", Name: "contact_potential", Doc: "contact potential and surface charge, subtracted from the voltage", Unit: si.MustUnit("V"), Adjustable: true, Part: "plates"},
 		{Table: "quantities", Name: "gap_offset", Doc: "error of the spacing, added to the reading", Unit: si.MustUnit("mm"), Adjustable: true, Part: "plates"},
 		{Table: "quantities", Name: "full_scale", Doc: "end of the range, for the non-linearity (default: the largest level)", Unit: si.MustUnit("kV/m"), Part: "meter"},
-		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy", Unit: si.MustUnit("pF"), Part: "safety"},
+		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy", Unit: si.MustUnit("pF"), NotNegative: true, Part: "safety"},
 		{Table: "corrections.wedge", Name: "half_difference", Doc: "plates not parallel: half the difference of spacing over the head", Unit: si.MustUnit("mm"), Required: true, Squared: true, Part: "plates"},
 		{Table: "corrections.finite_plates", Name: "width", Doc: "width of the square plates", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "plates"},
 		{Table: "corrections.finite_plates", Name: "remainder", Doc: "relative error of the finite-plate correction", Unit: si.MustUnit("1"), Default: gum.Rectangular(0, 0.2*math.Sqrt(3)), Part: "plates"},

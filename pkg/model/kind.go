@@ -44,6 +44,7 @@ type Scalar struct {
 	Sought      bool             // always estimated by the fit, without prior knowledge
 	Adjustable  bool             // may be estimated when the bench says adjust = true
 	Positive    bool             // must be above zero
+	NotNegative bool             // may be zero, which stands for not known, but not below
 	Part        string           // part of the bench, for grouping the budget
 	// Squared marks an even, one-sided input (a tilt, a misalignment): the bench
 	// states the distribution of Δ, and predictions take Δ², whose expectation

@@ -88,6 +88,9 @@ func preparePlateCharge(k *Kind, s *Setup) (*Model, error) {
 	}
 	m.Start = func(q []float64, free []int, x [][]float64, y []float64) ([]float64, error) {
 		eps := m.proportional(q, iEps, x, y)
+		if math.IsNaN(eps) {
+			return nil, fmt.Errorf("readings of %s: the charge expected of every reading is zero or beyond the range of numbers; check the voltages and dimensions", response)
+		}
 		if !(eps > 0) {
 			return nil, fmt.Errorf("readings of %s: no charge of the sign of the voltage (rough permittivity %.3g F/m); check the sign and the zero of the channel", response, eps)
 		}

@@ -18,7 +18,7 @@ import (
 var guardedScalars = []Scalar{
 	{Table: "quantities", Name: "disc_radius", Doc: "radius of the guarded disc", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "electrodes"},
 	{Table: "quantities", Name: "guard_gap", Doc: "width of the gap between disc and guard ring", Unit: si.MustUnit("mm"), Required: true, Positive: true, Part: "electrodes"},
-	{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy (default: the disc alone)", Unit: si.MustUnit("pF"), Part: "safety"},
+	{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy (default: the disc alone)", Unit: si.MustUnit("pF"), NotNegative: true, Part: "safety"},
 	electricConstant,
 	{Table: "corrections.guard_gap", Name: "model", Doc: "relative error of the formula of the guard gap", Unit: si.MustUnit("1"), Default: gum.Normal(0, field.SlotAreaUncertainty), Part: "electrodes"},
 	{Table: "corrections.wedge", Name: "half_difference", Doc: "plates not parallel: half the difference of spacing across the disc", Unit: si.MustUnit("um"), Required: true, Squared: true, Part: "electrodes"},

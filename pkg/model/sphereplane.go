@@ -30,7 +30,7 @@ var SpherePlane = register(&Kind{
 		{Table: "quantities", Name: "contact_potential", Doc: "contact potential, subtracted from the voltage", Unit: si.MustUnit("V"), Adjustable: true, Part: "sphere"},
 		{Table: "quantities", Name: "charge", Doc: "charge of the isolated sphere when it has no channel", Unit: si.MustUnit("nC"), Part: "sphere"},
 		{Table: "quantities", Name: "plane_radius", Doc: "distance from the foot of the sphere to the nearest edge of the plane, for the check of validity", Unit: si.MustUnit("mm"), Positive: true, Part: "plane"},
-		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy (default: the sphere alone)", Unit: si.MustUnit("pF"), Part: "safety"},
+		{Table: "quantities", Name: "bench_capacitance", Doc: "capacitance of everything at high voltage, for the stored energy (default: the sphere alone)", Unit: si.MustUnit("pF"), NotNegative: true, Part: "safety"},
 		{Table: "corrections.leakage", Name: "time_constant", Doc: "time constant with which the isolated sphere loses its charge", Unit: si.MustUnit("s"), Required: true, Adjustable: true, Positive: true, Part: "sphere"},
 	}, balanceScalars),
 	Corrections: []Correction{

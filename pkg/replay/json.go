@@ -58,8 +58,14 @@ func parseDocument(data []byte) (*document, error) {
 	if len(data) > maxDocument {
 		return nil, fmt.Errorf("%d bytes; a document may have %d", len(data), maxDocument)
 	}
+	if bytes.HasPrefix(data, []byte("\xef\xbb\xbf")) {
+		return nil, errors.New("the text begins with a byte order mark; save the file as UTF-8 without one")
+	}
+	if bytes.HasPrefix(data, []byte("\xff\xfe")) || bytes.HasPrefix(data, []byte("\xfe\xff")) {
+		return nil, errors.New("this is UTF-16 text, as some shells redirect it; save the file as UTF-8")
+	}
 	if !utf8.Valid(data) {
-		return nil, errors.New("the text is not UTF-8")
+		return nil, errors.New("the text is not UTF-8; save the file as UTF-8")
 	}
 	p := &docReader{data: data, dec: json.NewDecoder(bytes.NewReader(data))}
 	p.dec.UseNumber()

@@ -6,6 +6,8 @@ import (
 	"math"
 	"strconv"
 	"strings"
+
+	"example.org/guardring/pkg/cell"
 )
 
 // listed is how many differences are printed of each part of a record or output;
@@ -16,7 +18,7 @@ const listed = 12
 func (c *Comparison) WriteText(w io.Writer) error {
 	var b strings.Builder
 	c.text(&b)
-	_, err := io.WriteString(w, b.String())
+	_, err := io.WriteString(w, cell.Visible(b.String()))
 	return err
 }
 

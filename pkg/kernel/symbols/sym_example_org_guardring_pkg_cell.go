@@ -26,6 +26,7 @@ func init() {
 			"SetHost":      r.ValueOf(p0_cell.SetHost),
 			"Stopped":      r.ValueOf(p0_cell.Stopped),
 			"Update":       r.ValueOf(p0_cell.Update),
+			"Visible":      r.ValueOf(p0_cell.Visible),
 			"WithProgress": r.ValueOf(p0_cell.WithProgress),
 		},
 		Types: map[string]r.Type{

@@ -1,0 +1,1 @@
+from t8 import *
