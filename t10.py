@@ -1,1 +1,0 @@
-from t8 import *
