@@ -197,15 +197,15 @@ func SphereForceChargesSlope(a, b, gap, qa, qb float64) (f, slope float64) {
 	z := pairSecond(a, b, gap)
 	c, w, w1 := &z.c, &z.w, &z.w1
 	sa, sb := c[0]+c[1], c[2]+c[1]
-	det := sa*sb - c[1]*(sa+sb)
-	va := (c[2]*qa - c[1]*qb) / det
-	vb := (c[0]*qb - c[1]*qa) / det
-	dv := (sb*qa - sa*qb) / det
+	i := 1 / (sa*sb - c[1]*(sa+sb))
+	va := (c[2]*qa - c[1]*qb) * i
+	vb := (c[0]*qb - c[1]*qa) * i
+	dv := (sb*qa - sa*qb) * i
 	f = 0.5 * ((w[0]+w[1])*va*va + (w[2]+w[1])*vb*vb - w[1]*dv*dv)
 	// V' = −C⁻¹ W V at fixed charge
 	ra, rb := (w[0]+w[1])*va-w[1]*dv, (w[2]+w[1])*vb+w[1]*dv
-	da := -(c[2]*ra - c[1]*rb) / det
-	db := -(c[0]*rb - c[1]*ra) / det
+	da := -(c[2]*ra - c[1]*rb) * i
+	db := -(c[0]*rb - c[1]*ra) * i
 	slope = 0.5*((w1[0]+w1[1])*va*va+(w1[2]+w1[1])*vb*vb-w1[1]*dv*dv) + ra*da + rb*db
 	return f, slope
 }

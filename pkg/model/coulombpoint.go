@@ -140,9 +140,9 @@ func prepareCoulombPoint(k *Kind, s *Setup) (*Model, error) {
 			}
 		}
 		v := reading.at(q)
-		var p, w, point float64
+		var p, w float64
 		law := func(r float64) (f, df float64) {
-			f, df, point = valueLaw(q, p, w, r)
+			f, df, _ = valueLaw(q, p, w, r)
 			return f, df
 		}
 		for i := lo; i < hi; i++ {
@@ -161,6 +161,7 @@ func prepareCoulombPoint(k *Kind, s *Setup) (*Model, error) {
 					d = y.byDist
 				case iN:
 					if free {
+						_, _, point := valueLaw(q, p, w, y.dist)
 						d = -y.byF * point * math.Log(y.dist/q[iRef])
 					}
 				case reading.iRest:

@@ -131,6 +131,7 @@ func (r *forceReading) at(q []float64) balanceValues {
 // equilibrium is where a deflecting arm stands.
 type equilibrium struct {
 	phi, dist, cos float64
+	sin            float64 // of ψ, between the line of the centres and the path of the moving one
 	f, df          float64 // force and its derivative by the distance, there
 	stiffness      float64 // g′ = κ − L d(F cos ψ)/dφ; NaN throughout when there is no equilibrium
 	byRest, cosBy  float64 // ∂dist/∂(distance at rest), ∂cos/∂(distance at rest)
@@ -139,24 +140,17 @@ type equilibrium struct {
 // settle finds the equilibrium from the rest position; an attraction that the
 // suspension can't hold has none.
 func (v *balanceValues) settle(rest float64, law func(d float64) (f, df float64)) (e equilibrium) {
+	var d0, f0, df0 float64 // the evaluation before
 	for range 100 {
-		s, c := math.Sincos(e.phi)
-		x := rest*v.sinLine - v.arm*s*s/(1+c) // 1 − cos φ without its cancellation
-		y := rest*v.cosLine + v.arm*s
-		e.dist = math.Sqrt(x*x + y*y)
-		e.cos = (y*c - x*s) / e.dist
-		sin := (y*s + x*c) / e.dist
+		v.place(&e, rest)
 		e.f, e.df = law(e.dist)
-		// d dist/dφ = L cos ψ, d cos ψ/dφ = L sin²ψ/dist − sin ψ (derived)
-		dcos := v.arm*sin*sin/e.dist - sin
-		e.stiffness = v.kappa - v.arm*(e.df*v.arm*e.cos*e.cos+e.f*dcos)
-		e.byRest = (x*v.sinLine + y*v.cosLine) / e.dist
-		e.cosBy = (v.cosLine*c - v.sinLine*s - e.cos*e.byRest) / e.dist
+		dcos := v.stiffen(&e)
 		// Halley's step, with the curvature of the power of the distance that has
 		// this value and slope in the place of the exact one: it only speeds the
 		// iteration, whose root is that of g.
 		g := v.kappa*e.phi - e.f*v.arm*e.cos
-		bend := -v.arm * v.arm * v.arm * e.cos * e.cos * e.cos * e.df * (e.df/e.f - 1/e.dist)
+		second := e.df * (e.df/e.f - 1/e.dist) // of the force
+		bend := -v.arm * v.arm * v.arm * e.cos * e.cos * e.cos * second
 		step := g / e.stiffness
 		if h := 1 - 0.5*step*bend/e.stiffness; h > 0.5 {
 			step /= h
@@ -165,12 +159,59 @@ func (v *balanceValues) settle(rest float64, law func(d float64) (f, df float64)
 		if !(math.Abs(e.phi) < 1.5) || !(e.stiffness > 0) {
 			break
 		}
-		if math.Abs(step) <= 3e-11*math.Abs(e.phi) {
-			// What the step changes in force and slope is below rounding.
+		// What the step may miss is of its second order, for which the curvatures of
+		// the force and of the path stand.
+		missed := 0.5 * step * step * (math.Abs(bend) + v.arm*math.Abs(2*e.df*v.arm*e.cos*dcos) + v.arm*math.Abs(e.f)) / e.stiffness
+		if missed <= settled*math.Abs(e.phi) {
+			if math.Abs(step) > 3e-11*math.Abs(e.phi) { // else it is below rounding
+				was := e.dist
+				v.place(&e, rest)
+				if h := was - d0; d0 > 0 && h != 0 {
+					second = curvature(was, e.f, e.df, f0*d0*d0, df0*d0*d0+2*d0*f0, h)
+				}
+				d := e.dist - was
+				e.f += d * (e.df + 0.5*d*second)
+				e.df += d * second
+				v.stiffen(&e)
+			}
 			return e
 		}
+		d0, f0, df0 = e.dist, e.f, e.df
 	}
 	return equilibrium{phi: math.NaN(), dist: math.NaN(), cos: math.NaN(), f: math.NaN(), df: math.NaN(), stiffness: math.NaN()}
+}
+
+// curvature is the second derivative of a force that has value f and slope df at d,
+// from that of the cubic through F = f·d², which hardly varies, and its slope, there
+// and a distance h before, where they are F0 and dF0.
+func curvature(d, f, df, F0, dF0, h float64) float64 {
+	F, dF := f*d*d, df*d*d+2*d*f
+	bent := (2*(dF0+2*dF) - 6*(F-F0)/h) / h
+	return (bent - 2*f - 4*d*df) / (d * d)
+}
+
+// settled is how far from the equilibrium an arm may be said to stand, relative to
+// its deflection.
+const settled = 1e-14
+
+// place finds where the arm stands at e.phi.
+func (v *balanceValues) place(e *equilibrium, rest float64) {
+	s, c := math.Sincos(e.phi)
+	x := rest*v.sinLine - v.arm*s*s/(1+c) // 1 − cos φ without its cancellation
+	y := rest*v.cosLine + v.arm*s
+	e.dist = math.Sqrt(x*x + y*y)
+	e.cos = (y*c - x*s) / e.dist
+	e.sin = (y*s + x*c) / e.dist
+	e.byRest = (x*v.sinLine + y*v.cosLine) / e.dist
+	e.cosBy = (v.cosLine*c - v.sinLine*s - e.cos*e.byRest) / e.dist
+}
+
+// stiffen finds g′ from the force there, and returns d cos ψ/dφ.
+func (v *balanceValues) stiffen(e *equilibrium) float64 {
+	// d dist/dφ = L cos ψ, d cos ψ/dφ = L sin²ψ/dist − sin ψ (derived)
+	dcos := v.arm*e.sin*e.sin/e.dist - e.sin
+	e.stiffness = v.kappa - v.arm*(e.df*v.arm*e.cos*e.cos+e.f*dcos)
+	return dcos
 }
 
 // reading is one predicted reading with what its derivatives need.
