@@ -98,7 +98,9 @@ func start(t testing.TB) *session {
 	ctx, cancel := context.WithTimeout(context.Background(), patience)
 	defer cancel()
 	log := &logBuffer{}
-	c, err := kernel.Start(ctx, kernel.Launch{Argv: []string{binary, "{connection_file}"}, Env: []string{"GOROOT="}, Stderr: log})
+	launch := kernel.LaunchOf(binary)
+	launch.Stderr = log
+	c, err := kernel.Start(ctx, launch)
 	if err != nil {
 		t.Fatalf("starting the kernel: %v\n%s", err, log)
 	}

@@ -62,6 +62,15 @@ type Jet struct {
 // Const is a number without derivatives.
 func Const(v float64) Jet { return Jet{V: v} }
 
+// Consts are numbers without derivatives.
+func Consts(v []float64) []Jet {
+	q := make([]Jet, len(v))
+	for i, x := range v {
+		q[i] = Jet{V: x}
+	}
+	return q
+}
+
 // Var is the value v of seed i.
 func (s *Space) Var(i int, v float64) Jet {
 	d := s.alloc()

@@ -26,18 +26,9 @@ type Launch struct {
 	Stderr io.Writer
 }
 
-// InstalledLaunch returns the launch of the kernel that Jupyter would start.
-func InstalledLaunch(ctx context.Context) (Launch, error) {
-	found, err := List(ctx)
-	if err != nil {
-		return Launch{}, err
-	}
-	for _, k := range found {
-		if k.Problem == "" {
-			return Launch{Argv: []string{k.Binary, "{connection_file}"}, Env: []string{"GOROOT="}}, nil
-		}
-	}
-	return Launch{}, errors.New("no kernel is installed: run `guardring kernel install` first")
+// LaunchOf returns the launch of a compiled kernel, as Jupyter starts it.
+func LaunchOf(binary string) Launch {
+	return Launch{Argv: []string{binary, "{connection_file}"}, Env: []string{"GOROOT="}}
 }
 
 // Client is a front end without a face: it starts a kernel, runs cells and collects their outputs. Its methods may be

@@ -11,8 +11,7 @@ import (
 )
 
 // A cell runs in a kernel, and its outputs come back as a notebook holds them. Here
-// the kernel is this program itself; InstalledLaunch is the launch of the one that
-// is installed.
+// the kernel is this program itself; LaunchOf is the launch of a compiled one.
 func ExampleClient_Execute() {
 	ctx, cancel := context.WithTimeout(context.Background(), time.Minute)
 	defer cancel()

@@ -273,7 +273,7 @@ func prepareBeamDeflection(k *Kind, s *Setup) (*Model, error) {
 		w := append([]float64(nil), q...)
 		w[iK] = start[0]
 		var warn []error
-		qj, xj := constants(w), make([]jet.Jet, len(x))
+		qj, xj := jet.Consts(w), make([]jet.Jet, len(x))
 		slow := math.Inf(1)
 		for i := range y {
 			for p := range x {

@@ -263,7 +263,7 @@ func prepareFieldMeter(k *Kind, s *Setup) (*Model, error) {
 	m.Curve = &Curve{Name: "correction_factor", Doc: "reference over indicated field", Unit: si.MustUnit("1"),
 		Level: "reference field", LevelUnit: si.MustUnit("kV/m"), FullScale: "full_scale",
 		Value:   func(q []jet.Jet, e jet.Jet) jet.Jet { return e.Div(e.Add(q[iZero]).Mul(q[iK])) },
-		LevelOf: func(q, x []float64) float64 { return reference(constants(q), constants(x)).V },
+		LevelOf: func(q, x []float64) float64 { return reference(jet.Consts(q), jet.Consts(x)).V },
 		Inverse: true,
 	}
 	m.Causes = []Cause{

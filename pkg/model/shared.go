@@ -65,15 +65,6 @@ func (m *Model) gapResults(k *Kind, air bool) {
 		Value: func(q []jet.Jet) jet.Jet { return q[iEps].Div(field.AirPermittivityJet(q[iT], q[iP], q[iH])) }})
 }
 
-// constants are plain numbers as jets.
-func constants(v []float64) []jet.Jet {
-	q := make([]jet.Jet, len(v))
-	for i := range v {
-		q[i] = jet.Const(v[i])
-	}
-	return q
-}
-
 // What the kinds that calibrate a meter share.
 var (
 	responseScalar = Scalar{Table: "quantities", Name: "response", Doc: "indicated over reference field, K",
@@ -97,7 +88,7 @@ func (m *Model) predictAll(q []float64, x [][]float64, n int) []float64 {
 	if m.Block != nil && m.Block(q, x, 0, n, nil, f, nil) {
 		return f
 	}
-	qj, xj := constants(q), make([]jet.Jet, len(x))
+	qj, xj := jet.Consts(q), make([]jet.Jet, len(x))
 	for i := range f {
 		for p := range x {
 			xj[p] = jet.Const(x[p][i])

@@ -71,10 +71,7 @@ func valid(b *bench.Bench, m *model.Model, q [][]float64, of []int, x [][]float6
 				xs[p] = append(xs[p], x[p][i])
 			}
 		}
-		qj, xj := make([]jet.Jet, len(q[s])), make([]jet.Jet, len(x))
-		for i, v := range q[s] {
-			qj[i] = jet.Const(v)
-		}
+		qj, xj := jet.Consts(q[s]), make([]jet.Jet, len(x))
 		for n := range rows {
 			for p := range xs {
 				xj[p] = jet.Const(xs[p][n])

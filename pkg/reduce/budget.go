@@ -5,7 +5,6 @@ import (
 
 	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/jet"
-	"example.org/guardring/pkg/model"
 	"example.org/guardring/pkg/si"
 )
 
@@ -17,16 +16,16 @@ const negligible = 1e-9
 // varies between rows.
 const readingsGroup = "readings"
 
-// sensitivities returns value, ∂Y/∂θ and ∂Y/∂s (θ held) of a measurand.
-func (c *chain) sensitivities(m *model.Measurand, q []float64) (value float64, byTheta, bySh []float64) {
+// sensitivities returns value, ∂Y/∂θ and ∂Y/∂s (θ held) of a quantity Y at scalars q.
+func (c *chain) sensitivities(quantity func(q []jet.Jet) jet.Jet, q []float64) (value float64, byTheta, bySh []float64) {
 	np, ni := len(c.free), len(c.inputs)
 	space := jet.NewSpace(np+ni, 0)
-	qj := constants(q)
+	qj := jet.Consts(q)
 	for j, f := range c.free {
 		qj[f] = space.Var(j, q[f])
 	}
 	c.seedScalars(space, q, qj, np)
-	y := m.Value(qj)
+	y := quantity(qj)
 	byTheta, bySh = make([]float64, np), make([]float64, ni)
 	for j := range byTheta {
 		byTheta[j] = y.Grad(j)
@@ -193,7 +192,7 @@ func (c *chain) measurands(k *carried, p float64) ([]Measurand, []*gum.Law, []er
 	var warnings []error
 	for n := range c.m.Measurands {
 		m := &c.m.Measurands[n]
-		value, byTheta, bySh := c.sensitivities(m, k.q)
+		value, byTheta, bySh := c.sensitivities(m.Value, k.q)
 		l, err := c.law(k, value, byTheta, bySh, p)
 		if err != nil {
 			return nil, nil, nil, err

@@ -136,7 +136,7 @@ type rowJets struct {
 type scaleJet struct{ gain, offset jet.Jet }
 
 func (c *chain) newRowJets(q []float64) *rowJets {
-	r := &rowJets{c: c, q: q, qj: constants(q), xj: make([]jet.Jet, len(c.x)), scales: make([]scaleJet, 1+len(c.pred)), stated: make([]scaleJet, 1+len(c.pred))}
+	r := &rowJets{c: c, q: q, qj: jet.Consts(q), xj: make([]jet.Jet, len(c.x)), scales: make([]scaleJet, 1+len(c.pred)), stated: make([]scaleJet, 1+len(c.pred))}
 	for k, ci := range append([]int{c.resp}, c.pred...) {
 		g, o := gainOffset(&c.b.Channels[ci])
 		r.stated[k] = scaleJet{jet.Const(g), jet.Const(o)}

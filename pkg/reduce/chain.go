@@ -10,7 +10,6 @@ import (
 
 	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/gum"
-	"example.org/guardring/pkg/jet"
 	"example.org/guardring/pkg/model"
 	"example.org/guardring/pkg/si"
 )
@@ -443,13 +442,4 @@ func parallel(n, size int, do func(lo, hi int)) {
 	}
 	close(next)
 	wg.Wait()
-}
-
-// constants turns numbers into jets without derivatives.
-func constants(v []float64) []jet.Jet {
-	j := make([]jet.Jet, len(v))
-	for i, x := range v {
-		j[i] = jet.Const(x)
-	}
-	return j
 }

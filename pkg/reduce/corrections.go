@@ -77,7 +77,7 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 	space := jet.NewSpace(len(us), 0)
 	grad := make([]float64, len(us))
 	rows := 0.0
-	qj := constants(k.q)
+	qj := jet.Consts(k.q)
 	xj := make([]jet.Jet, len(c.x))
 	for i := 0; i < len(c.record); i += step {
 		space.Reset()
@@ -118,7 +118,7 @@ func (c *chain) correctionSize(name string, k *carried) (size, u float64, err er
 // all inputs.
 func (c *chain) factorSize(factor func(q []jet.Jet) jet.Jet, k *carried) (size, u float64) {
 	space := jet.NewSpace(len(c.inputs), 0)
-	qj := constants(k.q)
+	qj := jet.Consts(k.q)
 	c.seedScalars(space, k.q, qj, 0)
 	f := factor(qj)
 	var v float64

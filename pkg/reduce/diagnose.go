@@ -66,7 +66,7 @@ func (c *chain) causes(r *lsq.Result, k *carried) []Cause {
 		if p >= causeLevel {
 			continue
 		}
-		_, byTheta, _ := c.sensitivities(&c.m.Measurands[0], k.q)
+		_, byTheta, _ := c.sensitivities(c.m.Measurands[0].Value, k.q)
 		out = append(out, Cause{Name: cause.Name, Doc: cause.Doc, Improvement: Number(improvement), PValue: Number(p),
 			Shift: Number(-num / den * dot(byTheta, shift))})
 	}

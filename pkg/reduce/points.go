@@ -111,25 +111,13 @@ func (c *chain) point(n int, rows []int, level []float64, fit *lsq.Result, k *ca
 	}
 	m := float64(len(rows))
 	mean, y, f = mean/m, y/m, f/m
-	np, ni := len(c.free), len(c.inputs)
-	space := jet.NewSpace(np+ni, 0)
-	q := constants(k.q)
-	for j, i := range c.free {
-		q[i] = space.Var(j, k.q[i])
-	}
-	c.seedScalars(space, k.q, q, np)
-	if c.series != nil {
-		q = view(c.series, n, q)
-	}
-	v := curve.Value(q, jet.Const(mean))
-	byTheta, bySh := make([]float64, np), make([]float64, ni)
-	for j := range byTheta {
-		byTheta[j] = v.Grad(j)
-	}
-	for s := range bySh {
-		bySh[s] = v.Grad(np + s)
-	}
-	l, err := c.law(k, v.V, byTheta, bySh, p)
+	value, byTheta, bySh := c.sensitivities(func(q []jet.Jet) jet.Jet {
+		if c.series != nil {
+			q = view(c.series, n, q)
+		}
+		return curve.Value(q, jet.Const(mean))
+	}, k.q)
+	l, err := c.law(k, value, byTheta, bySh, p)
 	if err != nil {
 		return nil, err
 	}

@@ -112,7 +112,7 @@ func (c *chain) slopesOf(q []float64, want []bool, lo, hi int) [][]float64 {
 	}
 	g, _ := gainOffset(&c.b.Channels[c.resp])
 	space := jet.NewSpace(seeds, 0)
-	qj := constants(q)
+	qj := jet.Consts(q)
 	xj := make([]jet.Jet, len(c.x))
 	for i := lo; i < hi; i++ {
 		space.Reset()

@@ -197,13 +197,13 @@ func (g *gatherer) tables(p *Package, root, dir string, b *bench.Bench) error {
 		byName[f.Name] = f
 	}
 	at := func(name string) *PackedFile { return byName[path.Join(filepath.ToSlash(rel), name)] }
-	toml_ := at("bench.toml")
-	if toml_ == nil {
+	file := at("bench.toml")
+	if file == nil {
 		return fmt.Errorf("%s: bench.toml is not in the pack", dir)
 	}
 	var layout benchLayout
-	if err := toml.Unmarshal(toml_.data, &layout); err != nil {
-		return fmt.Errorf("%s: %w", toml_.Name, err)
+	if err := toml.Unmarshal(file.data, &layout); err != nil {
+		return fmt.Errorf("%s: %w", file.Name, err)
 	}
 	units := map[string]si.Unit{}
 	titles := map[string]string{}

@@ -47,7 +47,11 @@ func (g *gatherer) add(full string) {
 	}
 }
 
-func (g *gatherer) isInput(full string) bool { return g.inputs[full] }
+// addInput takes in a file that a result depends on.
+func (g *gatherer) addInput(full string) {
+	g.inputs[full] = true
+	g.add(full)
+}
 
 // openBench opens the dataset in a folder and takes in its files.
 func (g *gatherer) openBench(dir string) (*bench.Bench, error) {
@@ -59,13 +63,8 @@ func (g *gatherer) openBench(dir string) (*bench.Bench, error) {
 		return nil, err
 	}
 	g.benches[dir] = b
-	if g.inputs == nil {
-		g.inputs = map[string]bool{}
-	}
 	for _, in := range b.Inputs {
-		full := filepath.Join(dir, filepath.FromSlash(in.File))
-		g.inputs[full] = true
-		g.add(full)
+		g.addInput(filepath.Join(dir, filepath.FromSlash(in.File)))
 	}
 	return b, nil
 }
@@ -193,12 +192,7 @@ func (g *gatherer) recordFile(full string) (bool, error) {
 		return false, fmt.Errorf("%s: %w", full, p)
 	}
 	for _, in := range h.Inputs {
-		f := filepath.Join(filepath.Dir(full), filepath.FromSlash(in.File))
-		if g.inputs == nil {
-			g.inputs = map[string]bool{}
-		}
-		g.inputs[f] = true
-		g.add(f)
+		g.addInput(filepath.Join(filepath.Dir(full), filepath.FromSlash(in.File)))
 	}
 	return true, nil
 }
@@ -400,13 +394,8 @@ func (g *gatherer) budget(full string) error {
 	if err != nil {
 		return nil // some other file; it is packed as it is
 	}
-	if g.inputs == nil {
-		g.inputs = map[string]bool{}
-	}
 	for _, in := range b.Inputs {
-		f := filepath.Join(filepath.Dir(full), filepath.FromSlash(in.File))
-		g.inputs[f] = true
-		g.add(f)
+		g.addInput(filepath.Join(filepath.Dir(full), filepath.FromSlash(in.File)))
 	}
 	return nil
 }

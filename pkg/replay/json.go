@@ -390,15 +390,7 @@ func valueOf(x any) (*value, error) {
 		}
 		return v, nil
 	}
-	raw, err := json.Marshal(x)
-	if err != nil {
-		return nil, err
-	}
-	d, err := parseDocument(raw)
-	if err != nil {
-		return nil, err
-	}
-	return d.root, nil
+	return marshalled(x)
 }
 
 // marshalled makes a value of a Go value by its JSON.

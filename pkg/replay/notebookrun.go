@@ -232,9 +232,6 @@ func (nb *Notebook) inputProblems(dir string) []*InputProblem {
 // findKernel finds the kernel's binary: the one asked for, the installed one, or
 // one that it builds into the user's cache.
 func findKernel(ctx context.Context, s Settings, cmp *Comparison) (kernel.Launch, error) {
-	launch := func(binary string) kernel.Launch {
-		return kernel.Launch{Argv: []string{binary, "{connection_file}"}, Env: []string{"GOROOT="}}
-	}
 	if s.Kernel != "" {
 		binary, err := filepath.Abs(s.Kernel)
 		if err != nil {
@@ -243,7 +240,7 @@ func findKernel(ctx context.Context, s Settings, cmp *Comparison) (kernel.Launch
 		if info, err := os.Stat(binary); err != nil || !info.Mode().IsRegular() {
 			return kernel.Launch{}, fmt.Errorf("%s is no kernel: a file made by `guardring kernel build` is due", s.Kernel)
 		}
-		return launch(binary), nil
+		return kernel.LaunchOf(binary), nil
 	}
 	found, err := kernel.List(ctx)
 	if err != nil {
@@ -254,7 +251,7 @@ func findKernel(ctx context.Context, s Settings, cmp *Comparison) (kernel.Launch
 			if k.Version != reduce.Version {
 				cmp.note("the kernel installed in %s is of guardring %s, this is %s", k.Dir, k.Version, reduce.Version)
 			}
-			return launch(k.Binary), nil
+			return kernel.LaunchOf(k.Binary), nil
 		}
 	}
 	source, err := kernel.FindSource("")
@@ -269,5 +266,5 @@ func findKernel(ctx context.Context, s Settings, cmp *Comparison) (kernel.Launch
 	if _, err := kernel.Build(ctx, source, binary, s.Stderr); err != nil {
 		return kernel.Launch{}, fmt.Errorf("no kernel is installed, and building one failed: %w", err)
 	}
-	return launch(binary), nil
+	return kernel.LaunchOf(binary), nil
 }

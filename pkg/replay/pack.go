@@ -80,7 +80,7 @@ func Pack(ctx context.Context, source string, s PackSettings) (*Package, error) 
 	if err != nil {
 		return nil, err
 	}
-	g := &gatherer{settings: s, found: map[string]bool{}, benches: map[string]*bench.Bench{}}
+	g := &gatherer{settings: s, found: map[string]bool{}, inputs: map[string]bool{}, benches: map[string]*bench.Bench{}}
 	switch {
 	case info.IsDir():
 		err = g.dataset(ctx, source)
@@ -140,7 +140,7 @@ func (g *gatherer) pack(ctx context.Context) (*Package, error) {
 			f.role = roleNotebook
 		case strings.EqualFold(path.Ext(f.Name), ".json") && isRecord(data):
 			f.role = roleResult
-		case g.isInput(full):
+		case g.inputs[full]:
 			f.role = roleInput
 		}
 		p.Files = append(p.Files, f)

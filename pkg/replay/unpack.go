@@ -54,7 +54,7 @@ func checkName(name string) error {
 	return nil
 }
 
-// member is checked before anything is written.
+// checkMember refuses a file that must not be unpacked, before anything is written.
 func checkMember(f *zip.File) error {
 	switch {
 	case f.Flags&1 != 0:

@@ -17,6 +17,7 @@ func init() {
 		Binds: map[string]r.Value{
 			"ChainN":   r.ValueOf(p0_jet.ChainN),
 			"Const":    r.ValueOf(p0_jet.Const),
+			"Consts":   r.ValueOf(p0_jet.Consts),
 			"NewSpace": r.ValueOf(p0_jet.NewSpace),
 		},
 		Types: map[string]r.Type{
