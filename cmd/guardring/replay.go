@@ -89,6 +89,9 @@ func (o *replayOptions) run(ctx context.Context, path string, stdout io.Writer) 
 		if err != nil {
 			return err
 		}
+		if err := replaceable(o.target(path)); err != nil {
+			return err
+		}
 		if err := safefile.WriteBytes(o.target(path), r.Notebook.Bytes()); err != nil {
 			return err
 		}

@@ -45,9 +45,13 @@ func run(ctx context.Context, args []string, stdin io.Reader, stdout, stderr io.
 	root := newRoot()
 	root.SetArgs(args)
 	root.SetIn(stdin)
-	root.SetOut(stdout)
+	out := &watched{w: stdout}
+	root.SetOut(out)
 	root.SetErr(stderr)
 	err := root.ExecuteContext(ctx)
+	if err == nil {
+		err = out.err
+	}
 	finish()
 	if err == nil {
 		return exitDone
@@ -88,6 +92,7 @@ that is singular or has not converged, or a failed write; 130 interrupted.`,
 		Args:          nothing,
 		RunE:          func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
 	}
+	root.PersistentPreRunE = spareInputs
 	root.SetFlagErrorFunc(flagError)
 	root.SetHelpCommand(helpCommand())
 	root.AddCommand(reduceCommand(), checkCommand(), newCommand(), certificateCommand(), compareCommand(), historyCommand(), simulateCommand(), planCommand(), strayfieldCommand(), fitCommand(), propagateCommand(), mergeCommand(), kernelCommand(), replayCommand(), packCommand(), manCommand(), versionCommand())
