@@ -86,10 +86,10 @@ func instrumentUse(in *bench.Instrument) string {
 	use := strings.Join(in.Named, ", ")
 	for i := range in.Allowances {
 		a := &in.Allowances[i]
-		half := fmt.Sprintf("%.2g %%", 100*a.Dist.Half)
+		half := fmt.Sprintf("%.3g %%", 100*a.Dist.Half)
 		if !a.Relative {
 			v, u := si.Prefixed(a.Dist.Half, a.Unit.Coherent())
-			half = fmt.Sprintf("%.2g %s", v, u)
+			half = fmt.Sprintf("%.3g %s", v, u)
 		}
 		use += fmt.Sprintf("; %s within ±%s", strings.TrimPrefix(a.Name, "instruments."+in.Name+"."), half)
 	}

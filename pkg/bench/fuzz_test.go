@@ -18,6 +18,7 @@ import (
 // error, or no bench with an error of ours.
 func FuzzBench(f *testing.F) {
 	f.Add([]byte(goodBench))
+	f.Add([]byte(strings.Replace(goodBench, dividerTable, dividerTable+"drift_per_year = \"0.002 %\"\nper_kelvin = \"5 mV/K\"\ncalibration_temperature = { value = \"23 degC\", u = \"0.3 K\" }\n[work]\nperformed = 2026-03-04\n", 1)))
 	f.Add([]byte("format = 1\ntitle = \"x\"\nmodel = \"test-disc\"\nreadings = [{ file = \"readings.csv\" }]\n"))
 	f.Add([]byte("format = 1\ntitle = \"x\"\nmodel = \"test-disc\"\nchannels.force = 1\nquantities = []\n"))
 	f.Add([]byte("format = 1\nmodel = \"test-disc\"\n[[channels]]\n[[channels.force]]\n[exclude]\nrow = 1"))
@@ -52,6 +53,13 @@ func FuzzBench(f *testing.F) {
 		for _, c := range b.Channels {
 			if len(c.Readings) != 5 || c.Gain.Check() != nil || c.Offset.Check() != nil {
 				t.Fatalf("channel %+v", c)
+			}
+		}
+		for _, in := range b.Instruments {
+			for _, a := range in.Allowances {
+				if err := a.Dist.Check(); err != nil {
+					t.Fatalf("%s: %v", a.Name, err)
+				}
 			}
 		}
 		if _, err := b.Exclude(2, "x"); err != nil && !b.Rows.Excluded[1] {

@@ -103,6 +103,10 @@ func (r *reader) limit(n *node, key string) (text string, v float64, u si.Unit) 
 	if f == nil {
 		return "", 0, si.Unit{}
 	}
+	if before, per, cut := strings.Cut(f.text, "/"); cut && key == "drift_per_year" && slices.Contains([]string{"a", "y", "yr", "year"}, strings.TrimSpace(per)) {
+		r.fail(f, "%s: the key says that it is the drift of a year; write %s", shown(f), quoted(strings.TrimSpace(before)))
+		return "", 0, si.Unit{}
+	}
 	v, u, ok := r.number(f, wanted{any: true, interval: true})
 	if ok && !(v > 0) {
 		r.fail(f, "%s where a limit is due, above zero, within which it goes either way; a change that is known belongs into the value or the gain", shown(f))
@@ -153,10 +157,7 @@ func (l *loader) allowances() {
 	l.cite()
 	for i := range l.b.Instruments {
 		in := &l.b.Instruments[i]
-		n := l.find("instruments." + in.Name)
-		if n == nil { // a name that needs quotes
-			n = l.root.field("instruments").field(in.Name)
-		}
+		n := l.root.field("instruments").field(in.Name)
 		values := l.values(in.Name)
 		for _, a := range []struct {
 			key, name, what string
@@ -177,6 +178,10 @@ func (l *loader) allowances() {
 			relative, unit, ok := l.acts(f, a.unit, a.key == "per_kelvin", values)
 			half, source, known := a.width(in, n, f)
 			if !ok || !known {
+				continue
+			}
+			if relative && half >= 1 {
+				l.fail(f, "%s comes to %.3g times the value, all of it and more; a part of it is due, like \"0.01 %%\"", shown(f), half)
 				continue
 			}
 			d := gum.Exactly(0)
@@ -207,17 +212,21 @@ func (l *loader) acts(f *node, u si.Unit, perKelvin bool, values []value) (relat
 		unit = values[0].unit
 	}
 	ok = true
+	instead := `state it as a part of the value (for example "0.01 %"), or `
+	if slices.ContainsFunc(values, func(v value) bool { return v.unit.Dim == si.Temperature || isPart(v.unit) }) {
+		instead = ""
+	}
 	for _, v := range values {
 		problem := ""
 		switch {
 		case relative && v.unit.Dim == si.Temperature:
 			problem = fmt.Sprintf("is a part of the value, and the instrument gives %s, a temperature, of which no part changes; state it in K", v.key)
-		case relative && v.unit.Dim.IsOne() && v.unit.Factor != 1 && !isAngle(v.unit):
+		case relative && isPart(v.unit):
 			problem = fmt.Sprintf("may be a part of %s or an amount in its unit, %s; leave it out and widen u of %s", v.key, v.unit.Symbol, v.key)
 		case relative:
 		case v.unit.Dim != dim || isAngle(v.unit) != angle:
-			problem = fmt.Sprintf("is %s, and the instrument gives %s, %s; state it as a part of the value (for example \"0.01 %%\"), or write one table [instruments.NAME] for each kind of value",
-				named(dim, angle), v.key, named(v.unit.Dim, isAngle(v.unit)))
+			problem = fmt.Sprintf("is %s, and the instrument gives %s, %s; %swrite one table [instruments.NAME] for each kind of value",
+				named(dim, angle), v.key, named(v.unit.Dim, isAngle(v.unit)), instead)
 		case v.squared:
 			problem = fmt.Sprintf("is added to the value, and of %s only the square counts; state it as a part of the value (for example \"0.01 %%\"), or leave the instrument out there", v.key)
 		}
@@ -231,6 +240,9 @@ func (l *loader) acts(f *node, u si.Unit, perKelvin bool, values []value) (relat
 
 // isAngle reports whether u is a unit of plane angle, whose dimension is one.
 func isAngle(u si.Unit) bool { return strings.Contains(u.Coherent().Symbol, "rad") }
+
+// isPart reports whether u is a unit of parts: %, ppm.
+func isPart(u si.Unit) bool { return u.Dim.IsOne() && u.Factor != 1 && !isAngle(u) }
 
 // named is the word for a dimension.
 func named(d si.Dimension, angle bool) string {
@@ -264,7 +276,8 @@ func (l *loader) drift(in *Instrument, n, f *node) (half float64, source string,
 	if since.After(first) {
 		l.warnf(n.field("calibrated"), "the work began on %s, before this calibration; the drift is reckoned back from it", first.Format(time.DateOnly))
 	}
-	days := math.Max(math.Abs(first.Sub(since).Hours()), math.Abs(last.Sub(since).Hours())) / 24
+	apart := func(day time.Time) float64 { return math.Abs(float64(day.Unix()-since.Unix())) / (24 * 3600) }
+	days := math.Max(apart(first), apart(last))
 	return in.DriftPerYearSI * days / year, in.known(fmt.Sprintf("within %s a year since %s", f.text, in.Calibrated)), true
 }
 
@@ -295,8 +308,7 @@ func (l *loader) days() (first, last time.Time, ok bool) {
 		}
 	}
 	day := func(s float64) time.Time {
-		y, m, d := r.Epoch.Add(time.Duration(s * float64(time.Second))).Date()
-		return time.Date(y, m, d, 0, 0, 0, 0, time.UTC)
+		return time.Unix(r.Epoch.Unix()+int64(math.Floor(s)), 0).UTC().Truncate(24 * time.Hour)
 	}
 	return day(lo), day(hi), lo <= hi
 }
@@ -313,7 +325,7 @@ func (l *loader) days() (first, last time.Time, ok bool) {
 // temperature that happens to equal that of the calibration leaves something open,
 // and the product is uncorrelated with the temperature, as with any other
 // instrument that shares it.
-func (l *loader) warmth(in *Instrument, n, f *node) (half float64, source string, ok bool) {
+func (l *loader) warmth(in *Instrument, _, f *node) (half float64, source string, ok bool) {
 	var air *Condition
 	for i := range l.b.Environment {
 		if l.b.Environment[i].Name == "temperature" {
@@ -336,15 +348,13 @@ func (l *loader) warmth(in *Instrument, n, f *node) (half float64, source string
 	if away == 0 {
 		l.warnf(f, "the temperature of the work is stated without uncertainty and equals that of the calibration, so that the coefficient adds nothing; state u of environment.temperature")
 	}
-	at := n.field("calibration_temperature")
-	if at.shape == isTable && at.field("value") != nil {
-		at = at.field("value")
-	}
+	unit := in.CalibrationTemperature.Unit
+	at := fmt.Sprintf("%.6g %s", unit.FromSI(t0.Value), unit)
 	per := ""
 	if in.PerKelvinUnit.Dim.IsOne() || !strings.Contains(in.PerKelvinUnit.Symbol, "/") {
 		per = " a kelvin"
 	}
-	return in.PerKelvinSI * away, in.known(fmt.Sprintf("within %s%s away from %s", f.text, per, at.text)), true
+	return in.PerKelvinSI * away, in.known(fmt.Sprintf("within %s%s away from %s", f.text, per, at)), true
 }
 
 // known puts the certificate, else the serial number, before what is known by it.

@@ -31,8 +31,8 @@ func TestAllowances(t *testing.T) {
 		{"calibrated after the work", "drift_per_year = \"1 ppm\"\n[work]\nperformed = 2026-01-04\n", nil, "instruments.divider.drift", true, 1e-6 * 11 / 365.25, ""},
 		{"one day of work", "drift_per_year = \"1 ppm\"\n[work]\nfinished = 2026-03-04\n", nil, "instruments.divider.drift", true, 1e-6 * 48 / 365.25, ""},
 		// At 20.5 °C with u = 0.2 K, 2.5 K below the calibration: √(2.5² + 0.2²) = 2.50799 K.
-		{"temperature, part", "per_kelvin = \"12 ppm/K\"\ncalibration_temperature = \"23 degC\"\n", nil, "instruments.divider.temperature", true, 12e-6 * 2.507987, "serial D-1: within 12 ppm/K away from 23 degC"},
-		{"temperature, without /K", "per_kelvin = \"12 ppm\"\ncalibration_temperature = \"23 degC\"\n", nil, "instruments.divider.temperature", true, 12e-6 * 2.507987, "serial D-1: within 12 ppm a kelvin away from 23 degC"},
+		{"temperature, part", "per_kelvin = \"12 ppm/K\"\ncalibration_temperature = \"23 degC\"\n", nil, "instruments.divider.temperature", true, 12e-6 * 2.507987, "serial D-1: within 12 ppm/K away from 23 °C"},
+		{"temperature, without /K", "per_kelvin = \"12 ppm\"\ncalibration_temperature = \"23 degC\"\n", nil, "instruments.divider.temperature", true, 12e-6 * 2.507987, "serial D-1: within 12 ppm a kelvin away from 23 °C"},
 		{"temperature, amount", "per_kelvin = \"5 mV/K\"\ncalibration_temperature = \"23 degC\"\n", nil, "instruments.divider.temperature", false, 5e-3 * 2.507987, ""},
 		// √(2.5² + 0.2² + 0.3²) = 2.52587 K.
 		{"temperature of the calibration uncertain", "per_kelvin = \"12 ppm/K\"\ncalibration_temperature = { value = \"23 degC\", u = \"0.3 K\" }\n", nil, "instruments.divider.temperature", true, 12e-6 * 2.525866, ""},
@@ -121,7 +121,15 @@ func TestAllowanceErrors(t *testing.T) {
 		{dividerTable, dividerTable + "drift_per_year = \"2 mrad\"\n" + work, `"2 mrad" is an angle, and the instrument gives channels.voltage, a voltage`},
 		{dividerTable, dividerTable + "per_kelvin = \"2 um/K\"\ncalibration_temperature = \"23 degC\"\n", `"2 um/K" is a quantity in m K⁻¹, and the instrument gives channels.voltage, a voltage`},
 		{dividerTable, dividerTable + "drift_per_year = \"2 um\"\n" + work + "[quantities.ratio]\nvalue = 2\nu = 0.1\ninstrument = \"divider\"\n", `and the instrument gives quantities.ratio, a pure number`},
+		{dividerTable, dividerTable + "drift_per_year = \"0.1 %/year\"\n" + work, `"0.1 %/year": the key says that it is the drift of a year; write "0.1 %"`},
+		{dividerTable, dividerTable + "drift_per_year = 20\n" + work, `20 comes to 2.63 times the value, all of it and more; a part of it is due, like "0.01 %"`},
+		{`u = "0.2 degC" }` + "\nhumidity = \"45 %\"", `u = "0.2 degC", instrument = "divider" }` + "\n" + work, ``},
 	} {
+		if c.want == "" { // one instrument for two kinds of value
+			_, err := OpenWith(testKind(), good(t, c.old, c.new, dividerTable, dividerTable+"drift_per_year = \"2 V\"\n"))
+			wantError(t, err, `"2 V" is a voltage, and the instrument gives environment.temperature, a temperature; write one table [instruments.NAME] for each kind of value`)
+			continue
+		}
 		_, err := OpenWith(testKind(), good(t, c.old, c.new))
 		wantError(t, err, c.want)
 	}
@@ -174,5 +182,47 @@ func TestAllowanceOfNothing(t *testing.T) {
 	}
 	if c := &b.Channels[2]; c.Name != "force" || !c.From("divider") || b.Channels[1].From("divider") || b.Channels[1].From("") {
 		t.Errorf("channel %+v", c)
+	}
+}
+
+// TestAllowanceByColumn takes the temperature from a column of the readings: 21.4 °C
+// on average with the scatter 0.4 K and a sensor of 0.3 K, so that u(T) is 0.5 K and
+// √(1.2² + 0.5²) is 1.3 K from a calibration at 22.6 °C.
+func TestAllowanceByColumn(t *testing.T) {
+	text := strings.Replace(goodBench, `temperature = { value = "20.5 degC", u = "0.2 degC" }`, `temperature = { column = "T/degC", unit = "degC", u = "0.3 K" }`, 1)
+	text = strings.Replace(text, dividerTable, dividerTable+"per_kelvin = \"10 ppm/K\"\ncalibration_temperature = \"22.6 degC\"\n", 1)
+	lines := strings.Split(strings.TrimSpace(goodReadings), "\n")
+	for i, cell := range []string{"T/degC", "21.0", "21.0", "21.4", "21.8", "21.8"} { // s² = 4·0.4²/4
+		lines[i] += "," + cell
+	}
+	b, err := OpenWith(testKind(), dataset(t, map[string]string{"bench.toml": text, "readings.csv": strings.Join(lines, "\n") + "\n"}))
+	if err != nil {
+		t.Fatal(err)
+	}
+	if got := b.Instruments[0].Allowances[0].Dist.Half; math.Abs(got/13e-6-1) > 1e-9 {
+		t.Errorf("half-width %g, want 13e-6", got)
+	}
+}
+
+// TestBudgetKnowsNoAllowance: a budget takes only what its formulas name, and says so.
+func TestBudgetKnowsNoAllowance(t *testing.T) {
+	dir := dataset(t, map[string]string{"budget.toml": `format = 1
+[inputs.v]
+value = "10 V"
+u = "1 mV"
+instrument = "divider"
+[outputs.y]
+formula = "2*v"
+unit = "V"
+[instruments.divider]
+calibrated = 2026-01-15
+drift_per_year = "20 ppm"
+`})
+	b, err := OpenBudget(dir + "/budget.toml")
+	if err != nil {
+		t.Fatal(err)
+	}
+	if len(b.Warnings) != 1 || !strings.Contains(b.Warnings[0].Error(), "instruments.divider.drift_per_year: a budget takes only what its formulas name: make it an input of its own") {
+		t.Errorf("warnings %v", b.Warnings)
 	}
 }

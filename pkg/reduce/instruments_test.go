@@ -229,6 +229,48 @@ performed = 2026-03-01
 	}
 }
 
+// TestCorrelatedDrifts: two instruments of one make that drift alike (r = 1) are as
+// one: by hand, the ratio is free of it and the product has twice it.
+func TestCorrelatedDrifts(t *testing.T) {
+	mm := si.MustUnit("mm")
+	length := func(name string) model.Scalar {
+		return model.Scalar{Table: "quantities", Name: name, Doc: name, Unit: mm, Required: true, Positive: true}
+	}
+	for r, want := range map[float64]float64{-1: 0, 0: math.Sqrt2, 1: 2} {
+		toml := fmt.Sprintf(`format = 1
+title = "Two calipers"
+model = "sum"
+[[readings]]
+file = "readings.csv"
+[channels.reading]
+column = "y/mm"
+unit = "mm"
+noise = "1 pm"
+[quantities]
+a = { value = "100 mm", instrument = "first" }
+b = { value = "50 mm", instrument = "second" }
+[instruments.first]
+calibrated = 2022-03-01
+drift_per_year = "25 ppm"
+[instruments.second]
+calibrated = 2022-03-01
+drift_per_year = "25 ppm"
+[[correlations]]
+between = ["instruments.first.drift", "instruments.second.drift"]
+r = %g
+[work]
+performed = 2026-03-01
+`, r)
+		k := small("mm", func(q []jet.Jet) jet.Jet { return q[0] }, func(q []jet.Jet) jet.Jet { return q[0].Add(q[1].Mul(q[2])) },
+			model.Scalar{Table: "quantities", Name: "zero", Doc: "zero", Unit: mm, Sought: true}, length("a"), length("b"))
+		m := law(t, opened(t, k, toml, "y/mm\n0\n0\n0\n"))
+		want *= 100e-6 * 0.005 / math.Sqrt(3)
+		if got := float64(m.U); math.Abs(got-want) > 1e-12+1e-9*want {
+			t.Errorf("r = %g: u = %g, want %g", r, got, want)
+		}
+	}
+}
+
 // TestAllowanceIsAGainOrOffset: a drift of an instrument that gives one channel, or
 // one quantity, has the same u and the same interval as the half-width written out
 // as a gain, an offset or a value. The force of the dataset has its zero taken off.
