@@ -4,6 +4,9 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"path/filepath"
+	"slices"
+	"strings"
 
 	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/cell"
@@ -60,7 +63,9 @@ func Predict(ctx context.Context, b *bench.Bench, t *Truth) (*Prediction, error)
 		case ctx.Err() != nil:
 			return nil, ctx.Err()
 		case err != nil:
-			out.Refused = err.Error()
+			// it is the change that is refused, not the files
+			truth := filepath.Join(b.Dir, TruthFile)
+			out.Refused = strings.NewReplacer("with the truth of "+truth+": ", "", truth+": ", "", b.Dir+"/bench.toml: ", "").Replace(err.Error())
 		case len(r.Measurands) == 0:
 			out.Refused = "the measurand is no longer determined"
 		default:
@@ -106,9 +111,14 @@ func predict(ctx context.Context, b *bench.Bench, t *Truth) (*reduce.Record, err
 	if err != nil {
 		return nil, err
 	}
-	// Residuals without noise say nothing.
+	// Residuals without noise say nothing; what is said of the bench and its settings
+	// stands.
+	c, err := reduce.Check(&quiet)
+	if err != nil {
+		return nil, err
+	}
 	r.Record.Warnings = nil
-	for _, w := range b.Warnings {
+	for _, w := range c.Warnings {
 		r.Record.Warnings = append(r.Record.Warnings, w.Error())
 	}
 	return &r.Record, nil
@@ -162,15 +172,22 @@ func scenarios(b *bench.Bench, m *reduce.Measurand) []variant {
 		add(fmt.Sprintf("%.0f times the settings", n), "settings", n, func(b *bench.Bench) { average(b, n, true) })
 	}
 	for i := range b.Channels {
-		if i == responseChannel(b) {
+		name, scaled := b.Channels[i].Name, []int{i}
+		// A body's height is one within the gap: another gap keeps its share of it.
+		switch height, gap := channelNamed(b, "height"), channelNamed(b, "gap"); {
+		case i == responseChannel(b), i == height && gap >= 0:
 			continue
+		case i == gap && height >= 0:
+			name, scaled = "gap and height", append(scaled, height)
 		}
 		for _, f := range []float64{0.5, 0.8, 1.25, 2} {
-			add(fmt.Sprintf("%g times the %s", f, b.Channels[i].Name), b.Channels[i].Name, f, func(b *bench.Bench) {
-				ch := &b.Channels[i]
-				ch.Readings = append([]float64(nil), ch.Readings...)
-				for r := range ch.Readings {
-					ch.Readings[r] *= f
+			add(fmt.Sprintf("%g times the %s", f, name), b.Channels[i].Name, f, func(b *bench.Bench) {
+				for _, i := range scaled {
+					ch := &b.Channels[i]
+					ch.Readings = append([]float64(nil), ch.Readings...)
+					for r := range ch.Readings {
+						ch.Readings[r] *= f
+					}
 				}
 			})
 		}
@@ -195,6 +212,11 @@ func scenarios(b *bench.Bench, m *reduce.Measurand) []variant {
 		}
 	}
 	return out
+}
+
+// channelNamed returns the place of a channel, or −1.
+func channelNamed(b *bench.Bench, name string) int {
+	return slices.IndexFunc(b.Channels, func(c bench.Channel) bool { return c.Name == name })
 }
 
 // halver returns the change that halves the uncertainty of an input of the

@@ -4,6 +4,7 @@ import (
 	"context"
 	"math"
 	"path/filepath"
+	"strings"
 	"testing"
 
 	"example.org/guardring/pkg/bench"
@@ -51,5 +52,50 @@ func TestPredictionHolds(t *testing.T) {
 				t.Errorf("%s: %s would raise u by a factor %g", b.Dir, s.Name, s.Ratio)
 			}
 		}
+	}
+}
+
+// A plan looks at designs that can be built, and says what is to be said of them
+// without noise: the warnings of the bench and its settings (derived).
+func TestPredictionOfDesigns(t *testing.T) {
+	predict := func(name string) *plan.Prediction {
+		b, err := bench.Open(filepath.Join("..", "..", "datasets", name))
+		if err != nil {
+			t.Fatal(err)
+		}
+		truth, err := plan.ReadTruth(b)
+		if err != nil {
+			t.Fatal(err)
+		}
+		p, err := plan.Predict(context.Background(), b, truth)
+		if err != nil {
+			t.Fatal(err)
+		}
+		return p
+	}
+	// Another gap takes the body between the plates with it.
+	n := 0
+	for _, s := range predict("charge-in-field").Scenarios {
+		switch {
+		case s.Change == "height":
+			t.Errorf("%s by itself takes the body out of the mid-plane", s.Name)
+		case s.Change == "gap":
+			if n++; s.Refused != "" {
+				t.Errorf("%s: %s", s.Name, s.Refused)
+			}
+		}
+	}
+	if n != 4 {
+		t.Errorf("%d other gaps", n)
+	}
+	// What is refused is told of the change, not of the files at hand.
+	p := predict("dielectric-sample")
+	for _, s := range p.Scenarios {
+		if strings.Contains(s.Refused, "datasets") {
+			t.Errorf("%s: %s", s.Name, s.Refused)
+		}
+	}
+	if len(p.Warnings) != 1 || !strings.Contains(p.Warnings[0], "the air film") {
+		t.Errorf("warnings %q", p.Warnings)
 	}
 }

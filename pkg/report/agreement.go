@@ -48,7 +48,8 @@ func Agreement(a *assess.Agreement, measurand string) *Sheet {
 	if t := unitText(to); t != "" {
 		unit = nbsp + t
 	}
-	s.Fact("weighted mean", v+unit+", u = "+u+unit)
+	_, expanded := rescaled(m.Value, 2*m.U, from, to)
+	s.Fact("weighted mean", v+unit+", u = "+u+unit+", U = "+expanded+unit+" (k = 2)")
 	chi := fmt.Sprintf("%s with %s, p %s", digits(m.ChiSquared, 3), plural(m.DOF, "degree of freedom", "degrees of freedom"), equals(m.PValue))
 	if !m.Consistent {
 		chi += fmt.Sprintf(" (NOT consistent at %s)", strings.ReplaceAll(si.Percent(m.Level), " ", nbsp))
@@ -65,6 +66,7 @@ func Agreement(a *assess.Agreement, measurand string) *Sheet {
 	if t := pairs(a.Degrees, from, to); t != nil {
 		s.Head("Each against each").Table(t)
 	}
+	s.Say("The U of a difference has k = 2; E_n is the difference over it.")
 	s.Head("In common")
 	if len(a.Shared.Inputs) == 0 {
 		s.Say("No input of the budgets is common to two results: they are taken as independent.")
@@ -159,7 +161,7 @@ func Drift(l *assess.Line, what string, predictions []*assess.Prediction) *Sheet
 		verdict = "It drifts."
 	}
 	s.Head("Result").Say(verdict)
-	s.Fact("drift", fmt.Sprintf("%s%s per year, u = %s%s, p %s by the stated uncertainties, %s by the scatter", rounded(slope), unit, power(us), unit,
+	s.Fact("drift", fmt.Sprintf("%s%s per year, u = %s%s, p %s by the stated uncertainties, p %s by the scatter", rounded(slope), unit, power(us), unit,
 		equals(l.PSlope), equals(l.PScatter)))
 	v, u := rescaled(l.Level, l.ULevel, from, to)
 	s.Fact("level", fmt.Sprintf("%s%s, u = %s%s, on %s", v, unit, u, unit, l.Reference.Format("2006-01-02")))

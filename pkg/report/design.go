@@ -3,6 +3,7 @@ package report
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -55,8 +56,12 @@ func Changes(p *plan.Prediction, unit si.Unit) (t *Table, notes []string) {
 	for _, c := range p.Scenarios {
 		note := ""
 		if c.Refused != "" {
-			notes = append(notes, c.Refused)
-			note = fmt.Sprintf("not possible (%d)", len(notes))
+			n := slices.Index(notes, c.Refused) + 1
+			if n == 0 {
+				notes = append(notes, c.Refused)
+				n = len(notes)
+			}
+			note = fmt.Sprintf("not possible (%d)", n)
 		}
 		row := []string{changeName(c.Name), In(float64(c.U), unit, 2), In(float64(c.Ratio), one, 3)}
 		if energy {
