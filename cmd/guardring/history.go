@@ -173,7 +173,7 @@ func (o *historyOptions) calibration(ctx context.Context, dir string) (*found, e
 	var m *reduce.Measurand
 	for _, name := range []string{reduce.SeriesName(base, before), reduce.SeriesName(base, rest), base} {
 		if m == nil {
-			m = measurandOf(&r.Record, name)
+			m = r.Record.Measurand(name)
 		}
 	}
 	if m == nil {
@@ -191,7 +191,7 @@ func (o *historyOptions) calibration(ctx context.Context, dir string) (*found, e
 	if c.Name == "" {
 		c.Name = dir
 	}
-	if s := measurandOf(&r.Record, reduce.SeriesName("shift of "+base, rest)); s != nil {
+	if s := r.Record.Measurand(reduce.SeriesName("shift of "+base, rest)); s != nil {
 		c.Adjustment, c.UAdjustment = float64(s.Value), float64(s.U)
 	}
 	rec := r.Record
@@ -203,13 +203,4 @@ func (o *historyOptions) calibration(ctx context.Context, dir string) (*found, e
 		c.inputs[i].File = dir + "/" + c.inputs[i].File
 	}
 	return c, nil
-}
-
-func measurandOf(rec *reduce.Record, name string) *reduce.Measurand {
-	for i := range rec.Measurands {
-		if rec.Measurands[i].Name == name {
-			return &rec.Measurands[i]
-		}
-	}
-	return nil
 }

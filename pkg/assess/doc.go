@@ -9,8 +9,8 @@
 // Agreement. [En], [Zeta] and [Z] compare two results, [WeightedMean] and
 // [Mean.Degrees] several, with their full covariance; [SharedCovariance] builds
 // that covariance from the budgets of records that used the same instrument or
-// certificate, and [Compare] does all of it for records. [LargestConsistentSubset] and [AlgorithmA] serve when they do not
-// agree.
+// certificate, and [Compare] does all of it for records. [LargestConsistentSubset]
+// and [AlgorithmA] serve when they do not agree.
 //
 // Drift. [Drift] fits a line through the calibrations of one instrument, tests
 // its slope, draws control limits and predicts.

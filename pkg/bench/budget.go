@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"path/filepath"
+	"slices"
 
 	"example.org/guardring/pkg/formula"
 	"example.org/guardring/pkg/gum"
@@ -216,7 +217,7 @@ func (f *folder) repeats(r *reader, b *Budget, n *node) (q stated, ok bool) {
 	before := len(r.errs.list)
 	allowed := []string{"file", "column", "unit", "sha256", "decimal", "together", "group", "instrument", "source"}
 	for _, k := range n.keys {
-		if indexOf(allowed, k) < 0 {
+		if !slices.Contains(allowed, k) {
 			r.fail(n.field(k), "%s does not go with file and column", k)
 		}
 	}
@@ -247,7 +248,7 @@ func (f *folder) repeats(r *reader, b *Budget, n *node) (q stated, ok bool) {
 	defer in.Close()
 	s.Numbers = []string{column}
 	t, err := readCSV(in, file, size, s, s.Numbers, func(l *layout) error {
-		c := indexOf(l.header, column)
+		c := slices.Index(l.header, column)
 		if c < 0 {
 			return r.errorf(n.field("column"), "%s: %s", file, missingColumn(l.header, column))
 		}
@@ -313,7 +314,7 @@ func (r *reader) joint(b *Budget) []gum.Pair {
 			continue
 		}
 		for _, c := range b.Correlations {
-			if indexOf(names, c.A) >= 0 && indexOf(names, c.B) >= 0 {
+			if slices.Contains(names, c.A) && slices.Contains(names, c.B) {
 				r.errs.add(&Error{File: r.file, Line: c.Line, Key: "correlations",
 					Problem: fmt.Sprintf("%s and %s were read together; their correlation follows from the readings", c.A, c.B)})
 			}

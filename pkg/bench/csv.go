@@ -3,6 +3,7 @@ package bench
 import (
 	"bytes"
 	"fmt"
+	"slices"
 	"strings"
 	"time"
 	"unicode/utf8"
@@ -51,7 +52,7 @@ type timeColumn struct {
 type lineStart struct{ record, line int }
 
 // Column returns the index of a header, or −1.
-func (t *Table) Column(header string) int { return indexOf(t.Header, header) }
+func (t *Table) Column(header string) int { return slices.Index(t.Header, header) }
 
 // Line returns the line of data record i, counted from 0.
 func (t *Table) Line(i int) int {
@@ -67,15 +68,6 @@ func (t *Table) Line(i int) int {
 		return 0
 	}
 	return t.starts[lo-1].line + i - t.starts[lo-1].record
-}
-
-func indexOf(list []string, s string) int {
-	for i, x := range list {
-		if x == s {
-			return i
-		}
-	}
-	return -1
 }
 
 // mode is what a column is read as.
@@ -161,7 +153,7 @@ func readHeader(file string, line []byte, s CSVSettings, wanted []string) (*layo
 			if len(wanted) > 0 {
 				found := 0
 				for _, w := range wanted {
-					if indexOf(h, w) >= 0 {
+					if slices.Contains(h, w) {
 						found++
 					}
 				}

@@ -9,6 +9,7 @@ import (
 	"math"
 	"os"
 	"runtime"
+	"slices"
 	"sync"
 	"time"
 )
@@ -40,7 +41,7 @@ func ReadCSV(r io.Reader, name string, s CSVSettings) (*Table, error) {
 		var errs errorList
 		set := func(list []string, m mode) {
 			for _, h := range list {
-				if c := indexOf(l.header, h); c >= 0 {
+				if c := slices.Index(l.header, h); c >= 0 {
 					l.modes[c], _ = l.modes[c].also(m)
 				} else {
 					errs.add(&Error{File: name, Line: 1, Problem: missingColumn(l.header, h)})

@@ -3,6 +3,7 @@ package bench
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strconv"
 	"strings"
 	"time"
@@ -280,7 +281,7 @@ func (r *reader) number(n *node, want wanted) (float64, si.Unit, bool) {
 			return 0, si.Unit{}, false
 		}
 		if !want.any && u.Dim != want.like.Dim {
-			if form := "relative_" + n.name; want.interval && u.Dim.IsOne() && indexOf(append(uncertaintyForms, "relative_noise"), form) >= 0 {
+			if form := "relative_" + n.name; want.interval && u.Dim.IsOne() && slices.Contains(append(uncertaintyForms, "relative_noise"), form) {
 				r.fail(n, "%s is a pure number; %s is due, or write %s = %s", quoted(n.text), dimensionName(want.like), form, quoted(n.text))
 				return 0, si.Unit{}, false
 			}

@@ -122,7 +122,7 @@ func (l *loader) readFile(f *readingsFile, limit int) (*Table, error) {
 	t, err := readCSV(file, f.name, size, f.settings, wanted, func(lay *layout) error {
 		var errs errorList
 		for _, u := range l.columns {
-			c := indexOf(lay.header, u.header)
+			c := slices.Index(lay.header, u.header)
 			if c < 0 {
 				e := l.errorf(u.node, "%s: %s", f.name, missingColumn(lay.header, u.header))
 				errs.add(e)
@@ -162,7 +162,7 @@ func (l *loader) rows() {
 		known := []string{"reading", "zero", "blank", "overrange"}
 		of := make([]RowKind, len(kinds.Words))
 		for i, w := range kinds.Words {
-			k := indexOf(known, w)
+			k := slices.Index(known, w)
 			if k < 0 {
 				row := slices.Index(kinds.Index, int32(i))
 				l.rowError(row, kinds.Column, fmt.Sprintf("%s is no kind of row%s", quoted(w), didYouMean(w, known)))
@@ -177,7 +177,7 @@ func (l *loader) rows() {
 	if q := r.Labels["quality"]; q != nil && len(l.reject) > 0 {
 		bad := make([]string, len(q.Words))
 		for _, w := range l.reject {
-			if i := indexOf(q.Words, w); i >= 0 {
+			if i := slices.Index(q.Words, w); i >= 0 {
 				bad[i] = "quality mark " + w
 			}
 		}
@@ -254,7 +254,7 @@ func (l *loader) fill(columns map[string][]float64) {
 // one error.
 func (l *loader) unlabelled(words *Labels, role string) {
 	r := &l.b.Rows
-	empty := int32(indexOf(words.Words, ""))
+	empty := int32(slices.Index(words.Words, ""))
 	if empty < 0 {
 		return
 	}

@@ -183,7 +183,7 @@ func (l *loader) ambient(n *node, name string, like si.Unit, scalar int) {
 		}
 	}
 	for _, k := range n.keys {
-		if table := (&columnDoc); indexOf(table.names(), k) < 0 {
+		if table := (&columnDoc); !slices.Contains(table.names(), k) {
 			l.fail(n.field(k), "%s does not go with column; known here: %s", k, strings.Join(table.names(), ", "))
 			return
 		}

@@ -5,6 +5,7 @@ import (
 	"encoding/csv"
 	"fmt"
 	"math"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -203,7 +204,7 @@ func (s *starter) others(done map[string]bool) {
 func (s *starter) kindTables() []string {
 	var names []string
 	add := func(name string) {
-		if indexOf(names, name) < 0 {
+		if !slices.Contains(names, name) {
 			names = append(names, name)
 		}
 	}

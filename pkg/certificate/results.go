@@ -3,6 +3,7 @@ package certificate
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 
 	"example.org/guardring/pkg/bench"
@@ -38,7 +39,7 @@ func (c *Certificate) results(r *reduce.Result) error {
 		return err
 	}
 	for i, name := range series(r) {
-		m := measurand(rec, reduce.SeriesName(base, name))
+		m := rec.Measurand(reduce.SeriesName(base, name))
 		if m == nil {
 			return fmt.Errorf("certificate: the reduction states no %s for %q", base, name)
 		}
@@ -51,7 +52,7 @@ func (c *Certificate) results(r *reduce.Result) error {
 			c.Definition = Fact{words, m.Doc}
 		}
 		res := Result{Name: name, Phase: phase(name), Value: quantity(words, m.Doc, float64(m.Value), float64(m.U), float64(m.K), unit, least)}
-		if z := measurand(rec, reduce.SeriesName("zero_offset", name)); z != nil && base != "zero_offset" {
+		if z := rec.Measurand(reduce.SeriesName("zero_offset", name)); z != nil && base != "zero_offset" {
 			zu, err := unitFor(z)
 			if err != nil {
 				return err
@@ -237,7 +238,7 @@ func stated(r *reduce.Result) (string, error) {
 	for i := range r.Record.Measurands {
 		m := r.Record.Measurands[i].Name
 		for _, s := range series(r) {
-			if b, ok := strings.CutSuffix(m, reduce.SeriesName("", s)); ok && !strings.HasPrefix(b, "shift of ") && !contains(bases, b) {
+			if b, ok := strings.CutSuffix(m, reduce.SeriesName("", s)); ok && !strings.HasPrefix(b, "shift of ") && !slices.Contains(bases, b) {
 				bases = append(bases, b)
 			}
 		}
@@ -252,24 +253,6 @@ func stated(r *reduce.Result) (string, error) {
 		}
 	}
 	return "", fmt.Errorf("%s/bench.toml: report.definition: %q is no result of this bench; it may be %s", r.Bench.Dir, def, strings.Join(bases, ", "))
-}
-
-func contains(list []string, s string) bool {
-	for _, x := range list {
-		if x == s {
-			return true
-		}
-	}
-	return false
-}
-
-func measurand(rec *reduce.Record, name string) *reduce.Measurand {
-	for i := range rec.Measurands {
-		if rec.Measurands[i].Name == name {
-			return &rec.Measurands[i]
-		}
-	}
-	return nil
 }
 
 // unitFor chooses the unit in which a measurand is stated: its own, with the

@@ -2,6 +2,7 @@ package certificate
 
 import (
 	"fmt"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -210,14 +211,14 @@ func (c *Certificate) sheetConformity(head func(string), list func(...Fact), add
 	for _, l := range []string{falseAcceptance, falseRejection, consumersRisk, producersRisk} {
 		for _, k := range some {
 			for _, r := range k.Risks {
-				if r.Label == l && !contains(labels, l) {
+				if r.Label == l && !slices.Contains(labels, l) {
 					labels = append(labels, l)
 				}
 			}
 		}
 	}
 	for _, k := range some {
-		if k.Population != "" && !contains(sources, k.Population) {
+		if k.Population != "" && !slices.Contains(sources, k.Population) {
 			sources = append(sources, k.Population)
 		}
 	}
@@ -239,10 +240,10 @@ func (c *Certificate) sheetConformity(head func(string), list func(...Fact), add
 		g.rows = append(g.rows, row)
 		for _, w := range k.Warnings {
 			// What differs in its numbers only is said once.
-			if like := strings.Map(noDigit, w); !contains(alike, like) {
+			if like := strings.Map(noDigit, w); !slices.Contains(alike, like) {
 				alike = append(alike, like)
 				warnings = append(warnings, lead(k.Series)+w)
-			} else if i := indexOf(alike, like); !strings.HasSuffix(warnings[i], likewise) {
+			} else if i := slices.Index(alike, like); !strings.HasSuffix(warnings[i], likewise) {
 				warnings[i] += likewise
 			}
 		}
@@ -263,15 +264,6 @@ func noDigit(r rune) rune {
 		return -1
 	}
 	return r
-}
-
-func indexOf(list []string, s string) int {
-	for i, x := range list {
-		if x == s {
-			return i
-		}
-	}
-	return -1
 }
 
 // without leaves out a column that has nothing in any row.

@@ -33,7 +33,7 @@ func (x *order2) chain(f, f1, f2 float64) (y order2) {
 	return y
 }
 
-// chain applies a function of two arguments.
+// chain2 applies a function of two arguments.
 func chain2(x, y *order2, f, fx, fy, fxx, fxy, fyy float64) (z order2) {
 	z.v = f
 	for i := range 3 {

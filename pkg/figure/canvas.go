@@ -132,7 +132,7 @@ func (m marker) mark(p *path, x, y, r float64) {
 // open tells whether the marker has no inside.
 func (m marker) open() bool { return m == cross || m == plus }
 
-// markPen returns the pen for a marker; hollow ones show the paper inside.
+// pen returns the pen for a marker; hollow ones show the paper inside.
 func (m marker) pen(color string, hollow bool) pen {
 	switch {
 	case m.open():

@@ -162,7 +162,7 @@ func (d *Data) unit(channel string) si.Unit {
 	return si.One
 }
 
-// responseUnit returns the unit of the response and the name it has.
+// response returns the name of the response and the unit it is in.
 func (d *Data) response() (string, si.Unit) {
 	name := d.Rows.ResponseName
 	if name == "" {

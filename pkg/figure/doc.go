@@ -19,5 +19,6 @@
 // are kept, and the figure says how many were drawn.
 //
 // Curve and AllOfFit draw the fit of a formula, Density, BudgetShares, Joint and
-// AllOfBudget the propagation of a budget.
+// AllOfBudget the propagation of a budget. Design draws a plan, Agreement and Drift
+// what package assess found, StrayField the lines of a field.
 package figure

@@ -87,11 +87,7 @@ func (d *Data) Histogram(name string) (*Figure, error) {
 	}
 	var lx, ly []float64
 	if law {
-		dist := distuv.StudentsT{Mu: 0, Sigma: 1, Nu: float64(m.DOF)}
-		density := dist.Prob
-		if !finite(float64(m.DOF)) || m.DOF > 1e6 {
-			density = distuv.UnitNormal.Prob
-		}
+		density, _ := lawDensity(float64(m.DOF))
 		const steps = 200
 		for i := 0; i <= steps; i++ {
 			v := lo + (hi-lo)*float64(i)/steps
@@ -179,4 +175,13 @@ func (d *Data) Histogram(name string) (*Figure, error) {
 		summary += "; the ends of the law's interval do not agree with those of the Monte Carlo interval."
 	}
 	return s.finish("histogram", title, "Monte Carlo values of "+words(m.Name)+" with their "+prob+" coverage interval (grey), and the distribution that the law of propagation assigns.", summary), nil
+}
+
+// lawDensity is the density that the law assigns to (y − value)/u: a t with dof
+// degrees of freedom, or the normal where these are too many to matter or infinite.
+func lawDensity(dof float64) (density func(float64) float64, t bool) {
+	if finite(dof) && dof < 1e6 {
+		return distuv.StudentsT{Mu: 0, Sigma: 1, Nu: dof}.Prob, true
+	}
+	return distuv.UnitNormal.Prob, false
 }

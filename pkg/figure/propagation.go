@@ -5,9 +5,6 @@ import (
 	"fmt"
 	"math"
 	"slices"
-	"strings"
-
-	"gonum.org/v1/gonum/stat/distuv"
 
 	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/reduce"
@@ -28,19 +25,11 @@ func output(p *reduce.Propagation, name string) (*reduce.BudgetResult, int, erro
 	if p == nil || len(p.Record.Outputs) == 0 {
 		return nil, 0, fmt.Errorf("figure: no propagation to draw")
 	}
-	var known []string
-	for i := range p.Record.Outputs {
-		o := &p.Record.Outputs[i]
-		if name == "" || o.Name == name {
-			return o, i, nil
-		}
-		known = append(known, o.Name)
+	i, err := oneNamed(name, len(p.Record.Outputs), func(i int) string { return p.Record.Outputs[i].Name }, "output", "budget")
+	if err != nil {
+		return nil, 0, err
 	}
-	hint := ""
-	if s := si.Suggest(name, known); s != "" {
-		hint = fmt.Sprintf("; did you mean %q?", s)
-	}
-	return nil, 0, fmt.Errorf("figure: no output %q in this budget (it has %s)%s", name, strings.Join(known, ", "), hint)
+	return &p.Record.Outputs[i], i, nil
 }
 
 // BudgetShares draws the share of the variance of an output ("" for the first) that
@@ -110,9 +99,8 @@ func Density(p *reduce.Propagation, name string) (*Figure, error) {
 	lawName := "law: normal"
 	var lx, ly []float64
 	if law {
-		density := distuv.UnitNormal.Prob
-		if finite(dof) && dof < 1e6 {
-			density = distuv.StudentsT{Mu: 0, Sigma: 1, Nu: dof}.Prob
+		density, t := lawDensity(dof)
+		if t {
 			lawName = "law: t with ν = " + shortNumber(dof)
 		}
 		const steps = 240

@@ -19,19 +19,28 @@ func (d *Data) measurand(name string) (*reduce.Measurand, int, error) {
 	if d == nil || d.Record == nil || len(d.Record.Measurands) == 0 {
 		return nil, 0, fmt.Errorf("figure: the record states no measurand")
 	}
+	i, err := oneNamed(name, len(d.Record.Measurands), func(i int) string { return d.Record.Measurands[i].Name }, "measurand", "record")
+	if err != nil {
+		return nil, 0, err
+	}
+	return &d.Record.Measurands[i], i, nil
+}
+
+// oneNamed finds one of n things by name; "" is the first. what they are and where
+// they stand is for the error.
+func oneNamed(name string, n int, of func(i int) string, what, where string) (int, error) {
 	var known []string
-	for i := range d.Record.Measurands {
-		m := &d.Record.Measurands[i]
-		if name == "" || m.Name == name {
-			return m, i, nil
+	for i := range n {
+		if name == "" || of(i) == name {
+			return i, nil
 		}
-		known = append(known, m.Name)
+		known = append(known, of(i))
 	}
 	hint := ""
 	if s := si.Suggest(name, known); s != "" {
 		hint = fmt.Sprintf("; did you mean %q?", s)
 	}
-	return nil, 0, fmt.Errorf("figure: no measurand %q in this record (it has %s)%s", name, strings.Join(known, ", "), hint)
+	return 0, fmt.Errorf("figure: no %s %q in this %s (it has %s)%s", what, name, where, strings.Join(known, ", "), hint)
 }
 
 // Shares draws the share of the variance of a measurand ("" for the first) that

@@ -28,9 +28,8 @@
 // Every value that a verb or a method returns has String for plain text and
 // SimpleRender for all its forms: text/plain, text/html and text/latex for
 // tables, image/svg+xml and image/png for figures, and for a result its record
-// as application/vnd.guardring.result+json (what the
-// command prints with --json). What is shown is made
-// when the value is, so showing can't fail.
+// as application/vnd.guardring.result+json (what the command prints with --json).
+// What is shown is made when the value is, so showing can't fail.
 //
 // # Failure
 //

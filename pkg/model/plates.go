@@ -28,7 +28,7 @@ var guardedScalars = []Scalar{
 }
 
 // guarded is the effective area of a guarded disc over the spacing, with the
-// corrections in use: charge = ε_eff V · perSpacing.
+// corrections in use: charge = ε_eff V · over.
 type guarded struct {
 	guard, wedge, coplanar                  bool
 	wedgeC                                  float64

@@ -62,6 +62,16 @@ type Record struct {
 	Rows        []RecordRow  `json:"rows,omitempty"`
 }
 
+// Measurand returns the measurand of that name, nil when the record states none.
+func (r *Record) Measurand(name string) *Measurand {
+	for i := range r.Measurands {
+		if r.Measurands[i].Name == name {
+			return &r.Measurands[i]
+		}
+	}
+	return nil
+}
+
 // RunRecord is how the record was made.
 type RunRecord struct {
 	Command string            `json:"command"`
