@@ -3,6 +3,7 @@ package reduce
 import (
 	"errors"
 	"fmt"
+	"path"
 	"regexp"
 	"slices"
 	"strings"
@@ -18,6 +19,9 @@ var keys = regexp.MustCompile(`"[^"]*"|\[[^\]]*\]|[A-Za-z][A-Za-z0-9]*(?:[._][A-
 
 // tables are the parts of a bench whose keys are told in words.
 var tables = []string{"channels", "corrections", "environment", "quantities"}
+
+// extensions are those of files, which may be called as the tables are.
+var extensions = []string{".csv", ".tsv", ".txt", ".toml"}
 
 // words is a warning for people: names as the budget has them, and the key in
 // brackets where it is one of bench.toml; parameters with their units. What tells a
@@ -37,7 +41,7 @@ func (c *chain) words(w error) string {
 		}
 		table, name, dotted := strings.Cut(s, ".")
 		switch {
-		case dotted && !slices.Contains(tables, table), !dotted && !c.known(s):
+		case dotted && (!slices.Contains(tables, table) || slices.Contains(extensions, path.Ext(s))), !dotted && !c.known(s):
 			return s
 		case !dotted:
 			return bench.Words(s)

@@ -1,9 +1,13 @@
 package reduce_test
 
 import (
+	"context"
+	"os"
+	"path/filepath"
 	"strings"
 	"testing"
 
+	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/reduce"
 )
 
@@ -47,6 +51,32 @@ func TestWarningsInWords(t *testing.T) {
 	}
 	if strings.Contains(w, "× guard_gap") || !strings.Contains(w, "guard gap model (corrections.guard_gap.model)") {
 		t.Error(w)
+	}
+}
+
+// A file of readings may be called as a table of the bench is.
+func TestWordsLeaveFiles(t *testing.T) {
+	s := openSheet(t, "attracted-disc")
+	s.toml = strings.Replace(s.toml, `"readings.csv"`, `"channels.csv"`, 1)
+	m := s.column(t, "m/g")
+	s.rows[20][m] += "e1" // a zero ten times as large, which its neighbours show
+	dir := t.TempDir()
+	if _, err := s.reduce(dir); err == nil {
+		t.Fatal("a missing file of readings was not missed")
+	}
+	if err := os.Rename(filepath.Join(dir, "readings.csv"), filepath.Join(dir, "channels.csv")); err != nil {
+		t.Fatal(err)
+	}
+	b, err := bench.Open(dir)
+	if err != nil {
+		t.Fatal(err)
+	}
+	r, err := reduce.Run(context.Background(), b, reduce.Settings{LawOnly: true})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if w := strings.Join(r.Record.Warnings, "\n"); !strings.Contains(w, "reading 22 (channels.csv:23) lies") {
+		t.Errorf("warnings %s", w)
 	}
 }
 
