@@ -71,15 +71,20 @@ func plainCSV(df dataframe.DataFrame) (string, error) {
 	for k, n := range names {
 		cells[k] = seriesText(df.Col(n), func(x float64) float64 { return x })
 	}
+	return csvOf(names, cells, df.Nrow())
+}
+
+// csvOf writes n rows of columns under their headers.
+func csvOf(header []string, columns [][]string, n int) (string, error) {
 	var out strings.Builder
 	w := csv.NewWriter(&out)
-	w.Write(names)
-	row := make([]string, len(names))
-	for i := range df.Nrow() {
-		for k := range names {
-			row[k] = cells[k][i]
+	_ = w.Write(header) // Error tells, below
+	row := make([]string, len(columns))
+	for i := range n {
+		for k := range columns {
+			row[k] = columns[k][i]
 		}
-		w.Write(row)
+		_ = w.Write(row)
 	}
 	w.Flush()
 	return out.String(), w.Error()
@@ -100,8 +105,12 @@ func (f *FormulaFit) Record() *reduce.FitRecord { return &f.FormulaFit.Record }
 
 // parameter finds a parameter by name.
 func (f *FormulaFit) parameter(name string) *reduce.Parameter {
+	return parameterOf(f.FormulaFit.Record.Fit.Parameters, name)
+}
+
+// parameterOf finds a parameter by name, or ends the cell.
+func parameterOf(ps []reduce.Parameter, name string) *reduce.Parameter {
 	var known []string
-	ps := f.FormulaFit.Record.Fit.Parameters
 	for i := range ps {
 		if ps[i].Name == name {
 			return &ps[i]
@@ -121,9 +130,14 @@ func (f *FormulaFit) U(name string) float64 { return float64(f.parameter(name).U
 // Parameters is the table of the estimates with their uncertainties.
 func (f *FormulaFit) Parameters() *report.Table { return report.FitParameters(f.Record()) }
 
-// Correlations tells the correlation coefficients of the parameters.
+// Correlations tells the correlation coefficients of the parameters, under their
+// names in the formula.
 func (f *FormulaFit) Correlations() *report.Sheet {
-	return report.CorrelationSheet(f.Record().Reduction())
+	t := report.FitCorrelations(f.Record())
+	if t == nil {
+		return report.CorrelationSheet(f.Record().Reduction()) // says why there are none
+	}
+	return report.New("", "").Table(t)
 }
 
 // Diagnosis tells the goodness of the fit and the tests of the residuals.

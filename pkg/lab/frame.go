@@ -1,7 +1,6 @@
 package lab
 
 import (
-	"encoding/csv"
 	"fmt"
 	"math"
 	"slices"
@@ -219,18 +218,8 @@ func frameCSV(b *bench.Bench, df dataframe.DataFrame) ([]byte, error) {
 			return inUnit(c.unit, unit.ToSI(x))
 		})
 	}
-	var out strings.Builder
-	w := csv.NewWriter(&out)
-	w.Write(header)
-	row := make([]string, len(want))
-	for i := range df.Nrow() {
-		for k := range want {
-			row[k] = cells[k][i]
-		}
-		w.Write(row)
-	}
-	w.Flush()
-	return []byte(out.String()), w.Error()
+	text, err := csvOf(header, cells, df.Nrow())
+	return []byte(text), err
 }
 
 // seriesText writes the elements of a series, numbers so that they parse back to

@@ -475,3 +475,13 @@ func TestReadFrame(t *testing.T) {
 		t.Error(df)
 	}
 }
+
+// TestNamesOfFormula: correlations are told under the names of the formula, an
+// underscore in them kept.
+func TestNamesOfFormula(t *testing.T) {
+	s := springFit
+	s.Formula, s.Start = "k*x + f_0", map[string]float64{"k": 10, "f_0": 0}
+	if text := Fit(springData(t), s).Correlations().String(); !strings.Contains(text, "f_0") {
+		t.Errorf("the correlations do not name f_0:\n%s", text)
+	}
+}

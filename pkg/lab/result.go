@@ -189,16 +189,7 @@ func (r *Result) Interval(name ...string) []float64 {
 
 // Estimate is the estimate of a parameter in SI.
 func (r *Result) Estimate(name string) float64 {
-	var known []string
-	for i := range r.Result.Record.Fit.Parameters {
-		p := &r.Result.Record.Fit.Parameters[i]
-		if p.Name == name {
-			return float64(p.Value)
-		}
-		known = append(known, p.Name)
-	}
-	fail(unknown("parameter", name, known))
-	return 0
+	return float64(parameterOf(r.Result.Record.Fit.Parameters, name).Value)
 }
 
 // measurand finds a measurand by name, the first without one.

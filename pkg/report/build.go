@@ -244,8 +244,11 @@ func (d *document) correlations(rec *reduce.Record) {
 // Correlations is the table of all correlations of the parameters, statistical
 // part: a triangle, or a list of pairs when there are many; nil for fewer than
 // two parameters.
-func Correlations(rec *reduce.Record) *Table {
-	ps, cov := rec.Fit.Parameters, rec.Fit.Covariance
+func Correlations(rec *reduce.Record) *Table { return correlationTable(&rec.Fit, words) }
+
+// correlationTable is the table of correlations with the parameters named by name.
+func correlationTable(fit *reduce.Fit, name func(key string) string) *Table {
+	ps, cov := fit.Parameters, fit.Covariance
 	if len(ps) < 2 || len(cov) != len(ps) {
 		return nil
 	}
@@ -261,7 +264,7 @@ func Correlations(rec *reduce.Record) *Table {
 	}
 	names := make([]string, len(ps))
 	for i := range ps {
-		names[i] = words(ps[i].Name)
+		names[i] = name(ps[i].Name)
 	}
 	return pairwise("parameter", names, len(ps) > widestMatrix, r)
 }

@@ -250,26 +250,7 @@ func (d *document) fitParameters(rec *reduce.FitRecord) {
 // FitCorrelations is the table of all correlations of a formula's parameters; nil
 // for fewer than two.
 func FitCorrelations(rec *reduce.FitRecord) *Table {
-	t := Correlations(rec.Reduction())
-	if t == nil {
-		return nil
-	}
-	// The names stand as in the formula.
-	ps := rec.Fit.Parameters
-	if len(ps) <= widestMatrix {
-		for i := range t.Rows {
-			t.Rows[i][1] = ps[i].Name
-		}
-		return t
-	}
-	k := 0
-	for i := range ps {
-		for j := range i {
-			t.Rows[k][0], t.Rows[k][1] = ps[j].Name, ps[i].Name
-			k++
-		}
-	}
-	return t
+	return correlationTable(&rec.Fit, func(name string) string { return name }) // as in the formula
 }
 
 func (d *document) secondOpinion(rec *reduce.FitRecord) {
