@@ -15,6 +15,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/cell"
 	"example.org/guardring/pkg/certificate"
 	"example.org/guardring/pkg/reduce"
 )
@@ -118,7 +119,7 @@ func (o *certificateOptions) run(cmd *cobra.Command, dir string) error {
 	if err := writeFiles(files); err != nil {
 		return err
 	}
-	_, err = io.WriteString(cmd.OutOrStdout(), certified(c, o.out, s.Replaced))
+	_, err = io.WriteString(cmd.OutOrStdout(), cell.Visible(certified(c, o.out, s.Replaced)))
 	return err
 }
 

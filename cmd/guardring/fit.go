@@ -235,7 +235,8 @@ func assignment(flag, item, example string) (name, text string, err error) {
 func plainNumber(flag, name, text string) (float64, error) {
 	text = strings.TrimSpace(text)
 	v, err := strconv.ParseFloat(text, 64)
-	if err != nil || math.IsNaN(v) || math.IsInf(v, 0) {
+	// strconv also reads hexadecimal numbers and underscores.
+	if err != nil || math.IsNaN(v) || math.IsInf(v, 0) || strings.ContainsAny(text, "xXpP_") {
 		if _, _, unit := si.ParseQuantity(text); unit == nil {
 			return 0, fmt.Errorf("--%s: %s=%s: write the number alone, in SI units", flag, name, text)
 		}

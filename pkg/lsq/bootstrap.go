@@ -19,6 +19,9 @@ type BootstrapSettings struct {
 	Coverage   float64 // probability of the intervals; 0: 0.9545
 }
 
+// maxReplicated bounds the values of all replicates that are kept: 800 MB.
+const maxReplicated = 100_000_000
+
 // Bootstrap is what resampled fits tell about the parameters.
 type Bootstrap struct {
 	Values   [][]float64  // one row per replicate that converged: all parameters
@@ -51,6 +54,9 @@ func (r *Result) Bootstrap(ctx context.Context, set BootstrapSettings) (*Bootstr
 		return nil, fmt.Errorf("lsq: the readings are correlated; the bootstrap needs independent ones")
 	}
 	n, np := len(r.Fitted), len(r.Values)
+	if set.Replicates > maxReplicated/max(np, 1) {
+		return nil, fmt.Errorf("lsq: %d replicates of %d parameters are more than the %d values that are kept to find intervals from; ask for fewer", set.Replicates, np, maxReplicated)
+	}
 	b := &Bootstrap{Bias: make([]float64, np), U: make([]float64, np), Interval: make([][2]float64, np)}
 	pick := func(src *random.Source) int { return min(int(src.Float64()*float64(n)), n-1) }
 	var fit func(src *random.Source, theta []float64) error

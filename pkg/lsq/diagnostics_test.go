@@ -5,6 +5,7 @@ import (
 	"encoding/json"
 	"math"
 	"sort"
+	"strings"
 	"testing"
 
 	"example.org/guardring/pkg/random"
@@ -283,6 +284,13 @@ func TestBootstrap(t *testing.T) {
 				t.Errorf("the same seed gave %v and %v", b.U[j], again.U[j])
 			}
 		}
+	}
+}
+
+func TestBootstrapIsBounded(t *testing.T) {
+	p, _ := decay(40, 12)
+	if b, err := fit(t, p).Bootstrap(context.Background(), BootstrapSettings{Replicates: 1_000_000_000}); b != nil || err == nil || !strings.Contains(err.Error(), "ask for fewer") {
+		t.Errorf("%v, %v", b, err)
 	}
 }
 

@@ -259,7 +259,7 @@ func (h *propagationHead) join(r *gum.Result) *Propagation {
 			if c := o.Comparison; c != nil {
 				mc.Digits, mc.Delta, mc.DLow, mc.DHigh, mc.Agrees = c.Digits, Number(c.Delta), Number(c.DLow), Number(c.DHigh), c.Agrees
 				if !c.Agrees {
-					rec.warn(o.Name, errors.New("the law of propagation and Monte Carlo differ by more than the tolerance of JCGM 101 clause 8: use the Monte Carlo interval"), len(r.Outputs))
+					rec.warn(o.Name, mc.disagrees(m.Probability), len(r.Outputs))
 				}
 			}
 			out.MonteCarlo = mc

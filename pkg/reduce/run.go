@@ -167,7 +167,7 @@ func judge(r *Record) []error {
 	case p < 0.001:
 		w = append(w, fmt.Errorf("the residuals are larger than the stated noise allows (chi-squared probability %s): an effect is missing from the model, or the noise is understated; the uncertainty does not cover it", small(p)))
 	case p > 0.999:
-		w = append(w, fmt.Errorf("the residuals are smaller than the stated noise makes likely (chi-squared probability above %.6g): the noise may be overstated", math.Floor(p*1e4)/1e4))
+		w = append(w, fmt.Errorf("the residuals are smaller than the stated noise makes likely (chi-squared probability above %.6g): the noise may be overstated", min(math.Floor(p*1e4), 9999)/1e4))
 	}
 	for _, t := range r.Diagnosis.Tests {
 		if !t.Passed {
@@ -218,7 +218,7 @@ func (c *chain) check(ctx context.Context, fit *lsq.Result, k *carried, laws []*
 		if m == 0 {
 			res.warn(sum.Warnings...)
 			if !cmp.Agrees {
-				res.warn(fmt.Errorf("the law of propagation and Monte Carlo differ by more than the tolerance of JCGM 101 clause 8: use the Monte Carlo interval"))
+				res.warn(res.Record.Measurands[m].MonteCarlo.disagrees(p))
 			}
 		}
 	}

@@ -465,6 +465,9 @@ func (d *document) monteCarlo(rec *reduce.Record) {
 		verdict := "which confirms the law"
 		if !mc.Agrees {
 			verdict = "so that the law is NOT confirmed and the Monte Carlo interval should be used"
+			if mc.TooFew(float64(m.Probability)) {
+				verdict = "so that the law is NOT confirmed, but so few trials can't tell"
+			}
 		}
 		s := fmt.Sprintf("%s: %s trials of the whole chain give %s with u = %s%s and a %s interval from %s to %s%s; "+
 			"its ends lie %s and %s%s from those of the law, where %s is allowed (JCGM 101 clause 8, %s of u), %s.",

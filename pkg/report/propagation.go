@@ -272,6 +272,9 @@ func (d *document) propagationTrials(rec *reduce.PropagationRecord, drawn *reduc
 			verdict := "which confirms the law"
 			if !mc.Agrees {
 				verdict = "so that the law is NOT confirmed and the Monte Carlo interval should be used"
+				if mc.TooFew(float64(o.Law.Probability)) {
+					verdict = "so that the law is NOT confirmed, but so few trials can't tell"
+				}
 			}
 			s := fmt.Sprintf("%sthe ends of the law's interval lie %s and %s from those of the symmetric one, where %s is allowed (JCGM 101 clause 8, %s of u), %s.",
 				name, quantity(float64(mc.DLow), small, 2), quantity(float64(mc.DHigh), small, 2), quantity(float64(mc.Delta), small, 1),
