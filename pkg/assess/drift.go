@@ -113,7 +113,7 @@ func Drift(h History, s DriftSettings) (*Line, error) {
 		s.Level = defaultLevel
 	}
 	if s.Probability == 0 {
-		s.Probability = 0.9545
+		s.Probability = gum.DefaultCoverage
 	}
 	if !(s.Level > 0 && s.Level < 1) {
 		return nil, fmt.Errorf("significance level %v must lie between 0 and 1", s.Level)

@@ -100,7 +100,7 @@ func (f *folder) budget(name string, data []byte, sum string) (*Budget, error) {
 		return nil, err
 	}
 	r := &reader{file: name, root: root, grammar: budgetGrammar()}
-	b := &Budget{Dir: f.dir, File: name, Format: 1, Inputs: []Input{{File: name, SHA256: sum}}, Coverage: defaultCoverage}
+	b := &Budget{Dir: f.dir, File: name, Format: 1, Inputs: []Input{{File: name, SHA256: sum}}, Coverage: gum.DefaultCoverage}
 	if !r.format() {
 		return nil, r.errs.err()
 	}

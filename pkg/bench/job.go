@@ -5,6 +5,7 @@ import (
 	"strconv"
 	"strings"
 
+	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/si"
 )
 
@@ -80,7 +81,7 @@ func twoCapitals(s string) bool {
 
 // reportCoverage reads the coverage probability of [report].
 func (r *reader) reportCoverage(t *node) float64 {
-	p := defaultCoverage
+	p := gum.DefaultCoverage
 	if t != nil && t.fields["coverage"] != nil {
 		if q, ok := r.coverage(t, "coverage"); ok {
 			p = q

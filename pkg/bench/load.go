@@ -9,10 +9,6 @@ import (
 	"example.org/guardring/pkg/model"
 )
 
-// defaultCoverage is the coverage probability when the file is silent: k = 2
-// for a normal distribution.
-const defaultCoverage = 0.9545
-
 // loader turns the document of a bench into a Bench.
 type loader struct {
 	reader

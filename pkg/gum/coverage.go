@@ -16,6 +16,10 @@ const (
 	MaxCoverage = 0.999999
 )
 
+// DefaultCoverage is the coverage probability where nobody says another: k = 2 for a
+// normal distribution.
+const DefaultCoverage = 0.9545
+
 // CheckCoverage returns an error when p is no coverage probability from
 // MinCoverage to MaxCoverage.
 func CheckCoverage(p float64) error {

@@ -89,7 +89,7 @@ const (
 
 func (s Settings) withDefaults() (Settings, error) {
 	if s.Probability == 0 {
-		s.Probability = 0.9545
+		s.Probability = DefaultCoverage
 	}
 	if err := CheckCoverage(s.Probability); err != nil {
 		return s, err

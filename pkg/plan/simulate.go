@@ -202,15 +202,11 @@ func (t *Truth) stated(b *bench.Bench, i int) float64 {
 func trueValues(b *bench.Bench, m *model.Model, t *Truth, seed uint64) ([][]float64, error) {
 	var x [][]float64
 	for _, name := range m.Predictors {
-		var ch *bench.Channel
-		for i := range b.Channels {
-			if b.Channels[i].Name == name {
-				ch = &b.Channels[i]
-			}
-		}
-		if ch == nil {
+		i := channelNamed(b, name)
+		if i < 0 {
 			return nil, fmt.Errorf("%s: channels.%s: the model %s needs this channel", b.Dir, name, b.Kind.Name)
 		}
+		ch := &b.Channels[i]
 		src := random.New(seed, stream+" "+name, 0)
 		gain, offset := t.scale(b, ch)
 		v := make([]float64, b.Rows.N)
@@ -239,9 +235,7 @@ func response(b *bench.Bench, m *model.Model, q [][]float64, of []int, names []s
 	src := random.New(seed, stream+" "+ch.Name, 0)
 	qj := make([][]jet.Jet, len(q))
 	for s := range q {
-		for _, v := range q[s] {
-			qj[s] = append(qj[s], jet.Const(v))
-		}
+		qj[s] = jet.Consts(q[s])
 	}
 	xj := make([]jet.Jet, len(x))
 	noise := ch.Noise

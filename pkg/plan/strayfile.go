@@ -178,7 +178,7 @@ func ParseStray(path string, data []byte) (*StrayBench, error) {
 		return nil, r.errorf("format", "format %d is not known; this version reads format = 1", f.Format)
 	}
 	sum := sha256.Sum256(data)
-	b := &StrayBench{File: filepath.ToSlash(path), SHA256: hex.EncodeToString(sum[:]), Title: f.Title, Medium: gum.Exactly(1), Coverage: 0.9545}
+	b := &StrayBench{File: filepath.ToSlash(path), SHA256: hex.EncodeToString(sum[:]), Title: f.Title, Medium: gum.Exactly(1), Coverage: gum.DefaultCoverage}
 	if f.Medium.Relative != nil {
 		if b.Medium, err = r.quantity("medium.relative_permittivity", f.Medium.Relative, pureUnit); err != nil {
 			return nil, err

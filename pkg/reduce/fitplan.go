@@ -120,7 +120,7 @@ func perhaps(word string, known []string) string {
 func newFitPlan(t *bench.Table, s FitSettings) (*fitPlan, error) {
 	p := &fitPlan{s: s, file: t.File, noisy: map[int]noiseSpec{}}
 	if p.s.Probability == 0 {
-		p.s.Probability = 0.9545
+		p.s.Probability = gum.DefaultCoverage
 	}
 	if err := gum.CheckCoverage(p.s.Probability); err != nil {
 		return nil, err

@@ -11,6 +11,7 @@ import (
 	"strconv"
 	"strings"
 
+	"example.org/guardring/pkg/gum"
 	"example.org/guardring/pkg/lsq"
 	"example.org/guardring/pkg/si"
 )
@@ -254,7 +255,7 @@ func (d *fitData) run() RunRecord {
 	if d.s.Bootstrap > 0 {
 		r.Options["bootstrap"] = strconv.Itoa(d.s.Bootstrap)
 	}
-	if d.s.Probability != 0.9545 {
+	if d.s.Probability != gum.DefaultCoverage {
 		r.Options["probability"] = si.Exact(d.s.Probability)
 	}
 	for key, v := range csvOptions(d.s.CSV) {

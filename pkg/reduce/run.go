@@ -64,7 +64,7 @@ func Run(ctx context.Context, b *bench.Bench, s Settings) (*Result, error) {
 		p = b.Coverage
 	}
 	if p == 0 {
-		p = 0.9545
+		p = gum.DefaultCoverage
 	}
 	if err := gum.CheckCoverage(p); err != nil {
 		return nil, err

@@ -27,6 +27,7 @@ func init() {
 			"Counted":                r.ValueOf(p0_gum.Counted),
 			"CoverageFactor":         r.ValueOf(p0_gum.CoverageFactor),
 			"CurvilinearTrapezoidal": r.ValueOf(p0_gum.CurvilinearTrapezoidal),
+			"DefaultCoverage":        r.ValueOf(p0_gum.DefaultCoverage),
 			"DefaultTrials":          r.ValueOf(int64(p0_gum.DefaultTrials)),
 			"ErrCorrelatedDOF":       r.ValueOf(&p0_gum.ErrCorrelatedDOF).Elem(),
 			"ErrInfiniteVariance":    r.ValueOf(&p0_gum.ErrInfiniteVariance).Elem(),
@@ -91,6 +92,7 @@ func init() {
 		Untypeds: map[string]string{
 			"Bins":             "int:65536",
 			"BlockTrials":      "int:10000",
+			"DefaultCoverage":  "float:1909/2000",
 			"DefaultTrials":    "int:1000000",
 			"MaxCoverage":      "float:999999/1000000",
 			"MaxUndefined":     "float:1/10000",
