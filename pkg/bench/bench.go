@@ -249,11 +249,10 @@ type Work struct {
 	Replaces, Reason              string // an amendment: what it replaces and why
 }
 
-// Report says how results are stated.
+// Report says how results are stated, besides their coverage (Bench.Coverage).
 type Report struct {
-	Coverage   float64 // probability
-	Digits     int     // significant digits for the comparison of JCGM 101 clause 8; 0 is the default
-	Definition string  // definition of the factor stated, where the kind offers a choice
+	Digits     int    // significant digits for the comparison of JCGM 101 clause 8; 0 is the default
+	Definition string // definition of the factor stated, where the kind offers a choice
 }
 
 // Rows are what the readings say of themselves, one entry a data record over

@@ -93,7 +93,6 @@ func (r *reader) reportCoverage(t *node) float64 {
 func (l *loader) report() {
 	t := l.table(l.root, "report")
 	l.b.Coverage = l.reportCoverage(t)
-	l.b.Report.Coverage = l.b.Coverage
 	if t == nil {
 		return
 	}

@@ -219,7 +219,7 @@ digits = 2
 	if s := b.Safety; s.Energy != 0.1 || s.Charge != 50e-6 || !s.Stated {
 		t.Errorf("safety %+v", s)
 	}
-	if b.Coverage != 0.95 || b.Report.Coverage != 0.95 || b.Report.Digits != 2 {
+	if b.Coverage != 0.95 || b.Report.Digits != 2 {
 		t.Errorf("report %+v", b.Report)
 	}
 	i := b.Instruments[0]
