@@ -236,11 +236,11 @@ func (l *Law) warnShape() {
 		if c.Shape == ShapeRectangular {
 			note = fmt.Sprintf(" (k = %.2f for that shape alone)", TrapezoidFactor(l.Probability, 1))
 		}
-		l.Warnings = append(l.Warnings, fmt.Errorf("%s, of %s shape, carries %.0f %% of the variance: k = %.2f overstates the interval%s; prefer the Monte Carlo interval",
+		l.Warnings = append(l.Warnings, fmt.Errorf("%s, of %s shape, carries %.3g %% of the variance: k = %.2f overstates the interval%s; prefer the Monte Carlo interval",
 			c.Input, c.Shape, 100*c.Share, l.K, note))
 	case len(lead) == 2 && lead[0].Shape == ShapeRectangular && lead[1].Shape == ShapeRectangular && lead[0].Share+lead[1].Share > others:
 		a, b := math.Abs(lead[0].Contribution), math.Abs(lead[1].Contribution)
-		l.Warnings = append(l.Warnings, fmt.Errorf("%s and %s, both rectangular, carry %.0f %% of the variance: together a trapezoid with k = %.2f, for which k = %.2f overstates the interval; prefer the Monte Carlo interval",
+		l.Warnings = append(l.Warnings, fmt.Errorf("%s and %s, both rectangular, carry %.3g %% of the variance: together a trapezoid with k = %.2f, for which k = %.2f overstates the interval; prefer the Monte Carlo interval",
 			lead[0].Input, lead[1].Input, 100*(lead[0].Share+lead[1].Share), TrapezoidFactor(l.Probability, (a-b)/(a+b)), l.K))
 	}
 }
