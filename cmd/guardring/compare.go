@@ -8,6 +8,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"io/fs"
 	"os"
 	"path/filepath"
 	"reflect"
@@ -184,19 +185,35 @@ func notRecord(data []byte, err error) error {
 // largestRecord bounds a record that is read, in bytes.
 const largestRecord = 1 << 30
 
-// readRecord reads a record with its hash.
-func readRecord(path string) (*reduce.Record, reduce.Input, error) {
+// readDocument reads a JSON file or pipe, but no device, which may never end.
+func readDocument(path string) ([]byte, error) {
 	f, err := os.Open(path)
 	if err != nil {
-		return nil, reduce.Input{}, err
+		return nil, err
 	}
 	defer f.Close()
+	info, err := f.Stat()
+	if err != nil {
+		return nil, err
+	}
+	if info.Mode()&fs.ModeDevice != 0 {
+		return nil, fmt.Errorf("%s: this is a device; name a file", path)
+	}
 	data, err := io.ReadAll(io.LimitReader(f, largestRecord+1))
 	if err != nil {
-		return nil, reduce.Input{}, err
+		return nil, err
 	}
 	if len(data) > largestRecord {
-		return nil, reduce.Input{}, fmt.Errorf("%s: larger than 1 GiB", path)
+		return nil, fmt.Errorf("%s: larger than 1 GiB", path)
+	}
+	return data, nil
+}
+
+// readRecord reads a record with its hash.
+func readRecord(path string) (*reduce.Record, reduce.Input, error) {
+	data, err := readDocument(path)
+	if err != nil {
+		return nil, reduce.Input{}, err
 	}
 	rec := new(reduce.Record)
 	if err := json.Unmarshal(bytes.TrimPrefix(data, []byte("\xef\xbb\xbf")), rec); err != nil {

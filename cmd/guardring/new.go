@@ -87,6 +87,9 @@ func demoFiles(dir, name string) ([]outFile, error) {
 
 // mustBeEmpty refuses a folder that holds anything.
 func mustBeEmpty(dir string) error {
+	if dir == "" {
+		return errors.New("the name of the new folder is empty; name one")
+	}
 	entries, err := os.ReadDir(dir)
 	switch {
 	case errors.Is(err, fs.ErrNotExist):

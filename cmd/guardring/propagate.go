@@ -7,7 +7,6 @@ import (
 	"errors"
 	"fmt"
 	"io"
-	"os"
 	"strconv"
 	"strings"
 
@@ -249,7 +248,7 @@ func joined(ctx context.Context, paths []string) (*reduce.Propagation, error) {
 		if err := ctx.Err(); err != nil {
 			return nil, cell.Stopped(fmt.Sprintf("after %d of %d parts", n, len(paths)), err)
 		}
-		data, err := os.ReadFile(path)
+		data, err := readDocument(path)
 		if err != nil {
 			return nil, err
 		}
