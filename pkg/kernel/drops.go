@@ -32,10 +32,3 @@ func (d *drops) add(where string, reason any) {
 		d.unsaid = 0
 	}
 }
-
-// total returns how many were dropped in all.
-func (d *drops) total() int64 {
-	d.mu.Lock()
-	defer d.mu.Unlock()
-	return d.count
-}

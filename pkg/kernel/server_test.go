@@ -228,3 +228,10 @@ func TestSpecialLines(t *testing.T) {
 		t.Errorf("%%help is %v", c)
 	}
 }
+
+// total returns how many were dropped in all.
+func (d *drops) total() int64 {
+	d.mu.Lock()
+	defer d.mu.Unlock()
+	return d.count
+}
