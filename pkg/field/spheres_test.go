@@ -307,13 +307,19 @@ func TestSphereBatch(t *testing.T) {
 	if err := field.SphereForcesCharges(make([]float64, 1), unit, 1, 1, []float64{1, 2}, 1, 1); err == nil {
 		t.Error("a short destination passed")
 	}
-	// forces at given gaps with their gap derivative
-	for _, g := range gaps {
-		f, df := field.SphereForceChargesSlope(1, 2, g, 1, 0.5)
-		s := jet.NewSpace(1, 0)
-		j := field.SphereForceChargesJet(jet.Const(unit), jet.Const(1), jet.Const(2), s.Var(0, g), jet.Const(1), jet.Const(0.5))
-		near(t, name("slope value at %g", g), f, j.V, 1e-11, 0)
-		near(t, name("slope at %g", g), df, j.Grad(0), 1e-10, 0)
+	// forces at given gaps with their gap derivative, against the jets, relative to
+	// that of the same potentials alone where they nearly cancel
+	for _, b := range []float64{0.1, 0.75, 1, 2, 30} {
+		for _, g := range gaps {
+			s := jet.NewSpace(1, 0)
+			at := func(qa, qb float64) jet.Jet {
+				return field.SphereForceChargesJet(jet.Const(unit), jet.Const(1), jet.Const(b), s.Var(0, g), jet.Const(qa), jet.Const(qb))
+			}
+			f, df := field.SphereForceChargesSlope(1, b, g, 1, 0.5)
+			j, like := at(1, 0.5), at(1, -0.5)
+			near(t, name("slope value at %g, radius %g", g, b), f, j.V, 1e-12, 1e-12*math.Abs(like.V))
+			near(t, name("slope at %g, radius %g", g, b), df, j.Grad(0), 1e-11, 1e-11*math.Abs(like.Grad(0)))
+		}
 	}
 }
 
