@@ -1,7 +1,6 @@
 package bench
 
 import (
-	"encoding/binary"
 	"math"
 	"math/big"
 	"math/bits"
@@ -24,18 +23,40 @@ var exactPow10 = [...]float64{1, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e
 // Grammar: [+-] digits [. digits] [(e|E) [+-] digits], with at least one digit
 // in the mantissa.
 func scanDecimal(b []byte, i int, point byte) (v float64, end int, ok bool) {
-	negative := false
-	if i < len(b) && (b[i] == '-' || b[i] == '+') {
-		negative = b[i] == '-'
-		i++
+	// Signs come as they like, and a branch on each would be guessed wrong half the
+	// time: here is none.
+	var minus, plus uint64
+	if i < len(b) {
+		c := b[i]
+		if c == '-' {
+			minus = 1
+		}
+		if c == '+' {
+			plus = 1
+		}
+		i += int(minus | plus)
 	}
 	start := i
-	m, i := digitRun(b, i, 0)
+	var m uint64
+	for ; uint(i) < uint(len(b)); i++ {
+		c := uint64(b[i]) - '0'
+		if c > 9 {
+			break
+		}
+		m = m*10 + c
+	}
 	digits := i - start
 	exp := 0
 	if i < len(b) && b[i] == point {
-		from := i + 1
-		m, i = digitRun(b, from, m)
+		i++
+		from := i
+		for ; uint(i) < uint(len(b)); i++ {
+			c := uint64(b[i]) - '0'
+			if c > 9 {
+				break
+			}
+			m = m*10 + c
+		}
 		digits += i - from
 		exp = from - i
 	}
@@ -50,7 +71,7 @@ func scanDecimal(b []byte, i int, point byte) (v float64, end int, ok bool) {
 			i++
 		}
 		from, e := i, 0
-		for i < len(b) {
+		for ; uint(i) < uint(len(b)); i++ {
 			c := b[i] - '0'
 			if c > 9 {
 				break
@@ -58,7 +79,6 @@ func scanDecimal(b []byte, i int, point byte) (v float64, end int, ok bool) {
 			if e < 10000 {
 				e = e*10 + int(c)
 			}
-			i++
 		}
 		if i == from {
 			return 0, i, false
@@ -84,54 +104,7 @@ func scanDecimal(b []byte, i int, point byte) (v float64, end int, ok bool) {
 		}
 		v = byPow10(m, exp)
 	}
-	if negative {
-		v = -v
-	}
-	return v, i, true
-}
-
-// uintPow10 are the powers of ten by which a number grows when up to eight
-// digits follow it.
-var uintPow10 = [...]uint64{1, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8}
-
-// digitRun reads the digits at b[i:] as the continuation of the integer m, and
-// returns it with the index behind them. What does not fit 64 bits wraps around;
-// the caller counts the digits.
-//
-// Eight bytes are taken at once: lengths of digit runs vary from cell to cell, and
-// a loop over digits would pay for each with a branch guessed wrong.
-func digitRun(b []byte, i int, m uint64) (uint64, int) {
-	for i+8 <= len(b) {
-		// In t a digit is its value, 0 to 9; adding 0x76 carries into the high bit
-		// of the first byte that is more, and the bytes behind it do not matter.
-		t := binary.LittleEndian.Uint64(b[i:]) ^ 0x3030303030303030
-		stop := (t + 0x7676767676767676 | t) & 0x8080808080808080
-		if stop == 0 {
-			m = m*1e8 + eightDigits(t)
-			i += 8
-			continue
-		}
-		n := bits.TrailingZeros64(stop) >> 3
-		if n > 0 {
-			m = m*uintPow10[n] + eightDigits(t<<(64-8*uint(n)))
-		}
-		return m, i + n
-	}
-	for ; i < len(b); i++ {
-		c := b[i] - '0'
-		if c > 9 {
-			break
-		}
-		m = m*10 + uint64(c)
-	}
-	return m, i
-}
-
-// eightDigits returns the number of eight digits, the first in the lowest byte:
-// neighbours are joined to pairs, pairs to fours, fours to the whole.
-func eightDigits(t uint64) uint64 {
-	t = t*10 + t>>8
-	return ((t&0x000000ff000000ff)*(100+1000000<<32) + (t>>16&0x000000ff000000ff)*(1+10000<<32)) >> 32
+	return math.Float64frombits(math.Float64bits(v) | minus<<63), i, true
 }
 
 // byPow10 returns m × 10^exp where both are doubles exactly.
