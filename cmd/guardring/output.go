@@ -23,14 +23,21 @@ type outFile struct {
 	data []byte
 }
 
-// drawn adds figures to the files.
+// drawn adds figures to the files. Names that are the same but for signs that files
+// can't have, for capitals, or beyond the length of a name are told apart by a number.
 func drawn(files []outFile, dir string, all []*figure.Figure) ([]outFile, error) {
+	taken := map[string]bool{}
 	for _, f := range all {
 		var b bytes.Buffer
 		if err := f.WriteSVG(&b); err != nil {
 			return nil, err
 		}
-		files = append(files, outFile{filepath.Join(dir, f.Name+".svg"), b.Bytes()})
+		name := f.Name
+		for n := 2; taken[strings.ToLower(name)]; n++ {
+			name = fmt.Sprintf("%s-%d", f.Name, n)
+		}
+		taken[strings.ToLower(name)] = true
+		files = append(files, outFile{filepath.Join(dir, name+".svg"), b.Bytes()})
 	}
 	return files, nil
 }
