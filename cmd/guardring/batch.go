@@ -84,7 +84,7 @@ func (o *reduceOptions) many(ctx context.Context, dirs []string, stdout, stderr 
 		if dir := filepath.Clean(dirs[i]); !strings.HasPrefix(msg, dir) {
 			msg = dir + ": " + msg
 		}
-		fmt.Fprintf(stderr, "guardring: %s\n", msg)
+		fmt.Fprintf(stderr, "guardring: %s\n", cell.Visible(msg))
 	}
 	if bad > 0 {
 		return fmt.Errorf("%d of %d benches are bad", bad, len(dirs))
@@ -128,9 +128,9 @@ func batchTable(w io.Writer, dirs []string, results []outcome) {
 	t := tabwriter.NewWriter(w, 0, 8, 2, ' ', 0)
 	fmt.Fprintln(t, "bench\tmeasurand\tresult\trows\tchi-squared/dof\tp\twarnings")
 	for i, r := range results {
-		name := filepath.Clean(dirs[i])
+		name := cell.Visible(strings.ReplaceAll(filepath.Clean(dirs[i]), "\n", `\n`))
 		if r.record == nil {
-			fmt.Fprintf(t, "%s\tbad: %s\n", name, firstLine(r.err))
+			fmt.Fprintf(t, "%s\tbad: %s\n", name, cell.Visible(firstLine(r.err)))
 			continue
 		}
 		rec := r.record

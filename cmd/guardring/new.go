@@ -12,6 +12,7 @@ import (
 
 	"example.org/guardring/datasets"
 	"example.org/guardring/pkg/bench"
+	"example.org/guardring/pkg/cell"
 	"example.org/guardring/pkg/model"
 )
 
@@ -52,7 +53,7 @@ Models: ` + strings.Join(model.Names(), ", "),
 				return err
 			}
 			for _, f := range files {
-				fmt.Fprintln(cmd.OutOrStdout(), f.path)
+				fmt.Fprintln(cmd.OutOrStdout(), cell.Visible(f.path))
 			}
 			return nil
 		},

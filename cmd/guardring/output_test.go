@@ -64,3 +64,12 @@ func TestFullStandardOutput(t *testing.T) {
 		}
 	}
 }
+
+// Names of folders do not steer the terminal from the table of a batch.
+func TestBatchNamesAreVisible(t *testing.T) {
+	var out bytes.Buffer
+	batchTable(&out, []string{"a\x1b[31m\nb"}, []outcome{{err: errors.New("c\x07")}})
+	if s := out.String(); !strings.Contains(s, `a\x1b[31m\nb`) || !strings.Contains(s, `c\x07`) {
+		t.Errorf("%q", s)
+	}
+}
