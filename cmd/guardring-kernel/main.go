@@ -48,6 +48,12 @@ func serve(path string) error {
 	if err != nil {
 		return err
 	}
+	parent := kernel.TakeParent()
+	defer parent.Clean(path)
+	leave := func() {
+		parent.Clean(path)
+		os.Exit(0)
+	}
 	stderr := os.Stderr // before cells get a stream of their own
 	if err := kernel.RegisterGuardedTransport(conn, stderr); err != nil {
 		return err
@@ -75,7 +81,7 @@ func serve(path string) error {
 			IOPub: sockets.IOPubSocket.Socket, Heartbeat: sockets.HBSocket.Socket,
 		},
 		Key: sockets.Key, Docs: docindex.New(docs), Version: reduce.Version, Stderr: stderr,
-		Abandon: func() { os.Exit(0) },
+		Abandon: leave,
 	})
 	if err != nil {
 		return err
@@ -89,7 +95,10 @@ func serve(path string) error {
 	}()
 	ctx, stop := signal.NotifyContext(context.Background(), syscall.SIGTERM)
 	defer stop()
-	go kernel.ExitWithParent(func() { os.Exit(0) })
+	go func() {
+		parent.Await()
+		leave()
+	}()
 	if err := kernel.ReleaseProgramPages(); err != nil {
 		fmt.Fprintln(stderr, "guardring-kernel: pages of the start stay in memory:", err)
 	}

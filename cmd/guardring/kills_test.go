@@ -10,6 +10,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"runtime"
 	"strings"
 	"syscall"
 	"testing"
@@ -25,6 +26,7 @@ type victim struct {
 	outputs []string // what it leaves, relative to the folder
 	old     bool     // whether old outputs stand there before
 	prepare func(t *testing.T, dir string)
+	starts  string // a program that the command starts: none of it may outlive the command for long
 }
 
 func benchOf(name string) func(t *testing.T, dir string) {
@@ -83,7 +85,7 @@ func replayVictim(t *testing.T) victim {
 	}
 	const notebook = `{"cells":[{"cell_type":"code","execution_count":null,"id":"a","metadata":{},"outputs":[],"source":["1.5 + 2"]}],` +
 		`"metadata":{"kernelspec":{"display_name":"Go","language":"go","name":"guardring"},"language_info":{"name":"go"}},"nbformat":4,"nbformat_minor":5}`
-	return victim{name: "replay", args: []string{"replay", "out/n.ipynb", "--overwrite", "--kernel", bin}, outputs: []string{"out/n.ipynb"},
+	return victim{name: "replay", args: []string{"replay", "out/n.ipynb", "--overwrite", "--kernel", bin}, outputs: []string{"out/n.ipynb"}, starts: bin,
 		prepare: func(t *testing.T, dir string) {
 			if err := os.MkdirAll(filepath.Join(dir, "out"), 0o755); err != nil {
 				t.Fatal(err)
@@ -183,10 +185,34 @@ func (v *victim) kill(t *testing.T, exe string, kills int) {
 			t.Errorf("after the kills: %s is not what it was", name)
 		}
 	}
+	if v.starts != "" && runtime.GOOS == "linux" {
+		left := running(t, v.starts)
+		for end := time.Now().Add(20 * time.Second); len(left) > 0 && time.Now().Before(end); left = running(t, v.starts) {
+			time.Sleep(100 * time.Millisecond)
+		}
+		if len(left) > 0 {
+			t.Errorf("%d of the programs that the killed ones started still run: processes %v", len(left), left)
+		}
+	}
 	if stopped == 0 {
 		t.Errorf("none of %d kills came before the end", kills)
 	}
 	t.Logf("%d of %d kills came before the end", stopped, kills)
+}
+
+// running lists the processes of a program, as Linux shows them.
+func running(t *testing.T, program string) (pids []string) {
+	t.Helper()
+	all, err := filepath.Glob("/proc/[0-9]*/cmdline")
+	if err != nil || len(all) == 0 {
+		t.Fatal("no processes can be seen: ", err)
+	}
+	for _, path := range all {
+		if line, err := os.ReadFile(path); err == nil && strings.HasPrefix(string(line), program+"\x00") { // it may end meanwhile
+			pids = append(pids, filepath.Base(filepath.Dir(path)))
+		}
+	}
+	return pids
 }
 
 // awaitTemporary waits until a temporary file stands anywhere under out.

@@ -100,7 +100,7 @@ func start(ctx context.Context, l Launch, stderr io.Writer) (*Client, error) {
 	if len(l.Argv) == 0 {
 		return nil, errors.New("kernel: an empty command")
 	}
-	dir, err := os.MkdirTemp("", "guardring-kernel-")
+	dir, err := os.MkdirTemp("", folderPattern)
 	if err != nil {
 		return nil, err
 	}
@@ -124,7 +124,7 @@ func start(ctx context.Context, l Launch, stderr io.Writer) (*Client, error) {
 	}
 	cmd := exec.Command(argv[0], argv[1:]...)
 	cmd.Dir = l.Dir
-	cmd.Env = append(os.Environ(), l.Env...)
+	cmd.Env = append(append(os.Environ(), l.Env...), parentVariable+"="+strconv.Itoa(os.Getpid()))
 	cmd.Stderr = stderr
 	if err := cmd.Start(); err != nil {
 		_ = os.RemoveAll(dir)

@@ -38,6 +38,7 @@ func serveFile(path string) error {
 	if err != nil {
 		return err
 	}
+	parent := kernel.TakeParent()
 	ctx := context.Background()
 	s := kernel.Sockets{Shell: zmq4.NewRouter(ctx), Control: zmq4.NewRouter(ctx), Stdin: zmq4.NewRouter(ctx), IOPub: zmq4.NewPub(ctx), Heartbeat: zmq4.NewRep(ctx)}
 	for socket, port := range map[kernel.Socket]int{s.Shell: conn.ShellPort, s.Control: conn.ControlPort, s.Stdin: conn.StdinPort, s.IOPub: conn.IOPubPort, s.Heartbeat: conn.HBPort} {
@@ -53,7 +54,11 @@ func serveFile(path string) error {
 	if err != nil {
 		return err
 	}
-	go kernel.ExitWithParent(func() { os.Exit(0) })
+	go func() {
+		parent.Await()
+		parent.Clean(path)
+		os.Exit(0)
+	}()
 	if err := server.Serve(ctx); err != nil {
 		return err
 	}
