@@ -222,6 +222,9 @@ func readRecord(path string) (*reduce.Record, reduce.Input, error) {
 	if rec.Format != 1 {
 		return nil, reduce.Input{}, fmt.Errorf("%s: no record of reduce --json: format %d where 1 is due", path, rec.Format)
 	}
+	if err := rec.Check(); err != nil {
+		return nil, reduce.Input{}, fmt.Errorf("%s: %w", path, err)
+	}
 	if len(rec.Measurands) == 0 {
 		return nil, reduce.Input{}, fmt.Errorf("%s: the record states no measurand (its fit is %s)", path, rec.Fit.Status)
 	}

@@ -7,6 +7,7 @@ import (
 	"io"
 	"os"
 	"os/signal"
+	"path/filepath"
 	"runtime/debug"
 	"syscall"
 
@@ -32,10 +33,26 @@ type differs struct{ error }
 // GOMEMLIMIT in the environment takes its place.
 const memoryLimit = 200 << 20
 
+// room is the limit for a call with these arguments. Records, notebooks and packs are
+// trees in memory, many times as large as their files: under too low a limit the
+// collector would never rest.
+func room(args []string) int64 {
+	var size int64
+	for _, a := range args {
+		switch filepath.Ext(a) {
+		case ".json", ".ipynb", ".zip":
+			if info, err := os.Stat(a); err == nil && info.Mode().IsRegular() {
+				size += info.Size()
+			}
+		}
+	}
+	return max(memoryLimit, 20*size)
+}
+
 // run is the command: arguments and streams in, exit code out.
 func run(ctx context.Context, args []string, stdin io.Reader, stdout, stderr io.Writer) int {
 	if os.Getenv("GOMEMLIMIT") == "" {
-		debug.SetMemoryLimit(memoryLimit)
+		debug.SetMemoryLimit(room(args))
 	}
 	ctx, stop := signal.NotifyContext(ctx, os.Interrupt, syscall.SIGTERM)
 	defer stop()

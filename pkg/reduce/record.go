@@ -2,6 +2,7 @@ package reduce
 
 import (
 	"encoding/json"
+	"fmt"
 	"math"
 	"strconv"
 )
@@ -60,6 +61,32 @@ type Record struct {
 	Hazard      Hazard       `json:"hazard"`
 	Warnings    []string     `json:"warnings"`
 	Rows        []RecordRow  `json:"rows,omitempty"`
+}
+
+// Check returns an error, which names the key, when a number that a measurand states
+// can't be what it stands for: an uncertainty below zero, degrees of freedom that are
+// not above zero, a coverage probability outside 0 to 1, an interval whose ends are
+// exchanged. A NaN (null in the file) is a number that could not be stated.
+func (r *Record) Check() error {
+	for i := range r.Measurands {
+		m := &r.Measurands[i]
+		bad := func(key string, x Number, due string) error {
+			return fmt.Errorf("measurands[%d].%s: %v where %s is due", i, key, float64(x), due)
+		}
+		switch {
+		case m.U < 0:
+			return bad("u", m.U, "an uncertainty, not below zero,")
+		case m.DOF <= 0:
+			return bad("dof", m.DOF, "a number above zero, or null for infinitely many,")
+		case m.K <= 0:
+			return bad("k", m.K, "a coverage factor above zero")
+		case m.Probability <= 0 || m.Probability > 1:
+			return bad("probability", m.Probability, "a coverage probability between 0 and 1")
+		case m.Interval[0] > m.Interval[1]:
+			return bad("interval", m.Interval[0], fmt.Sprintf("a lower end not above the upper, %v,", float64(m.Interval[1])))
+		}
+	}
+	return nil
 }
 
 // Measurand returns the measurand of that name, nil when the record states none.
