@@ -22,6 +22,10 @@ type BootstrapSettings struct {
 // maxReplicated bounds the values of all replicates that are kept: 800 MB.
 const maxReplicated = 100_000_000
 
+// MostReplicates is the largest number of replicates of a bootstrap of that many
+// parameters: the estimates of all are kept, 800 MB at most, to find intervals from.
+func MostReplicates(parameters int) int { return maxReplicated / max(parameters, 1) }
+
 // Bootstrap is what resampled fits tell about the parameters.
 type Bootstrap struct {
 	Values   [][]float64  // one row per replicate that converged: all parameters
@@ -54,8 +58,8 @@ func (r *Result) Bootstrap(ctx context.Context, set BootstrapSettings) (*Bootstr
 		return nil, fmt.Errorf("lsq: the readings are correlated; the bootstrap needs independent ones")
 	}
 	n, np := len(r.Fitted), len(r.Values)
-	if set.Replicates > maxReplicated/max(np, 1) {
-		return nil, fmt.Errorf("lsq: %d replicates of %d parameters are more than the %d values that are kept to find intervals from; ask for fewer", set.Replicates, np, maxReplicated)
+	if most := MostReplicates(np); set.Replicates > most {
+		return nil, fmt.Errorf("lsq: %d replicates of %d parameters can't be kept to find intervals from; ask for %d at most", set.Replicates, np, most)
 	}
 	b := &Bootstrap{Bias: make([]float64, np), U: make([]float64, np), Interval: make([][2]float64, np)}
 	pick := func(src *random.Source) int { return min(int(src.Float64()*float64(n)), n-1) }

@@ -289,7 +289,7 @@ func TestBootstrap(t *testing.T) {
 
 func TestBootstrapIsBounded(t *testing.T) {
 	p, _ := decay(40, 12)
-	if b, err := fit(t, p).Bootstrap(context.Background(), BootstrapSettings{Replicates: 1_000_000_000}); b != nil || err == nil || !strings.Contains(err.Error(), "ask for fewer") {
+	if b, err := fit(t, p).Bootstrap(context.Background(), BootstrapSettings{Replicates: 1_000_000_000}); b != nil || err == nil || !strings.Contains(err.Error(), "ask for 33333333 at most") {
 		t.Errorf("%v, %v", b, err)
 	}
 }

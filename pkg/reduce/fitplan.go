@@ -12,6 +12,7 @@ import (
 	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/formula"
 	"example.org/guardring/pkg/gum"
+	"example.org/guardring/pkg/lsq"
 	"example.org/guardring/pkg/si"
 )
 
@@ -151,6 +152,9 @@ func newFitPlan(t *bench.Table, s FitSettings) (*fitPlan, error) {
 		return nil, err
 	}
 	if err := p.stated(columns); err != nil {
+		return nil, err
+	}
+	if err := p.replicates(); err != nil {
 		return nil, err
 	}
 	if err := p.dimensions(); err != nil {
@@ -299,6 +303,20 @@ func (p *fitPlan) stated(columns []string) error {
 		}
 	}
 	return nil
+}
+
+// replicates checks the number of replicates of a bootstrap before anything is
+// fitted: intervals that were asked for and can't be had are no matter of a warning.
+func (p *fitPlan) replicates() error {
+	n, most := p.s.Bootstrap, lsq.MostReplicates(len(p.params))
+	if n == 0 || n >= 2 && n <= most {
+		return nil
+	}
+	count := "one parameter"
+	if len(p.params) > 1 {
+		count = fmt.Sprintf("%d parameters", len(p.params))
+	}
+	return fmt.Errorf("the number of replicates of a bootstrap (--bootstrap) is %d; 2 to %d can be had of %s, or 0 for none", n, most, count)
 }
 
 // dimensions finds the units of the parameters and checks those of the columns.

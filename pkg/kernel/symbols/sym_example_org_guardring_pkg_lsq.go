@@ -24,6 +24,7 @@ func init() {
 			"Huber":           r.ValueOf(p0_lsq.Huber),
 			"IterationLimit":  r.ValueOf(p0_lsq.IterationLimit),
 			"Line":            r.ValueOf(p0_lsq.Line),
+			"MostReplicates":  r.ValueOf(p0_lsq.MostReplicates),
 			"Polynomial":      r.ValueOf(p0_lsq.Polynomial),
 			"RunsTest":        r.ValueOf(p0_lsq.RunsTest),
 			"Singular":        r.ValueOf(p0_lsq.Singular),
