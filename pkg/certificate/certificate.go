@@ -186,6 +186,9 @@ func New(r *reduce.Result, s Settings) (*Certificate, error) {
 	if err := c.draw(r); err != nil {
 		return nil, err
 	}
+	if err := c.fits(); err != nil {
+		return nil, err
+	}
 	return c, nil
 }
 

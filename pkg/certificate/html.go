@@ -106,6 +106,16 @@ func (h *writer) atom(a *atom, first, last bool) {
 	case para:
 		fmt.Fprintf(b, "<p %s>%s</p>\n", height, lines(a.cells[0]))
 	case notices:
+		if a.continued { // without a mark of its own
+			if !first {
+				b.WriteString("</ul>\n")
+			}
+			fmt.Fprintf(b, "<p style=\"height:%s;padding-left:12pt\">%s</p>\n", pt(a.height), lines(a.cells[0]))
+			if !last {
+				b.WriteString("<ul>\n")
+			}
+			break
+		}
 		if first {
 			b.WriteString("<ul>\n")
 		}
@@ -161,7 +171,7 @@ func (h *writer) row(a *atom, first, last bool) {
 		}
 		b.WriteString("</tr></thead>\n<tbody>\n")
 	} else {
-		end := a.row == len(g.rows)-1
+		end := a.row == len(g.rows)-1 && !a.goesOn
 		if end {
 			height -= 8
 		}

@@ -1,6 +1,7 @@
 package certificate
 
 import (
+	"fmt"
 	"strings"
 
 	"example.org/guardring/pkg/figure"
@@ -23,6 +24,7 @@ const (
 	columnGap               = 9.0
 	figureWidth             = 400.0
 	longestKept             = 12 // rows of a table that is not broken between pages
+	mostLines               = 24 // lines of an atom of text; more become several
 )
 
 // atom is a piece that is not broken between pages: a heading, a fact, a row.
@@ -30,8 +32,11 @@ type atom struct {
 	of     *block
 	row    int // of facts, notices and tables
 	height float64
-	// keep holds the atom on the page of the one after it.
+	// keep holds the atom on the page of the one after it, unless what is held
+	// together would not fit a page.
 	keep bool
+	// A text that is too long for one atom goes on in the next.
+	goesOn, continued bool
 	// lines are the texts, broken to their widths: one list a cell.
 	cells [][]string
 }
@@ -51,22 +56,25 @@ func (c *Certificate) pages() []page {
 	room := bodyBottom - bodyTop
 	atoms := c.atoms()
 	for i := 0; i < len(atoms); {
+		// A table that is broken here begins with its header on the new page.
+		var again page
+		free := room
+		if a := atoms[i]; a.of.kind == table && i > 0 && atoms[i-1].of == a.of {
+			h := header(a.of)
+			again, free = page{h}, room-h.height
+		}
 		// A run that stays together: up to the first atom that does not hold on to
-		// the next.
+		// the next, or as much as fits a page.
 		n, need := i, 0.0
 		for {
 			need += atoms[n].height
-			if !atoms[n].keep || n+1 == len(atoms) {
+			if !atoms[n].keep || n+1 == len(atoms) || need+atoms[n+1].height > free && !atoms[n].leads() {
 				break
 			}
 			n++
 		}
 		if used > 0 && used+need > room {
-			out, now, used = append(out, now), nil, 0
-			if a := atoms[i]; a.of.kind == table && a.row > 0 {
-				h := header(a.of)
-				now, used = append(now, h), h.height
-			}
+			out, now, used = append(out, now), again, room-free
 		}
 		for ; i <= n; i++ {
 			now = append(now, atoms[i])
@@ -74,6 +82,55 @@ func (c *Certificate) pages() []page {
 		}
 	}
 	return append(out, now)
+}
+
+// leads reports whether an atom is nothing without the one after it.
+func (a *atom) leads() bool { return a.of.kind == heading || a.row == headerRow }
+
+// fits refuses a certificate with a piece that is too high for a page: a title or a
+// figure, which can't be broken.
+func (c *Certificate) fits() error {
+	for i, p := range c.pages() {
+		height, longest := 0.0, ""
+		for _, a := range p {
+			height += a.height
+			for _, cell := range a.cells {
+				if s := strings.Join(cell, " "); len(s) > len(longest) {
+					longest = s
+				}
+			}
+		}
+		if height > bodyBottom-bodyTop {
+			return fmt.Errorf("certificate: page %d would be too high; shorten %.60q", i+1, longest)
+		}
+	}
+	return nil
+}
+
+// parts breaks an atom whose texts have many lines into several, so that a page can
+// end within it; leading is the height of a line.
+func (a atom) parts(leading float64) []atom {
+	most := 0
+	for _, cell := range a.cells {
+		most = max(most, len(cell))
+	}
+	if most <= mostLines {
+		return []atom{a}
+	}
+	var out []atom
+	for from := 0; from < most; from += mostLines {
+		b := a
+		b.cells, b.continued, b.goesOn = nil, from > 0, from+mostLines < most
+		for _, cell := range a.cells {
+			b.cells = append(b.cells, cell[min(from, len(cell)):min(from+mostLines, len(cell))])
+		}
+		if b.goesOn {
+			b.height, b.keep = mostLines*leading, false
+			a.height -= b.height
+		}
+		out = append(out, b)
+	}
+	return out
 }
 
 // Pages is the number of pages of the printed forms.
@@ -96,15 +153,16 @@ func (c *Certificate) atoms() []atom {
 			for k, f := range b.facts {
 				l := fold(f.Label, textSize, false, labelWidth-8)
 				t := fold(f.Text, textSize, false, bodyWidth-labelWidth)
-				out = append(out, atom{of: b, row: k, height: textLeading*float64(max(len(l), len(t))) + 1.5, cells: [][]string{l, t}, keep: k < len(b.facts)-1 && (k == 0 || len(b.facts) <= 4)})
+				a := atom{of: b, row: k, height: textLeading*float64(max(len(l), len(t))) + 1.5, cells: [][]string{l, t}, keep: k < len(b.facts)-1 && (k == 0 || len(b.facts) <= 4)}
+				out = append(out, a.parts(textLeading)...)
 			}
 		case para:
 			t := fold(b.text, textSize, false, bodyWidth)
-			out = append(out, atom{of: b, height: textLeading*float64(len(t)) + 5, cells: [][]string{t}})
+			out = append(out, atom{of: b, height: textLeading*float64(len(t)) + 5, cells: [][]string{t}}.parts(textLeading)...)
 		case notices:
 			for k, s := range b.lines {
 				t := fold(s, textSize, false, bodyWidth-12)
-				out = append(out, atom{of: b, row: k, height: textLeading*float64(len(t)) + 2, cells: [][]string{t}})
+				out = append(out, atom{of: b, row: k, height: textLeading*float64(len(t)) + 2, cells: [][]string{t}}.parts(textLeading)...)
 			}
 		case table:
 			out = append(out, header(b))
@@ -122,7 +180,7 @@ func (c *Certificate) atoms() []atom {
 					a.height += 8
 				}
 				a.keep = k < len(b.table.rows)-1 && (k == 0 || len(b.table.rows) <= longestKept)
-				out = append(out, a)
+				out = append(out, a.parts(cellLeading)...)
 			}
 		case drawing:
 			t := fold(b.fig.Caption, smallSize, false, bodyWidth)

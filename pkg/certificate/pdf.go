@@ -152,7 +152,9 @@ func (p *printer) atom(a *atom, y float64, last bool) error {
 	case para:
 		p.lines(marginX, y+1, textSize, textLeading, false, black, a.cells[0])
 	case notices:
-		p.text(marginX+1, y+0.78*textLeading, textSize, false, black, "–")
+		if !a.continued {
+			p.text(marginX+1, y+0.78*textLeading, textSize, false, black, "–")
+		}
 		p.lines(marginX+12, y, textSize, textLeading, false, black, a.cells[0])
 	case table:
 		p.row(a, y, last)
@@ -202,7 +204,7 @@ func (p *printer) row(a *atom, y float64, last bool) {
 	}
 	if last && a.row != headerRow {
 		under := y + a.height - 0.5
-		if a.row == len(g.rows)-1 {
+		if a.row == len(g.rows)-1 && !a.goesOn {
 			under -= 8
 		}
 		p.line(marginX, marginX+total, under, 0.8)
