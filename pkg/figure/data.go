@@ -242,11 +242,13 @@ type view struct {
 	x      int // predictor on the axis; −1: the order of acquisition
 	series []series
 	joined int // series whose fitted values x alone tells apart
+	plain  int // those of them whose line is a plain one
 }
 
 // choose finds the view of a fit in which the fitted values of most series lie
 // on a line: it tries each predictor as the axis, in their order, with the rows
-// in one series, by the clusters of each other predictor, and by setting.
+// in one series, by the clusters of each other predictor, and by setting. Among
+// equals the first is taken, but of those on one axis the one with more plain lines.
 func (d *Data) choose() view {
 	r := d.Rows
 	all := series{rows: make([]int, r.N)}
@@ -254,7 +256,7 @@ func (d *Data) choose() view {
 		all.rows[i] = i
 	}
 	best := view{x: -1, series: []series{all}}
-	share := -1.0
+	share, straight := -1.0, -1.0
 	for x, v := range r.Predictors {
 		var s spanner
 		for _, t := range v {
@@ -275,7 +277,7 @@ func (d *Data) choose() view {
 			tries = append(tries, g)
 		}
 		for _, t := range tries {
-			n := 0
+			n, m := 0, 0
 			for _, g := range t {
 				some := sparse(g.rows)
 				skip := make([]bool, len(some))
@@ -284,11 +286,15 @@ func (d *Data) choose() view {
 				}
 				if _, _, ok := guide(pick(v, some), pick(r.Fitted, some), skip, &scale{}); ok {
 					n++
+					if plain(pick(v, some), pick(r.Fitted, some), skip) {
+						m++
+					}
 				}
 			}
-			if f := float64(n) / float64(len(t)); f > share+1e-9 {
-				share = f
-				best = view{x: x, series: t, joined: n}
+			f, p := float64(n)/float64(len(t)), float64(m)/float64(len(t))
+			if f > share+1e-9 || best.x == x && f > share-1e-9 && p > straight+1e-9 {
+				share, straight = f, p
+				best = view{x: x, series: t, joined: n, plain: m}
 			}
 		}
 	}

@@ -14,43 +14,11 @@ import (
 // cubic of Fritsch and Butland (1984), which can't overshoot. ok is false where x
 // alone does not tell the fitted values apart.
 func guide(x, f []float64, skip []bool, s *scale) (cx, cy []float64, ok bool) {
-	type point struct{ x, y float64 }
-	var pts []point
-	var span spanner
-	for i := range x {
-		if !skip[i] && finite(x[i], f[i]) {
-			pts = append(pts, point{x[i], f[i]})
-			span.add(f[i])
-		}
-	}
-	if len(pts) < 2 {
+	kx, ky, height, ok := knots(x, f, skip)
+	if !ok {
 		return nil, nil, false
 	}
-	sort.SliceStable(pts, func(a, b int) bool { return pts[a].x < pts[b].x })
-	// Readings at nearly one x become one point.
-	near := 0.01 * (pts[len(pts)-1].x - pts[0].x)
-	var kx, ky []float64
-	worst := 0.0
-	for i := 0; i < len(pts); {
-		j, mx, my := i, 0.0, 0.0
-		for j < len(pts) && pts[j].x-pts[i].x <= near {
-			mx += pts[j].x
-			my += pts[j].y
-			j++
-		}
-		n := float64(j - i)
-		mx, my = mx/n, my/n
-		for k := i; k < j; k++ {
-			worst = math.Max(worst, math.Abs(pts[k].y-my))
-		}
-		kx, ky = append(kx, mx), append(ky, my)
-		i = j
-	}
-	height := span.hi - span.lo
-	if worst > 0.03*height || len(kx) < 2 {
-		return nil, nil, false
-	}
-	predict := shape(kx, ky, height)
+	predict := shape(kx, ky, 1e-3*height)
 	if predict == nil {
 		var fb interp.FritschButland
 		if err := fb.Fit(kx, ky); err != nil {
@@ -70,10 +38,59 @@ func guide(x, f []float64, skip []bool, s *scale) (cx, cy []float64, ok bool) {
 	return cx, cy, true
 }
 
+// plain reports whether fitted values lie within a thirtieth of their height of a
+// polynomial or power law of few terms. A line through others may be an accident of
+// the settings chosen, such as a staircase of two gaps taken for one.
+func plain(x, f []float64, skip []bool) bool {
+	kx, ky, height, ok := knots(x, f, skip)
+	return ok && shape(kx, ky, height/30) != nil
+}
+
+// knots are the points that a line through fitted values has to pass; height is the
+// range of these. ok is false where x alone does not tell the fitted values apart.
+func knots(x, f []float64, skip []bool) (kx, ky []float64, height float64, ok bool) {
+	type point struct{ x, y float64 }
+	var pts []point
+	var span spanner
+	for i := range x {
+		if !skip[i] && finite(x[i], f[i]) {
+			pts = append(pts, point{x[i], f[i]})
+			span.add(f[i])
+		}
+	}
+	if len(pts) < 2 {
+		return nil, nil, 0, false
+	}
+	sort.SliceStable(pts, func(a, b int) bool { return pts[a].x < pts[b].x })
+	// Readings at nearly one x become one point.
+	near := 0.01 * (pts[len(pts)-1].x - pts[0].x)
+	worst := 0.0
+	for i := 0; i < len(pts); {
+		j, mx, my := i, 0.0, 0.0
+		for j < len(pts) && pts[j].x-pts[i].x <= near {
+			mx += pts[j].x
+			my += pts[j].y
+			j++
+		}
+		n := float64(j - i)
+		mx, my = mx/n, my/n
+		for k := i; k < j; k++ {
+			worst = math.Max(worst, math.Abs(pts[k].y-my))
+		}
+		kx, ky = append(kx, mx), append(ky, my)
+		i = j
+	}
+	height = span.hi - span.lo
+	if worst > 0.03*height || len(kx) < 2 {
+		return nil, nil, 0, false
+	}
+	return kx, ky, height, true
+}
+
 // shape finds a polynomial of degree one or two, in x or between logarithms,
-// that passes within a thousandth of the height of all points with at least one
-// point to spare; nil when there is none.
-func shape(x, y []float64, height float64) func(float64) float64 {
+// that passes all points within a tolerance, with at least one point to spare; nil
+// when there is none.
+func shape(x, y []float64, within float64) func(float64) float64 {
 	same := func(v float64) float64 { return v }
 	positive := true
 	for i := range x {
@@ -119,7 +136,7 @@ func shape(x, y []float64, height float64) func(float64) float64 {
 			}
 			good := true
 			for i := range x {
-				good = good && math.Abs(f(x[i])-y[i]) <= 1e-3*height
+				good = good && math.Abs(f(x[i])-y[i]) <= within
 			}
 			if good {
 				return f

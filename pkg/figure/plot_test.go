@@ -7,6 +7,7 @@ import (
 	"strings"
 	"testing"
 
+	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/si"
 )
 
@@ -270,6 +271,33 @@ func TestLinesOfManyReadings(t *testing.T) {
 		}
 		if low, high := slices.Min(x), slices.Max(x); high < 5.9e3 || low > -5.9e3 || math.Abs(y[0]-y[len(y)-1]) > 0.02*y[0] {
 			t.Errorf("%s: a line from %g to %g, %g to %g", s.name, low, high, y[0], y[len(y)-1])
+		}
+	}
+}
+
+// TestLinesOfTwoGaps: a meter between plates at two gaps, whose settings are chosen for
+// the same fields, gives a staircase against the voltage; the lines are those of the
+// two gaps, E = V/d, straight through all their points.
+func TestLinesOfTwoGaps(t *testing.T) {
+	d := fixture(t)
+	var v, gap, e []float64
+	for _, k := range []float64{-18e3, -12e3, -8e3, -4e3, 4e3, 8e3, 12e3, 18e3} {
+		for _, g := range []float64{0.25, 0.35} {
+			v, gap, e = append(v, k*g), append(gap, g), append(e, k)
+		}
+	}
+	n := len(v)
+	none := make([]float64, n)
+	*d.Rows = reduce.Rows{N: n, ResponseName: "indication", PredictorNames: []string{"voltage", "gap"}, Predictors: [][]float64{v, gap},
+		Response: e, Fitted: e, U: none, Residual: none, Standardised: none, Leverage: none, Studentised: none, Excluded: make([]bool, n)}
+	d.Number, d.Groups = nil, nil
+	got := d.choose()
+	if got.x != 0 || len(got.series) != 2 || got.joined != 2 || got.plain != 2 {
+		t.Fatalf("axis %d with %d series, %d of them lines, %d plain; want those of two gaps", got.x, len(got.series), got.joined, got.plain)
+	}
+	for k, want := range []string{"gap 250 mm", "gap 350 mm"} {
+		if got.series[k].name != want {
+			t.Errorf("series %q; want %q", got.series[k].name, want)
 		}
 	}
 }
