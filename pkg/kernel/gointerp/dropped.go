@@ -2,9 +2,11 @@ package gointerp
 
 import (
 	"bytes"
+	"crypto/rand"
 	"fmt"
 	"go/ast"
 	"go/token"
+	"io"
 	"os"
 	"strings"
 	"sync"
@@ -18,10 +20,13 @@ import (
 // it drops a value, and has no other way to say so.
 type listener struct {
 	r, w *os.File
+	mark []byte // ends what is printed during a compilation; nobody else knows it
+	seen chan []byte
 
-	mu   sync.Mutex
-	text []byte
-	seen chan struct{}
+	mu    sync.Mutex
+	late  io.Writer // where to put what comes when nothing is compiled; nil before the first compilation
+	busy  bool
+	after []byte // read and not yet handed on
 }
 
 func newListener() (*listener, error) {
@@ -29,42 +34,52 @@ func newListener() (*listener, error) {
 	if err != nil {
 		return nil, err
 	}
-	l := &listener{r: r, w: w, seen: make(chan struct{}, 1)}
-	go func() {
-		buf := make([]byte, 4<<10)
-		for {
-			n, err := r.Read(buf)
-			if err != nil {
-				return
-			}
-			l.mu.Lock()
-			l.text = append(l.text, buf[:n]...)
-			if l.text[len(l.text)-1] == 0 {
-				l.text = l.text[:len(l.text)-1]
-				l.seen <- struct{}{}
-			}
-			l.mu.Unlock()
-		}
-	}()
+	l := &listener{r: r, w: w, mark: []byte("\x00" + rand.Text() + "\x00"), seen: make(chan []byte, 1)}
+	go l.read()
 	return l, nil
+}
+
+// read hands on what comes up to the mark. A goroutine of an earlier cell may have
+// taken the pipe for standard output just before the compilation ended, and write
+// after the mark, in one piece with it even.
+func (l *listener) read() {
+	buf := make([]byte, 4<<10)
+	for {
+		n, err := l.r.Read(buf)
+		l.mu.Lock()
+		l.after = append(l.after, buf[:n]...)
+		if l.busy {
+			if before, rest, ok := bytes.Cut(l.after, l.mark); ok {
+				l.busy = false
+				l.seen <- bytes.Clone(before)
+				l.after = bytes.Clone(rest)
+			}
+		}
+		if !l.busy && len(l.after) > 0 && l.late != nil {
+			_, _ = l.late.Write(l.after) // a stream of the kernel
+			l.after = nil
+		}
+		l.mu.Unlock()
+		if err != nil {
+			return
+		}
+	}
 }
 
 // during runs work and returns the compiler's warnings that a value is dropped. What goroutines of earlier cells
 // printed meanwhile goes where it belongs.
 func (l *listener) during(work func()) (dropped []string) {
 	before := os.Stdout
+	l.mu.Lock()
+	l.busy, l.late = true, before
+	l.mu.Unlock()
 	os.Stdout = l.w
 	defer func() {
 		os.Stdout = before
-		if _, err := l.w.Write([]byte{0}); err != nil {
+		if _, err := l.w.Write(l.mark); err != nil {
 			return
 		}
-		<-l.seen
-		l.mu.Lock()
-		text := l.text
-		l.text = nil
-		l.mu.Unlock()
-		for _, line := range bytes.SplitAfter(text, []byte("\n")) {
+		for _, line := range bytes.SplitAfter(<-l.seen, []byte("\n")) {
 			if bytes.HasPrefix(line, []byte("// warning: expression return")) {
 				dropped = append(dropped, string(line))
 			} else if len(line) > 0 && !bytes.HasPrefix(line, []byte("// warning: ")) {
