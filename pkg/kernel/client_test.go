@@ -9,6 +9,8 @@ import (
 	"strings"
 	"testing"
 	"time"
+
+	"github.com/go-zeromq/zmq4"
 )
 
 func TestStartFailures(t *testing.T) {
@@ -46,5 +48,47 @@ func TestOutputsAsNotebooksHoldThem(t *testing.T) {
 		if got, err := json.Marshal(o); err != nil || string(got) != want {
 			t.Errorf("%s, %v, want %s", got, err, want)
 		}
+	}
+}
+
+// sink is a socket that keeps what is sent.
+type sink struct {
+	zmq4.Socket
+	sent chan zmq4.Msg
+}
+
+func (s sink) SendMulti(m zmq4.Msg) error { s.sent <- m; return nil }
+
+// TestOutputAfterIdle: a goroutine that prints when its cell is done does not keep the client from seeing that it is,
+// also where the reply comes last.
+func TestOutputAfterIdle(t *testing.T) {
+	c := newClient(Connection{Key: string(testKey)})
+	s := sink{sent: make(chan zmq4.Msg, 1)}
+	c.shell = s
+	ctx, cancel := context.WithTimeout(context.Background(), 10*time.Second)
+	defer cancel()
+	go func() {
+		m, err := Decode((<-s.sent).Frames, testKey)
+		if err != nil {
+			t.Error(err)
+			return
+		}
+		about := func(msgType, content string) *Message {
+			return &Message{Header: Header{Type: msgType}, Parent: Header{ID: m.Header.ID}, Content: json.RawMessage(content)}
+		}
+		c.mu.Lock()
+		outputs := c.outputs[m.Header.ID]
+		c.mu.Unlock()
+		c.takeOutput(about("status", `{"execution_state":"idle"}`))
+		c.takeOutput(about("stream", `{"name":"stdout","text":"late"}`))
+		for len(outputs) > 0 {
+			time.Sleep(time.Millisecond)
+		}
+		time.Sleep(10 * time.Millisecond) // the last one is looked at
+		c.takeReply(about("execute_reply", `{"status":"ok","execution_count":1}`))
+	}()
+	e, err := c.Execute(ctx, "x", ExecuteOptions{})
+	if err != nil || e.Status != "ok" || e.Text("stdout") != "late" {
+		t.Fatalf("%+v, %v", e, err)
 	}
 }

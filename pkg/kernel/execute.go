@@ -1,11 +1,14 @@
 package kernel
 
 import (
+	"bytes"
 	"context"
 	"encoding/json"
 	"errors"
 	"fmt"
+	"maps"
 	"os"
+	"slices"
 	"sort"
 	"time"
 
@@ -17,6 +20,9 @@ import (
 // settle is how long the kernel waits after a failed cell before it aborts the queue: the requests of "run all" that
 // are still on the wire belong to the queue.
 const settle = 5 * time.Millisecond
+
+// besides is what a message holds besides the forms of a value: its header, the names of the forms, the metadata.
+const besides = 64 << 10
 
 type executeRequest struct {
 	Code            *string           `json:"code"`
@@ -207,18 +213,33 @@ func traceback(e *CellError) []string {
 	return lines
 }
 
-// encodable leaves out the forms that JSON can't hold, and says so on standard error.
+// encodable leaves out the forms that JSON or a message can't hold, and says so on standard error.
 func (s *Server) encodable(forms map[string]any) map[string]any {
 	out := make(map[string]any, len(forms))
-	for mime, data := range forms {
-		if _, err := json.Marshal(data); err != nil {
+	room := s.sign.most - besides
+	for _, mime := range slices.Sorted(maps.Keys(forms)) {
+		data, err := encoded(forms[mime])
+		if err == nil && len(data) > room {
+			err = fmt.Errorf("it has %d bytes as JSON, and %d are left in the message", len(data), room)
+		}
+		if err != nil {
 			fmt.Fprintf(os.Stderr, "the form %s can't be sent: %v\n", mime, err)
 			continue
 		}
-		out[mime] = data
+		room -= len(data)
+		out[mime] = forms[mime]
 	}
 	s.stream.flush()
 	return out
+}
+
+// encoded is a value as a message holds it.
+func encoded(v any) ([]byte, error) {
+	var b bytes.Buffer
+	enc := json.NewEncoder(&b)
+	enc.SetEscapeHTML(false)
+	err := enc.Encode(v)
+	return bytes.TrimRight(b.Bytes(), "\n"), err
 }
 
 // display publishes forms at once, after everything printed before.

@@ -19,12 +19,13 @@ import (
 
 // fake is an interpreter of a few words, one a line:
 //
-//	print TEXT, warn TEXT, value TEXT, fail TEXT, panic TEXT, wait, show TEXT, report N, ask
+//	print TEXT, warn TEXT, value TEXT, fail TEXT, panic TEXT, wait, show TEXT, report N, ask, forms
 type fake struct {
 	interrupted chan struct{}
 	names       []Name
 	described   map[string]*Description
 	values      map[string]string
+	forms, page map[string]any // of the word "forms"
 }
 
 func newFake() *fake { return &fake{interrupted: make(chan struct{}, 8)} }
@@ -44,6 +45,8 @@ func (f *fake) Run(ctx context.Context, c Cell) (*Result, error) {
 			fmt.Fprintln(os.Stderr, rest)
 		case "value":
 			res.Forms = map[string]any{"text/plain": rest}
+		case "forms":
+			res.Forms, res.Page = f.forms, f.page
 		case "fail":
 			return nil, &CellError{Kind: CellFailed, Message: rest, Places: at}
 		case "plainly":

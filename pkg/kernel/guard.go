@@ -295,8 +295,10 @@ func (c *guardedConn) Write(p []byte) (int, error) {
 		p = p[k:]
 	}
 	c.buffer = append(c.buffer, p...)
-	if err := c.out.pass(p); err != nil {
-		return 0, err
+	if err := c.out.pass(p); err != nil { // what follows can't be told apart any more
+		c.drop(err)
+		_ = c.Close()
+		return 0, io.EOF // the one error after which the library always forgets a connection
 	}
 	if !c.out.between() || len(c.buffer) == 0 {
 		return n, nil

@@ -102,3 +102,24 @@ func TestGuardEndsAConnectionWithAFrameTooLong(t *testing.T) {
 		t.Errorf("counted: %v", *drops)
 	}
 }
+
+func TestGuardSendsNoFrameTooLong(t *testing.T) {
+	c, peer, drops, err := guarded(t, peerHello("DEALER"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	if _, err := c.Write(make([]byte, greetingSize)); err != nil {
+		t.Fatal(err)
+	}
+	for range 2 { // the second time it is closed
+		if _, err := c.Write([]byte{2, 0x7f, 0, 0, 0, 0, 0, 0, 0}); !errors.Is(err, io.EOF) {
+			t.Errorf("a frame of 2^63 bytes: %v, want the error that makes the library forget the connection", err)
+		}
+	}
+	if len(*drops) == 0 {
+		t.Error("not counted")
+	}
+	if _, err := peer.Read(make([]byte, 1)); !errors.Is(err, io.EOF) {
+		t.Errorf("the peer reads %v", err)
+	}
+}

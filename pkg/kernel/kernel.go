@@ -345,12 +345,15 @@ func (s *Server) info() map[string]any {
 	}
 }
 
-// reply answers a request on its socket.
+// reply answers a request on its socket; an answer that can't be sent becomes an error, since the front end waits.
 func (s *Server) reply(socket Socket, to *Message, msgType string, content any) {
 	frames, _, err := s.sign.encode(to.Identities, msgType, to.RawHeader, content)
 	if err != nil {
 		s.drops.add(msgType, err)
-		return
+		if frames, _, err = s.sign.encode(to.Identities, msgType, to.RawHeader, failure(CellFailed, "the answer can't be sent: "+err.Error(), nil)); err != nil {
+			s.drops.add(msgType, err)
+			return
+		}
 	}
 	if err := socket.SendMulti(zmq4.NewMsgFrom(frames...)); err != nil {
 		s.drops.add(msgType, err)

@@ -147,9 +147,11 @@ func (c *Client) Execute(ctx context.Context, code string, opt ExecuteOptions) (
 			if opt.Message != nil {
 				opt.Message(m)
 			}
-			if idle, err = c.collect(e, m, &clear); err != nil {
+			last, err := c.collect(e, m, &clear)
+			if err != nil {
 				return nil, err
 			}
+			idle = idle || last // a goroutine of the cell may print after that
 		case <-ctx.Done():
 			return nil, ctx.Err()
 		case <-c.exited:

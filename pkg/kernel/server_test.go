@@ -1,6 +1,7 @@
 package kernel
 
 import (
+	"fmt"
 	"os"
 	"path/filepath"
 	"reflect"
@@ -234,4 +235,25 @@ func (d *drops) total() int64 {
 	d.mu.Lock()
 	defer d.mu.Unlock()
 	return d.count
+}
+
+// TestOutputTooLarge: a form or an answer that a message can't hold is said, and the rest is sent.
+func TestOutputTooLarge(t *testing.T) {
+	f := newFake()
+	b := serve(t, f)
+	b.server.sign.most = 1 << 20
+	f.forms = map[string]any{"text/plain": "short", "text/html": strings.Repeat("x", 1<<20)}
+	id := b.send(b.shell, "execute_request", run("forms"))
+	said := strings.Join(b.published(id), "\n")
+	if !strings.Contains(said, "execute_result:short") || !strings.Contains(said, "stream:the form text/html can't be sent: it has 1048578 bytes as JSON, and 983040 are left") {
+		t.Errorf("published %s", said)
+	}
+	if r := content(t, b.next(b.shell)); r["status"] != "ok" {
+		t.Errorf("reply %v", r)
+	}
+	f.page = map[string]any{"text/plain": strings.Repeat("x", 1<<20)}
+	b.send(b.shell, "execute_request", run("forms"))
+	if r := content(t, b.next(b.shell)); r["status"] != "error" || !strings.Contains(fmt.Sprint(r["evalue"]), "at most") {
+		t.Errorf("reply to a page too large %v", r["evalue"])
+	}
 }

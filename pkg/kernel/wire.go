@@ -25,6 +25,7 @@ const (
 	maxFrames     = 64       // frames of one message
 	maxIdentities = 8        // routing frames before the delimiter
 	maxName       = 1 << 10  // bytes of an id, a type or a name in a header
+	overhead      = 1 << 10  // bytes of the delimiter, the signature and what frames a message
 )
 
 var delimiter = []byte("<IDS|MSG>")
@@ -155,6 +156,7 @@ func decodeHeader(data []byte, h *Header) error {
 type signer struct {
 	session string
 	name    string
+	most    int // bytes of a message
 	count   atomic.Uint64
 
 	mu  sync.Mutex
@@ -162,7 +164,7 @@ type signer struct {
 }
 
 func newSigner(key []byte, name string) *signer {
-	return &signer{session: randomID(), name: name, mac: hmac.New(sha256.New, key)}
+	return &signer{session: randomID(), name: name, most: MaxMessage - overhead, mac: hmac.New(sha256.New, key)}
 }
 
 func randomID() string {
@@ -173,7 +175,8 @@ func randomID() string {
 	return hex.EncodeToString(b[:])
 }
 
-// encode makes the frames of a message with the given routing frames and parent header (nil: none).
+// encode makes the frames of a message with the given routing frames and parent header (nil: none). Content that JSON
+// can't hold, or that makes a message larger than MaxMessage, is an error.
 func (s *signer) encode(identities [][]byte, msgType string, parent json.RawMessage, content any) (frames [][]byte, id string, err error) {
 	id = fmt.Sprintf("%s_%d", s.session, s.count.Add(1))
 	header, err := json.Marshal(Header{
@@ -186,13 +189,18 @@ func (s *signer) encode(identities [][]byte, msgType string, parent json.RawMess
 	if parent == nil {
 		parent = json.RawMessage("{}")
 	}
-	var body bytes.Buffer
-	enc := json.NewEncoder(&body)
-	enc.SetEscapeHTML(false)
-	if err := enc.Encode(content); err != nil {
+	body, err := encoded(content)
+	if err != nil {
 		return nil, "", fmt.Errorf("%s: %w", msgType, err)
 	}
-	parts := [][]byte{header, parent, []byte("{}"), bytes.TrimRight(body.Bytes(), "\n")}
+	parts := [][]byte{header, parent, []byte("{}"), body}
+	size := 0
+	for _, p := range append(parts, identities...) {
+		size += len(p)
+	}
+	if size > s.most {
+		return nil, "", fmt.Errorf("%s: a message of %d bytes, at most %d are sent", msgType, size, s.most)
+	}
 	s.mu.Lock()
 	s.mac.Reset()
 	for _, p := range parts {
