@@ -5,6 +5,7 @@ import (
 	"math"
 
 	"gonum.org/v1/gonum/mathext"
+	"gonum.org/v1/gonum/stat/distuv"
 )
 
 // The coverage probabilities that are taken: k of a normal goes from 0.67, the
@@ -62,8 +63,11 @@ func TrapezoidFactor(p, beta float64) float64 {
 // tUpper returns the t that Student's t with dof degrees of freedom exceeds with
 // probability q, 0 < q ≤ 1/2.
 func tUpper(q, dof float64) float64 {
-	if dof >= 1e15 {
-		return math.Sqrt2 * math.Erfcinv(2*q)
+	switch {
+	case dof >= 1e15:
+		return normalUpper(q)
+	case dof >= manyDOF:
+		return tUpperMany(normalUpper(q), dof)
 	}
 	var t float64
 	switch {
@@ -89,11 +93,34 @@ func tUpper(q, dof float64) float64 {
 	return t
 }
 
-// tTail returns P(T > t), t ≥ 0.
-func tTail(t, dof float64) float64 {
-	if dof >= 1e15 {
-		return 0.5 * math.Erfc(t/math.Sqrt2)
+// manyDOF is the number of degrees of freedom from which quantiles come from the
+// expansion about the normal: the incomplete beta function loses digits there, about
+// eps times the degrees of freedom.
+const manyDOF = 1e5
+
+// tUpperMany returns the t that belongs to the normal quantile x, by the expansion in
+// powers of 1/dof (Abramowitz and Stegun, Handbook of Mathematical Functions, 26.7.5).
+// What it leaves out is below (x²/dof)⁵.
+func tUpperMany(x, dof float64) float64 {
+	y, r := x*x, 1/dof
+	g1 := (y + 1) / 4
+	g2 := ((5*y+16)*y + 3) / 96
+	g3 := (((3*y+19)*y+17)*y - 15) / 384
+	g4 := ((((79*y+776)*y+1482)*y-1920)*y - 945) / 92160
+	return x + x*r*(g1+r*(g2+r*(g3+r*g4)))
+}
+
+// normalUpper returns the x that a standard normal exceeds with probability q,
+// 0 < q ≤ 1/2.
+func normalUpper(q float64) float64 {
+	if q < 1e-8 { // 1 − 2q has lost digits of q
+		return -distuv.UnitNormal.Quantile(q)
 	}
+	return math.Sqrt2 * math.Erfcinv(2*q)
+}
+
+// tTail returns P(T > t), t ≥ 0, for fewer than manyDOF degrees of freedom.
+func tTail(t, dof float64) float64 {
 	x := dof / (dof + t*t)
 	if x < 0.5 || t*t > 1 {
 		return 0.5 * mathext.RegIncBeta(dof/2, 0.5, x)

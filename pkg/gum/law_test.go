@@ -3,6 +3,7 @@ package gum_test
 import (
 	"context"
 	"errors"
+	"fmt"
 	"math"
 	"strings"
 	"testing"
@@ -300,6 +301,32 @@ func TestCoverageFactor(t *testing.T) {
 			t.Errorf("k for p = %v is %v, want NaN", p, k)
 		}
 	}
+}
+
+// TestCoverageFactorManyDOF: a budget whose Type A part is small has any number of
+// effective degrees of freedom; k then falls steadily to that of a normal. The values
+// are those of SciPy 1.10's t.isf.
+func TestCoverageFactorManyDOF(t *testing.T) {
+	for _, c := range []struct{ p, dof, k float64 }{
+		{0.9545, 1e3, 2.002505517218672}, {0.9545, 9.9e4, 2.0000276968175585}, {0.9545, 1e5, 2.0000274442852843}, {0.9545, 1e6, 2.000004943910609},
+		{0.9545, 1e9, 2.0000024463996118}, {0.9545, 1e11, 2.000002443924604}, {0.9545, 1e13, 2.000002443899854}, {0.9545, 9e14, 2.0000024438996067},
+		{0.99, 1e11, 2.5758293035980664}, {0.99, 9e14, 2.575829303548906}, {0.5, 1e13, 0.6744897501961061}, {0.999999, 1e5, 4.891943340715112}, {0.999999, 9e14, 4.891638475698624},
+	} {
+		near(t, fmt.Sprintf("k for %v with %g degrees of freedom", c.p, c.dof), gum.CoverageFactor(c.p, c.dof), c.k, 2e-11*c.k)
+	}
+	for _, p := range []float64{0.5, 0.683, 0.9545, 0.9973, 0.999999} {
+		last := math.Inf(1)
+		for e := 0.0; e < 16; e += 0.25 {
+			k := gum.CoverageFactor(p, math.Pow(10, e))
+			if !(k <= last*(1+1e-11)) {
+				t.Errorf("k for %v rises from %v to %v at 10^%v degrees of freedom", p, last, k, e)
+			}
+			last = k
+		}
+		near(t, "k at the last", last, gum.CoverageFactor(p, math.Inf(1)), 1e-11)
+	}
+	// Far tail of a normal: SciPy's norm.sf(10).
+	near(t, "quantile", gum.Normal(0, 1).Quantile(7.61985302416e-24), -10, 1e-9)
 }
 
 // TestCombineRefuses lists what Combine has to refuse, and a word of each message.
