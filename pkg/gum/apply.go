@@ -114,8 +114,30 @@ func (p *plan) secondOrder(l *Law, e Evaluator, g, h []float64) error {
 		return nil
 	}
 	l.U = math.Sqrt(u2)
+	if extra > l.FirstOrderU*l.FirstOrderU {
+		l.unseenDOF(a)
+	}
 	l.cover()
 	return nil
+}
+
+// unseenDOF withdraws the degrees of freedom when the second-order terms carry most of
+// the variance and a line in them has fewer: the Welch–Satterthwaite formula goes by
+// first-order contributions. a is HΣ, row by row.
+func (l *Law) unseenDOF(a []float64) {
+	n := len(l.Budget)
+	for j, c := range l.Budget {
+		if math.IsInf(c.DOF, 1) || l.DOF <= c.DOF {
+			continue
+		}
+		for i := range n {
+			if a[i*n+j] != 0 {
+				l.DOF = math.NaN()
+				l.Warnings = append(l.Warnings, fmt.Errorf("no effective degrees of freedom: most of the variance is of second order, and the Welch–Satterthwaite formula does not see there that %s has %s; k is that of a normal, which may be too small: prefer the Monte Carlo interval", c.Input, dofText(c.DOF)))
+				return
+			}
+		}
+	}
 }
 
 // gradient fills g with the derivatives of the output at x and returns its value.
@@ -171,12 +193,16 @@ func (p *plan) hessian(e Evaluator, x, g, h []float64) float64 {
 }
 
 // step is the step of differences in input i: a tenth of its standard
-// uncertainty, or 1e-4 of its value when it is exact.
+// uncertainty, or 1e-4 of its value when it is exact, whatever its unit; 1e-7 at an
+// exact 0.
 func (p *plan) step(i int) float64 {
 	if u := p.model.Inputs[i].Dist.U; u > 0 {
 		return 0.1 * u
 	}
-	return 1e-4 * math.Max(math.Abs(p.estimate[i]), 1e-3)
+	if x := math.Abs(p.estimate[i]); x > 0 {
+		return 1e-4 * x
+	}
+	return 1e-7
 }
 
 // scalar returns a function of one point made from e.

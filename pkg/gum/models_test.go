@@ -145,3 +145,37 @@ func TestModelRefuses(t *testing.T) {
 		}
 	}
 }
+
+// TestSecondOrderDOF: the variance of x² at x = 0 is of second order, 2u⁴ (JCGM 100:2008
+// 5.1.2, note); its degrees of freedom are not those of the terms of first order.
+func TestSecondOrderDOF(t *testing.T) {
+	x := gum.Normal(0, 1)
+	x.DOF = 3
+	in := []gum.Input{{Name: "a", Dist: gum.Normal(0, 0.01)}, {Name: "x", Dist: x}}
+	for _, source := range []string{"x*x", "a + x*x"} {
+		l := propagateLaw(t, &gum.Model{Inputs: in, Outputs: []gum.Output{compiled(t, "y", source, in)}}, gum.Settings{SecondOrder: true})
+		near(t, source+": u", l.U, math.Sqrt2, 1e-4)
+		said := false
+		for _, w := range l.Warnings {
+			said = said || strings.Contains(w.Error(), "x has 3 degrees of freedom")
+		}
+		if !math.IsNaN(l.DOF) || !said {
+			t.Errorf("%s: degrees of freedom %v with warnings %v, want NaN and a warning that names x", source, l.DOF, l.Warnings)
+		}
+	}
+	// Known to the formula already: kept.
+	in[1].Dist.Value = 0.1
+	l := propagateLaw(t, &gum.Model{Inputs: in, Outputs: []gum.Output{compiled(t, "y", "x*x", in)}}, gum.Settings{SecondOrder: true})
+	near(t, "degrees of freedom", l.DOF, 3, 1e-12)
+}
+
+// TestSmallExactInput: differences by an exact input take its size, not that of the
+// unit.
+func TestSmallExactInput(t *testing.T) {
+	in := []gum.Input{{Name: "q", Dist: gum.Normal(1e-10, 1e-13)}, {Name: "c", Dist: gum.Exactly(2e-12)}}
+	m := &gum.Model{Inputs: in, Outputs: []gum.Output{compiled(t, "v", "q/c", in)}}
+	with := m.Outputs[0].New
+	m.Outputs[0].New = func() gum.Evaluator { return gum.Evaluator{Block: with().Block} }
+	l := propagateLaw(t, m, gum.Settings{})
+	near(t, "sensitivity to the capacitance, relative", l.Budget[1].Sensitivity/(-1e-10/4e-24), 1, 1e-9)
+}

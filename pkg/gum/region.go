@@ -188,13 +188,16 @@ func square(n int) [][]float64 {
 }
 
 // correlationOf scales a covariance matrix; coefficients with a quantity that does
-// not vary are 0.
+// not vary are 0, those of unknown covariance NaN.
 func correlationOf(cov [][]float64) [][]float64 {
 	r := square(len(cov))
 	for i := range cov {
 		r[i][i] = 1
 		for j := range i {
-			if s := math.Sqrt(cov[i][i]) * math.Sqrt(cov[j][j]); s > 0 {
+			switch s := math.Sqrt(cov[i][i]) * math.Sqrt(cov[j][j]); {
+			case math.IsNaN(s):
+				r[i][j], r[j][i] = s, s
+			case s > 0:
 				r[i][j] = max(-1, min(1, cov[i][j]/s))
 				r[j][i] = r[i][j]
 			}

@@ -11,7 +11,7 @@ type Sample struct {
 	Probability float64    // coverage probability p of both intervals
 	Interval    [2]float64 // probabilistically symmetric
 	Shortest    [2]float64 // shortest
-	Min, Max    float64    // extreme trials
+	Min, Max    float64    // extreme trials; in a run that streams, the edges of the bins they lie in
 	Resolution  float64    // largest distance of an interval's end from the order statistic it stands for; 0 when exact
 	Histogram   Histogram  // for display
 	Warnings    []error

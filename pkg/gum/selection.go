@@ -214,6 +214,9 @@ func (s *Sample) combine(segments []segment) {
 		s.Min, s.Max = min(s.Min, g.lo), max(s.Max, g.hi)
 	}
 	s.Value, s.U = mean, math.Sqrt(max(0, m2)/(n-1))
+	if m2-m2 != 0 {
+		s.withoutSquares()
+	}
 }
 
 // lowest returns the lowest k trials in order.

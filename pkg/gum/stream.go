@@ -1,6 +1,7 @@
 package gum
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -166,8 +167,7 @@ func (t *tally) sample(p float64) (*Sample, error) {
 	s.Value, variance = momentsOf(t.n, t.centre, &t.s1, &t.s2)
 	s.U = math.Sqrt(max(variance, 0))
 	if t.huge {
-		s.Value, s.U = math.NaN(), math.NaN()
-		s.Warnings = append(s.Warnings, fmt.Errorf("some trials are so large that their squares overflow: no mean or standard deviation is stated"))
+		s.withoutSquares()
 	}
 	q, err := coverCount(int(t.n), p)
 	if err != nil {
@@ -261,6 +261,13 @@ func (c *cumulation) shortest(tails, q int64) (interval [2]float64, width float6
 		try(i, a, j, b)
 	}
 	return interval, width
+}
+
+// withoutSquares withdraws mean and standard deviation of trials whose squares
+// overflow.
+func (s *Sample) withoutSquares() {
+	s.Value, s.U = math.NaN(), math.NaN()
+	s.Warnings = append(s.Warnings, errors.New("some trials are so large that their squares overflow: no mean or standard deviation is stated"))
 }
 
 // withoutMoments withdraws the mean or the standard deviation of a sample that has

@@ -318,3 +318,17 @@ func TestCoverage20000(t *testing.T) {
 	// 1/trials^(2/3); it is not held to the three standard deviations.
 	near(t, "coverage of the shortest interval", float64(hits[1])/budgets, p, 0.02)
 }
+
+// TestHugeTrials: squares that overflow leave intervals and a word, not a NaN alone.
+func TestHugeTrials(t *testing.T) {
+	in := []gum.Input{{Name: "a", Dist: gum.Rectangular(0, 1e200)}, {Name: "b", Dist: gum.Normal(0, 1)}}
+	m := &gum.Model{Inputs: in, Outputs: []gum.Output{compiled(t, "y", "a + b", in), compiled(t, "z", "b", in)}}
+	for _, trials := range []int64{20_000, gum.SelectionTrials + 1} {
+		r := propagate(t, m, gum.Settings{Trials: trials})
+		s := r.Outputs[0].MonteCarlo
+		near(t, "upper end", s.Interval[1]/1e200, 0.9545, 0.01)
+		if !math.IsNaN(s.U) || !math.IsNaN(r.Correlation[0][1]) || len(s.Warnings) != 1 || !strings.Contains(s.Warnings[0].Error(), "overflow") {
+			t.Errorf("%d trials: u %v, correlation %v, warnings %v; want NaN, NaN and one warning", trials, s.U, r.Correlation[0][1], s.Warnings)
+		}
+	}
+}
