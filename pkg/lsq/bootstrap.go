@@ -39,8 +39,11 @@ type Bootstrap struct {
 // Bootstrap repeats the fit on resampled readings (Efron and Tibshirani, An
 // Introduction to the Bootstrap (1993), sections 9.4 and 9.5). Residuals are
 // resampled after division by their standard uncertainty and √(1 − leverage)
-// and centring; rows are resampled with their weights. Replicate k always uses
-// the same random numbers for a seed. Readings must be independent.
+// and centring; rows are resampled with their weights. The values of priors are
+// data like the readings: each replicate draws them from a normal distribution of
+// their standard uncertainty, about the estimate (with Pairs: about the value
+// stated). Replicate k always uses the same random numbers for a seed. Readings
+// must be independent.
 func (r *Result) Bootstrap(ctx context.Context, set BootstrapSettings) (*Bootstrap, error) {
 	if set.Replicates == 0 {
 		set.Replicates = 2000
@@ -63,6 +66,20 @@ func (r *Result) Bootstrap(ctx context.Context, set BootstrapSettings) (*Bootstr
 	}
 	b := &Bootstrap{Bias: make([]float64, np), U: make([]float64, np), Interval: make([][2]float64, np)}
 	pick := func(src *random.Source) int { return min(int(src.Float64()*float64(n)), n-1) }
+	// values of the priors: nil without any
+	var priors []float64
+	draw := func(src *random.Source, about func(j int) float64) {
+		for _, j := range r.Free {
+			if p := r.problem.Parameters[j].Prior; p != nil {
+				priors[j] = about(j) + p.U*src.Normal()
+			}
+		}
+	}
+	for _, j := range r.Free {
+		if r.problem.Parameters[j].Prior != nil {
+			priors = make([]float64, np)
+		}
+	}
 	var fit func(src *random.Source, theta []float64) error
 	if set.Pairs {
 		factors := make([]float64, n)
@@ -77,6 +94,14 @@ func (r *Result) Bootstrap(ctx context.Context, set BootstrapSettings) (*Bootstr
 			}
 			for i, f := range factors {
 				a.w.w[i] = r.white.w[i] * math.Sqrt(f)
+			}
+			if priors != nil {
+				draw(src, func(j int) float64 { return r.problem.Parameters[j].Prior.Value })
+				for _, j := range r.Free {
+					if r.problem.Parameters[j].Prior != nil {
+						a.s.priorV[j] = priors[j]
+					}
+				}
 			}
 			if err := a.run(ctx, r.Values); err != nil {
 				return err
@@ -110,8 +135,11 @@ func (r *Result) Bootstrap(ctx context.Context, set BootstrapSettings) (*Bootstr
 			for i := range y {
 				y[i] = r.Fitted[i] + (e[pick(src)]-mean)/r.white.w[i]
 			}
+			if priors != nil {
+				draw(src, func(j int) float64 { return r.Values[j] })
+			}
 			copy(theta, r.Values)
-			_, err := w.Fit(y, nil, nil, theta)
+			_, err := w.Fit(y, priors, nil, theta)
 			return err
 		}
 	}

@@ -61,6 +61,9 @@ func (r *Result) LackOfFit(group []int) (*LackOfFit, error) {
 	if l.ModelDOF <= 0 {
 		return nil, fmt.Errorf("lsq: %d groups can't test a model with %d parameters", len(g), len(r.factor))
 	}
+	if l.PureSS <= 1e-28*total {
+		return nil, fmt.Errorf("lsq: replicates are all equal, so that they show no scatter to judge the model by; the resolution of the readings may hide it")
+	}
 	l.F = (l.ModelSS / float64(l.ModelDOF)) / (l.PureSS / float64(l.PureDOF))
 	l.PValue = fTail(l.F, float64(l.ModelDOF), float64(l.PureDOF))
 	return l, nil
@@ -90,8 +93,9 @@ func CompareNested(small, large *Result) (*Nested, error) {
 	if small.ScaledByResiduals != large.ScaledByResiduals {
 		return nil, fmt.Errorf("lsq: one fit has known uncertainties and the other not; they can't be compared")
 	}
-	for i, w := range small.white.w {
-		if large.white.w == nil || math.Abs(w-large.white.w[i]) > 1e-6*w {
+	for i := range small.Fitted {
+		v := small.white.variance(i)
+		if math.Abs(v-large.white.variance(i)) > 2e-6*v {
 			return nil, fmt.Errorf("lsq: the fits weigh reading %d differently; compare fits with the same frozen weights", i+1)
 		}
 	}
@@ -111,12 +115,18 @@ func CompareNested(small, large *Result) (*Nested, error) {
 // AICc is Akaike's information criterion with the correction for small samples
 // (Hurvich and Tsai, Biometrika 76 (1989) 297), up to a constant that is the
 // same for all models of the same readings: smaller is better. With unknown
-// uncertainties the noise counts as one more parameter. NaN when there are too
-// few readings for the correction.
+// uncertainties the noise counts as one more parameter; beside priors or effects
+// its likelihood is that at the noise found. Weights that Reweight changed are
+// taken as known, so that only models with like weights compare. NaN when there
+// are too few readings for the correction.
 func (r *Result) AICc() float64 {
 	n, k := float64(len(r.Fitted)), float64(len(r.factor))
 	dev := r.ChiSquared
-	if r.ScaledByResiduals {
+	switch {
+	case r.noiseFound: // chi-squared is DOF there, whatever the model
+		dev += r.white.logDeterminant() - n
+		k++
+	case r.ScaledByResiduals:
 		dev = n * math.Log(r.ChiSquared/n)
 		k++
 	}

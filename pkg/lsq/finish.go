@@ -258,7 +258,7 @@ func (f *fitter) result(ctx context.Context) (*Result, error) {
 		scale = math.NaN()
 		r.warn("the uncertainties are unknown: the readings' uncertainty was not stated and no degrees of freedom are left to find it from the residuals")
 	case f.estimated():
-		r.ScaledByResiduals = true
+		r.ScaledByResiduals, r.noiseFound = true, true
 		r.warn("the readings' uncertainty was not stated: it was found from the residuals, so that chi-squared equals its degrees of freedom and has no probability")
 	case p.Relative:
 		r.ScaledByResiduals = true

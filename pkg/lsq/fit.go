@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"slices"
 	"sort"
 	"sync"
 
@@ -273,12 +274,12 @@ func (f *fitter) fit(ctx context.Context) error {
 // covariance afterwards would be wrong.
 func (f *fitter) findNoise(ctx context.Context, rounds int) error {
 	s := &f.search
-	dof := float64(len(f.p.Y) + f.priors - len(f.free) + len(f.pinned))
-	if dof <= 0 {
-		return nil // result says that the noise can't be known
-	}
 	floor := 1e-12 * f.noise
 	for i := 0; i < rounds; i++ {
+		dof := float64(len(f.p.Y) + f.priors - len(f.free) + f.heldOrPinned())
+		if dof <= 0 {
+			return nil // result says that the noise can't be known
+		}
 		factor := math.Sqrt(s.chi2 / dof)
 		if math.Abs(factor-1) <= 1e-10 {
 			return nil
@@ -299,6 +300,18 @@ func (f *fitter) findNoise(ctx context.Context, rounds int) error {
 	}
 	f.warnings = append(f.warnings, fmt.Errorf("the noise found from the residuals had not settled after %d rounds", rounds))
 	return nil
+}
+
+// heldOrPinned counts the free parameters that are not estimated: at a bound, or
+// kept at the start.
+func (f *fitter) heldOrPinned() int {
+	n := len(f.pinned)
+	for k, h := range f.search.held {
+		if h && !slices.Contains(f.pinned, k) {
+			n++
+		}
+	}
+	return n
 }
 
 // again repeats the search from where it stands with new weights.

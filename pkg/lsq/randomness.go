@@ -145,8 +145,8 @@ func andersonDarlingP(a float64) (p float64) {
 // for correlation of neighbours: d = Σ(r_{i+1} − r_i)²/Σr_i², near 2 when there
 // is none. The two-sided p-value uses the beta distribution on 0 … 4 with the
 // exact mean and variance of d for this fit's Jacobian (Durbin and Watson,
-// Biometrika 38 (1951) 159, sections 3 and 4). For correlated readings the
-// residuals are whitened first.
+// Biometrika 38 (1951) 159, sections 3 and 4); with priors they are approximate.
+// For correlated readings the residuals are whitened first.
 func (r *Result) DurbinWatson() (Test, error) {
 	if r.jac == nil {
 		return Test{}, fmt.Errorf("lsq: the Durbin–Watson test needs the Jacobian; fit without SkipDiagnostics")
@@ -187,7 +187,9 @@ func (r *Result) DurbinWatson() (Test, error) {
 
 // durbinWatsonP is the two-sided p-value of d for n residuals of a fit whose
 // whitened Jacobian has the given orthonormal basis. A is the matrix of the
-// quadratic form Σ(r_{i+1} − r_i)².
+// quadratic form Σ(r_{i+1} − r_i)². With priors the basis is shorter than
+// orthonormal, since the readings spend less than a degree of freedom on such a
+// parameter: the covariance of the residuals is still 1 − Σccᵀ.
 func durbinWatsonP(d float64, n int, basis [][]float64) float64 {
 	q := len(basis)
 	mul := func(x []float64) []float64 {
@@ -199,7 +201,14 @@ func durbinWatsonP(d float64, n int, basis [][]float64) float64 {
 		}
 		return y
 	}
-	nn, m := float64(n), float64(n-q)
+	spent := 0.0
+	for _, c := range basis {
+		spent += dot(c, c)
+	}
+	if math.Abs(spent-float64(q)) < 1e-6 {
+		spent = float64(q)
+	}
+	nn, m := float64(n), float64(n)-spent
 	s1, s2 := 2*(nn-1), 6*nn-8
 	ab := make([][]float64, q)
 	for k, c := range basis {
@@ -229,6 +238,9 @@ func durbinWatsonP(d float64, n int, basis [][]float64) float64 {
 func fTail(x, a, b float64) float64 {
 	if math.IsNaN(x) || a <= 0 || b <= 0 {
 		return math.NaN()
+	}
+	if math.IsInf(x, 1) {
+		return 0
 	}
 	return distuv.F{D1: a, D2: b}.Survival(x)
 }

@@ -61,7 +61,7 @@ type Result struct {
 	Fitted        []float64 // f at the estimates, unit of Y
 	Residuals     []float64 // y − f, unit of Y
 	Standardised  []float64 // residual over the standard uncertainty of its reading
-	Leverage      []float64 // diagonal of the hat matrix of the whitened problem
+	Leverage      []float64 // (JCJᵀ)_ii/Σ_ii: what the fit follows of each reading; for independent ones the diagonal of the hat matrix
 	Studentised   []float64 // residual over the standard uncertainty of the residual
 	CooksDistance []float64 // what leaving the reading out would move the estimates by, in their uncertainties squared per parameter
 	Weights       []float64 // 1/Σ_ii, the final weights, unit of Y to the power −2
@@ -77,4 +77,6 @@ type Result struct {
 	scale    float64     // s² when the covariance was scaled, else 1
 	problem  *Problem
 	settings Settings
+
+	noiseFound bool // the readings' uncertainty was found beside priors or effects: see findNoise
 }

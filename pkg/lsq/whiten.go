@@ -293,6 +293,26 @@ func (w *whitener) applyT(v []float64) {
 	}
 }
 
+// logDeterminant is ln det Σ, for independent readings with or without effects.
+// The factor of a disjoint effect has the eigenvalue 1/√(1+s) = 1 − cs; so has
+// that of each overlapping one, 1 − qᵀq (see whitener).
+func (w *whitener) logDeterminant() float64 {
+	sum := 0.0
+	for _, x := range w.w {
+		sum -= 2 * math.Log(x)
+	}
+	if w.plan == nil {
+		return sum
+	}
+	for _, c := range w.coef {
+		sum += 2 * math.Log((math.Sqrt(1+4/c)-1)/2) // c = 1/(√(1+s)(1 + √(1+s)))
+	}
+	for _, q := range w.dense {
+		sum -= 2 * math.Log1p(-floats.Dot(q, q))
+	}
+	return sum
+}
+
 // variance is Σ_ii.
 func (w *whitener) variance(i int) float64 {
 	if w.vars != nil {
