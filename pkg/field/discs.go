@@ -159,8 +159,8 @@ func discOpposite(kappa float64) [4]float64 {
 	return h
 }
 
-// discSame returns c = Q/εR(2φ)·2 of two discs at the same potential φ, that is
-// 2∫f₊, and its first three derivatives by κ.
+// discSame returns c = Q/(2εRφ), Q the charge of either of two discs at the same
+// potential φ, that is 2∫f₊, and its first three derivatives by κ.
 func discSame(kappa float64) [4]float64 {
 	if kappa < discTableLow {
 		h := logPowers(kappa, 1, []float64{(1 - 4*math.Ln2) / math.Pi, 1 / math.Pi})

@@ -9,8 +9,8 @@ import (
 // room temperature, with the range within which published values lie.
 type Material struct {
 	Name      string
-	EpsR      float64
-	Low, High float64
+	EpsR      float64 // relative permittivity, 1
+	Low, High float64 // ends of the range of published values, 1
 	Source    string
 }
 
@@ -26,8 +26,12 @@ func Materials() []Material {
 
 // CheckMaterial compares a measured relative permittivity with standard
 // uncertainty u with the published range of a material and says in words when it
-// lies outside by more than 2u. ok is false then, and the note says how far.
+// lies outside by more than 2u. ok is false then, and the note says how far. A
+// material without a published range, or numbers that can't be, are an error.
 func CheckMaterial(name string, epsr, u float64) (ok bool, note string, err error) {
+	if err := refuse("check of a material", finite("relative permittivity", epsr, "1"), notNegative("standard uncertainty", u, "1")); err != nil {
+		return false, "", err
+	}
 	var names []string
 	for _, m := range Materials() {
 		if strings.EqualFold(m.Name, name) {

@@ -54,8 +54,8 @@ func (s *Scene) sources() ([]Source, error) {
 	}
 	all := make([]Source, 0, 2*len(s.Sources))
 	for _, c := range s.Sources {
-		if math.IsNaN(c.Charge) || math.IsInf(c.Charge, 0) || c.Radius < 0 || bad(c.From) || bad(c.To) {
-			return nil, fmt.Errorf("stray field: source %q has a charge, place or radius that is not a number", c.Name)
+		if math.IsNaN(c.Charge) || math.IsInf(c.Charge, 0) || !(c.Radius >= 0) || math.IsInf(c.Radius, 1) || bad(c.From) || bad(c.To) {
+			return nil, fmt.Errorf("stray field: source %q has a charge, place or radius that is not a finite number, or a negative radius", c.Name)
 		}
 		all = append(all, c)
 	}

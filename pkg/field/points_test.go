@@ -378,6 +378,15 @@ func TestMaterials(t *testing.T) {
 			t.Errorf("PTFE %g(%g): %v, %q, %v", c.eps, c.u, ok, note, err)
 		}
 	}
+	for _, bad := range [][2]float64{{math.NaN(), 0.1}, {2.1, math.NaN()}, {math.Inf(1), 0.1}, {2.1, -0.1}} {
+		if ok, note, err := field.CheckMaterial("PTFE", bad[0], bad[1]); ok || note != "" || err == nil {
+			t.Errorf("permittivity %v ± %v passed: %v, %q", bad[0], bad[1], ok, note)
+		}
+	}
+	scene := field.Scene{Eps: 8.85e-12, Sources: []field.Source{field.SphereSource("ball", 1e-9, field.Vec{}, math.NaN())}}
+	if _, err := scene.Field(field.Vec{1, 0, 0}); err == nil {
+		t.Error("a sphere whose radius is not a number passed")
+	}
 	if _, _, err := field.CheckMaterial("unobtainium", 1, 1); err == nil {
 		t.Error("an unknown material passed")
 	}

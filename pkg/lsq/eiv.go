@@ -199,6 +199,9 @@ func (p *EIVProblem) check(inner *Problem) ([]int, int, error) {
 					}
 				}
 			}
+			if c > 2 && !possible(v, c) {
+				return fail("the correlations of row %d can't all hold: its covariance has a negative eigenvalue", i+1)
+			}
 		}
 	} else {
 		if p.UX != nil && len(p.UX) != m {

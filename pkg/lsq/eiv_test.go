@@ -358,6 +358,12 @@ func TestEIVBadInput(t *testing.T) {
 		{func(p *EIVProblem) { p.Eval = nil }, "Eval is nil"},
 		{func(p *EIVProblem) { p.Covariance = make([]float64, 7) }, "either Covariance or UX"},
 		{func(p *EIVProblem) { p.UX, p.UY, p.Covariance = nil, nil, make([]float64, 7) }, "need 90"},
+		{func(p *EIVProblem) { // each pair may be, all three together not
+			p.UX, p.UY = nil, nil
+			for range 10 {
+				p.Covariance = append(p.Covariance, 1, 0.9, 0.9, 0.9, 1, -0.9, 0.9, -0.9, 1)
+			}
+		}, "correlations of row 1"},
 	} {
 		p := discEIV(10)
 		c.change(p)
@@ -377,6 +383,25 @@ func TestEIVBadInput(t *testing.T) {
 	}
 	if r, err := FitEIV(ctx, p, Settings{}); err == nil || r != nil || calls > 4 {
 		t.Errorf("cancelled fit returned %v, %v after %d calls", r, err, calls)
+	}
+}
+
+// Singular covariances of a row are possible: exact coordinates, full correlation.
+func TestPossible(t *testing.T) {
+	for _, c := range []struct {
+		v    []float64
+		want bool
+	}{
+		{[]float64{1, 0.9, 0.9, 0.9, 1, -0.9, 0.9, -0.9, 1}, false},
+		{[]float64{1, 1, 0.5, 1, 1, -0.5, 0.5, -0.5, 1}, false},
+		{[]float64{1, 1, 0.5, 1, 1, 0.5, 0.5, 0.5, 1}, true},
+		{[]float64{0, 0, 0, 0, 4e-24, 2e-12, 0, 2e-12, 1}, true},
+		{[]float64{4, -2, -6, -2, 1, 3, -6, 3, 9}, true},
+		{make([]float64, 9), true},
+	} {
+		if got := possible(c.v, 3); got != c.want {
+			t.Errorf("%v: possible %v, want %v", c.v, got, c.want)
+		}
 	}
 }
 

@@ -133,6 +133,41 @@ func (g *Effects) check(n int) error {
 	return nil
 }
 
+// possible reports whether the symmetric n×n matrix v, by rows, with correlations
+// within ±1, has no negative eigenvalue but for rounding: by the Cholesky factor of
+// its correlation matrix.
+func possible(v []float64, n int) bool {
+	const rounding = 1e-9
+	l := make([]float64, n*n)
+	for j := range n {
+		if v[j*n+j] == 0 {
+			continue // its covariances are zero: no correlation lies beyond ±1
+		}
+		d := 1.0
+		for k := range j {
+			d -= l[j*n+k] * l[j*n+k]
+		}
+		if d < -rounding {
+			return false
+		}
+		for i := j + 1; i < n; i++ {
+			if v[i*n+i] == 0 {
+				continue
+			}
+			s := v[i*n+j] / (math.Sqrt(v[i*n+i]) * math.Sqrt(v[j*n+j]))
+			for k := range j {
+				s -= l[i*n+k] * l[j*n+k]
+			}
+			if d > rounding {
+				l[i*n+j] = s / math.Sqrt(d)
+			} else if math.Abs(s) > math.Sqrt(rounding) {
+				return false
+			}
+		}
+	}
+	return true
+}
+
 // copy is g with loads of its own; reweighting leaves the pattern as it is.
 func (g *Effects) copy() *Effects {
 	c := *g
