@@ -209,6 +209,23 @@ func explicitChi(t *testing.T, x []float64, v *mat.SymDense, set []int) float64 
 	return mat.Inner(xs, &inverse, xs)
 }
 
+// A subset consistent at the level asked for is not called inconsistent at 5 %.
+func TestSubsetLevel(t *testing.T) {
+	// chi-squared (1.5² + 1.5²) = 4.5 for one degree of freedom: p = 0.034
+	rs := independent([]float64{10, 13}, []float64{1, 1}, "V")
+	s, err := LargestConsistentSubset(context.Background(), rs, nil, SubsetSettings{Level: 0.01})
+	if err != nil {
+		t.Fatal(err)
+	}
+	near(t, "p", s.Mean.PValue, 0.0338948535246893, 1e-12)
+	if !s.Mean.Consistent || s.Mean.Level != 0.01 || len(s.Mean.Warnings) != 0 {
+		t.Errorf("consistent %v at %v, warnings %v", s.Mean.Consistent, s.Mean.Level, s.Mean.Warnings)
+	}
+	if _, err := LargestConsistentSubset(context.Background(), rs, nil, SubsetSettings{}); err == nil {
+		t.Error("consistent at 5 %")
+	}
+}
+
 func TestSubsetStops(t *testing.T) {
 	ctx, cancel := context.WithCancelCause(context.Background())
 	stop := errors.New("interrupted")

@@ -91,7 +91,8 @@ type ChartPoint struct {
 	Signal       Signal        `json:"signal"`
 }
 
-// LatestCheck compares the last calibration with what the others predict.
+// LatestCheck compares the last calibration with what the others predict, by the
+// stated uncertainties: DriftSettings.Scale does not touch it.
 type LatestCheck struct {
 	Predicted float64 `json:"predicted"`
 	U         float64 `json:"u"`     // standard uncertainty of the difference

@@ -49,19 +49,20 @@ func WeightedMean(results []Result, cov *mat.SymDense) (*Mean, error) {
 	if err != nil {
 		return nil, err
 	}
-	return mean(rs, v, chol, nil)
+	return mean(rs, v, chol, nil, defaultLevel)
 }
 
-// mean computes the mean of the results listed in members (nil: all); chol
-// factorises the correlation matrix of the members.
-func mean(rs []Result, v *mat.SymDense, chol *mat.Cholesky, members []int) (*Mean, error) {
+// mean computes the mean of the results listed in members (nil: all), with
+// consistency judged at a level; chol factorises the correlation matrix of the
+// members.
+func mean(rs []Result, v *mat.SymDense, chol *mat.Cholesky, members []int, level float64) (*Mean, error) {
 	if members == nil {
 		for i := range rs {
 			members = append(members, i)
 		}
 	}
 	n := len(members)
-	m := &Mean{Results: rs, Covariance: v, Weights: make([]float64, len(rs)), DOF: n - 1, Level: defaultLevel}
+	m := &Mean{Results: rs, Covariance: v, Weights: make([]float64, len(rs)), DOF: n - 1, Level: level}
 	// Whitened by u and the correlation matrix R: a = 1/u, b = (x − x₀)/u. The
 	// shift by x₀ keeps the digits of values that differ little.
 	x0 := rs[members[0]].Value

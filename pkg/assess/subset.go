@@ -102,10 +102,11 @@ func LargestConsistentSubset(ctx context.Context, results []Result, cov *mat.Sym
 	if err != nil {
 		return nil, err
 	}
-	if out.Mean, err = mean(rs, v, chol, out.Members); err != nil {
+	// chi-squared was within its quantile: rounding of the p-value does not undo that
+	if out.Mean, err = mean(rs, v, chol, out.Members, s.Level*(1-1e-9)); err != nil {
 		return nil, err
 	}
-	out.Mean.Level, out.Mean.Consistent = s.Level, true
+	out.Mean.Level = s.Level
 	if out.Others > 0 {
 		out.Warnings = append(out.Warnings, fmt.Errorf("%d other subset(s) of %d results are consistent as well; this one has the smallest chi-squared", out.Others, len(out.Members)))
 	}

@@ -10,7 +10,7 @@ import (
 // below returns Pr(T ≤ x) for a standard normal T, or Student's t when dof is
 // finite. Both tails keep their relative accuracy; the upper one is below(−x).
 func below(x, dof float64) float64 {
-	if dof > 1e8 { // t and normal differ by less than 1e-9 of either
+	if dof > 1e8 { // t and normal differ by less than 1e-9, in the tail by x⁴/4dof of it
 		return 0.5 * math.Erfc(-x/math.Sqrt2)
 	}
 	if math.IsInf(x, 0) {
