@@ -221,12 +221,17 @@ func (p *plan) scalar(e Evaluator) func([]float64) float64 {
 // existing says for output o whether its mean and its variance exist, as far as
 // the inputs' t distributions go: an input with at most one degree of freedom has no
 // mean, one with at most two no variance. An output depends on an input if shifting
-// that by its uncertainty, up or down, changes the output at the estimates.
+// that by its uncertainty, up or down, changes the output at the estimates or where all
+// inputs lie a little above theirs: a factor that is 0 at its estimate hides another.
 func (p *plan) existing(e Evaluator) (mean, variance bool, names []string) {
 	mean, variance = true, true
 	f := p.scalar(e)
-	x := append([]float64(nil), p.estimate...)
-	centre := f(x)
+	beside := append([]float64(nil), p.estimate...)
+	for i := range beside {
+		beside[i] += 0.3 * p.model.Inputs[i].Dist.U
+	}
+	places := [][]float64{append([]float64(nil), p.estimate...), beside}
+	centre := []float64{f(places[0]), f(places[1])}
 	for i := range p.model.Inputs {
 		d := &p.model.Inputs[i].Dist
 		if d.Shape != ShapeNormal && d.Shape != ShapeT {
@@ -237,11 +242,17 @@ func (p *plan) existing(e Evaluator) (mean, variance bool, names []string) {
 			continue
 		}
 		depends := false
-		for _, s := range []float64{scale, -scale} {
-			x[i] = p.estimate[i] + s
-			depends = depends || f(x) != centre
+		for k, x := range places {
+			if k > 0 && math.IsNaN(centre[k]) { // undefined there: says nothing
+				continue
+			}
+			was := x[i]
+			for _, s := range []float64{scale, -scale} {
+				x[i] = was + s
+				depends = depends || f(x) != centre[k]
+			}
+			x[i] = was
 		}
-		x[i] = p.estimate[i]
 		if depends {
 			variance = false
 			mean = mean && dof > 1

@@ -33,7 +33,8 @@ func CheckCoverage(p float64) error {
 // CoverageFactor returns the k for which ±k covers the probability p under
 // Student's t (JCGM 100:2008 table G.2). Fractional dof of 1 or more are truncated
 // to an integer (JCGM 100:2008 G.4.1); infinite or NaN dof give the factor of a
-// normal. p must lie in (0, 1); otherwise the result is NaN.
+// normal. p must lie in (0, 1) and dof be positive; otherwise the result is NaN. It
+// is +Inf where it overflows: a hundredth of a degree of freedom and less.
 func CoverageFactor(p, dof float64) float64 {
 	if !(p > 0 && p < 1) {
 		return math.NaN()
@@ -64,6 +65,10 @@ func TrapezoidFactor(p, beta float64) float64 {
 // probability q, 0 < q ≤ 1/2.
 func tUpper(q, dof float64) float64 {
 	switch {
+	case !(dof > 0):
+		return math.NaN()
+	case dof < 1e-300: // half of it may be 0
+		return math.Inf(1)
 	case dof >= 1e15:
 		return normalUpper(q)
 	case dof >= manyDOF:

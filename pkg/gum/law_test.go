@@ -301,6 +301,19 @@ func TestCoverageFactor(t *testing.T) {
 			t.Errorf("k for p = %v is %v, want NaN", p, k)
 		}
 	}
+	for _, dof := range []float64{0, -1, -inf} {
+		if k := gum.CoverageFactor(0.95, dof); !math.IsNaN(k) {
+			t.Errorf("k with %v degrees of freedom is %v, want NaN", dof, k)
+		}
+	}
+	if k := gum.CoverageFactor(0.95, math.SmallestNonzeroFloat64); !math.IsInf(k, 1) {
+		t.Errorf("k with next to no degrees of freedom is %v, want +Inf", k)
+	}
+	for _, d := range []gum.Distribution{withDOF(gum.Normal(0, 1), -1), gum.Gamma(-2, 1), gum.Normal(0, -1), {Shape: "odd"}} {
+		if q := d.Quantile(0.3); !math.IsNaN(q) {
+			t.Errorf("quantile of %+v is %v, want NaN", d, q)
+		}
+	}
 }
 
 // TestCoverageFactorManyDOF: a budget whose Type A part is small has any number of

@@ -119,7 +119,7 @@ func (s Settings) withDefaults() (Settings, error) {
 // A Result is what Propagate found.
 type Result struct {
 	Outputs     []OutputResult
-	Correlation [][]float64 // of the outputs: from Monte Carlo if it was run, else by the law
+	Correlation [][]float64 // of the outputs: from Monte Carlo if it was run, else by the law, to first order
 	Covariance  [][]float64 // likewise
 	Regions     []Region    // joint coverage regions of all outputs, when there are two or more and Monte Carlo was run
 	Points      [][]float64 // Points[output][trial]: the first joint trials, for scatter plots

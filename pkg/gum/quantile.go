@@ -7,9 +7,9 @@ import (
 )
 
 // Quantile returns the value that the distribution stays below with probability
-// p, 0 < p < 1; NaN for a p outside.
+// p, 0 < p < 1; NaN for a p outside or a distribution that Check refuses.
 func (d Distribution) Quantile(p float64) float64 {
-	if !(p > 0 && p < 1) {
+	if !(p > 0 && p < 1) || d.Check() != nil {
 		return math.NaN()
 	}
 	if p <= 0.5 {

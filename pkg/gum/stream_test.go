@@ -230,6 +230,19 @@ func TestInfiniteVariance(t *testing.T) {
 	}
 }
 
+// TestHiddenInfiniteVariance: a factor that is 0 at its estimate does not hide the
+// other's missing variance.
+func TestHiddenInfiniteVariance(t *testing.T) {
+	x := gum.Normal(1, 0.1)
+	x.DOF = 2
+	in := []gum.Input{{Name: "x", Dist: x}, {Name: "zero", Dist: gum.Normal(0, 1)}}
+	m := &gum.Model{Inputs: in, Outputs: []gum.Output{compiled(t, "y", "x*zero", in)}}
+	s := propagate(t, m, gum.Settings{Trials: 20_000}).Outputs[0].MonteCarlo
+	if !math.IsNaN(s.U) || len(s.Warnings) != 1 {
+		t.Errorf("u %v with warnings %v, want NaN and one", s.U, s.Warnings)
+	}
+}
+
 // TestAdaptive: the procedure stops when the four averages are settled to δ, and
 // with more digits asked for it goes on longer.
 func TestAdaptive(t *testing.T) {

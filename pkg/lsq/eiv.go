@@ -27,7 +27,7 @@ type EIVProblem struct {
 
 	// Relative says that the uncertainties are known only up to a common
 	// factor: the covariance of the parameters is then scaled by the residual
-	// variance, and the result says so.
+	// variance, and the result says so. It can't be used with priors.
 	Relative bool
 
 	// Eval fills f[i] with the model at predictors x[k][i] and parameters
@@ -235,7 +235,11 @@ func (p *EIVProblem) check(inner *Problem) ([]int, int, error) {
 		}
 	}
 	*inner = Problem{Parameters: p.Parameters, Y: y, Numeric: p.Numeric, Eval: nothing}
-	return inner.validate()
+	free, priors, err := inner.validate()
+	if err == nil && p.Relative && priors > 0 {
+		return fail("relative uncertainties can't be used with priors, whose size is known; state the uncertainties of the readings")
+	}
+	return free, priors, err
 }
 
 // nothing stands for the model of a problem whose points are handled here.

@@ -358,6 +358,7 @@ func TestEIVBadInput(t *testing.T) {
 		{func(p *EIVProblem) { p.Eval = nil }, "Eval is nil"},
 		{func(p *EIVProblem) { p.Covariance = make([]float64, 7) }, "either Covariance or UX"},
 		{func(p *EIVProblem) { p.UX, p.UY, p.Covariance = nil, nil, make([]float64, 7) }, "need 90"},
+		{func(p *EIVProblem) { p.Relative, p.Parameters[1].Prior = true, &Prior{Value: 1, U: 1} }, "can't be used with priors"},
 		{func(p *EIVProblem) { // each pair may be, all three together not
 			p.UX, p.UY = nil, nil
 			for range 10 {
