@@ -181,6 +181,11 @@ func (t *Part) UnmarshalJSON(b []byte) error {
 		result: &Result{Probability: s.Probability, Seed: s.Seed, Converged: true, Warnings: errorsOf(w.Warnings)}}
 	p.first, p.last = partBlocks(blockCount(s.Trials), p.Index, p.Of)
 	due := min(p.last*BlockTrials, s.Trials) - min(p.first*BlockTrials, s.Trials)
+	for o, x := range w.Points {
+		if len(x) != min(w.PointCount, PilotTrials) {
+			return fmt.Errorf("damaged part of a Monte Carlo run: %d points of output %d where %d are due", len(x), o+1, min(w.PointCount, PilotTrials))
+		}
+	}
 	for o, x := range w.Outputs {
 		out := OutputResult{Name: x.Name, Unit: x.Unit, Formula: x.Formula}
 		if x.LawError != "" {
@@ -226,6 +231,9 @@ func (t *tally) wire() wireTally {
 		Below: t.below, Above: t.above, Min: number(t.min), Max: number(t.max), Undefined: t.undefined, N: t.n, Huge: t.huge, S1: t.s1, S2: t.s2}
 }
 
+// mostCounted bounds the trials of a bin, so that the sum over all stays in 63 bits.
+const mostCounted = math.MaxInt64 / (4 * Bins)
+
 func (w *wireTally) tally() (*tally, error) {
 	t := newTally(grid{low: float64(w.Low), width: float64(w.Width), centre: float64(w.Centre)})
 	t.below, t.above, t.min, t.max = w.Below, w.Above, float64(w.Min), float64(w.Max)
@@ -243,7 +251,7 @@ func (w *wireTally) tally() (*tally, error) {
 		}
 		n, l := binary.Uvarint(b[k:])
 		i += run
-		if l <= 0 || n == 0 || n > math.MaxInt64 || i >= Bins {
+		if l <= 0 || n == 0 || n > mostCounted || i >= Bins {
 			return nil, errors.New("its counts are cut short")
 		}
 		t.counts[i] = int64(n)
@@ -251,7 +259,7 @@ func (w *wireTally) tally() (*tally, error) {
 		i++
 		b = b[k+l:]
 	}
-	if sum != t.n || t.below < 0 || t.above < 0 || t.undefined < 0 || !(t.width > 0) || math.IsInf(t.width, 1) ||
+	if sum != t.n || t.below < 0 || t.above < 0 || t.below > mostCounted || t.above > mostCounted || t.undefined < 0 || !(t.width > 0) || math.IsInf(t.width, 1) ||
 		t.low-t.low != 0 || t.centre-t.centre != 0 {
 		return nil, errors.New("its counts do not add up")
 	}
@@ -276,6 +284,9 @@ func (w *wireJoint) joint(n int) (*jointTally, error) {
 	q, err := w.Rectangle.tally()
 	if err != nil {
 		return nil, err
+	}
+	if w.N < 0 || q.n != w.N || e.n > w.N {
+		return nil, errors.New("its joint sums do not add up")
 	}
 	t := newJointTally(newMetric(floats(w.Centre), shape), e.grid, q.grid)
 	t.n, t.s1, t.s2, t.ellipse, t.rectangle = w.N, w.S1, w.S2, e, q

@@ -5,6 +5,7 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
+	"math"
 	"runtime"
 	"strings"
 	"sync/atomic"
@@ -162,6 +163,61 @@ func TestParts(t *testing.T) {
 		word  string
 	}{{s, 0, 3, "part 0 of 3"}, {s, 4, 3, "part 4 of 3"}, {s, 1, 0, "part 1 of 0"}, {gum.Settings{Adaptive: true}, 1, 2, "adaptive"}, {gum.Settings{LawOnly: true}, 1, 2, "nothing to cut"}} {
 		if _, err := gum.RunPart(context.Background(), m, c.s, c.i, c.of); err == nil || !strings.Contains(err.Error(), c.word) {
+			t.Errorf("error %v lacks %q", err, c.word)
+		}
+	}
+}
+
+// TestDamagedParts: joint sums, points and counts that contradict each other are
+// refused, and nothing panics.
+func TestDamagedParts(t *testing.T) {
+	p, err := gum.RunPart(context.Background(), twoOutputs(t), gum.Settings{Trials: 1000, Points: 3}, 1, 1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	whole, err := json.Marshal(p)
+	if err != nil {
+		t.Fatal(err)
+	}
+	type object = map[string]any
+	for _, c := range []struct {
+		word   string
+		damage func(o object)
+	}{
+		{"", func(object) {}},
+		{"joint sums do not add up", func(o object) { o["joint"].(object)["n"] = 2000 }},
+		{"joint sums do not add up", func(o object) { o["joint"].(object)["n"] = -1 }},
+		{"joint sums do not add up", func(o object) {
+			e := o["joint"].(object)
+			e["rectangle"].(object)["counts"] = ""
+			e["rectangle"].(object)["n"] = 0
+		}},
+		{"2 points of output 2", func(o object) { x := o["points"].([]any); x[1] = x[1].([]any)[:2] }},
+		{"counts do not add up", func(o object) {
+			x := o["outputs"].([]any)[0].(object)["tally"].(object)
+			x["below"], x["above"] = int64(math.MaxInt64), int64(math.MaxInt64)
+		}},
+	} {
+		var o object
+		if err := json.Unmarshal(whole, &o); err != nil {
+			t.Fatal(err)
+		}
+		c.damage(o)
+		b, err := json.Marshal(o)
+		if err != nil {
+			t.Fatal(err)
+		}
+		var q gum.Part
+		err = json.Unmarshal(b, &q)
+		if c.word == "" {
+			if err != nil {
+				t.Error(err)
+			} else if _, err := gum.Merge([]*gum.Part{&q}); err != nil {
+				t.Error(err)
+			}
+			continue
+		}
+		if err == nil || !strings.Contains(err.Error(), c.word) {
 			t.Errorf("error %v lacks %q", err, c.word)
 		}
 	}

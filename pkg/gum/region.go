@@ -335,10 +335,9 @@ func (t *jointTally) result(p float64) (cov [][]float64, regions []Region, warni
 	}
 	kp := math.NaN()
 	if t.metric.factor != nil {
-		kp, _ = t.ellipse.cumulate().order(rankFor(t.n, p))
+		kp = t.ellipse.share(p)
 	}
-	kq, _ := t.rectangle.cumulate().order(rankFor(t.n, p))
-	regions, warnings = t.metric.regions(p, kp, kq)
+	regions, warnings = t.metric.regions(p, kp, t.rectangle.share(p))
 	return cov, regions, warnings
 }
 

@@ -209,6 +209,15 @@ func (t *tally) cumulate() *cumulation {
 	return c
 }
 
+// share returns the value that a share p of the trials does not exceed; NaN without any.
+func (t *tally) share(p float64) float64 {
+	if t.n == 0 {
+		return math.NaN()
+	}
+	v, _ := t.cumulate().order(rankFor(t.n, p))
+	return v
+}
+
 // order estimates the k-th order statistic, counted from 1: trials are taken as
 // evenly spread over their bin. It also returns the bin's width, which bounds the
 // error.
