@@ -259,6 +259,26 @@ func TestProfile(t *testing.T) {
 	}
 }
 
+// A profile that walks from a local minimum into the true one says so: chi-squared
+// (b² − 1)² + (b − 1)²/4 is 0 at b = 1 and has a minimum near −0.9.
+func TestProfileOfLocalMinimum(t *testing.T) {
+	p := &Problem{Y: []float64{0, 1}, U: []float64{1, 2}, Parameters: []Parameter{{Name: "b", Start: -0.9}},
+		Eval: func(b, f []float64, jac [][]float64) error {
+			f[0], f[1] = b[0]*b[0]-1, b[0]
+			if jac != nil && jac[0] != nil { // nil for a fixed parameter
+				jac[0][0], jac[0][1] = 2*b[0], 1
+			}
+			return nil
+		}}
+	r := fit(t, p)
+	if !(r.Values[0] < 0) || r.Status != Converged {
+		t.Fatalf("%s at %v", r.Status, r.Values)
+	}
+	if i, err := r.Profile(context.Background(), 0, 0.9545); err == nil || !strings.Contains(err.Error(), "with b at") {
+		t.Errorf("interval %+v, %v", i, err)
+	}
+}
+
 func TestBootstrap(t *testing.T) {
 	p, _ := decay(40, 12)
 	r := fit(t, p)

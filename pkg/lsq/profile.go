@@ -22,7 +22,8 @@ type Profile struct {
 // chi-squared with one degree of freedom, or, with unknown uncertainties, by s²
 // times that of F(1, ν) (Bates and Watts, Nonlinear Regression Analysis and Its
 // Applications (1988), section 6.1). Weights are frozen at those of r. For a
-// model linear in its parameters it is the usual symmetric interval.
+// model linear in its parameters it is the usual symmetric interval. A profile
+// that meets a chi-squared below that of r is an error: r is not the minimum.
 func (r *Result) Profile(ctx context.Context, j int, p float64) (*Profile, error) {
 	if !(p > 0 && p < 1) {
 		return nil, fmt.Errorf("lsq: coverage probability %v must lie between 0 and 1", p)
@@ -57,6 +58,7 @@ func (r *Result) Profile(ctx context.Context, j int, p float64) (*Profile, error
 	want := math.Sqrt(quantile)
 	par := &r.problem.Parameters[j]
 	theta := append([]float64(nil), r.Values...)
+	var lower error // a better minimum
 	root := func(at float64, from []float64) (float64, []float64, error) {
 		start := append([]float64(nil), from...)
 		start[j] = at
@@ -68,6 +70,10 @@ func (r *Result) Profile(ctx context.Context, j int, p float64) (*Profile, error
 		if par.Prior != nil {
 			d := (at - par.Prior.Value) / par.Prior.U
 			chi2 += d * d
+		}
+		if chi2 < r.ChiSquared-1e-3*quantile {
+			lower = fmt.Errorf("lsq: with %s at %v chi-squared is %.6g, below the %.6g of the result, which is not the minimum: start the fit there", r.problem.name(j), at, chi2, r.ChiSquared)
+			return 0, nil, lower
 		}
 		return math.Sqrt(math.Max(0, chi2-r.ChiSquared)), append([]float64(nil), a.s.theta...), nil
 	}
@@ -82,7 +88,7 @@ func (r *Result) Profile(ctx context.Context, j int, p float64) (*Profile, error
 				next, clipped = *bound, true
 			}
 			zn, th, err := root(next, from)
-			if ctx.Err() != nil {
+			if ctx.Err() != nil || lower != nil {
 				return 0, false, err
 			}
 			if err != nil { // too far: come nearer
