@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"runtime"
+	"strconv"
 	"strings"
 	"sync"
 
@@ -82,6 +83,18 @@ type input struct {
 	relative bool
 }
 
+// lineOf returns the line, as "17:", of the value or table whose key the error of a
+// model begins with, nothing when the file does not state it.
+func lineOf(b *bench.Bench, err error) string {
+	key, _, _ := strings.Cut(err.Error(), ":")
+	for _, s := range b.Scalars {
+		if s.Line > 0 && (s.Key == key || strings.HasPrefix(s.Key, key+".")) {
+			return strconv.Itoa(s.Line) + ":"
+		}
+	}
+	return ""
+}
+
 // newChain prepares a bench.
 func newChain(b *bench.Bench) (*chain, error) {
 	c := &chain{b: b, scale: math.NaN()}
@@ -103,7 +116,7 @@ func newChain(b *bench.Bench) (*chain, error) {
 	c.setup.Scalars = append([]float64(nil), c.q...)
 	var err error
 	if c.m, err = k.Prepare(k, c.setup); err != nil {
-		return nil, fmt.Errorf("%s/bench.toml: %w", b.Dir, err)
+		return nil, fmt.Errorf("%s/bench.toml:%s %w", b.Dir, lineOf(b, err), err)
 	}
 	c.one = c.m
 	c.expandSeries()
@@ -256,13 +269,14 @@ func (c *chain) place(record int) string {
 	return fmt.Sprintf("%s:%d", file, line)
 }
 
-// locate gives an error about a row in use its file and line.
+// locate gives an error about a row in use its file and line, and one about a key of
+// the bench the line of that.
 func (c *chain) locate(err error) error {
 	var re *model.RowError
 	if errors.As(err, &re) {
 		return fmt.Errorf("%s: %w", c.place(c.record[re.Row]), err)
 	}
-	return fmt.Errorf("%s/bench.toml: %w", c.b.Dir, err)
+	return fmt.Errorf("%s/bench.toml:%s %w", c.b.Dir, lineOf(c.b, err), err)
 }
 
 // gainOffset returns the stated gain and offset of a channel.

@@ -65,7 +65,7 @@ func (c *chain) checkAir() error {
 		return nil
 	}
 	if _, err := field.WaterVapourPressure(c.q[at[0]], c.q[at[1]], c.q[at[2]]); err != nil {
-		return fmt.Errorf("%s/bench.toml: environment: %w", c.b.Dir, err)
+		return c.locate(fmt.Errorf("environment: %w", err))
 	}
 	return nil
 }
