@@ -368,3 +368,27 @@ func TestRobustStackLoss(t *testing.T) {
 		}
 	}
 }
+
+// A parameter at its bound has no uncertainty in the second opinion either, and the
+// others have that of the fit with it fixed there.
+func TestRobustAtBound(t *testing.T) {
+	p, _ := decay(60, 9)
+	limit := 0.9 * fit(t, p).Values[2]
+	p.Parameters[2].Upper = &limit
+	b, err := fit(t, p).Robust(context.Background(), Huber)
+	if err != nil {
+		t.Fatal(err)
+	}
+	p.Parameters[2] = Parameter{Name: "offset", Start: limit, Fixed: true}
+	f, err := fit(t, p).Robust(context.Background(), Huber)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if b.Values[2] != limit || !math.IsNaN(b.U[2]) || !math.IsNaN(b.Shift[2]) {
+		t.Errorf("at the bound %v ± %v, shift %v", b.Values[2], b.U[2], b.Shift[2])
+	}
+	for j := range 2 {
+		near(t, "value", b.Values[j], f.Values[j], 1e-6)
+		near(t, "u", b.U[j], f.U[j], 1e-5)
+	}
+}

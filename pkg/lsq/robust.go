@@ -21,12 +21,12 @@ const (
 // Robust is a second opinion on a fit: it never replaces the result.
 type Robust struct {
 	Kind       RobustKind
-	Values, U  []float64     // of all parameters; U is 0 for fixed ones
+	Values, U  []float64     // of all parameters; U is 0 for fixed ones, NaN for those held at a bound
 	Covariance *mat.SymDense // asymptotic (Huber and Ronchetti, Robust Statistics, 2nd ed., section 7.6)
 	Scale      float64       // robust size of the standardised residuals, 1 when the stated uncertainties are right
 	Factors    []float64     // weight of each reading relative to the fit's, 0 … 1
 	Outliers   []int         // readings flagged: beyond three times Scale
-	Shift      []float64     // difference from the fit's values over the fit's uncertainties
+	Shift      []float64     // difference from the fit's values over the fit's uncertainties; NaN where these are unknown
 	Iterations int
 	Converged  bool
 }
@@ -43,7 +43,7 @@ func (r *Result) Robust(ctx context.Context, kind RobustKind) (*Robust, error) {
 	if r.Status != Converged {
 		return nil, fmt.Errorf("lsq: the fit is %s; a robust second opinion needs a converged fit", r.Status)
 	}
-	n, q := len(r.Fitted), len(r.Free)
+	n := len(r.Fitted)
 	factors := make([]float64, n)
 	fill(factors, 1)
 	a, err := r.repeat(r.problem.Y, r.Free, factors)
@@ -92,6 +92,13 @@ func (r *Result) Robust(ctx context.Context, kind RobustKind) (*Robust, error) {
 		}
 	}
 	o.Values = theta
+	held := a.s.held // nil without bounds
+	q := len(r.Free)
+	for _, h := range held {
+		if h {
+			q--
+		}
+	}
 	// covariance: K² [Σψ²/(n−q)]/[mean ψ']² (JᵀJ)⁻¹ scale², K = 1 + q var ψ'/(n mean² ψ')
 	var psi2, slope, slope2 float64
 	for k := range t {
@@ -117,7 +124,7 @@ func (r *Result) Robust(ctx context.Context, kind RobustKind) (*Robust, error) {
 		return nil, err
 	}
 	f := fitter{p: &a.p, free: r.Free}
-	f.search.q, f.search.now, f.search.d = a.s.q, a.s.now, a.s.d
+	f.search.q, f.search.now, f.search.d, f.search.held = a.s.q, a.s.now, a.s.d, held
 	sp := f.analyse()
 	np := len(r.Values)
 	o.Covariance, o.U, o.Shift = mat.NewSymDense(np, nil), make([]float64, np), make([]float64, np)
@@ -126,6 +133,9 @@ func (r *Result) Robust(ctx context.Context, kind RobustKind) (*Robust, error) {
 			c := 0.0
 			for _, b := range sp.factor {
 				c += b[k] * b[l]
+			}
+			if held != nil && (held[k] || held[l]) {
+				c = math.NaN()
 			}
 			o.Covariance.SetSym(j, r.Free[l], c*factor)
 		}
