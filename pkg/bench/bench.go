@@ -52,6 +52,10 @@ type Input struct {
 	SHA256   string // lower-case hexadecimal, of the bytes that were parsed
 	Rows     int    // data records; 0 for bench.toml
 	Excluded int    // of them left out
+
+	// How a CSV file is written; zero for others.
+	Separator    byte // ',', ';' or '\t'
+	DecimalComma bool // numbers are written 1,5
 }
 
 // Channel is one column of readings.

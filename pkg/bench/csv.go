@@ -36,8 +36,9 @@ type Table struct {
 	Number [][]float64 // beside Header: the column, NaN where missing; nil when not read as numbers
 	Word   []*Labels   // beside Header: likewise for words
 
-	times  []timeColumn // beside Header
-	starts []lineStart
+	separator byte
+	times     []timeColumn // beside Header
+	starts    []lineStart
 }
 
 // timeColumn is a column of times.

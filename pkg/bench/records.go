@@ -55,7 +55,7 @@ func (l *loader) read() error {
 			}
 		}
 		b.Rows.N += t.N
-		b.Inputs = append(b.Inputs, Input{File: f.name, SHA256: t.SHA256, Rows: t.N})
+		b.Inputs = append(b.Inputs, Input{File: f.name, SHA256: t.SHA256, Rows: t.N, Separator: t.separator, DecimalComma: f.settings.DecimalComma})
 	}
 	b.Rows.Epoch = epoch
 	b.Rows.Columns = maps.Clone(l.roles)

@@ -2,13 +2,16 @@ package plan
 
 import (
 	"bytes"
+	"crypto/sha256"
 	"encoding/csv"
+	"encoding/hex"
 	"errors"
 	"fmt"
 	"io"
 	"math"
 	"os"
 	"path/filepath"
+	"regexp"
 	"strconv"
 	"strings"
 
@@ -326,24 +329,35 @@ type File struct {
 }
 
 // Files returns the files of the bench with the response column of its readings
-// replaced: everything else in them stays as it is.
+// replaced, and a pin of their SHA-256 in bench.toml with it. All other values in
+// them stay as they are.
 func Files(b *bench.Bench, y []float64) ([]File, error) {
 	ch := &b.Channels[responseChannel(b)]
 	var files []File
 	record := 0
+	sums := map[string]string{} // of the readings, new by old
 	for _, in := range b.Inputs {
 		data, err := os.ReadFile(filepath.Join(b.Dir, filepath.FromSlash(in.File)))
 		if err != nil {
 			return nil, err
 		}
 		if in.Rows > 0 {
-			if data, err = replaceColumn(data, ch, y[record:record+in.Rows]); err != nil {
+			if data, err = replaceColumn(data, &in, ch, y[record:record+in.Rows]); err != nil {
 				return nil, fmt.Errorf("%s: %w", in.File, err)
 			}
 			record += in.Rows
+			sum := sha256.Sum256(data)
+			sums[in.SHA256] = hex.EncodeToString(sum[:])
 		}
 		files = append(files, File{Name: in.File, Data: data})
 	}
+	// bench.toml is the first of a bench's files.
+	files[0].Data = digest.ReplaceAllFunc(files[0].Data, func(old []byte) []byte {
+		if sum, ok := sums[strings.ToLower(string(old))]; ok {
+			return []byte(sum)
+		}
+		return old
+	})
 	truth, err := os.ReadFile(filepath.Join(b.Dir, TruthFile))
 	if err != nil {
 		return nil, err
@@ -351,18 +365,25 @@ func Files(b *bench.Bench, y []float64) ([]File, error) {
 	return append(files, File{Name: TruthFile, Data: truth}), nil
 }
 
-// replaceColumn rewrites the column of a channel in a CSV file.
-func replaceColumn(data []byte, ch *bench.Channel, y []float64) ([]byte, error) {
-	header, _, _ := bytes.Cut(data, []byte("\n"))
-	r := csv.NewReader(bytes.NewReader(data))
-	for _, sep := range []rune{';', '\t'} {
-		if bytes.ContainsRune(header, sep) && !bytes.ContainsRune(header, ',') {
-			r.Comma = sep
-		}
-	}
+// digest is a SHA-256 in hexadecimal.
+var digest = regexp.MustCompile(`\b[0-9a-fA-F]{64}\b`)
+
+// replaceColumn rewrites the column of a channel in a CSV file, in the way in which
+// the file is written.
+func replaceColumn(data []byte, in *bench.Input, ch *bench.Channel, y []float64) ([]byte, error) {
+	mark := []byte("\xef\xbb\xbf")
+	text := bytes.TrimPrefix(data, mark)
+	r := csv.NewReader(bytes.NewReader(text))
+	r.Comma = rune(in.Separator)
+	r.FieldsPerRecord = -1
 	var out bytes.Buffer
+	if len(text) < len(data) {
+		out.Write(mark)
+	}
 	w := csv.NewWriter(&out)
 	w.Comma = r.Comma
+	line, _, _ := bytes.Cut(text, []byte("\n"))
+	w.UseCRLF = bytes.HasSuffix(line, []byte("\r"))
 	column, record := -1, -1
 	for {
 		fields, err := r.Read()
@@ -373,7 +394,7 @@ func replaceColumn(data []byte, ch *bench.Channel, y []float64) ([]byte, error) 
 		}
 		if column < 0 {
 			for i, f := range fields {
-				if strings.TrimSpace(strings.TrimPrefix(f, "\ufeff")) == ch.Column {
+				if strings.TrimSpace(f) == ch.Column {
 					column = i
 				}
 			}
@@ -382,18 +403,26 @@ func replaceColumn(data []byte, ch *bench.Channel, y []float64) ([]byte, error) 
 			}
 		} else {
 			record++
-			if record >= len(y) {
-				return nil, fmt.Errorf("the file has grown since it was read")
+			if record >= len(y) || column >= len(fields) {
+				return nil, errChanged
 			}
 			fields[column] = decimal(ch, y[record])
+			if in.DecimalComma {
+				fields[column] = strings.Replace(fields[column], ".", ",", 1)
+			}
 		}
 		if err := w.Write(fields); err != nil {
 			return nil, err
 		}
 	}
+	if record+1 != len(y) {
+		return nil, errChanged
+	}
 	w.Flush()
 	return out.Bytes(), w.Error()
 }
+
+var errChanged = errors.New("the file has changed since it was read")
 
 // decimal prints a reading in the channel's unit with the digits its resolution
 // has; without a resolution, with those its noise leaves meaningful.
