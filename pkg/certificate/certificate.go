@@ -171,7 +171,7 @@ func New(r *reduce.Result, s Settings) (*Certificate, error) {
 	}
 	c.found()
 	c.leftOut(r)
-	c.trials(r, c.base)
+	c.trials(r)
 	for _, warning := range rec.Warnings {
 		c.Observations = append(c.Observations, keys.ReplaceAllString(figure.OneLine(warning), ""))
 	}
@@ -194,11 +194,11 @@ func New(r *reduce.Result, s Settings) (*Certificate, error) {
 
 // trials says whether the Monte Carlo check of the stated results confirms the law
 // of propagation (JCGM 101:2008 clause 8).
-func (c *Certificate) trials(r *reduce.Result, base string) {
+func (c *Certificate) trials(r *reduce.Result) {
 	n := 0
 	for i := range r.Record.Measurands {
 		m := &r.Record.Measurands[i]
-		if m.MonteCarlo == nil || !strings.HasPrefix(strings.TrimPrefix(m.Name, "shift of "), base) {
+		if m.MonteCarlo == nil || !c.states(r, m.Name) {
 			continue
 		}
 		n = m.MonteCarlo.Trials
@@ -210,6 +210,19 @@ func (c *Certificate) trials(r *reduce.Result, base string) {
 	if n > 0 {
 		c.Check = fmt.Sprintf(" and checked by %d Monte Carlo trials of the whole evaluation (JCGM 101:2008)", n)
 	}
+}
+
+// states reports whether a measurand of the reduction stands on the certificate.
+func (c *Certificate) states(r *reduce.Result, name string) bool {
+	if len(r.Record.Series) == 0 || strings.HasPrefix(name, "shift of ") {
+		return true
+	}
+	for _, s := range series(r) {
+		if name == reduce.SeriesName(c.base, s) || name == reduce.SeriesName("zero_offset", s) {
+			return true
+		}
+	}
+	return false
 }
 
 // siUnit is the unit of a record.

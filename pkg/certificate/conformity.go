@@ -113,6 +113,9 @@ func decide(b *bench.Bench, res *Result, m *reduce.Measurand) (*Conformity, erro
 	for _, w := range st.Warnings {
 		c.Warnings = append(c.Warnings, w.Error())
 	}
+	if alike(st, &res.Value) {
+		c.Warnings = append(c.Warnings, "the result and an end of an interval that decides are alike in the digits printed; the statement rests on those before rounding")
+	}
 	return c, nil
 }
 
@@ -161,17 +164,34 @@ func ruleText(l *bench.Limits, s *assess.Statement) string {
 
 // accepted writes the acceptance interval at the place of the result.
 func accepted(s *assess.Statement, q *Quantity) string {
-	place := 0
-	if _, frac, ok := strings.Cut(q.Value, "."); ok {
-		place = -len(frac)
-	}
-	n := func(x reduce.Number) string { return with(at(q.Unit.FromSI(float64(x)), place), q.Unit) }
+	n := func(x reduce.Number) string { return with(q.beside(float64(x)), q.Unit) }
 	low, high := known(s.AcceptLower), known(s.AcceptUpper)
 	switch {
+	case low && high && s.AcceptLower > s.AcceptUpper: // a non-binary rule with wide guard bands
+		return "none without a condition"
 	case low && high:
 		return n(s.AcceptLower) + " to " + n(s.AcceptUpper)
 	case low:
 		return "at least " + n(s.AcceptLower)
 	}
 	return "at most " + n(s.AcceptUpper)
+}
+
+// alike reports whether a result that lies beside an end of the acceptance interval,
+// or of the limits where these decide too, is printed as that end is.
+func alike(s *assess.Statement, q *Quantity) bool {
+	ends := []float64{float64(s.AcceptLower), float64(s.AcceptUpper)}
+	if s.Rule == assess.NonBinary {
+		for _, l := range []*float64{s.Limits.Lower, s.Limits.Upper} {
+			if l != nil {
+				ends = append(ends, *l)
+			}
+		}
+	}
+	for _, x := range ends {
+		if known(reduce.Number(x)) && x != q.value && q.beside(x) == q.Value {
+			return true
+		}
+	}
+	return false
 }

@@ -66,3 +66,33 @@ func TestLimitsOfAnotherUnit(t *testing.T) {
 		t.Errorf("limits of a factor in kV: %v", err)
 	}
 }
+
+// TestNoInterval: where guard bands meet, no interval is printed that runs backwards.
+func TestNoInterval(t *testing.T) {
+	r := result(t, "field-meter")
+	l := r.Bench.Limits
+	l.Rule, l.Lower, l.Upper = "non-binary", 0.999, 1.001
+	for _, x := range made(t, r).Results {
+		if got := x.Conformity.Accepted; got != "none without a condition" {
+			t.Errorf("%s: accepted %q", x.Name, got)
+		}
+	}
+}
+
+// TestAlikeInPrint: a result that fails by less than the digits printed says why it
+// is printed as the limit that it fails by.
+func TestAlikeInPrint(t *testing.T) {
+	for _, by := range []float64{1e-6, 1e-3} {
+		r := result(t, "field-meter")
+		l := r.Bench.Limits
+		l.Rule, l.GuardFactor, l.Measurand = "simple", 0, "correction_factor (as-left, 20 kV/m)"
+		l.Upper = float64(r.Record.Measurand(l.Measurand).Value) - by
+		for _, x := range made(t, r).Results {
+			if k := x.Conformity; k != nil {
+				if k.Verdict != "fail" || strings.Contains(strings.Join(k.Warnings, ";"), "before rounding") != (by < 1e-5) {
+					t.Errorf("above the limit by %v: %s, warnings %q", by, k.Verdict, k.Warnings)
+				}
+			}
+		}
+	}
+}

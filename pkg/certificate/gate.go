@@ -3,6 +3,8 @@ package certificate
 import (
 	"fmt"
 	"strings"
+	"unicode"
+	"unicode/utf8"
 
 	"example.org/guardring/pkg/bench"
 	"example.org/guardring/pkg/figure"
@@ -183,14 +185,36 @@ func instruments(b *bench.Bench, missing func(item, key, why string)) {
 }
 
 // named reports whether a stated deviation names an instrument: by its name in
-// the bench, its serial number or its certificate.
+// the bench, its serial number or its certificate, as a word of its own.
 func named(w bench.Work, in bench.Instrument) bool {
 	for _, d := range deviations(w) {
-		for _, n := range []string{in.Name, in.Serial, in.Certificate} {
-			if n != "" && strings.Contains(d, n) {
+		for _, n := range []string{in.Name, figure.Words(in.Name), in.Serial, in.Certificate} {
+			if hasWord(d, figure.OneLine(n)) {
 				return true
 			}
 		}
 	}
 	return false
+}
+
+// hasWord reports whether a text holds a word that is no part of a longer one: the
+// serial number 12 does not stand in "120 V".
+func hasWord(text, word string) bool {
+	if word == "" {
+		return false
+	}
+	part := func(r rune) bool { return unicode.IsLetter(r) || unicode.IsDigit(r) }
+	for from := 0; ; {
+		i := strings.Index(text[from:], word)
+		if i < 0 {
+			return false
+		}
+		at := from + i
+		before, _ := utf8.DecodeLastRuneInString(text[:at])
+		after, _ := utf8.DecodeRuneInString(text[at+len(word):])
+		if !part(before) && !part(after) { // at the ends these are RuneError, which is neither
+			return true
+		}
+		from = at + 1
+	}
 }

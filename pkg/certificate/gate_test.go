@@ -119,6 +119,14 @@ func TestDeviationAllowsInstrument(t *testing.T) {
 	if _, err := New(r, Settings{}); err == nil {
 		t.Error("a deviation that does not name the instrument was taken")
 	}
+	// A serial number within a longer number or word is no name.
+	serial := r.Bench.Instruments[1].Serial
+	r.Bench.Instruments[1].Serial = "12"
+	r.Bench.Work.Deviations = []string{"levels above 120 V were left out"}
+	if _, err := New(r, Settings{}); err == nil {
+		t.Error("120 V was taken for the serial number 12")
+	}
+	r.Bench.Instruments[1].Serial = serial
 	r.Bench.Work.Deviations = []string{"voltmeter DVM-3 was used past its due date; it was checked against another before and after"}
 	c := made(t, r)
 	for name, form := range forms {
@@ -172,6 +180,31 @@ func TestTrialsThatDisagree(t *testing.T) {
 		said := strings.Contains(strings.Join(c.Observations, "; "), "do not confirm the law of propagation; their coverage interval is 1.01150 to 1.01610")
 		if said == agrees || !strings.Contains(c.uncertainty(), "checked by 10000 Monte Carlo trials") {
 			t.Errorf("agrees %v: observations %q, uncertainty %q", agrees, c.Observations, c.uncertainty())
+		}
+	}
+}
+
+// TestTrialsOfWhatIsStated: the check is told of all results that are stated, of the
+// zero offset too, and of none else.
+func TestTrialsOfWhatIsStated(t *testing.T) {
+	for name, want := range map[string]bool{"zero_offset": true, "correction_factor": true, "shift of response": true, "response": false} {
+		r := result(t, "field-meter")
+		m := append([]reduce.Measurand(nil), r.Record.Measurands...)
+		off := m[0]
+		off.Name, off.Unit, off.Value = reduce.SeriesName("zero_offset", r.Record.Series[0].Name), "V/m", 12
+		shift := m[0]
+		shift.Name = "shift of response (2 kV/m)"
+		m = append(m, off, shift)
+		n := 0
+		for i := range m {
+			if m[i].MonteCarlo = nil; strings.HasPrefix(m[i].Name, name+" (") {
+				m[i].MonteCarlo = &reduce.MonteCarlo{Trials: 10000, Interval: [2]reduce.Number{-1, 1}}
+				n++
+			}
+		}
+		r.Record.Measurands = m
+		if said := strings.Contains(strings.Join(made(t, r).Observations, "; "), "do not confirm"); said != want || n == 0 {
+			t.Errorf("%d of %s not confirmed: said %v", n, name, said)
 		}
 	}
 }

@@ -222,6 +222,13 @@ func header(b *block) atom {
 // widths of the columns: numbers as wide as they are, texts as wide as there is
 // room.
 func (g *grid) widths() []float64 {
+	if g.wide == nil {
+		g.wide = g.fit()
+	}
+	return g.wide
+}
+
+func (g *grid) fit() []float64 {
 	w := make([]float64, len(g.columns))
 	var fixed, loose float64
 	for j, c := range g.columns {

@@ -52,6 +52,15 @@ func quantity(name, doc string, value, u, k float64, unit si.Unit, c *capability
 // u is the standard uncertainty that belongs to the uncertainty as stated.
 func (q *Quantity) u() float64 { return q.expanded / q.k }
 
+// beside writes another value of the quantity, SI, at the place of this one.
+func (q *Quantity) beside(x float64) string {
+	place := 0
+	if _, frac, ok := strings.Cut(q.Value, "."); ok {
+		place = -len(frac)
+	}
+	return at(q.Unit.FromSI(x), place)
+}
+
 // round writes an expanded uncertainty with two significant digits, not below
 // least, and the value to the same place.
 func round(value, expanded, least float64) (v, u string) {

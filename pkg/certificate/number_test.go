@@ -8,6 +8,7 @@ import (
 	"strings"
 	"testing"
 
+	"example.org/guardring/pkg/reduce"
 	"example.org/guardring/pkg/si"
 )
 
@@ -88,6 +89,19 @@ func TestCapability(t *testing.T) {
 	q = quantity("factor", "", 1.0137, 0.0031, 2.01, si.One, c)
 	if q.Expanded != "0.0062" || q.Raised {
 		t.Errorf("a larger uncertainty was changed: %+v", q)
+	}
+}
+
+// TestRaisedPoints: a point whose uncertainty is raised is told also where that of the
+// whole range is not.
+func TestRaisedPoints(t *testing.T) {
+	r := result(t, "field-meter")
+	s := append([]reduce.Series(nil), r.Record.Series...)
+	s[0].Points = append([]reduce.Point(nil), s[0].Points...)
+	s[0].Points[2].U /= 4
+	r.Record.Series = s
+	if said := strings.Join(made(t, r).Observations, "; "); !strings.Contains(said, "as-found, 2 kV/m: the uncertainty found is below the laboratory's stated capability at 1 of 8 points") {
+		t.Errorf("observations %q", said)
 	}
 }
 

@@ -69,9 +69,19 @@ func (c *Certificate) results(r *reduce.Result) error {
 		if res.Conformity, err = decide(b, &res, m); err != nil {
 			return err
 		}
-		if res.Value.Raised {
-			c.Observations = append(c.Observations, fmt.Sprintf("%s: the uncertainty found is below the laboratory's stated capability, which is stated in its place",
-				title(words, name)))
+		low := 0
+		for _, p := range res.Points {
+			if p.Value.Raised {
+				low++
+			}
+		}
+		at := ""
+		if !res.Value.Raised {
+			at = fmt.Sprintf(" at %d of %d points", low, len(res.Points))
+		}
+		if res.Value.Raised || low > 0 {
+			c.Observations = append(c.Observations, fmt.Sprintf("%s: the uncertainty found is below the laboratory's stated capability%s, which is stated in its place",
+				title(words, name), at))
 		}
 		c.Results = append(c.Results, res)
 	}
@@ -182,7 +192,7 @@ func (c *Certificate) scope(k *bench.Capability, s *reduce.Series) {
 	}
 	unit, err := si.ParseUnit(s.LevelUnit)
 	if err != nil {
-		return // unitFor has refused such a unit before
+		return // points has refused such a unit before
 	}
 	var out []string
 	seen := map[string]bool{}

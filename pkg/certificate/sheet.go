@@ -38,6 +38,7 @@ type block struct {
 type grid struct {
 	columns []column
 	rows    [][]string
+	wide    []float64 // of the columns, once they are known
 }
 
 type column struct {
