@@ -215,7 +215,7 @@ func ParseStray(path string, data []byte) (*StrayBench, error) {
 		return nil, err
 	}
 	if f.Report.Coverage != nil {
-		q, err := r.quantity("report.coverage", f.Report.Coverage, pureUnit)
+		q, err := r.exact("report.coverage", f.Report.Coverage, pureUnit, "it is chosen")
 		if err != nil {
 			return nil, err
 		}
@@ -268,7 +268,7 @@ func (r *strayReader) meter(b *StrayBench, f *strayFile) error {
 	if f.Bench.Field == nil {
 		return nil
 	}
-	q, err := r.quantity("bench.field", f.Bench.Field, fieldUnit)
+	q, err := r.exact("bench.field", f.Bench.Field, fieldUnit, "only its size is asked for, to compare with")
 	if err != nil {
 		return err
 	}
@@ -508,12 +508,22 @@ func (r *strayReader) quantity(key string, v any, unit si.Unit) (gum.Distributio
 	return gum.Exactly(value), nil
 }
 
+// exact is quantity where no uncertainty has a meaning, for the reason given: one that
+// is stated would be lost.
+func (r *strayReader) exact(key string, v any, unit si.Unit, why string) (gum.Distribution, error) {
+	q, err := r.quantity(key, v, unit)
+	if err == nil && q.U > 0 {
+		err = r.errorf(key, "takes no uncertainty: %s", why)
+	}
+	return q, err
+}
+
 // length reads a standard uncertainty of a place; nil is none.
 func (r *strayReader) length(key string, v any) (float64, error) {
 	if v == nil {
 		return 0, nil
 	}
-	q, err := r.quantity(key, v, lengthUnit)
+	q, err := r.exact(key, v, lengthUnit, "it is one itself")
 	if err == nil && !(q.Value >= 0) {
 		err = r.errorf(key, "%g m must not be below zero", q.Value)
 	}
@@ -528,7 +538,7 @@ func (r *strayReader) place(key string, v any) (field.Vec, error) {
 		return p, r.errorf(key, "want three lengths, such as [\"0 mm\", \"0 mm\", \"300 mm\"]")
 	}
 	for i, e := range list {
-		q, err := r.quantity(fmt.Sprintf("%s[%d]", key, i+1), e, lengthUnit)
+		q, err := r.exact(fmt.Sprintf("%s[%d]", key, i+1), e, lengthUnit, "that of a body's or the meter's place is stated as place_u, for each coordinate")
 		if err != nil {
 			return p, err
 		}
