@@ -158,6 +158,9 @@ func TestDiscRefusals(t *testing.T) {
 	if _, err := field.SolveLove(0.01, 64, false); err == nil {
 		t.Error("too few nodes passed")
 	}
+	if _, err := field.SolveLove(1e-5, 1_000_000, false); err == nil {
+		t.Error("a million nodes passed")
+	}
 }
 
 func BenchmarkDiscForceJet(b *testing.B) {

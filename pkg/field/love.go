@@ -27,14 +27,21 @@ type Love struct {
 	same  bool
 }
 
+// LoveNodes is the largest number of nodes that SolveLove takes: 500 MB of matrices.
+const LoveNodes = 4000
+
 // SolveLove solves Love's equation by Nyström's method on n Gauss–Legendre nodes
 // over the half range (f is even). 8/κ nodes or more give 1e-13; fewer than 32
-// or 4/κ are refused. same selects equal potentials. The derivatives by κ come
-// from the differentiated equation with the same factors. The work grows as n³:
-// DiscCapacitance and its kin evaluate a table made by this function instead.
+// or 4/κ, or more than LoveNodes, are refused. same selects equal potentials. The
+// derivatives by κ come from the differentiated equation with the same factors. The
+// work grows as n³: DiscCapacitance and its kin evaluate a table made by this
+// function instead.
 func SolveLove(kappa float64, n int, same bool) (*Love, error) {
 	if err := refuse("Love's equation", positive("spacing / radius", kappa, "1")); err != nil {
 		return nil, err
+	}
+	if n > LoveNodes {
+		return nil, fmt.Errorf("solution of Love's equation: %d nodes need three matrices of that size squared; want at most %d", n, LoveNodes)
 	}
 	if n < 32 || float64(n)*kappa < 4 {
 		return nil, fmt.Errorf("solution of Love's equation: %d nodes are too few for spacing / radius %.3g; want 32 and %.0f or more", n, kappa, math.Ceil(4/kappa))

@@ -1,6 +1,9 @@
 package gum
 
-import "errors"
+import (
+	"errors"
+	"fmt"
+)
 
 // A Model is a set of inputs and the outputs made from them.
 type Model struct {
@@ -80,11 +83,12 @@ type Settings struct {
 // Sizes that a result depends on; they belong to the version.
 const (
 	DefaultTrials   = 1_000_000
-	BlockTrials     = 10_000          // trials of a block: each input has one stream a block
-	PilotTrials     = 4 * BlockTrials // trials that set the bins of a run that streams
-	SelectionTrials = 1 << 20         // up to here intervals are exact by selection
-	Bins            = 1 << 16         // of an output in a run that streams
-	MaxUndefined    = 1e-4            // share of trials whose output may be undefined
+	BlockTrials     = 10_000                // trials of a block: each input has one stream a block
+	PilotTrials     = 4 * BlockTrials       // trials that set the bins of a run that streams
+	SelectionTrials = 1 << 20               // up to here intervals are exact by selection
+	Bins            = 1 << 16               // of an output in a run that streams
+	MaxUndefined    = 1e-4                  // share of trials whose output may be undefined
+	MaxTrials       = 1_000_000_000_000_000 // of a run: centuries of work, and far from where counts overflow
 )
 
 func (s Settings) withDefaults() (Settings, error) {
@@ -94,8 +98,8 @@ func (s Settings) withDefaults() (Settings, error) {
 	if err := CheckCoverage(s.Probability); err != nil {
 		return s, err
 	}
-	if s.Trials < 0 {
-		return s, errors.New("the number of trials is negative")
+	if s.Trials < 0 || s.Trials > MaxTrials {
+		return s, fmt.Errorf("%d Monte Carlo trials: from 1 to %d can be asked for, and 0 for the default", s.Trials, int64(MaxTrials))
 	}
 	if s.Trials == 0 {
 		s.Trials = DefaultTrials

@@ -139,7 +139,7 @@ func TestModelRefuses(t *testing.T) {
 	}
 	m := &gum.Model{Inputs: in()}
 	m.Outputs = []gum.Output{compiled(t, "y", "radius*gain*count", m.Inputs)}
-	for _, s := range []gum.Settings{{Probability: 1}, {Probability: -1}, {Trials: -5}, {Digits: 9}, {Trials: 10}} {
+	for _, s := range []gum.Settings{{Probability: 1}, {Probability: -1}, {Trials: -5}, {Trials: math.MaxInt64}, {Digits: 9}, {Trials: 10}} {
 		if r, err := gum.Propagate(context.Background(), m, s); err == nil || r != nil {
 			t.Errorf("settings %+v are accepted", s)
 		}

@@ -93,6 +93,9 @@ func (f *fitter) release() {
 		slab = nil
 	}
 	points, pointHeads := f.eiv.slab, f.eiv.heads
+	if cap(points) > keptFloats {
+		points = nil
+	}
 	clear(heads)
 	clear(pointHeads)
 	*f = fitter{}
