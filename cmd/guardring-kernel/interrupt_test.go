@@ -134,13 +134,21 @@ func TestShutdown(t *testing.T) {
 }
 
 func TestTermination(t *testing.T) {
-	s := start(t)
-	if err := s.c.Signal(syscall.SIGTERM); err != nil {
-		t.Fatal(err)
-	}
-	select {
-	case <-s.c.Exited():
-	case <-time.After(patience):
-		t.Error("the kernel does not end on SIGTERM")
+	for _, code := range []string{"", "for { }", "make(chan int) <- 1"} {
+		s := start(t)
+		if code != "" {
+			ctx, cancel := context.WithTimeout(context.Background(), patience)
+			defer cancel()
+			go s.c.Execute(ctx, code, kernel.ExecuteOptions{})
+			time.Sleep(50 * time.Millisecond)
+		}
+		if err := s.c.Signal(syscall.SIGTERM); err != nil {
+			t.Fatal(err)
+		}
+		select {
+		case <-s.c.Exited():
+		case <-time.After(patience):
+			t.Errorf("the kernel does not end on SIGTERM while it runs %q", code)
+		}
 	}
 }

@@ -134,6 +134,10 @@ func (s *Server) run(c Cell) (res *Result, err error) {
 	ctx = cell.WithProgress(ctx, b.report)
 	s.mu.Lock()
 	s.cancel, s.cellCtx, s.running = cancel, ctx, true
+	if s.ended() { // an end that came before it could find this cell running
+		s.stopCell = true
+		cancel()
+	}
 	s.mu.Unlock()
 	defer func() {
 		fault := recover()

@@ -132,6 +132,7 @@ type bench struct {
 	shell, control, stdin, iopub, heartbeat *pipe
 	sign                                    *signer
 	server                                  *Server
+	cancel                                  context.CancelFunc
 	ended                                   chan error
 }
 
@@ -150,6 +151,7 @@ func serve(t *testing.T, in Interpreter) *bench {
 	}
 	b.server = s
 	ctx, cancel := context.WithCancel(context.Background())
+	b.cancel = cancel
 	go func() { b.ended <- s.Serve(ctx) }()
 	t.Cleanup(func() {
 		cancel()

@@ -35,7 +35,8 @@ type Config struct {
 	Docs    *docindex.Index // nil: inspection without documentation
 	Version string          // of the implementation
 	Stderr  io.Writer       // where drops are counted; nil: the standard error at the time of the call
-	// Abandon ends the process when a cell does not stop within AbandonAfter (0: one second) of a shutdown request.
+	// Abandon ends the process when a cell does not stop within AbandonAfter (0: one second) of a shutdown request or
+	// of the end of Serve's context.
 	Abandon      func()
 	AbandonAfter time.Duration
 }
@@ -142,7 +143,7 @@ func NewServer(in Interpreter, cfg Config) (*Server, error) {
 	}, nil
 }
 
-// Serve answers requests until a shutdown request comes or ctx ends.
+// Serve answers requests until a shutdown request comes or ctx ends; both interrupt the running cell.
 func (s *Server) Serve(ctx context.Context) error {
 	caught, err := catch(s.publishStream)
 	if err != nil {
@@ -151,6 +152,7 @@ func (s *Server) Serve(ctx context.Context) error {
 	s.stream = caught
 	defer caught.restore()
 	defer s.hostCells()()
+	defer context.AfterFunc(ctx, s.quit)()
 
 	go s.receive("shell", s.cfg.Sockets.Shell, s.takeShell)
 	go s.receive("control", s.cfg.Sockets.Control, s.takeControl)
@@ -168,8 +170,6 @@ func (s *Server) Serve(ctx context.Context) error {
 		select {
 		case <-s.queue.ready:
 		case <-s.stopped:
-			return nil
-		case <-ctx.Done():
 			return nil
 		}
 	}
@@ -294,6 +294,11 @@ func (s *Server) shutdown(socket Socket, m *Message) {
 	content := map[string]any{"status": "ok", "restart": c.Restart}
 	s.reply(socket, m, "shutdown_reply", content)
 	s.publish("shutdown_reply", m.RawHeader, content)
+	s.quit()
+}
+
+// quit lets Serve return, after the running cell if it stops on an interrupt.
+func (s *Server) quit() {
 	s.stopOnce.Do(func() {
 		close(s.stopped)
 		busy := s.Interrupt()

@@ -132,6 +132,30 @@ func TestShutdownWhileBusy(t *testing.T) {
 	}
 }
 
+// TestEndWhileBusy: the end of the context, a signal to the process, stops the running cell as a shutdown does, and
+// the end that comes just before a cell runs stops it too.
+func TestEndWhileBusy(t *testing.T) {
+	f := newFake()
+	b := serve(t, f)
+	b.send(b.shell, "execute_request", run("wait"))
+	for m := b.next(b.iopub); m.Header.Type != "execute_input"; m = b.next(b.iopub) {
+	}
+	time.Sleep(20 * time.Millisecond)
+	b.cancel()
+	select {
+	case err := <-b.ended:
+		b.ended <- err
+	case <-time.After(5 * time.Second):
+		t.Fatal("Serve waits for the cell")
+	}
+	if r := content(t, b.next(b.shell)); r["ename"] != Interrupted {
+		t.Errorf("reply %v", r)
+	}
+	if _, err := b.server.run(Cell{Code: "wait", Count: 2}); asCellError(err).Kind != Interrupted {
+		t.Errorf("a cell that begins after the end: %v", err)
+	}
+}
+
 func TestInputRoundTrip(t *testing.T) {
 	b := serve(t, newFake())
 	id := b.send(b.shell, "execute_request", map[string]any{"code": "ask", "allow_stdin": true})
