@@ -76,6 +76,12 @@ func TestStudentTable(t *testing.T) {
 		near(t, "quantile", quantile(c.p, c.dof), c.want, 0.0006)
 		near(t, "round trip", below(quantile(c.p, c.dof), c.dof), c.p, 1e-14)
 	}
+	for _, dof := range []float64{1e-10, math.SmallestNonzeroFloat64} { // next to no knowledge of u
+		near(t, "p", below(-3, dof), 0.5, 1e-9)
+		if q := quantile(0.05, dof); !(q < -1e100) {
+			t.Errorf("quantile with %v degrees of freedom is %v, want one beyond reach", dof, q)
+		}
+	}
 	for _, p := range []float64{1e-12, 1e-4, 0.3, 0.5, 0.9999} { // joins the normal
 		near(t, "large dof", quantile(p, 1e7), quantile(p, math.Inf(1)), 1e-5)
 	}

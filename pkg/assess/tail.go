@@ -19,6 +19,9 @@ func below(x, dof float64) float64 {
 		}
 		return 0
 	}
+	if dof < 1e-300 { // half of it may be 0: nothing within reach
+		return 0.5
+	}
 	tail := 0.5 * mathext.RegIncBeta(dof/2, 0.5, dof/(dof+x*x))
 	if x > 0 {
 		return 1 - tail

@@ -380,6 +380,11 @@ func TestRefusals(t *testing.T) {
 			t.Errorf("an impossible parameter gives %v, want NaN", x)
 		}
 	}
+	for _, nu := range []float64{0.01, 1e-300, math.SmallestNonzeroFloat64} {
+		if v := s.StudentT(nu); math.IsNaN(v) {
+			t.Errorf("t with %v degrees of freedom gives NaN", nu)
+		}
+	}
 	x := []float64{1}
 	s.FillStudentT(x, -1, 0, 1)
 	if !math.IsNaN(x[0]) {

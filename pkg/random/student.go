@@ -26,6 +26,7 @@ func (t *student) log(x float64) float64 { return -t.half * math.Log1p(x*x/t.nu)
 
 // newStudent lays out the ziggurat for nu > 0 degrees of freedom.
 func newStudent(nu float64) *student {
+	nu = max(nu, 1e-300) // half of less may be 0; all of it overflows anyway
 	t := &student{nu: nu, half: (nu + 1) / 2}
 	f := func(x float64) float64 { return math.Exp(t.log(x)) }
 	inverse := func(y float64) float64 { return math.Sqrt(nu * math.Expm1(-math.Log(y)/t.half)) }
@@ -122,7 +123,7 @@ const manyDOF = 1e8
 // freedom; nu may be any positive number, and +Inf gives a normal. It draws from
 // a ziggurat laid out for nu (the first draw for a new nu costs about a
 // millisecond) with an exact tail. A nu that is not positive gives NaN. Below
-// nu = 0.05 the tail overflows float64 and gives ±Inf.
+// nu = 0.05 the tail overflows float64 and gives ±Inf, below 0.01 nearly always.
 func (s *Source) StudentT(nu float64) float64 {
 	if nu >= manyDOF {
 		return s.Normal()
