@@ -33,13 +33,10 @@ func (in *Interp) Names() []kernel.Name {
 }
 
 func bindKind(b *fast.Bind) string {
-	switch v := b.Value.(type) {
+	switch b.Value.(type) {
 	case *fast.Import:
 		return "package"
-	case fast.Builtin:
-		return "func"
-	case fast.Function:
-		_ = v
+	case fast.Builtin, fast.Function:
 		return "func"
 	}
 	switch b.Desc.Class() {

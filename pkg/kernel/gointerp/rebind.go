@@ -119,6 +119,22 @@ type cellInput struct {
 
 var stdin = new(cellInput)
 
+// fill asks for a line when there is nothing left of the one before. The lock is held.
+func (c *cellInput) fill() error {
+	if c.rest.Len() > 0 {
+		return nil
+	}
+	line, err := cell.Input("")
+	if err != nil {
+		if ctx := cell.Context(); ctx.Err() != nil {
+			return context.Canceled
+		}
+		return err
+	}
+	c.rest.WriteString(line + "\n")
+	return nil
+}
+
 // Read returns bytes of the current line, and asks for the next one when there are none.
 func (c *cellInput) Read(p []byte) (int, error) {
 	c.mu.Lock()
@@ -126,15 +142,8 @@ func (c *cellInput) Read(p []byte) (int, error) {
 	if len(p) == 0 {
 		return 0, nil
 	}
-	if c.rest.Len() == 0 {
-		line, err := cell.Input("")
-		if err != nil {
-			if ctx := cell.Context(); ctx.Err() != nil {
-				return 0, context.Canceled
-			}
-			return 0, err
-		}
-		c.rest.WriteString(line + "\n")
+	if err := c.fill(); err != nil {
+		return 0, err
 	}
 	return c.rest.Read(p)
 }
@@ -142,22 +151,10 @@ func (c *cellInput) Read(p []byte) (int, error) {
 // ReadRune lets fmt's scanning stop at the end of what it needs.
 func (c *cellInput) ReadRune() (rune, int, error) {
 	c.mu.Lock()
-	empty := c.rest.Len() == 0
-	c.mu.Unlock()
-	if empty {
-		if _, err := c.Read(nil); err != nil {
-			return 0, 0, err
-		}
-		line, err := cell.Input("")
-		if err != nil {
-			return 0, 0, err
-		}
-		c.mu.Lock()
-		c.rest.WriteString(line + "\n")
-		c.mu.Unlock()
-	}
-	c.mu.Lock()
 	defer c.mu.Unlock()
+	if err := c.fill(); err != nil {
+		return 0, 0, err
+	}
 	return c.rest.ReadRune()
 }
 
