@@ -19,15 +19,7 @@ type Error struct {
 func (e *Error) Error() string {
 	var b strings.Builder
 	b.WriteString("formula ")
-	src := e.Source
-	if len(src) > 80 {
-		cut := 80
-		for cut > 0 && !utf8.RuneStart(src[cut]) {
-			cut--
-		}
-		src = src[:cut] + "…"
-	}
-	fmt.Fprintf(&b, "%q: ", src)
+	fmt.Fprintf(&b, "%q: ", short(e.Source))
 	if e.Column > 0 {
 		fmt.Fprintf(&b, "column %d: ", e.Column)
 	}
@@ -37,4 +29,17 @@ func (e *Error) Error() string {
 		b.WriteString(e.Hint)
 	}
 	return b.String()
+}
+
+// short cuts a text of the user's for a message.
+func short(s string) string {
+	const most = 80
+	if len(s) <= most {
+		return s
+	}
+	cut := most
+	for cut > 0 && !utf8.RuneStart(s[cut]) {
+		cut--
+	}
+	return s[:cut] + "…"
 }

@@ -253,7 +253,7 @@ func (r *reader) walk(e ast.Expr) (*tree, error) {
 	case *ast.CallExpr:
 		return r.call(e, col)
 	case *ast.SelectorExpr:
-		return nil, r.fail(r.column(e.Sel.Pos()), fmt.Sprintf("%q: names hold no point", e.Sel.Name), "")
+		return nil, r.fail(r.column(e.Sel.Pos()), fmt.Sprintf("%q: names hold no point", short(e.Sel.Name)), "")
 	case *ast.IndexExpr, *ast.IndexListExpr, *ast.SliceExpr:
 		return nil, r.fail(col, "brackets have no meaning here", "use parentheses")
 	}
@@ -299,18 +299,18 @@ func (r *reader) binary(e *ast.BinaryExpr) (*tree, error) {
 
 func (r *reader) number(e *ast.BasicLit, col int) (*tree, error) {
 	if e.Kind != token.INT && e.Kind != token.FLOAT {
-		return nil, r.fail(col, fmt.Sprintf("%s is no decimal number", e.Value), "")
+		return nil, r.fail(col, fmt.Sprintf("%s is no decimal number", short(e.Value)), "")
 	}
 	text := e.Value
 	if strings.Trim(text, "0123456789.eE+-") != "" {
-		return nil, r.fail(col, fmt.Sprintf("%s is no decimal number", text), "write it like 1000, 0.5 or 1.5e-6")
+		return nil, r.fail(col, fmt.Sprintf("%s is no decimal number", short(text)), "write it like 1000, 0.5 or 1.5e-6")
 	}
 	if e.Kind == token.INT && len(text) > 1 && text[0] == '0' {
-		return nil, r.fail(col, fmt.Sprintf("%s starts with a zero, which Go reads as an octal number", text), "leave the zero out")
+		return nil, r.fail(col, fmt.Sprintf("%s starts with a zero, which Go reads as an octal number", short(text)), "leave the zero out")
 	}
 	v, err := strconv.ParseFloat(text, 64)
 	if err != nil || math.IsInf(v, 0) {
-		return nil, r.fail(col, fmt.Sprintf("%s is too large", text), "")
+		return nil, r.fail(col, fmt.Sprintf("%s is too large", short(text)), "")
 	}
 	return &tree{kind: kindNumber, value: v, col: col}, nil
 }
@@ -336,7 +336,7 @@ func (r *reader) name(name string, col int) (*tree, error) {
 	if near := si.Suggest(name, append(slices.Clone(r.vars), constantNames()...)); near != "" {
 		hint = fmt.Sprintf("did you mean %q?", near)
 	}
-	return nil, r.fail(col, fmt.Sprintf("%q is not known", name), hint)
+	return nil, r.fail(col, fmt.Sprintf("%q is not known", short(name)), hint)
 }
 
 func (r *reader) call(e *ast.CallExpr, col int) (*tree, error) {
@@ -361,7 +361,7 @@ func (r *reader) call(e *ast.CallExpr, col int) (*tree, error) {
 				hint = fmt.Sprintf("did you mean %q?", near)
 			}
 		}
-		return nil, r.fail(col, fmt.Sprintf("%q is no function", id.Name), hint)
+		return nil, r.fail(col, fmt.Sprintf("%q is no function", short(id.Name)), hint)
 	}
 	switch n := len(e.Args); {
 	case e.Ellipsis.IsValid():
@@ -423,15 +423,15 @@ func checkNames(src string, vars []string) error {
 		reason, hint := "", ""
 		switch {
 		case token.IsKeyword(v):
-			reason, hint = fmt.Sprintf("the variable %q is a word of the Go language", v), "give it another name"
+			reason, hint = fmt.Sprintf("the variable %q is a word of the Go language", short(v)), "give it another name"
 		case !token.IsIdentifier(v):
-			reason, hint = fmt.Sprintf("the variable %q is no name", v), "names are letters, digits and _, and start with no digit"
+			reason, hint = fmt.Sprintf("the variable %q is no name", short(v)), "names are letters, digits and _, and start with no digit"
 		case v == "_":
 			reason, hint = `the variable "_" is no name`, "give it a name with a letter"
 		case findConstant(v) >= 0:
-			reason, hint = fmt.Sprintf("the variable %q is the name of a constant", v), "give it another name"
+			reason, hint = fmt.Sprintf("the variable %q is the name of a constant", short(v)), "give it another name"
 		case seen[v]:
-			reason = fmt.Sprintf("the variable %q is given twice", v)
+			reason = fmt.Sprintf("the variable %q is given twice", short(v))
 		}
 		if reason != "" {
 			return &Error{Source: src, Reason: reason, Hint: hint}
