@@ -106,6 +106,7 @@ type layout struct {
 	separator byte
 	point     byte
 	missing   []string
+	plain     bool // all columns are numbers, whose decimal sign is not the separator
 }
 
 // separators that a header is searched for, and their names in bench files.

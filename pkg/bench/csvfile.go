@@ -174,6 +174,7 @@ func readCSV(r io.Reader, name string, size int64, s CSVSettings, wanted []strin
 	if err := plan(l); err != nil {
 		return nil, err
 	}
+	l.plain = l.separator != l.point && !slices.ContainsFunc(l.modes, func(m mode) bool { return m != number })
 	t := &Table{File: name, separator: l.separator, Header: l.header, Number: make([][]float64, len(l.header)), Word: make([]*Labels, len(l.header)),
 		times: make([]timeColumn, len(l.header))}
 	m := &merger{t: t, l: l, limit: limit, size: size}

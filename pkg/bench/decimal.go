@@ -26,7 +26,7 @@ func scanDecimal(b []byte, i int, point byte) (v float64, end int, ok bool) {
 	// Signs come as they like, and a branch on each would be guessed wrong half the
 	// time: here is none.
 	var minus, plus uint64
-	if i < len(b) {
+	if uint(i) < uint(len(b)) {
 		c := b[i]
 		if c == '-' {
 			minus = 1
@@ -47,7 +47,7 @@ func scanDecimal(b []byte, i int, point byte) (v float64, end int, ok bool) {
 	}
 	digits := i - start
 	exp := 0
-	if i < len(b) && b[i] == point {
+	if uint(i) < uint(len(b)) && b[i] == point {
 		i++
 		from := i
 		for ; uint(i) < uint(len(b)); i++ {
@@ -63,10 +63,10 @@ func scanDecimal(b []byte, i int, point byte) (v float64, end int, ok bool) {
 	if digits == 0 || digits > 19 { // 10^19 − 1 fits a uint64
 		return 0, i, false
 	}
-	if i < len(b) && b[i]|0x20 == 'e' {
+	if uint(i) < uint(len(b)) && b[i]|0x20 == 'e' {
 		i++
 		down := false
-		if i < len(b) && (b[i] == '-' || b[i] == '+') {
+		if uint(i) < uint(len(b)) && (b[i] == '-' || b[i] == '+') {
 			down = b[i] == '-'
 			i++
 		}

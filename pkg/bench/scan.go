@@ -106,6 +106,15 @@ func (p *part) scan(l *layout) {
 		if line != expect {
 			p.starts = append(p.starts, lineStart{p.rows, line})
 		}
+		if l.plain {
+			if end := p.plainRecord(l, i); end > 0 {
+				i = end
+				p.rows++
+				line++
+				expect = line
+				continue
+			}
+		}
 		record, lines := i, 1
 		bad := false
 		for c := range n {
@@ -172,6 +181,32 @@ func (p *part) scan(l *layout) {
 		}
 	}
 	p.next = line
+}
+
+// plainRecord reads the record at i if it is what most are: numbers without quotes and
+// blanks, one line, as many as there are columns. It returns the index behind it, 0
+// when the record must be taken apart cell by cell.
+func (p *part) plainRecord(l *layout, i int) int {
+	b, row, last := p.data, p.rows, len(p.number)-1
+	for c, column := range p.number {
+		v, end, ok := scanDecimal(b, i, l.point)
+		if !ok || uint(end) >= uint(len(b)) {
+			return 0
+		}
+		column[row] = v
+		if c < last {
+			if b[end] != l.separator {
+				return 0
+			}
+		} else if b[end] != '\n' {
+			if b[end] != '\r' || end+1 >= len(b) || b[end+1] != '\n' {
+				return 0
+			}
+			end++
+		}
+		i = end + 1
+	}
+	return i
 }
 
 // truncate cuts the columns of words to the records finished.
