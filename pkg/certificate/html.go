@@ -9,11 +9,15 @@ import (
 )
 
 // pageCSS sets every piece at the height that the layout gave it, so that pages
-// end where the certificate says whatever fonts a reader has; Liberation Sans,
-// Arial and Helvetica have the same widths.
+// end where the certificate says whatever fonts a reader has. Lines end where the
+// layout ended them: Liberation Sans, Arimo, Arial and Helvetica have the same widths,
+// and the wider letters of readers who have none of these are set smaller, so that no
+// line runs off its page.
 const pageCSS = `* { box-sizing: border-box; margin: 0; padding: 0; }
+@font-face { font-family: narrowed; src: local("DejaVu Sans"), local("DejaVuSans"), local("Verdana"), local("Noto Sans"); size-adjust: 84%; }
+@font-face { font-family: narrowed; font-weight: bold; src: local("DejaVu Sans Bold"), local("DejaVuSans-Bold"), local("Verdana Bold"), local("Noto Sans Bold"); size-adjust: 80%; }
 html { background: #777; }
-body { font: 9pt/12pt "Liberation Sans", Arial, Helvetica, "Nimbus Sans", sans-serif; color: #000; font-variant-numeric: lining-nums tabular-nums; }
+body { font: 9pt/12pt "Liberation Sans", Arimo, Arial, Helvetica, "Nimbus Sans", narrowed, sans-serif; color: #000; font-variant-numeric: lining-nums tabular-nums; }
 .page { position: relative; width: 595.28pt; height: 841.2pt; margin: 12pt auto; background: #fff; overflow: hidden; white-space: nowrap; }
 .head, .foot { position: absolute; left: 54pt; right: 54pt; font-size: 7.5pt; line-height: 10pt; color: #444; display: flex; justify-content: space-between; }
 .head { top: 34pt; padding-bottom: 3pt; border-bottom: .4pt solid #000; }
